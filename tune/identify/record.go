@@ -25,8 +25,8 @@ type span struct {
 
 // stretch is one gap-free piece of a trace, prepared for fitting.
 type stretch struct {
-	trace  int // index among the traces fitted together
-	first  int // sample of the trace at which it starts
+	trace  int     // index among the traces fitted together
+	first  int     // sample of the trace at which it starts
 	lag    float64 // s after the trace's first sample at which it starts
 	drive  *drive
 	y      []float64

@@ -36,7 +36,9 @@ type Settings struct {
 	ParamTol float64   // relative change of the scaled parameters, default 1e-9
 	Lower    []float64 // nil or one per parameter
 	Upper    []float64
-	Rescale  bool // scale by the Jacobian at hand, not by the largest seen so far
+	Damping  float64 // at the start, in units of the squared column norms, default 1e-3
+	Rescale  bool    // scale by the Jacobian at hand, not by the largest seen so far
+	Thorough bool    // try bold and timid first steps and both scalings, keep the best end
 }
 
 // Solution is what Solve found.
@@ -60,6 +62,9 @@ var ErrStart = errors.New("identify: the model cannot be computed at the startin
 // parameter in Marquardt's method, IMM-REP-1999-05 (update of the damping).
 func Solve(prob Problem, start []float64, set Settings) (Solution, error) {
 	set = set.withDefaults()
+	if set.Thorough {
+		return solveThorough(prob, start, set)
+	}
 	lm := &marquardt{set: set, n: prob.Dim()}
 	lm.init()
 	x := append([]float64(nil), start...)
@@ -69,13 +74,22 @@ func Solve(prob Problem, start []float64, set Settings) (Solution, error) {
 		return Solution{}, ErrStart
 	}
 	sol := Solution{Params: x, Evaluations: 1}
-	lambda, grow := 1e-3, 2.0
+	lambda, grow := set.Damping, 2.0
 	lm.scale(cur)
 	for sol.Evaluations < set.StepMax {
-		predicted := lm.step(x, cur, lambda)
-		if predicted <= 0 {
+		predicted, free := lm.step(x, cur, lambda)
+		if !free {
 			sol.Converged = true
 			break
+		}
+		if predicted <= 0 {
+			if lm.smallStep(x) || lambda > 1e30 {
+				sol.Converged = true
+				break
+			}
+			lambda *= grow
+			grow *= 2
+			continue
 		}
 		ok := prob.Evaluate(lm.trial, next) && finite(next.Cost)
 		sol.Evaluations++
@@ -110,6 +124,30 @@ func Solve(prob Problem, start []float64, set Settings) (Solution, error) {
 	return sol, nil
 }
 
+// solveThorough runs the solver with several first dampings, from bold to timid,
+// under both scalings, and returns the end with the least sum of squares. A bold
+// first step may leave for a plateau that a timid one never sees.
+func solveThorough(prob Problem, start []float64, set Settings) (Solution, error) {
+	set.Thorough = false
+	var best Solution
+	found := false
+	evaluations := 0
+	for _, set.Rescale = range []bool{false, true} {
+		for _, set.Damping = range []float64{1e-3, 1, 1e3} {
+			sol, err := Solve(prob, start, set)
+			if err != nil {
+				return sol, err
+			}
+			evaluations += sol.Evaluations
+			if !found || sol.Point.Cost < best.Point.Cost {
+				best, found = sol, true
+			}
+		}
+	}
+	best.Evaluations = evaluations
+	return best, nil
+}
+
 func (s Settings) withDefaults() Settings {
 	if s.StepMax == 0 {
 		s.StepMax = 200
@@ -119,6 +157,9 @@ func (s Settings) withDefaults() Settings {
 	}
 	if s.ParamTol == 0 {
 		s.ParamTol = 1e-9
+	}
+	if s.Damping == 0 {
+		s.Damping = 1e-3
 	}
 	return s
 }
@@ -173,50 +214,78 @@ func (m *marquardt) scale(pt *Point) {
 }
 
 // step fills trial with the damped step from x and returns the fall of the cost
-// that the linearised problem predicts; 0 when no parameter is free to move.
-func (m *marquardt) step(x []float64, pt *Point, lambda float64) float64 {
-	n := m.n
+// that the linearised problem predicts, which need not be positive where bounds
+// cut the step short. It returns false when no parameter is free to move.
+func (m *marquardt) step(x []float64, pt *Point, lambda float64) (predicted float64, ok bool) {
+	m.release(x, pt)
+	if len(m.free) == 0 {
+		return 0, false
+	}
+	copy(m.trial, x)
+	// Each round solves for the free parameters; those that leave their bounds
+	// are set on them, and the rest is solved again.
+	for len(m.free) > 0 && m.solveFree(x, pt, lambda) {
+		kept := m.free[:0]
+		for c, j := range m.free {
+			v := x[j] + m.delta[c]
+			if m.set.Lower != nil && v < m.set.Lower[j] {
+				m.trial[j] = m.set.Lower[j]
+			} else if m.set.Upper != nil && v > m.set.Upper[j] {
+				m.trial[j] = m.set.Upper[j]
+			} else {
+				m.trial[j] = v
+				kept = append(kept, j)
+			}
+		}
+		if len(kept) == len(m.free) {
+			break
+		}
+		m.free = kept
+	}
+	return m.predict(x, pt), true
+}
+
+// release lists the parameters that may move: those at a bound out of which the
+// gradient does not point.
+func (m *marquardt) release(x []float64, pt *Point) {
 	m.free = m.free[:0]
-	for j := 0; j < n; j++ {
+	for j := 0; j < m.n; j++ {
 		g := 0.0
 		for i := 0; i <= j; i++ {
-			g += pt.R[i*n+j] * pt.Qtr[i]
+			g += pt.R[i*m.n+j] * pt.Qtr[i]
 		}
-		atLow := m.set.Lower != nil && x[j] <= m.set.Lower[j] && g > 0
-		atHigh := m.set.Upper != nil && x[j] >= m.set.Upper[j] && g < 0
+		atLow := m.set.Lower != nil && x[j] <= m.set.Lower[j] && g >= 0
+		atHigh := m.set.Upper != nil && x[j] >= m.set.Upper[j] && g <= 0
 		if !atLow && !atHigh {
 			m.free = append(m.free, j)
 		}
 	}
-	k := len(m.free)
-	if k == 0 {
-		return 0
-	}
+}
+
+// solveFree fills delta with the damped step of the free parameters, the others
+// being moved to where trial has them.
+func (m *marquardt) solveFree(x []float64, pt *Point, lambda float64) bool {
+	n, k := m.n, len(m.free)
 	rows := n + k
 	root := math.Sqrt(lambda)
 	aug, rhs := m.aug[:rows*k], m.rhs[:rows]
 	clear(aug)
 	clear(rhs)
 	for c, j := range m.free {
+		m.trial[j] = x[j]
 		for i := 0; i <= j; i++ {
 			aug[i*k+c] = pt.R[i*n+j]
 		}
 		aug[(n+c)*k+c] = root * m.diag[j]
 	}
-	for i := range pt.Qtr {
+	for i := 0; i < n; i++ {
 		rhs[i] = -pt.Qtr[i]
+		for j := i; j < n; j++ {
+			rhs[i] -= pt.R[i*n+j] * (m.trial[j] - x[j])
+		}
 	}
 	triangularise(aug, rows, k, rhs)
-	s := m.delta[:k]
-	if !backSubstitute(aug, k, k, rhs, s) {
-		return 0
-	}
-	copy(m.trial, x)
-	for c, j := range m.free {
-		m.trial[j] = x[j] + s[c]
-	}
-	m.clamp(m.trial)
-	return m.predict(x, pt)
+	return backSubstitute(aug, k, k, rhs, m.delta[:k])
 }
 
 // predict returns ‖Qtr‖² − ‖Qtr + R·(trial − x)‖².
@@ -245,3 +314,48 @@ func (m *marquardt) smallStep(x []float64) bool {
 }
 
 func finite(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }
+
+// Compress fills pt from a full Jacobian (rows×p, row by row) and residuals of a
+// problem that is small enough to be written out. It overwrites both.
+func Compress(jac []float64, p int, residual []float64, pt *Point) {
+	rows := len(residual)
+	pt.Cost = 0
+	for _, r := range residual {
+		pt.Cost += r * r
+	}
+	triangularise(jac, rows, p, residual)
+	clear(pt.R)
+	clear(pt.Qtr)
+	for i := 0; i < p && i < rows; i++ {
+		copy(pt.R[i*p+i:(i+1)*p], jac[i*p+i:(i+1)*p])
+		pt.Qtr[i] = residual[i]
+	}
+}
+
+// Covariance returns (RᵀR)⁻¹, p×p, row by row: the covariance of the parameters
+// in units of the residuals' variance. Rows of parameters that the data do not
+// show are +Inf.
+func (pt *Point) Covariance() []float64 {
+	p := len(pt.Qtr)
+	inv := make([]float64, p*p) // R⁻¹, column by column
+	for j := 0; j < p; j++ {
+		e := make([]float64, p)
+		e[j] = 1
+		x := make([]float64, p)
+		if !backSubstitute(pt.R, p, p, e, x) {
+			for i := range x {
+				x[i] = math.Inf(1)
+			}
+		}
+		copy(inv[j*p:], x)
+	}
+	cov := make([]float64, p*p)
+	for a := 0; a < p; a++ {
+		for b := 0; b < p; b++ {
+			for k := max(a, b); k < p; k++ {
+				cov[a*p+b] += inv[k*p+a] * inv[k*p+b]
+			}
+		}
+	}
+	return cov
+}
