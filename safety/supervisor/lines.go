@@ -1,0 +1,123 @@
+package supervisor
+
+import (
+	"fmt"
+	"strconv"
+	"strings"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+)
+
+// handler is the Core as the framer sees it.
+type handler Core
+
+func (h *handler) Sample(s protocol.Sample) {
+	c := (*Core)(h)
+	c.lastAt, c.seen = c.now, true
+	if s.Slow.Seen && c.boots >= 0 && int(s.Slow.Boots) != c.boots {
+		c.restarted(int(s.Slow.Boots), "its boot counter moved")
+	}
+	was := c.boardWas
+	c.boardWas = s.State
+	c.Do(safety.Sample{At: c.now, Sample: s})
+	c.sink.Sample(c.now, s)
+	if s.State == protocol.Tripped && was != protocol.Tripped {
+		c.askLog()
+	}
+}
+
+func (h *handler) Line(body []byte) {
+	c := (*Core)(h)
+	if done, known := c.ex.Line(c.now, body); known {
+		if done != nil {
+			c.answered(*done)
+		}
+		return
+	}
+	w := strings.Fields(string(body))
+	switch {
+	case len(w) == 3 && w[0] == "cut":
+		c.cut(w)
+	case len(w) >= 3 && w[0] == "ev" && w[1] == "boot":
+		n, err := strconv.Atoi(w[2])
+		if err == nil && c.boots >= 0 {
+			c.restarted(n, strings.Join(w[3:], " "))
+		}
+		c.sink.Event(c.now, string(body))
+	default:
+		c.sink.Event(c.now, string(body))
+	}
+}
+
+func (h *handler) Bad(raw []byte, err error) {}
+
+// cut takes the board's answer to a stop: its output is off.
+func (c *Core) cut(w []string) {
+	n, _ := strconv.Atoi(w[1])
+	us, _ := strconv.ParseUint(w[2], 10, 64)
+	if c.stop != nil {
+		t := *c.stop
+		t.Answer, t.Count, t.OffUS = c.now, n, us
+		c.stop = nil
+		c.sink.Stopped(t)
+	}
+	c.Do(safety.OutputOff{At: c.now})
+}
+
+func (c *Core) restarted(boots int, why string) {
+	c.boots = boots
+	c.void()
+	c.connected = false
+	c.sink.Event(c.now, "the board restarted ("+why+"): running gains and limits are those it starts with")
+	c.Do(safety.BoardRestarted{At: c.now})
+}
+
+// askLog reads the newest stop of the board: its cause and how long after the
+// last heartbeat the output was off.
+func (c *Core) askLog() {
+	c.Ask(c.now, protocol.Request{Verb: protocol.VerbLog, Args: "0"}, func(a protocol.Answer) {
+		l, err := ParseLog(a)
+		if err != nil {
+			return
+		}
+		e := safety.OutputOff{At: c.now}
+		if l.Cause == protocol.CauseBeat {
+			e.SinceBeat = l.SinceBeat()
+		}
+		c.sink.Event(c.now, fmt.Sprintf("the board stopped: %v, at %.4g rad/s", l.Cause, l.Speed))
+		c.Do(e)
+	})
+}
+
+// LogEntry is one stop as the board kept it. Times are board time in µs, the low
+// 32 bits.
+type LogEntry struct {
+	Index, Total          int
+	Cause                 protocol.Cause
+	SeenUS, BeatUS, OffUS uint32
+	Speed                 float64 // rad/s at the stop
+}
+
+// SinceBeat is the time from the last heartbeat accepted to output off.
+func (l LogEntry) SinceBeat() time.Duration {
+	return time.Duration(l.OffUS-l.BeatUS) * time.Microsecond
+}
+
+// ParseLog reads the answer to a log request.
+func ParseLog(a protocol.Answer) (LogEntry, error) {
+	if err := a.AsError(); err != nil {
+		return LogEntry{}, err
+	}
+	var v [7]int64
+	for i := range v {
+		x, ok := protocol.ParseInt([]byte(a.Field(i)))
+		if !ok {
+			return LogEntry{}, fmt.Errorf("stop log %q: %w", a.Joined(), protocol.ErrMalformed)
+		}
+		v[i] = x
+	}
+	return LogEntry{Index: int(v[0]), Total: int(v[1]), Cause: protocol.Cause(v[2]), SeenUS: uint32(v[3]),
+		BeatUS: uint32(v[4]), OffUS: uint32(v[5]), Speed: float64(v[6]) / 1000}, nil
+}
