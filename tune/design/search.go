@@ -71,13 +71,19 @@ func brentAccept(p, q, half, tol, d, e float64) (step, before float64) {
 }
 
 // maximum returns where f, with one maximum between a and b, is largest, to
-// about eight digits of the argument, by golden section. The value there is
-// exact to rounding, because a maximum is flat.
+// about nine digits of the argument. The value there is exact to rounding,
+// because a maximum is flat.
 func maximum(f func(float64) float64, a, b float64) float64 {
+	return maximumWithin(f, a, b, 1e-9*math.Abs(b))
+}
+
+// maximumWithin is maximum with an absolute tolerance of the argument, by
+// golden section.
+func maximumWithin(f func(float64) float64, a, b, tol float64) float64 {
 	const golden = 0.6180339887498949
 	x1, x2 := b-golden*(b-a), a+golden*(b-a)
 	f1, f2 := f(x1), f(x2)
-	for i := 0; i < 60 && b-a > 1e-9*math.Abs(b); i++ {
+	for i := 0; i < 80 && b-a > tol; i++ {
 		if f1 > f2 {
 			b, x2, f2 = x2, x1, f1
 			x1 = b - golden*(b-a)
