@@ -34,10 +34,12 @@ type estimate struct {
 	fixed  bool // dead time held at a bound
 	evals  int
 
-	cov      []float64 // over [linear…, params…], corrected for colour
-	white    []float64 // the same under white residuals
-	residual []float64 // used samples in order
-	inflated float64   // largest ratio of corrected to white standard deviation
+	cov      []float64   // over [linear…, params…], corrected for colour
+	white    []float64   // the same under white residuals
+	residual []float64   // used samples in order
+	dead     *[2]float64 // 95 % interval of the dead time, where its profile was computed
+	set      Settings
+	inflated float64 // largest ratio of corrected to white standard deviation
 }
 
 // names of the numbers in the order of cov.
@@ -214,6 +216,7 @@ func (pb problem) starts(proj *projection, set Settings) [][]float64 {
 // finish computes linear parameters, residuals and covariance at e.params.
 func (e *estimate) finish(set Settings) {
 	p := e.proj
+	e.set = set
 	pt := NewPoint(p.Dim())
 	p.Evaluate(e.params, pt)
 	e.linear = append([]float64(nil), p.linear...)
@@ -300,4 +303,24 @@ func (e *estimate) covariance() {
 	}
 	e.cov = append([]float64(nil), e.white...)
 	e.inflated = 1
+}
+
+// profileSamples is the length of record up to which the interval of the dead
+// time comes from its profile; on longer ones the curvature serves as well.
+const profileSamples = 20000
+
+// sharpen corrects the covariance for coloured residuals and computes the
+// interval of the dead time.
+func (e *estimate) sharpen() {
+	e.correct()
+	if e.proj.samples > profileSamples {
+		return
+	}
+	widening := 1.0
+	if w := e.white[len(e.white)-1]; w > 0 {
+		widening = e.cov[len(e.cov)-1] / w
+	}
+	if ci, ok := e.profileDeadTime(e.set, widening); ok {
+		e.dead = &ci
+	}
 }

@@ -145,6 +145,9 @@ func (e *estimate) intervals(params []Param) map[string][2]float64 {
 			}
 		case "dead_time":
 			ci[0] = math.Max(ci[0], 0)
+			if e.dead != nil {
+				ci = *e.dead
+			}
 		}
 		if finite(ci[0]) && finite(ci[1]) {
 			out[p.Name] = ci

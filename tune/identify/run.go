@@ -132,7 +132,7 @@ const integratingTau = 1.0
 
 // restLevel is the probability below which a record counts as not having started
 // at rest.
-const restLevel = 1e-3
+const restLevel = 1e-6
 
 // estimate fits one structure: on the assumption that the record starts at rest,
 // and without it where the data say that it does not.
@@ -157,6 +157,7 @@ func (r *run) estimate(kind string, seed *estimate) (*estimate, error) {
 	if better := pb.tryCounts(est); better != nil {
 		est = better
 	}
+	est.sharpen()
 	return est, nil
 }
 
