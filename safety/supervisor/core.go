@@ -32,6 +32,8 @@ type Sink interface {
 	// Event is a line of the board that answers no request, or a fact about the
 	// line itself, in words.
 	Event(now time.Duration, text string)
+	// BoardStop is the newest entry of the board's stop log, read after a trip.
+	BoardStop(now time.Duration, l LogEntry)
 	// Stopped is told when the board has answered a stop.
 	Stopped(StopTimes)
 }
@@ -94,6 +96,7 @@ type Core struct {
 	stop      *StopTimes
 	permit    error
 	boardWas  protocol.State
+	logAgain  int
 	rateAt    time.Duration
 	rateN     uint64
 	rate      float64
@@ -139,7 +142,7 @@ func (c *Core) Connected(now time.Duration, id protocol.Identity, why string) {
 		c.lookOnly = why
 	}
 	c.Do(safety.Connected{At: now, Board: id.Board, LookOnly: c.lookOnly != "", Simulated: c.Simulated,
-		BoardTimeout: id.BeatMax, BootCount: id.Boots})
+		BootCount: id.Boots})
 }
 
 // Streaming says whether telemetry was asked for, so that its absence means
@@ -235,14 +238,22 @@ func (c *Core) Tick(now time.Duration) {
 		c.LinkLost(now, "no telemetry for "+strconv.Itoa(int((now-c.lastAt).Milliseconds()))+" ms")
 	}
 	c.Do(safety.Tick{At: now})
+	if n := c.logAgain; n > 0 {
+		c.logAgain = 0
+		c.askLog(n)
+	}
 	c.pump()
 }
 
 // Do hands an event to the limiter and carries out what it calls for.
 func (c *Core) Do(e safety.Event) {
 	c.advance(e.When())
+	was := c.st
 	var effects []safety.Effect
 	c.st, effects = c.env.Step(c.st, e)
+	if begins := c.st.Phase == safety.Stopping || c.st.Phase == safety.Tripped; c.st.Stops != was.Stops || begins && c.st.Phase != was.Phase {
+		c.void() // a stop voids what was asked before it
+	}
 	for _, x := range effects {
 		c.carryOut(x)
 	}
@@ -254,7 +265,6 @@ func (c *Core) carryOut(x safety.Effect) {
 	switch x := x.(type) {
 	case safety.SendStop:
 		c.wire.Stop([]byte{protocol.Cut})
-		c.void()
 	case safety.SendRampStop:
 		c.Ask(c.now, protocol.Request{Verb: protocol.VerbRamp, Args: fmt.Sprintf("%04X", c.token), Tries: 1}, func(protocol.Answer) {})
 	case safety.SendArm:

@@ -24,7 +24,7 @@ func (h *handler) Sample(s protocol.Sample) {
 	c.Do(safety.Sample{At: c.now, Sample: s})
 	c.sink.Sample(c.now, s)
 	if s.State == protocol.Tripped && was != protocol.Tripped {
-		c.askLog()
+		c.askLog(3)
 	}
 }
 
@@ -40,6 +40,11 @@ func (h *handler) Line(body []byte) {
 	switch {
 	case len(w) == 3 && w[0] == "cut":
 		c.cut(w)
+	case len(w) == 4 && w[0] == "ev" && w[1] == "trip":
+		if n, err := strconv.Atoi(w[2]); err == nil && n >= 0 && n < 256 {
+			c.Do(safety.BoardTripped{At: c.now, Cause: protocol.Cause(n)})
+		}
+		c.sink.Event(c.now, string(body))
 	case len(w) >= 3 && w[0] == "ev" && w[1] == "boot":
 		n, err := strconv.Atoi(w[2])
 		if err == nil && c.boots >= 0 {
@@ -63,7 +68,7 @@ func (c *Core) cut(w []string) {
 		c.stop = nil
 		c.sink.Stopped(t)
 	}
-	c.Do(safety.OutputOff{At: c.now})
+	c.Do(safety.OutputOff{At: c.now, Cause: protocol.CauseCut})
 }
 
 func (c *Core) restarted(boots int, why string) {
@@ -76,17 +81,20 @@ func (c *Core) restarted(boots int, why string) {
 
 // askLog reads the newest stop of the board: its cause and how long after the
 // last heartbeat the output was off.
-func (c *Core) askLog() {
+func (c *Core) askLog(tries int) {
 	c.Ask(c.now, protocol.Request{Verb: protocol.VerbLog, Args: "0"}, func(a protocol.Answer) {
 		l, err := ParseLog(a)
+		if a.Err == protocol.ErrVoid && tries > 1 {
+			c.logAgain = tries - 1 // asked again from the next tick
+		}
 		if err != nil {
 			return
 		}
-		e := safety.OutputOff{At: c.now}
+		c.sink.BoardStop(c.now, l)
+		e := safety.OutputOff{At: c.now, Cause: l.Cause}
 		if l.Cause == protocol.CauseBeat {
 			e.SinceBeat = l.SinceBeat()
 		}
-		c.sink.Event(c.now, fmt.Sprintf("the board stopped: %v, at %.4g rad/s", l.Cause, l.Speed))
 		c.Do(e)
 	})
 }

@@ -1,0 +1,276 @@
+// Package excite makes the plans of the experiments: which drive, how long,
+// both ways, and why that size. It decides nothing about permission: every plan
+// still has to be admitted by an envelope. It knows no board and no clock.
+package excite
+
+import (
+	"fmt"
+	"math"
+	"time"
+
+	"gainwright/safety"
+)
+
+// Known is what sizes an experiment. Zero means not known.
+type Known struct {
+	Env          safety.Envelope
+	StartForward float64 // V at which the shaft was seen to start, forward
+	StartReverse float64 // V, a positive number
+	Gain         float64 // rad/s per V
+	Tau          float64 // s, slowest time constant
+	SpeedStep    float64 // rad/s, smallest step of the reported speed
+	Noise        float64 // rad/s, standard deviation of the speed at rest
+	Loop         float64 // s
+}
+
+// builder collects segments and keeps every change of drive inside the slope
+// that the envelope allows.
+type builder struct {
+	mode  safety.Mode
+	slope float64 // largest change a second, V/s or rad/s²
+	at    float64
+	segs  []safety.Segment
+}
+
+func volts(env safety.Envelope) *builder {
+	return &builder{mode: safety.ModeVolts, slope: 0.9 * env.SlewMax}
+}
+
+func speeds(env safety.Envelope) *builder {
+	return &builder{mode: safety.ModeSpeed, slope: 0.8 * env.AccelMax}
+}
+
+// jumpTime is how long the quickest allowed change to value takes, never less
+// than one tick of the console.
+func (b *builder) jumpTime(value float64) time.Duration {
+	return max(10*time.Millisecond, seconds(math.Abs(value-b.at)/b.slope))
+}
+
+// hold goes to value as quickly as allowed and stays there for d in all.
+func (b *builder) hold(value float64, d time.Duration, note string) {
+	b.holdUntil(value, d, safety.Until{}, note)
+}
+
+func (b *builder) holdUntil(value float64, d time.Duration, until safety.Until, note string) {
+	if value != b.at {
+		j := b.jumpTime(value)
+		b.segs = append(b.segs, safety.Segment{Mode: b.mode, From: b.at, To: value, Duration: j, Note: note})
+		d = max(d-j, 10*time.Millisecond)
+		b.at = value
+	}
+	b.segs = append(b.segs, safety.Segment{Mode: b.mode, From: value, To: value, Duration: d, Until: until, Note: note})
+}
+
+// ramp goes from the present value to another in d, ended early by until.
+func (b *builder) ramp(to float64, d time.Duration, until safety.Until, note string) {
+	d = max(d, b.jumpTime(to))
+	b.segs = append(b.segs, safety.Segment{Mode: b.mode, From: b.at, To: to, Duration: d, Until: until, Note: note})
+	b.at = to
+}
+
+func seconds(s float64) time.Duration { return time.Duration(math.Ceil(s*1e6)) * time.Microsecond }
+
+// restMax is how long a shaft may take to come to rest before the next part of a
+// plan begins all the same.
+const restMax = 4 * time.Second
+
+// off takes the drive to zero at once and waits for rest. After a segment that
+// may have ended early the present drive is not known, so the way down starts
+// from zero: less drive is always allowed.
+func (b *builder) off(note string) {
+	b.at = 0
+	b.segs = append(b.segs, safety.Segment{Mode: b.mode, Duration: restMax, Until: safety.Until{Kind: safety.UntilRest}, Note: note})
+}
+
+// motionCounts is how many counts end a ramp as motion seen.
+const motionCounts = 12
+
+// Sign makes the bounded ramp each way that ends with the first counts.
+func Sign(k Known) safety.Plan {
+	b := volts(k.Env)
+	top := 0.98 * float64(k.Env.SignVolts)
+	until := safety.Until{Kind: safety.UntilMotion, Counts: motionCounts}
+	for _, dir := range k.ways() {
+		b.ramp(dir*top, seconds(2.5), until, "ramp "+way(dir))
+		b.off("rest")
+	}
+	return safety.Plan{Name: "sign check", Check: safety.CheckSign, TurnsMax: k.Env.SignTurns, SpeedMax: float64(k.Env.SpeedMax) / 2,
+		Purpose: "positive drive must give positive counts", Segments: b.segs}
+}
+
+func (k Known) ways() []float64 {
+	if k.Env.Reverse {
+		return []float64{1, -1}
+	}
+	return []float64{1}
+}
+
+func way(dir float64) string {
+	if dir < 0 {
+		return "reverse"
+	}
+	return "forward"
+}
+
+// CreepVolts is the drive that should give half the creep ceiling: the friction
+// seen at the start of motion, less what static friction has over sliding, and
+// the rest by the gain.
+func (k Known) CreepVolts() float64 {
+	target := 0.5 * float64(k.Env.CreepMax)
+	return math.Min(0.85*k.StartForward+target/k.Gain, 0.9*float64(k.Env.VoltsMax))
+}
+
+// Creep makes a run at creep speed of length d for the check c.
+func Creep(k Known, c safety.Check, d time.Duration) safety.Plan {
+	b := volts(k.Env)
+	v := k.CreepVolts()
+	// Kicked off a little above the start voltage, so that static friction does
+	// not decide whether it turns.
+	if kick := 1.15 * k.StartForward; kick > v {
+		b.ramp(kick, 300*time.Millisecond, safety.Until{Kind: safety.UntilMotion, Counts: motionCounts}, "start")
+		b.at = v
+	}
+	b.ramp(v, 200*time.Millisecond, safety.Until{}, "to creep")
+	b.hold(v, d, "creep")
+	p := safety.Plan{Check: c, SpeedMax: float64(k.Env.CreepMax), Segments: b.segs}
+	switch c {
+	case safety.CheckStop:
+		p.Name, p.Purpose = "stop check", "press the stop key while the shaft creeps"
+	case safety.CheckSilence:
+		p.Name, p.Purpose = "silence check", "the console goes silent; the board must stop by itself"
+		p.SilenceAt = 900 * time.Millisecond
+	default:
+		p.Name, p.Purpose = "limit check", "the board's speed ceiling is low on purpose; it must trip"
+	}
+	return p
+}
+
+// Breakaway makes n slow ramps each way, each ended by the first motion, with a
+// rest between them.
+func Breakaway(k Known, n int) safety.Plan {
+	b := volts(k.Env)
+	top := float64(k.Env.VoltsMax)
+	until := safety.Until{Kind: safety.UntilMotion, Counts: motionCounts}
+	for i := range n {
+		for _, dir := range k.ways() {
+			start := k.StartForward
+			if dir < 0 {
+				start = k.StartReverse
+			}
+			// Quick to half of what was seen, then slowly past it: the slow part is
+			// what is measured.
+			half := dir * 0.5 * start
+			b.ramp(half, 100*time.Millisecond, until, fmt.Sprintf("%s %d", way(dir), i+1))
+			end := math.Min(1.8*start, 0.95*top)
+			b.ramp(dir*end, seconds((end-0.5*start)/math.Max(0.35*start, 0.05)), until, fmt.Sprintf("%s %d", way(dir), i+1))
+			b.off("rest")
+		}
+	}
+	return safety.Plan{Name: "breakaway", Purpose: "the voltage at which the shaft starts to turn, each way", Segments: b.segs,
+		SpeedMax: float64(k.Env.SpeedMax) / 2}
+}
+
+// Stair is one level of a staircase as planned.
+type Stair struct {
+	Volts    float64
+	From, To time.Duration // of its second half, where it counts as settled
+	Up       bool
+}
+
+// Staircase makes levels of voltage up and down, each way, up to top volts. Each
+// level is held for five time constants, at least 0.4 s, and its second half is
+// what is averaged.
+func Staircase(k Known, levels int, top float64) (safety.Plan, []Stair) {
+	b := volts(k.Env)
+	var stairs []Stair
+	at := time.Duration(0)
+	dwell := seconds(math.Max(0.4, 5*k.Tau))
+	level := func(v float64, up bool) {
+		b.hold(v, dwell, fmt.Sprintf("%.3g V", v))
+		stairs = append(stairs, Stair{Volts: v, From: at + dwell/2, To: at + dwell, Up: up})
+		at += dwell
+	}
+	for _, dir := range k.ways() {
+		start := k.StartForward
+		if dir < 0 {
+			start = k.StartReverse
+		}
+		low := math.Min(1.25*start, 0.6*top)
+		for i := range levels {
+			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), true)
+		}
+		for i := levels - 2; i >= 0; i-- {
+			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), false)
+		}
+		if dir > 0 && len(k.ways()) > 1 {
+			rest := seconds(math.Max(0.3, 4*k.Tau))
+			b.hold(0, rest, "rest")
+			at += rest
+		}
+	}
+	b.off("rest")
+	return safety.Plan{Name: "staircase", Purpose: "steady speed against voltage, up and down", Segments: b.segs}, stairs
+}
+
+// Step makes n steps up and down about bias, each held for five time constants.
+// amplitude is the size of a step to either side.
+func Step(k Known, bias, amplitude float64, n int) safety.Plan {
+	b := volts(k.Env)
+	hold := seconds(math.Max(0.15, 5*k.Tau))
+	b.ramp(bias, 300*time.Millisecond, safety.Until{}, "to the middle")
+	b.hold(bias, seconds(math.Max(0.4, 6*k.Tau)), "settle")
+	for range n {
+		b.hold(bias+amplitude, hold, "up")
+		b.hold(bias-amplitude, hold, "down")
+	}
+	b.hold(bias, hold, "middle")
+	b.off("rest")
+	return safety.Plan{Name: "step test", Purpose: "time constant and dead time about one operating point", Segments: b.segs}
+}
+
+// prbsTaps are feedback taps of maximum-length shift registers (a standard
+// table of primitive polynomials over GF(2)).
+var prbsTaps = map[int][2]int{5: {5, 3}, 6: {6, 5}, 7: {7, 6}, 9: {9, 5}, 10: {10, 7}}
+
+// PRBSBits returns one period of a maximum-length sequence of ±1 from a register
+// of n bits (5, 6, 7, 9 or 10) that starts at seed.
+func PRBSBits(n int, seed uint32) []float64 {
+	taps := prbsTaps[n]
+	mask := uint32(1)<<n - 1
+	if seed &= mask; seed == 0 {
+		seed = 1
+	}
+	out := make([]float64, 1<<n-1)
+	for i := range out {
+		bit := (seed>>(taps[0]-1) ^ seed>>(taps[1]-1)) & 1
+		seed = (seed<<1 | bit) & mask
+		out[i] = 2*float64(bit) - 1
+	}
+	return out
+}
+
+// PRBS makes a pseudo-random binary sequence of amplitude about bias: clock is
+// the length of one bit, bits the length of the register.
+func PRBS(k Known, bias, amplitude float64, clock time.Duration, bits int, seed uint32, longest time.Duration) safety.Plan {
+	b := volts(k.Env)
+	b.ramp(bias, 300*time.Millisecond, safety.Until{}, "to the middle")
+	b.hold(bias, seconds(math.Max(0.4, 6*k.Tau)), "settle")
+	var total time.Duration
+	for _, s := range PRBSBits(bits, seed) {
+		if total += clock; total > longest {
+			break
+		}
+		b.hold(bias+s*amplitude, clock, "prbs")
+	}
+	b.off("rest")
+	return safety.Plan{Name: "prbs", Purpose: "a record that the model has not seen", Segments: b.segs}
+}
+
+// Setpoint is a closed-loop profile: levels in rad/s, each held for hold.
+func Setpoint(k Known, name, purpose string, levels []float64, hold time.Duration) safety.Plan {
+	b := speeds(k.Env)
+	for _, v := range levels {
+		b.hold(v, hold, fmt.Sprintf("%.0f rpm", v*60/(2*math.Pi)))
+	}
+	return safety.Plan{Name: name, Purpose: purpose, Segments: b.segs}
+}
