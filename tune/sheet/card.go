@@ -1,0 +1,291 @@
+package sheet
+
+import (
+	"fmt"
+	"strings"
+
+	"gainwright/tune/sheet/plain"
+)
+
+// The card's size: what a page holds in the type of a line printer.
+const (
+	cardColumns = 80
+	cardLines   = 60
+)
+
+// CardData is what the card shows. nil and "" print as blanks for a pen.
+type CardData struct {
+	Record    string // short name of the sheet
+	Rig       string
+	BoardID   string
+	Firmware  string
+	Program   string
+	Operator  string
+	Start     string // RFC 3339
+	Outcome   string
+	Reason    string
+	Simulated bool
+
+	Nameplate   NameplateRecord
+	LoadState   string
+	AmbientDegC *float64
+	BusV        *float64
+
+	Found, Left     CardColumn
+	OvershootTarget string
+	SettlingTarget  string
+	NoAsFoundTraces bool // declined
+	Model           CardModel
+	Limits          []Quantity // held by the board
+	Checks          []CardCheck
+	Remarks         []string
+	ReRead          *bool // after a power-cycle, equal
+	Hash            string
+	PhaseMarginDeg  *float64
+	GainMarginDB    *float64
+	SensitivityPeak *float64
+}
+
+// CardColumn is the state of the loop, found or left.
+type CardColumn struct {
+	Kp, Ki, Kd *float64 // V/(rad/s), V/rad, V·s²/rad
+	Form       string
+	PeriodS    *float64
+	Step       *StepResult
+}
+
+// CardModel is the model's one line; the halves of the 95 % intervals are in
+// the value's unit.
+type CardModel struct {
+	Gain, GainPM     *float64 // rad/s per V
+	Tau, TauPM       *float64 // s
+	DeadTime         *float64 // s
+	BreakawayForward *float64 // V
+	BreakawayReverse *float64 // V
+	Verdict          string
+}
+
+// CardCheck is one thing seen working this session, or not.
+type CardCheck struct {
+	Name string
+	Seen *bool
+	Note string
+}
+
+// Card returns the one page that stays at the machine: at most 80 columns and
+// 60 lines, black on white, with room to sign.
+func Card(d CardData) string {
+	var c card
+	c.head(d)
+	c.rule()
+	c.columns(d)
+	c.rule()
+	c.findings(d)
+	c.rule()
+	c.foot(d)
+	return strings.Join(c.lines, "\n") + "\n"
+}
+
+type card struct{ lines []string }
+
+// add puts a line on the card; none is longer than the page is wide.
+func (c *card) add(format string, args ...any) {
+	line := strings.TrimRight(fmt.Sprintf(format, args...), " ")
+	if plain.Width(line) > cardColumns {
+		line = plain.Visible(line, cardColumns)
+	}
+	c.lines = append(c.lines, line)
+}
+
+func (c *card) rule() { c.add("%s", strings.Repeat("-", cardColumns)) }
+
+func (c *card) head(d CardData) {
+	c.add("SPEED LOOP CARD   %s", text(outcomeWords(d.Outcome, d.Reason), 60))
+	if d.Simulated {
+		c.add("SIMULATED RIG: nothing on this card was measured on a motor")
+	}
+	c.add("rig    %s board %s record %s", pad(text(d.Rig, 24), 24), pad(text(d.BoardID, 20), 20), text(d.Record, 16))
+	c.add("file   %s firmware %s", pad(text(d.Nameplate.RigFile, 24), 24), text(d.Firmware, 34))
+	c.add("date   %s by %s witnessed %s", pad(text(strings.Replace(shorten(d.Start, 16), "T", " ", 1), 24), 24), pad(text(d.Operator, 20), 23), strings.Repeat("_", 11))
+	n := d.Nameplate
+	c.add("motor  %s serial %s rated %s", pad(text(n.MotorType, 24), 24), pad(text(n.MotorSerial, 19), 19), with(n.NominalV, "V"))
+	c.add("       encoder %s lines = %s counts a turn   gear %s", whole(n.EncoderLines), whole(n.CountsPerTurn), text(n.Gear, 12))
+	c.add("load   %s bus %s  ambient %s", pad(text(d.LoadState, 40), 40), with(d.BusV, "V"), with(d.AmbientDegC, "C"))
+}
+
+func (c *card) columns(d CardData) {
+	row := func(name, found, left, unit string) {
+		c.add("%s%s%s%s", pad(name, 24), pad(found, 20), pad(left, 20), unit)
+	}
+	row("", "AS FOUND", "AS LEFT", "unit")
+	f, l := d.Found, d.Left
+	row("Kp", digits(f.Kp), digits(l.Kp), "V per rad/s")
+	row("Ki", digits(f.Ki), digits(l.Ki), "V per rad")
+	if f.Kd != nil || l.Kd != nil {
+		row("Kd", digits(f.Kd), digits(l.Kd), "V s per rad/s")
+	}
+	row("form / period", formPeriod(f), formPeriod(l), "")
+	fs, ls := stepOf(f), stepOf(l)
+	row("step", with(rpm(fs.StepRadS), "rpm"), with(rpm(ls.StepRadS), "rpm"), "")
+	row("  overshoot", with(fs.OvershootPercent, "%"), with(ls.OvershootPercent, "%"), "target "+text(d.OvershootTarget, 8))
+	row("  settling", with(fs.SettlingTimeS, "s"), with(ls.SettlingTimeS, "s"), "target "+text(d.SettlingTarget, 8))
+	row("  settled within +-", with(rpm(fs.SettlingBandRadS), "rpm"), with(rpm(ls.SettlingBandRadS), "rpm"), "")
+	row("  steady ripple +-", with(rpm(fs.RippleRadS), "rpm"), with(rpm(ls.RippleRadS), "rpm"), "")
+	if d.NoAsFoundTraces {
+		c.add("no traces were taken as found")
+	}
+}
+
+func stepOf(c CardColumn) StepResult {
+	if c.Step == nil {
+		return StepResult{}
+	}
+	return *c.Step
+}
+
+func formPeriod(c CardColumn) string {
+	return text(c.Form, 9) + " / " + with(scaled(c.PeriodS, 1e3), "ms")
+}
+
+func (c *card) findings(d CardData) {
+	m := d.Model
+	c.add("model    K %s  tau %s  delay %s  (%s)",
+		plusMinus(m.Gain, m.GainPM, "rad/s per V"), plusMinus(scaled(m.Tau, 1e3), scaled(m.TauPM, 1e3), "ms"),
+		with(scaled(m.DeadTime, 1e3), "ms"), text(m.Verdict, 9))
+	c.add("         breakaway forward %s  reverse %s", with(m.BreakawayForward, "V"), with(m.BreakawayReverse, "V"))
+	c.add("margins  phase %s  gain %s  Ms %s", with(d.PhaseMarginDeg, "deg"), with(d.GainMarginDB, "dB"), digits(d.SensitivityPeak))
+	limits := make([]string, 0, len(d.Limits))
+	for _, q := range d.Limits {
+		limits = append(limits, fmt.Sprintf("%s %s", plain.Visible(q.Name, 20), shown(q)))
+	}
+	c.list("limits held by the board", limits, 3)
+	var seen []string
+	for _, k := range d.Checks {
+		words := box(k.Seen) + " " + plain.Visible(k.Name, 20)
+		if k.Seen != nil && !*k.Seen {
+			words += " FAILED"
+		}
+		if k.Note != "" {
+			words += " (" + plain.Visible(k.Note, 30) + ")"
+		}
+		seen = append(seen, words)
+	}
+	c.list("seen working this session", seen, 4)
+	if len(d.Nameplate.Absent) > 0 {
+		c.list("not on this rig", d.Nameplate.Absent, 1)
+	}
+}
+
+// list writes words under a title over at most so many lines. What does not fit
+// is counted, not dropped in silence.
+func (c *card) list(title string, words []string, lines int) {
+	if len(words) == 0 {
+		c.add("%s: %s", title, strings.Repeat("_", 40))
+		return
+	}
+	line, used := title+":", 0
+	for i, w := range words {
+		w = plain.Visible(w, 50)
+		more := fmt.Sprintf("  and %d more", len(words)-i)
+		room := cardColumns
+		if used == lines-1 && i < len(words)-1 {
+			room -= len(more)
+		}
+		if plain.Width(line)+2+plain.Width(w) <= room {
+			line += "  " + w
+			continue
+		}
+		if used == lines-1 {
+			c.add("%s%s", line, more)
+			return
+		}
+		c.add("%s", line)
+		line, used = "        "+w, used+1
+	}
+	c.add("%s", line)
+}
+
+func (c *card) foot(d CardData) {
+	if len(d.Remarks) == 0 {
+		c.add("remarks %s", strings.Repeat("_", cardColumns-8))
+		c.add("        %s", strings.Repeat("_", cardColumns-8))
+	}
+	for i, r := range d.Remarks {
+		if i == 6 {
+			c.add("        and %d more in the record", len(d.Remarks)-i)
+			break
+		}
+		c.add("%s %s", pad([]string{"remarks", ""}[min(i, 1)], 7), plain.Visible(strings.TrimSpace(r), cardColumns-8))
+	}
+	c.add("stored and re-read equal after a power-cycle %s   next check %s", box(d.ReRead), text(d.Nameplate.NextCheck, 12))
+	c.add("hash   %s   a check of the record must show these digits", text(shorten(d.Hash, 16), 16))
+	c.add("the bus reading is an indication: prove it with a meter before hands go in")
+	c.add("")
+	c.add("done by   %s date %s", strings.Repeat("_", 40), strings.Repeat("_", 14))
+	c.add("")
+	c.add("customer  %s date %s", strings.Repeat("_", 40), strings.Repeat("_", 14))
+}
+
+func shorten(s string, n int) string {
+	if len(s) > n {
+		return s[:n]
+	}
+	return s
+}
+
+func whole(x *float64) string {
+	if x == nil {
+		return blank
+	}
+	return fmt.Sprintf("%.0f", *x)
+}
+
+func plusMinus(x, pm *float64, unit string) string {
+	if x == nil {
+		return with(nil, unit)
+	}
+	if pm == nil {
+		return with(x, unit)
+	}
+	return digits(x) + "+-" + significant(*pm, 2) + " " + unit
+}
+
+// shown is a quantity for people: speeds in rpm, the rest as it is.
+func shown(q Quantity) string {
+	if q.Unit == "rad/s" {
+		return with(rpm(q.Value), "rpm")
+	}
+	return plusMinus(q.Value, q.PlusMinus, plain.Visible(q.Unit, 16))
+}
+
+func outcomeWords(outcome, reason string) string {
+	words := map[string]string{
+		"accepted": "GAINS LEFT AND VERIFIED", "no-adjustment": "NO ADJUSTMENT MADE", "refused": "REFUSED",
+		"tripped": "TRIPPED, NOT FINISHED", "failed": "FAILED", "": "",
+	}
+	w, ok := words[outcome]
+	if !ok {
+		w = outcome
+	}
+	if reason != "" && w != "" {
+		w += ": " + reason
+	}
+	return w
+}
+
+// Sticker returns the line for the motor, at most 40 columns.
+func Sticker(d CardData) string {
+	verb := map[string]string{"accepted": "tuned", "no-adjustment": "checked"}[d.Outcome]
+	if verb == "" {
+		verb = "not tuned"
+	}
+	if d.Simulated {
+		verb = "simulated"
+	}
+	date := plain.Visible(shorten(d.Start, 10), 10)
+	if date == "" {
+		date = "____-__-__"
+	}
+	rest := fmt.Sprintf(" %s %s rec %s", verb, date, plain.Visible(shorten(d.Record, 8), 8))
+	return text(d.Rig, 40-plain.Width(rest)) + rest
+}
