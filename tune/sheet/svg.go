@@ -76,7 +76,12 @@ func (p plot) svg() string {
 	}
 	for _, m := range p.vertical {
 		if x := a.x(m.at); inside(x, padLeft, plotWidth-padRight) {
-			fmt.Fprintf(&b, `<path d="M%.1f %d V%.1f" class="m"/><text x="%.1f" y="%d" class="s">%s</text>`+"\n", x, padTop, a.bottom(), x+3, padTop+10, shownText(m.label))
+			// Words to the right of the line, or to the left where they would leave the picture.
+			class, at := "s", x+3
+			if x > plotWidth*2/3 {
+				class, at = "e", x-3
+			}
+			fmt.Fprintf(&b, `<path d="M%.1f %d V%.1f" class="m"/><text x="%.1f" y="%d" class="%s">%s</text>`+"\n", x, padTop, a.bottom(), at, padTop+10, class, shownText(m.label))
 		}
 	}
 	for _, m := range p.horizontal {
@@ -207,22 +212,22 @@ func (a axes) xTicks() []float64 {
 	return out
 }
 
-// ticks returns about n round values, steps of 1, 2 or 5 times a power of ten,
+// ticks returns at most n+1 round values, steps of 1, 2 or 5 times a power of ten,
 // inside [low, high].
 func ticks(low, high float64, n int) []float64 {
 	raw := (high - low) / float64(n)
 	if !finite(raw) || raw <= 0 {
 		return nil
 	}
-	step := math.Pow(10, math.Floor(math.Log10(raw)))
-	for _, m := range []float64{5, 2} {
-		if raw/step >= m {
-			step *= m
-			break
+	decade := math.Pow(10, math.Floor(math.Log10(raw)))
+	step := 10 * decade
+	for _, m := range []float64{5, 2, 1} {
+		if m*decade >= raw {
+			step = m * decade
 		}
 	}
 	var out []float64
-	for k := math.Ceil(low / step); k*step <= high && len(out) <= 4*n; k++ {
+	for k := math.Ceil(low / step); k*step <= high && len(out) <= n; k++ {
 		out = append(out, k*step)
 	}
 	return out
