@@ -32,6 +32,9 @@ type Sink interface {
 	// Event is a line of the board that answers no request, or a fact about the
 	// line itself, in words.
 	Event(now time.Duration, text string)
+	// Restarted is a board that has started anew, by its own word or by its boot
+	// counter.
+	Restarted(now time.Duration, boots int, why string)
 	// BoardStop is the newest entry of the board's stop log, read after a trip.
 	BoardStop(now time.Duration, l LogEntry)
 	// Stopped is told when the board has answered a stop.
@@ -53,6 +56,8 @@ type StopTimes struct {
 type Link struct {
 	Connected bool
 	LookOnly  string // why the board may only be looked at; "" if it may be driven
+	Lost      bool   // it was up and is gone
+	LostWhy   string
 	Age       time.Duration
 	Seen      bool // a sample has come since the connection
 	Stats     protocol.Stats
@@ -86,6 +91,7 @@ type Core struct {
 	lookOnly  string
 	streaming bool // telemetry was asked for
 	lost      bool
+	lostWhy   string
 	lastAt    time.Duration // arrival of the newest sample
 	seen      bool
 	boots     int // boot count of the identity, -1: none yet
@@ -119,7 +125,7 @@ func (c *Core) Identity() protocol.Identity { return c.id }
 
 // Link returns how the line stands.
 func (c *Core) Link() Link {
-	return Link{Connected: c.connected, LookOnly: c.lookOnly, Age: c.now - c.lastAt, Seen: c.seen, Stats: c.framer.Stats, Rate: c.rate}
+	return Link{Connected: c.connected, LookOnly: c.lookOnly, Lost: c.lost, LostWhy: c.lostWhy, Age: c.now - c.lastAt, Seen: c.seen, Stats: c.framer.Stats, Rate: c.rate}
 }
 
 // SetEnvelope puts another envelope in force. The limiter disarms.
@@ -165,7 +171,7 @@ func (c *Core) LinkLost(now time.Duration, why string) {
 	if c.lost {
 		return
 	}
-	c.lost, c.connected, c.streaming = true, false, false
+	c.lost, c.connected, c.streaming, c.lostWhy = true, false, false, why
 	c.framer.Reset()
 	c.void()
 	c.sink.Event(now, "LINK LOST: "+why)

@@ -75,8 +75,8 @@ func (c *Core) restarted(boots int, why string) {
 	c.boots = boots
 	c.void()
 	c.connected = false
-	c.sink.Event(c.now, "the board restarted ("+why+"): running gains and limits are those it starts with")
 	c.Do(safety.BoardRestarted{At: c.now})
+	c.sink.Restarted(c.now, boots, why)
 }
 
 // askLog reads the newest stop of the board: its cause and how long after the
