@@ -6,7 +6,9 @@ import (
 	"os"
 	"path/filepath"
 	"slices"
+	"strconv"
 	"strings"
+	"sync"
 	"syscall"
 	"testing"
 )
@@ -15,6 +17,7 @@ import (
 // meets the end is cut short, as on a full disk or when the power goes.
 type failingDisk struct {
 	folder
+	mu      sync.Mutex
 	left    int
 	created []string
 	synced  map[string]bool
@@ -34,6 +37,8 @@ type failingFile struct {
 }
 
 func (d *failingDisk) create(name string) (diskFile, error) {
+	d.mu.Lock()
+	defer d.mu.Unlock()
 	if d.left <= 0 {
 		return nil, syscall.ENOSPC
 	}
@@ -44,6 +49,8 @@ func (d *failingDisk) create(name string) (diskFile, error) {
 }
 
 func (f *failingFile) Write(p []byte) (int, error) {
+	f.d.mu.Lock()
+	defer f.d.mu.Unlock()
 	if f.name == indexName && len(f.d.created) > 1 {
 		if words := strings.Fields(string(p)); len(words) == 7 && !f.d.synced[words[3]] {
 			f.d.late = append(f.d.late, words[3])
@@ -61,6 +68,8 @@ func (f *failingFile) Write(p []byte) (int, error) {
 }
 
 func (f *failingFile) Sync() error {
+	f.d.mu.Lock()
+	defer f.d.mu.Unlock()
 	f.d.synced[f.name] = true
 	return f.diskFile.Sync()
 }
@@ -69,21 +78,21 @@ func newFailingDisk(dir string, left int) *failingDisk {
 	return &failingDisk{folder: folder(dir), left: left, synced: map[string]bool{}}
 }
 
-// A small job is killed at every byte that it writes: its writes are put on the
-// disk again one byte at a time. The sheet must open each time, say that it is
-// not whole, and give back every entry whose line was complete.
-func TestKillAtEveryByte(t *testing.T) {
-	root := t.TempDir()
-	whole := newFailingDisk(filepath.Join(root, "whole"), 1<<20)
-	if _, err := writeSmall(string(whole.folder), testHeader, withDisk(whole)); err != nil {
-		t.Fatal(err)
-	}
-	dir := filepath.Join(root, "killed")
+// replay puts the writes of a job on the disk again and calls judge each time a
+// file was made and each time another byte was written, with the number of bytes
+// so far and whether at says that this is a point to look at.
+func replay(t *testing.T, writes []write, dir string, at func(written int) bool, judge func(written int)) {
+	t.Helper()
 	if err := os.Mkdir(dir, 0o755); err != nil {
 		t.Fatal(err)
 	}
-	files, written, entries := map[string]*os.File{}, 0, 0
-	for i, w := range whole.writes {
+	files, written := map[string]*os.File{}, 0
+	put := func(f *os.File, b []byte) {
+		if _, err := f.Write(b); err != nil {
+			t.Fatal(err)
+		}
+	}
+	for _, w := range writes {
 		f := files[w.name]
 		if f == nil {
 			var err error
@@ -92,20 +101,38 @@ func TestKillAtEveryByte(t *testing.T) {
 			}
 			defer f.Close()
 			files[w.name] = f
-			entries = judgeKilled(t, dir, written, entries)
+			if at(written) {
+				judge(written)
+			}
 		}
+		from := 0
 		for k := range w.bytes {
-			if _, err := f.Write(w.bytes[k : k+1]); err != nil {
-				t.Fatal(err)
+			if written++; at(written) {
+				put(f, w.bytes[from:k+1])
+				from = k + 1
+				judge(written)
 			}
-			if written++; i == len(whole.writes)-1 && k == len(w.bytes)-1 {
-				break // the last byte makes it whole
-			}
-			entries = judgeKilled(t, dir, written, entries)
 		}
+		put(f, w.bytes[from:])
 	}
-	if written < 2000 || entries != 8 {
-		t.Errorf("%d bytes and, before the last, %d entries; want over 2000 and 8", written, entries)
+}
+
+// A small job is killed at every byte that it writes. The sheet must open each
+// time, say that it is not whole, and give back every entry whose line was
+// complete.
+func TestKillAtEveryByte(t *testing.T) {
+	const plenty = 1 << 20
+	root := t.TempDir()
+	whole := newFailingDisk(filepath.Join(root, "whole"), plenty)
+	if _, err := writeSmall(string(whole.folder), testHeader, withDisk(whole)); err != nil {
+		t.Fatal(err)
+	}
+	dir, total, entries := filepath.Join(root, "killed"), plenty-whole.left, 0
+	replay(t, whole.writes, dir, func(written int) bool { return written < total }, func(written int) {
+		entries = judgeKilled(t, dir, written, entries)
+	})
+	if total < 2000 || entries != 8 {
+		t.Errorf("%d bytes and, before the last, %d entries; want over 2000 and 8", total, entries)
 	}
 	if problems, sum := Check(dir); len(problems) > 0 || sum.Entries != 9 {
 		t.Errorf("with its last byte the sheet has %d entries and problems %v", sum.Entries, problems)
@@ -171,8 +198,8 @@ func TestTruncateAtEveryByte(t *testing.T) {
 	for _, f := range found {
 		path := filepath.Join(dir, f.Name())
 		content, _ := os.ReadFile(path)
-		for n := range len(content) {
-			if err := os.WriteFile(path, content[:n], 0o644); err != nil {
+		for n := len(content) - 1; n >= 0; n-- {
+			if err := os.Truncate(path, int64(n)); err != nil {
 				t.Fatal(err)
 			}
 			_, problems := Open(dir)
@@ -189,44 +216,60 @@ func TestTruncateAtEveryByte(t *testing.T) {
 	}
 }
 
-// 200 random points of a larger job; what is kept must still be in order.
+// A larger job is killed at 200 random points; what is there must be in order
+// to its last bit, and the rest named.
 func TestKillAtRandomPoints(t *testing.T) {
-	root := t.TempDir()
-	job := func(dir string, d disk) error {
-		s, err := Create(dir, testHeader, testClock(), withDisk(d))
-		if err != nil {
-			return err
-		}
-		for range 12 {
-			_, _ = s.Trace("step", testTrace())
-			_, _ = s.Remark("next")
-		}
-		return s.Close("accepted", "")
-	}
 	const plenty = 1 << 20
+	root := t.TempDir()
 	whole := newFailingDisk(filepath.Join(root, "whole"), plenty)
-	if err := job(string(whole.folder), whole); err != nil {
+	s, err := Create(string(whole.folder), testHeader, testClock(), withDisk(whole))
+	if err != nil {
 		t.Fatal(err)
 	}
-	rng := rand.New(rand.NewPCG(7, 200))
-	for range 200 {
-		left := rng.IntN(plenty - whole.left)
-		dir := filepath.Join(root, "cut")
-		if err := job(dir, newFailingDisk(dir, left)); !errors.Is(err, syscall.ENOSPC) {
-			t.Fatalf("after %d bytes: %v", left, err)
-		}
-		problems, sum := Check(dir)
-		if sum.Closed || len(problems) == 0 {
-			t.Fatalf("after %d bytes the sheet passes for whole", left)
-		}
+	for range 20 {
+		_, _ = s.Trace("step", testTrace())
+		_, _ = s.Remark("next")
+	}
+	if err := s.Close("accepted", ""); err != nil {
+		t.Fatal(err)
+	}
+	rng, points := rand.New(rand.NewPCG(7, 200)), map[int]bool{}
+	for len(points) < 200 {
+		points[rng.IntN(plenty-whole.left)] = true
+	}
+	dir, entries, most := filepath.Join(root, "killed"), 0, 0
+	replay(t, whole.writes, dir, func(written int) bool { return points[written] }, func(written int) {
+		entries = judgeKilled(t, dir, written, entries)
+		most = max(most, entries)
+		problems, _ := Check(dir)
 		for _, p := range problems {
-			if p.Kind != Unfinished && p.Kind != Added && p.Kind != Cut && sum.Entries > 0 {
-				t.Fatalf("after %d bytes: %v", left, p)
+			if entries > 0 && p.Kind != Unfinished && p.Kind != Added && p.Kind != Cut {
+				t.Fatalf("after %d bytes: %v", written, p)
 			}
 		}
-		if err := os.RemoveAll(dir); err != nil {
-			t.Fatal(err)
+	})
+	if most < 35 {
+		t.Errorf("at most %d of 42 entries seen: the points lie badly", most)
+	}
+}
+
+// The same with a disk that is full at 20 random points: the job learns of it,
+// and what the folder holds opens.
+func TestFullDiskAtRandomPoints(t *testing.T) {
+	const plenty = 1 << 20
+	root, rng := t.TempDir(), rand.New(rand.NewPCG(7, 20))
+	whole := newFailingDisk(filepath.Join(root, "whole"), plenty)
+	if _, err := writeSmall(string(whole.folder), testHeader, withDisk(whole)); err != nil {
+		t.Fatal(err)
+	}
+	for i := range 20 {
+		dir, left := filepath.Join(root, strconv.Itoa(i)), rng.IntN(plenty-whole.left)
+		_, err := writeSmall(dir, testHeader, withDisk(newFailingDisk(dir, left)))
+		var full *DiskError
+		if !errors.As(err, &full) || !errors.Is(err, syscall.ENOSPC) || full.File == "" {
+			t.Errorf("full after %d bytes: %v", left, err)
 		}
+		judgeKilled(t, dir, left, 0)
 	}
 }
 
