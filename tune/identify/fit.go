@@ -39,6 +39,8 @@ type estimate struct {
 	residual []float64   // used samples in order
 	dead     *[2]float64 // 95 % interval of the dead time, where its profile was computed
 	set      Settings
+	findings []Finding
+	inputP   float64 // see Fit.InputP
 	inflated float64 // largest ratio of corrected to white standard deviation
 }
 
@@ -216,7 +218,7 @@ func (pb problem) starts(proj *projection, set Settings) [][]float64 {
 // finish computes linear parameters, residuals and covariance at e.params.
 func (e *estimate) finish(set Settings) {
 	p := e.proj
-	e.set = set
+	e.set, e.inputP = set, math.NaN()
 	pt := NewPoint(p.Dim())
 	p.Evaluate(e.params, pt)
 	e.linear = append([]float64(nil), p.linear...)

@@ -42,12 +42,17 @@ func (r *run) judged(e *estimate) Fit {
 	f := e.report()
 	f.Masked = r.masked
 	r.holdout(e, &f)
-	v := &verdicts{worst: Believed}
-	judgeResponse(&f, v)
-	judgeWidths(&f, v)
-	judgePrediction(&f, v)
-	f.Verdict, f.Reasons, f.Helps = v.worst, v.reasons, v.helps
+	f.judge()
 	return f
+}
+
+// judge makes the verdict from the numbers of the fit.
+func (f *Fit) judge() {
+	v := &verdicts{worst: Believed}
+	judgeResponse(f, v)
+	judgeWidths(f, v)
+	judgePrediction(f, v)
+	f.Verdict, f.Reasons, f.Helps = v.worst, v.reasons, v.helps
 }
 
 // holdout fills the hold-out measures, if anything was held out.
@@ -154,19 +159,4 @@ func judgeLevel(nrmse float64, where string, v *verdicts) {
 	case nrmse > nrmseBelieved:
 		v.add(Care, "a second kind of excitation (PRBS after steps)", "simulated speed is rough %s: NRMSE %.2f is over %.3f", where, nrmse, nrmseBelieved)
 	}
-}
-
-// compare sets the structures against each other: a second time constant has to
-// be earned, and of models with the same verdict the one with the least AICc
-// comes out first.
-func (r *run) compare(fits []Fit, _ []*estimate) {
-	_ = fits
-}
-
-// Finding is what one test of the residuals found.
-type Finding struct {
-	Test   string  `json:"test"`
-	Effect float64 `json:"effect"` // relative size
-	SD     float64 `json:"sd"`
-	Text   string  `json:"text"`
 }

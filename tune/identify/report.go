@@ -28,7 +28,7 @@ func (e *estimate) report() Fit {
 	}
 	f := Fit{
 		Params: params, Cov: cov, Inflation: e.inflated, Used: e.proj.samples, DeadTimeBound: e.fixed,
-		HoldoutNRMSE: math.NaN(), HoldoutRMSE: math.NaN(), Offset: math.NaN(), InputP: math.NaN(),
+		HoldoutNRMSE: math.NaN(), HoldoutRMSE: math.NaN(), Offset: math.NaN(), InputP: e.inputP, Findings: e.findings,
 	}
 	f.Model = e.linearModel()
 	f.Model.CI95 = e.intervals(params)

@@ -97,7 +97,6 @@ func (r *run) do() (Result, error) {
 		return Result{}, err
 	}
 	var seed *estimate
-	var ests []*estimate
 	if kinds[0] == model.KindSecondOrder || kinds[0] == model.KindMotor {
 		first, err := r.estimate(model.KindFirstOrder, nil)
 		if err != nil {
@@ -117,11 +116,10 @@ func (r *run) do() (Result, error) {
 				kinds = append(kinds, model.KindIntegrating)
 			}
 		}
-		ests = append(ests, est)
 		res.Models = append(res.Models, r.judged(est))
 		res.Used = max(res.Used, est.proj.samples)
 	}
-	r.compare(res.Models, ests)
+	compare(res.Models)
 	res.Chosen = choose(res.Models)
 	return res, nil
 }
@@ -158,6 +156,7 @@ func (r *run) estimate(kind string, seed *estimate) (*estimate, error) {
 		est = better
 	}
 	est.sharpen()
+	est.findings = est.examine()
 	return est, nil
 }
 
@@ -208,19 +207,3 @@ func (pb problem) follow(start []float64) (*estimate, error) {
 
 // tryCounts returns nil for now where the counts were not recorded.
 func (pb problem) tryCounts(*estimate) *estimate { return nil }
-
-// choose returns the index of the best verdict, the first of those with the same.
-func choose(fits []Fit) *int {
-	best := -1
-	for _, want := range []Verdict{Believed, Care} {
-		for i, f := range fits {
-			if f.Verdict == want && best < 0 {
-				best = i
-			}
-		}
-	}
-	if best < 0 {
-		return nil
-	}
-	return &best
-}
