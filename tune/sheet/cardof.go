@@ -24,7 +24,7 @@ func CardOf(r *Reader) CardData {
 	if c, err := r.Closing(); err == nil {
 		d.Outcome, d.Reason = c.Outcome, c.Reason
 	}
-	_ = r.LastJSON(KindRig, "nameplate", &d.Nameplate)
+	_ = r.LastJSON(KindRig, NameNameplate, &d.Nameplate)
 	var found, left Snapshot
 	if l, ok := r.First(KindAsFound); ok {
 		_ = r.JSON(l, &found)
@@ -70,7 +70,7 @@ func (d *CardData) results(r *Reader) {
 		}
 	}
 	var m MotorRecord
-	if r.LastJSON(KindFit, "motor", &m) == nil {
+	if r.LastJSON(KindFit, NameMotor, &m) == nil {
 		d.Model.BreakawayForward, d.Model.BreakawayReverse = m.BreakawayForwardV, m.BreakawayReverseV
 	}
 	var v VerifyRecord

@@ -151,7 +151,7 @@ func (q quantity) allowed() string {
 	case q.low == -q.high:
 		return fmt.Sprintf("±%.0f %%", q.high*100)
 	default:
-		return fmt.Sprintf("%.0f … +%.0f %%", q.low*100, q.high*100)
+		return fmt.Sprintf("%.0f…+%.0f %%", q.low*100, q.high*100)
 	}
 }
 
@@ -178,7 +178,7 @@ func Retune(rows []Row, new MotorRecord) []string {
 // Motor returns what a sheet knows of its motor, from its newest record of it.
 func (r *Reader) Motor() (MotorRecord, error) {
 	var m MotorRecord
-	err := r.LastJSON(KindFit, "motor", &m)
+	err := r.LastJSON(KindFit, NameMotor, &m)
 	if errors.Is(err, ErrNoEntry) {
 		return m, fmt.Errorf("%w: this job did not come as far as a fit of its motor, so there is nothing to compare; take a sheet of a finished job", err)
 	}

@@ -79,7 +79,7 @@ func (j job) write(t testing.TB, dir string) string {
 	if _, err := s.Text(KindRig, j.header.Rig, "name = \"example\"\n"); err != nil {
 		t.Fatal(err)
 	}
-	entry(KindRig, "nameplate", NameplateRecord{
+	entry(KindRig, NameNameplate, NameplateRecord{
 		RigFile: j.header.Rig + ".toml", MotorSerial: "88412", NominalV: ptr(24.0), EncoderLines: ptr(500.0),
 		CountsPerTurn: ptr(2000.0), Gear: "1:1", NextCheck: "2026-11", Absent: []string{"brake"},
 	})
@@ -99,8 +99,8 @@ func (j job) write(t testing.TB, dir string) string {
 	entry(KindCheck, "interlock", CheckRecord{Check: "guard", Layer: "hardware", Passed: ptr(false)})
 	stepFile := traced("step", stepTrace("step", 128))
 	entry(KindRun, "step", RunRecord{Name: "step", Purpose: "gain and time constant", TraceFile: stepFile, Reason: "plan done", Complete: true, Seed: 7, Versions: map[string]string{"gainwright": "test"}})
-	entry(KindFit, "breakaway", BreakawayRecord{ForwardV: []float64{1.3, 1.4, 1.5}, ReverseV: []float64{1.5, 1.6, 1.8}})
-	entry(KindFit, "staircase", StaircaseRecord{Levels: []Level{{2, 12, true}, {4, 55, true}, {6, 98, true}, {8, 141, true}, {6, 99, false}, {4, 56, false}}})
+	entry(KindFit, NameBreakaway, BreakawayRecord{ForwardV: []float64{1.3, 1.4, 1.5}, ReverseV: []float64{1.5, 1.6, 1.8}})
+	entry(KindFit, NameStaircase, StaircaseRecord{Levels: []Level{{2, 12, true}, {4, 55, true}, {6, 98, true}, {8, 141, true}, {6, 99, false}, {4, 56, false}}})
 	ft, fy := speeds(128, 0.088)
 	fitFile := entry(KindFit, "first-order", FitRecord{
 		Kind: "first-order", Model: []byte(`{"kind":"first-order","num":[21.4],"den":[0.088,1],"dead_time":0.0026}`),
@@ -112,7 +112,7 @@ func (j job) write(t testing.TB, dir string) string {
 		InputFiles: []string{stepFile}, Used: 398, Masked: map[string]int{"saturated": 2}, NRMSE: ptr(0.02), HoldoutNRMSE: ptr(0.05),
 		Verdict: "believed", Curve: &FitCurve{TimeS: ft, MeasuredRadS: fy, FittedRadS: fy},
 	})
-	entry(KindFit, "motor", j.motor)
+	entry(KindFit, NameMotor, j.motor)
 	bode := &Bode{CrossoverRadS: ptr(19.0), PhaseMarginDeg: ptr(87.0), PhaseCrossRadS: ptr(420.0), GainMarginDB: ptr(27.0)}
 	for w := 0.1; w < 1000; w *= 1.1 {
 		bode.FrequencyRadS = append(bode.FrequencyRadS, w)

@@ -7,6 +7,14 @@ import "encoding/json"
 // has a fixed JSON form for (models, gains, margins, plans) is kept in that form
 // untouched, so that it can be computed with again. Empty lists may be null.
 
+// Names of the entries that are looked for by name, beside their kinds.
+const (
+	NameNameplate = "nameplate"    // KindRig, NameplateRecord
+	NameStaircase = "staircase"    // KindFit, StaircaseRecord
+	NameBreakaway = "breakaway"    // KindFit, BreakawayRecord
+	NameMotor     = "motor-values" // KindFit, MotorRecord
+)
+
 // Quantity is one number with what a reader may ask of it.
 type Quantity struct {
 	Name      string   `json:"name"`
@@ -17,7 +25,7 @@ type Quantity struct {
 }
 
 // NameplateRecord is what the rig file and the labels say of the motor, as far
-// as the card shows it. Kind rig, name nameplate.
+// as the card shows it. Kind rig, NameNameplate.
 type NameplateRecord struct {
 	RigFile       string   `json:"rig_file"`
 	MotorType     string   `json:"motor_type"`
@@ -129,7 +137,7 @@ type Level struct {
 	Rising    bool    `json:"rising"` // reached from below
 }
 
-// StaircaseRecord is what a staircase showed. Kind fit, name staircase.
+// StaircaseRecord is what a staircase showed. Kind fit, NameStaircase.
 type StaircaseRecord struct {
 	Levels    []Level    `json:"levels"`
 	Params    []Quantity `json:"params"`
@@ -137,7 +145,7 @@ type StaircaseRecord struct {
 }
 
 // BreakawayRecord is what the breakaway ramps showed, in the order they were
-// made; both directions positive. Kind fit, name breakaway.
+// made; both directions positive. Kind fit, NameBreakaway.
 type BreakawayRecord struct {
 	ForwardV []float64  `json:"forward_V"`
 	ReverseV []float64  `json:"reverse_V"`
@@ -145,7 +153,7 @@ type BreakawayRecord struct {
 }
 
 // MotorRecord is what is known of the motor at the end of the job: the row of
-// values that a later job is compared with. Kind fit, name motor.
+// values that a later job is compared with. Kind fit, NameMotor.
 type MotorRecord struct {
 	ROhm              *float64 `json:"R_ohm"`
 	RDegC             *float64 `json:"R_degC"` // winding temperature at which R was taken

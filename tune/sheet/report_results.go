@@ -11,11 +11,11 @@ func (p *reportPage) fits() {
 	for _, l := range p.r.Find(KindFit, "") {
 		var err error
 		switch l.Name() {
-		case "staircase":
+		case NameStaircase:
 			err = show(p, l, p.staircase)
-		case "breakaway":
+		case NameBreakaway:
 			err = show(p, l, p.breakaway)
-		case "motor":
+		case NameMotor:
 			err = show(p, l, p.motor)
 		default:
 			err = show(p, l, p.fit)

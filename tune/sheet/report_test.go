@@ -166,10 +166,10 @@ func TestHostileTextAppearsNowhereRaw(t *testing.T) {
 	} {
 		step(s.Entry(e.kind, evil, e.v))
 	}
-	step(s.Entry(KindRig, "nameplate", filled[NameplateRecord]()))
-	step(s.Entry(KindFit, "motor", filled[MotorRecord]()))
-	step(s.Entry(KindFit, "staircase", filled[StaircaseRecord]()))
-	step(s.Entry(KindFit, "breakaway", filled[BreakawayRecord]()))
+	step(s.Entry(KindRig, NameNameplate, filled[NameplateRecord]()))
+	step(s.Entry(KindFit, NameMotor, filled[MotorRecord]()))
+	step(s.Entry(KindFit, NameStaircase, filled[StaircaseRecord]()))
+	step(s.Entry(KindFit, NameBreakaway, filled[BreakawayRecord]()))
 	if err := s.Close(evil, evil); err != nil {
 		t.Fatal(err)
 	}
