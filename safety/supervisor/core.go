@@ -135,6 +135,10 @@ func (c *Core) SetEnvelope(now time.Duration, env safety.Envelope) {
 	c.Do(safety.RigChanged{At: now})
 }
 
+// Look gives the limiter a model to see a speed ceiling coming with. It can only
+// make a stop come earlier, so it does not disarm.
+func (c *Core) Look(l safety.LookAhead) { c.env.Look = l }
+
 // Connected takes the identity into use: scales, and whether the board may be
 // driven. Why is a reason of the caller's to keep it look-only, or "".
 func (c *Core) Connected(now time.Duration, id protocol.Identity, why string) {

@@ -1,0 +1,355 @@
+package bench
+
+import (
+	"errors"
+	"fmt"
+	"strconv"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/tune/job"
+	"gainwright/tune/sheet"
+	"gainwright/tune/trace"
+)
+
+// engine is where a session lives: the same goroutine in virtual time, one of
+// its own on a real line.
+type engine interface {
+	// do runs f where the session lives and waits for it.
+	do(f func(s *session))
+	// until waits until cond holds, looked at where the session lives after
+	// everything that happens. limit 0 waits for ever. It returns job.ErrOver
+	// when the session ends and errLimit when the limit has passed.
+	until(limit time.Duration, cond func(s *session) bool) error
+	wall() time.Time
+	// cycle has the board's power switched; it returns false where a person has to.
+	cycle() bool
+}
+
+var errLimit = errors.New("bench: nothing came of it in time")
+
+var errBoardTripped = errors.New("the board holds a trip: it has to be reset first")
+
+// hands lends a job its hands over an engine.
+type hands struct {
+	engine
+	sheet *sheet.Sheet
+	first uint16
+}
+
+var _ job.Hands = (*hands)(nil)
+
+func (h *hands) Now() (t time.Duration) {
+	h.do(func(s *session) { t = s.now })
+	return t
+}
+
+func (h *hands) Wall() time.Time { return h.wall() }
+
+func (h *hands) Ask(q job.Question) (job.Answer, error) {
+	var id int
+	h.do(func(s *session) {
+		s.askID++
+		q.ID, id = s.askID, s.askID
+		s.asking, s.answer = &q, nil
+	})
+	err := h.until(0, func(s *session) bool { return s.answer != nil })
+	var a job.Answer
+	h.do(func(s *session) {
+		if s.answer != nil {
+			a = *s.answer
+		}
+		s.asking, s.answer = nil, nil
+	})
+	if err == nil && a.ID != id {
+		err = job.ErrDeclined
+	}
+	return a, err
+}
+
+func (h *hands) Request(verb, args string) (protocol.Answer, error) {
+	var got *protocol.Answer
+	h.do(func(s *session) {
+		s.core.Ask(s.now, protocol.Request{Verb: verb, Args: args}, func(a protocol.Answer) { got = &a })
+	})
+	if err := h.until(10*time.Second, func(*session) bool { return got != nil }); err != nil {
+		return protocol.Answer{}, err
+	}
+	return *got, got.AsError()
+}
+
+func (h *hands) Connected(id protocol.Identity, look string) {
+	h.do(func(s *session) { s.core.Connected(s.now, id, look) })
+}
+
+func (h *hands) Stream(on bool) { h.do(func(s *session) { s.core.Streaming(s.now, on) }) }
+
+func (h *hands) Rig(env safety.Envelope) { h.do(func(s *session) { s.core.SetEnvelope(s.now, env) }) }
+
+func (h *hands) Look(l safety.LookAhead) { h.do(func(s *session) { s.core.Look(l) }) }
+
+func (h *hands) LimitsHeld(crc uint16) { h.do(func(s *session) { s.core.LimitsHeld(s.now, crc) }) }
+
+func (h *hands) Check(c safety.Check, passed bool) {
+	h.do(func(s *session) {
+		if passed {
+			s.core.Do(safety.CheckPassed{At: s.now, Check: c})
+		} else {
+			s.core.Do(safety.CheckFailed{At: s.now, Check: c})
+		}
+	})
+}
+
+// Permit asks again for up to five seconds, where only the shaft's coming to rest
+// or the clearing of the board's own trip is in the way.
+func (h *hands) Permit(e safety.Event) error {
+	var err error
+	wait := h.until(5*time.Second, func(s *session) bool {
+		if st := s.core.State(); st.Phase == safety.Disarmed && st.Heard && st.Last.State == protocol.Tripped {
+			err = errBoardTripped
+			return false
+		}
+		err = s.core.Permit(stamp(e, s.now))
+		return err == nil
+	})
+	if wait != nil && !errors.Is(wait, errLimit) {
+		return wait
+	}
+	return err
+}
+
+func stamp(e safety.Event, now time.Duration) safety.Event {
+	switch e := e.(type) {
+	case safety.GainWrite:
+		e.At = now
+		return e
+	case safety.LimitWrite:
+		e.At = now
+		return e
+	}
+	panic(fmt.Sprintf("bench: %T asks for no permission", e))
+}
+
+func (h *hands) Wrote(ok bool) {
+	h.do(func(s *session) { s.core.Do(safety.WriteDone{At: s.now, OK: ok}) })
+}
+
+func (h *hands) StopKey(q job.Question) (job.StopSeen, error) {
+	before := 0
+	h.do(func(s *session) {
+		s.askID++
+		q.ID = s.askID
+		s.asking, s.answer = &q, nil
+		before = s.stops
+	})
+	err := h.until(0, func(s *session) bool {
+		return s.answer != nil || s.stops > before && s.lastStop.Source == safety.ByStopKey
+	})
+	var seen job.StopSeen
+	h.do(func(s *session) {
+		s.asking = nil
+		if s.answer != nil {
+			err = errors.Join(err, job.ErrDeclined)
+		} else if s.lastStop != nil {
+			seen = stopSeen(s)
+		}
+		s.answer = nil
+	})
+	return seen, err
+}
+
+func stopSeen(s *session) job.StopSeen {
+	t := s.lastStop
+	wire := max(t.Wire, t.Asked)
+	return job.StopSeen{KeyToWire: wire - t.Asked, WireToBoard: t.Answer - wire, Cuts: t.Count}
+}
+
+func (h *hands) ClearTrip(q job.Question) error {
+	h.do(func(s *session) { s.askID++; q.ID = s.askID; s.asking, s.answer = &q, nil })
+	// Both the console's trip and the board's have to be gone.
+	err := h.until(0, func(s *session) bool {
+		st := s.core.State()
+		return st.Phase == safety.Disarmed && st.Heard && st.Last.State == protocol.Off && !st.Last.TripHeld
+	})
+	h.do(func(s *session) { s.asking, s.answer = nil, nil })
+	return err
+}
+
+func (h *hands) Watch(d time.Duration) ([]protocol.Sample, error) {
+	w := &watch{}
+	var end time.Duration
+	h.do(func(s *session) { s.watching = w; end = s.now + d })
+	err := h.until(0, func(s *session) bool { return s.now >= end })
+	h.do(func(s *session) { s.watching = nil })
+	return w.samples, err
+}
+
+func (h *hands) PowerCycle(q job.Question) error {
+	before := 0
+	h.do(func(s *session) {
+		before = s.boots
+		s.askID++
+		q.ID = s.askID
+		s.asking, s.answer = &q, nil
+	})
+	h.cycle()
+	err := h.until(0, func(s *session) bool { return s.answer != nil || s.boots > before })
+	h.do(func(s *session) {
+		if s.answer != nil && s.answer.ID < 0 {
+			err = errors.Join(err, job.ErrDeclined)
+		}
+		s.asking, s.answer = nil, nil
+	})
+	if err != nil {
+		return err
+	}
+	_, err = h.Watch(300 * time.Millisecond)
+	return err
+}
+
+// Run shows a plan, waits for its arm, its start and its end, and fetches what
+// the board captured.
+func (h *hands) Run(spec job.Run) (job.Result, error) {
+	r := &running{spec: spec}
+	var err error
+	h.do(func(s *session) {
+		if r.admitted, err = s.core.Envelope().Admit(spec.Plan); err == nil {
+			s.show(r)
+		}
+	})
+	if err != nil {
+		return job.Result{}, err
+	}
+	if spec.Capture != nil {
+		args := fmt.Sprintf("arm %d %d %d", spec.Capture.Decimation, spec.Capture.Before, spec.Capture.Count)
+		if _, err := h.Request(protocol.VerbCap, args); err != nil {
+			h.put(r)
+			return job.Result{}, err
+		}
+	}
+	// The run is over for the job once the limiter is at rest again or tripped; a
+	// silence check's verdict comes a moment later.
+	err = h.until(0, func(s *session) bool {
+		if r.declined {
+			return true
+		}
+		return r.ended != nil && !s.core.State().Phase.ArmHeld() && s.core.State().Phase != safety.Stopping
+	})
+	if err == nil && !r.declined && spec.Plan.Check == safety.CheckSilence && r.ended.Reason == safety.EndSilence {
+		err = h.wait(3*time.Second, func(*session) bool { return r.judged != nil })
+	}
+	if err == nil && !r.declined && r.ended.Reason == safety.EndTripped && r.ended.Cause.Code == safety.CodeBoardTripped {
+		err = h.wait(2*time.Second, func(*session) bool { return r.board != nil })
+	}
+	h.put(r)
+	if err != nil {
+		return job.Result{}, err
+	}
+	if r.declined && r.refused != nil {
+		return job.Result{}, &job.RefusedError{Number: int(r.refused.Code), What: "arm refused", Cause: r.refused.Words, Remedy: r.refused.Do}
+	}
+	if r.declined {
+		return job.Result{}, job.ErrDeclined
+	}
+	res := h.result(r)
+	if spec.Capture != nil && r.ended.Reason == safety.EndDone {
+		if res.Capture, err = h.upload(spec); err != nil {
+			h.Say("capture not read: %v; telemetry is used", err)
+		}
+	}
+	return res, nil
+}
+
+// wait is until with a limit that is no error.
+func (h *hands) wait(limit time.Duration, cond func(*session) bool) error {
+	err := h.until(limit, cond)
+	if errors.Is(err, errLimit) {
+		return nil
+	}
+	return err
+}
+
+func (h *hands) put(r *running) {
+	h.do(func(s *session) {
+		if s.run == r {
+			s.run = nil
+		}
+	})
+}
+
+func (h *hands) result(r *running) job.Result {
+	e := r.ended
+	res := job.Result{Name: e.Name, Reason: e.Reason, Cause: e.Cause, Started: e.Started, Begun: r.begun, Lasted: e.Lasted,
+		Samples: r.samples, Judged: r.judged, Marks: r.marks}
+	if r.stop != nil {
+		wire := max(r.stop.Wire, r.stop.Asked)
+		res.Stop = &job.StopSeen{KeyToWire: wire - r.stop.Asked, WireToBoard: r.stop.Answer - wire, Cuts: r.stop.Count}
+	}
+	if r.board != nil {
+		res.BoardStop = &job.BoardStop{Cause: r.board.Cause, SpeedRadS: r.board.Speed, SinceBeat: r.board.SinceBeat()}
+	}
+	return res
+}
+
+func (h *hands) Keep(kind, name string, v any) error {
+	if h.sheet == nil {
+		return nil
+	}
+	_, err := h.sheet.Entry(sheet.Kind(kind), name, v)
+	h.record(err)
+	return err
+}
+
+func (h *hands) KeepText(kind, name, text string) error {
+	if h.sheet == nil {
+		return nil
+	}
+	_, err := h.sheet.Text(sheet.Kind(kind), name, text)
+	h.record(err)
+	return err
+}
+
+func (h *hands) KeepTrace(name string, tr *trace.Trace, meta ...string) (string, error) {
+	if h.sheet == nil {
+		return "", nil
+	}
+	l, err := h.sheet.Trace(name, tr, meta...)
+	h.record(err)
+	return l.File, err
+}
+
+func (h *hands) Card() (card, sticker string, err error) {
+	if h.sheet == nil {
+		return "", "", errors.New("there is no record to make a card from: give a folder for it")
+	}
+	r, problems := sheet.Open(h.sheet.Dir())
+	if r == nil {
+		return "", "", fmt.Errorf("the record cannot be read: %v", problems)
+	}
+	d := sheet.CardOf(r)
+	return sheet.Card(d), sheet.Sticker(d), nil
+}
+
+// record tells the limiter when the record cannot be written: the job stops, the
+// motor's limits do not depend on it.
+func (h *hands) record(err error) {
+	if err != nil {
+		h.do(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
+	}
+}
+
+func (h *hands) Show(f func(*job.View)) { h.do(func(s *session) { f(&s.view) }) }
+
+func (h *hands) Say(format string, args ...any) {
+	text := fmt.Sprintf(format, args...)
+	h.do(func(s *session) { s.say(text) })
+}
+
+func atoi(s string) int {
+	n, err := strconv.Atoi(s)
+	if err != nil {
+		return -1
+	}
+	return n
+}

@@ -1,0 +1,308 @@
+package job
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/tune/excite"
+	"gainwright/tune/sheet"
+)
+
+// doCount has the shaft turned once by hand and compares what was counted, then
+// sees the stop key work at rest: nothing moves before both.
+func (j *Job) doCount() (result, error) {
+	before, err := j.h.Watch(500 * time.Millisecond)
+	if err != nil {
+		return "", err
+	}
+	if err := j.needCounts(before); err != nil {
+		return "", err
+	}
+	j.Noise = speedNoise(before)
+	shaft, want := "motor shaft", j.ID.CountsPerTurn
+	if j.ID.GearRatio > 1 {
+		shaft = "output shaft"
+		if j.ID.EncoderSide == "motor" {
+			want *= j.ID.GearRatio
+		}
+	}
+	if _, err := j.h.Ask(Question{Kind: AskHandTurn, Text: "Turn the " + shaft + " one turn by hand, the positive way, then enter",
+		Detail: []string{fmt.Sprintf("One turn should count %.0f. The drive is off and disarmed.", want),
+			"Positive is the way the arrow on the machine points."}}); err != nil {
+		return "", err
+	}
+	after, err := j.h.Watch(300 * time.Millisecond)
+	if err != nil {
+		return "", err
+	}
+	if len(after) == 0 {
+		return "", refuse(711, "count check", "no telemetry", "look at the link")
+	}
+	got := float64(after[len(after)-1].Counts - before[len(before)-1].Counts)
+	finding, err := judgeCount(got, want)
+	j.check("count", "board", err == nil, finding, sheet.Quantity{Name: "counts for one turn", Value: &got, Unit: "1"})
+	j.h.Check(safety.CheckCount, err == nil)
+	if err != nil {
+		return "", err
+	}
+	seen, err := j.h.StopKey(Question{Kind: AskStopKey, Text: "Press the stop key now: space",
+		Detail: []string{"Nothing moves. The time from the key to the wire to the board's answer is kept."}})
+	ok := err == nil && seen.Cuts > 0
+	j.check("stop key", "board", ok, fmt.Sprintf("key to wire %v, wire to the board's answer %v", seen.KeyToWire, seen.WireToBoard), stopQuantities(seen)...)
+	if err != nil {
+		return "", err
+	}
+	j.h.Check(safety.CheckStopKey, ok)
+	return result(fmt.Sprintf("%.0f counts for one turn, %.0f expected; stop key seen", got, want)), nil
+}
+
+func (j *Job) needCounts(s []protocol.Sample) error {
+	if len(s) == 0 {
+		return refuse(711, "no telemetry", "the board sends no samples", "look at the link; ask for the identity again")
+	}
+	if s[len(s)-1].Has&protocol.HasCounts == 0 {
+		return refuse(711, "no counts", "the board's telemetry carries no encoder counts", "the firmware must send U lines (SPEC P5.2)")
+	}
+	return nil
+}
+
+// countSlack is how far one turn by hand may be off: a hand does not stop on the
+// degree, and the mistakes looked for are factors of two (our choice).
+const countSlack = 0.08
+
+// judgeCount compares what one turn counted with what it should.
+func judgeCount(got, want float64) (string, error) {
+	ratio := math.Abs(got) / want
+	switch {
+	case math.Abs(ratio-1) <= countSlack && got < 0:
+		return "", refuse(712, "count check", fmt.Sprintf("one turn counted %.0f: the right number, the wrong way", got),
+			"if you turned it the positive way, swap the encoder channels (power off) or the sign in the rig file; else turn it again")
+	case math.Abs(ratio-1) <= countSlack:
+		return fmt.Sprintf("%.0f counts for one turn by hand, %.0f expected", got, want), nil
+	case got == 0:
+		return "", refuse(710, "count check", "one turn counted nothing", "look at the encoder's plug and supply")
+	}
+	for _, f := range []float64{0.25, 0.5, 2, 4} {
+		if math.Abs(ratio/f-1) <= countSlack {
+			return "", refuse(710, "count check", fmt.Sprintf("one turn counted %.0f, expected were %.0f: the encoder is likely read x%g of what the rig file says", got, want, f),
+				"compare lines and edges: x1, x2 or x4 of the lines on the label; correct the counts per turn where they are wrong")
+		}
+	}
+	return "", refuse(710, "count check", fmt.Sprintf("one turn counted %.0f, expected were %.0f", got, want),
+		"turn exactly one turn and try again; if it stays, correct counts per turn or gear ratio")
+}
+
+func speedNoise(s []protocol.Sample) float64 {
+	v := make([]float64, len(s))
+	for i := range s {
+		v[i] = float64(s[i].Speed)
+	}
+	return spread(v)
+}
+
+// doSign ramps each way until the first counts.
+func (j *Job) doSign() (result, error) {
+	j.firstGuess()
+	r, err := j.run(StepSign, excite.Sign(j.sizing()), nil)
+	if err != nil {
+		return "", err
+	}
+	fwd, vf, okF := firstMotion(r.Samples, 1, 4)
+	rev, vr, okR := firstMotion(r.Samples, -1, 4)
+	two := j.Env.Reverse
+	wrong := okF && fwd < 0 || okR && rev > 0 || r.Cause.Code == safety.CodeWrongWay
+	var bad error
+	switch {
+	case wrong:
+		bad = refuse(713, "sign check", "drive + gives speed −: motor leads or encoder channels are swapped; closed loop is refused",
+			"power off, then swap the one that makes + turn as the arrow on the machine: the motor leads if + drive turns against the arrow, the encoder channels if it turns with it")
+	case r.Reason != safety.EndDone:
+		bad = j.notDone(r)
+	case !okF || two && !okR:
+		bad = refuse(714, "sign check", fmt.Sprintf("no counts up to %.3g V", float64(j.Env.SignVolts)),
+			"is drive power on and the shaft free? If it turned and nothing counted, look at the encoder; else raise sign_volts_V in the rig file with a reason")
+	}
+	finding := fmt.Sprintf("starts at %.3g V forward, %.3g V reverse, counts follow the drive", vf, vr)
+	if bad != nil {
+		finding = bad.Error()
+	}
+	j.check("sign", "board", bad == nil, finding)
+	j.h.Check(safety.CheckSign, bad == nil)
+	if bad != nil {
+		return "", bad
+	}
+	j.StartForward, j.StartReverse = vf, vr
+	if !two {
+		j.StartReverse = vf
+	}
+	return result(finding), nil
+}
+
+// firstGuess takes gain and time constant from the nameplate until something
+// better is known.
+func (j *Job) firstGuess() {
+	if j.Gain == 0 {
+		j.Gain = j.nameplateGain()
+	}
+}
+
+// firstMotion finds where drive of one direction first moved the shaft by at
+// least n counts from its rest: the signed motion that followed and the volts at
+// the first of those counts.
+func firstMotion(s []Sample, dir float64, n int64) (moved float64, volts float64, ok bool) {
+	base, armed := int64(0), false
+	firstV, begun := 0.0, false
+	for i := range s {
+		v := float64(s[i].Volts) * dir
+		if v <= 0 {
+			if armed && ok {
+				return moved, volts, true
+			}
+			base, armed, begun = s[i].Counts, true, false
+			continue
+		}
+		if !armed {
+			base, armed = s[i].Counts, true
+		}
+		d := s[i].Counts - base
+		if d != 0 && !begun {
+			begun, firstV = true, v
+		}
+		if abs64(d) >= n && !ok {
+			volts, ok = firstV, true
+		}
+		if ok {
+			moved = float64(d)
+		}
+	}
+	return moved, volts, ok
+}
+
+func abs64(v int64) int64 {
+	if v < 0 {
+		return -v
+	}
+	return v
+}
+
+// doStop has the stop key pressed at creep speed.
+func (j *Job) doStop() (result, error) {
+	r, err := j.run(StepStop, excite.Creep(j.sizing(), safety.CheckStop, 20*time.Second), nil)
+	if err != nil {
+		return "", err
+	}
+	ok := r.Reason == safety.EndStopped && r.Cause.Code == safety.CodeAsked && r.Stop != nil && r.Started
+	var bad error
+	finding := ""
+	switch {
+	case ok:
+		finding = fmt.Sprintf("at creep: key to wire %v, wire to the board's answer %v", r.Stop.KeyToWire.Round(time.Microsecond), r.Stop.WireToBoard.Round(time.Microsecond))
+	case r.Reason == safety.EndDone:
+		bad = refuse(715, "stop check", "the run ended by itself, no stop key was pressed", "do it again and press space while the shaft creeps")
+	case r.Reason == safety.EndStopped:
+		bad = refuse(715, "stop check", "stopped by "+r.Cause.Words, "do it again and press space while the shaft creeps")
+	default:
+		bad = j.notDone(r)
+	}
+	if bad != nil {
+		finding = bad.Error()
+	}
+	var q []sheet.Quantity
+	if r.Stop != nil {
+		q = stopQuantities(*r.Stop)
+	}
+	j.check("stop at creep", "board", ok, finding, q...)
+	j.h.Check(safety.CheckStop, ok)
+	if bad != nil {
+		return "", bad
+	}
+	j.roughModel(r)
+	return result(finding), nil
+}
+
+func stopQuantities(s StopSeen) []sheet.Quantity {
+	a, b := s.KeyToWire.Seconds()*1000, s.WireToBoard.Seconds()*1000
+	return []sheet.Quantity{{Name: "key to wire", Value: &a, Unit: "ms"}, {Name: "wire to the board's answer", Value: &b, Unit: "ms"}}
+}
+
+// doSilence goes silent at creep speed; the board must stop by itself.
+func (j *Job) doSilence() (result, error) {
+	plan := excite.Creep(j.sizing(), safety.CheckSilence, 4*time.Second)
+	r, err := j.run(StepSilence, plan, nil)
+	if err != nil {
+		return "", err
+	}
+	if r.Judged == nil || !r.Judged.Passed {
+		cause := "the run ended before it was seen"
+		if r.Judged != nil {
+			cause = r.Judged.Words
+		} else if r.Cause.Words != "" {
+			cause = r.Cause.Words
+		}
+		j.check("silence", "board", false, cause)
+		return "", refuse(716, "silence check", cause, "a board whose timeout has not been seen working is look-only: mend its firmware, or its heartbeat limit")
+	}
+	j.Silence = *r.Judged
+	ms := r.Judged.SinceBeat.Seconds() * 1000
+	finding := fmt.Sprintf("output off %.0f ms after the last heartbeat, on the board's clock; declared %.0f ms", ms, j.Env.BoardTimeout.Seconds()*1000)
+	j.check("silence", "board", true, finding, sheet.Quantity{Name: "last heartbeat to output off", Value: &ms, Unit: "ms"})
+	return result(finding), nil
+}
+
+// doLimits sets the board's speed ceiling low, provokes the trip and sets it
+// back.
+func (j *Job) doLimits() (result, error) {
+	k := j.sizing()
+	low := 0.3 * float64(j.Env.CreepMax)
+	values := j.limitValues()
+	values[protocol.LimSpeed] = low
+	if err := j.holdLimits(values, safety.LimitWrite{At: j.h.Now()}); err != nil {
+		return "", err
+	}
+	plan := excite.Creep(k, safety.CheckLimit, 3*time.Second)
+	plan.SpeedMax = float64(j.Env.CreepMax)
+	r, err := j.run(StepLimits, plan, nil)
+	if err == nil && (r.Reason == safety.EndTripped || r.Reason == safety.EndStopped) {
+		if e := j.h.ClearTrip(Question{Kind: AskEnter, Text: "The board has tripped. Acknowledge it, then reset it",
+			Detail: []string{"Acknowledging says that it was seen and changes nothing. The reset clears it. Neither starts anything."}}); e != nil {
+			err = e
+		}
+	}
+	// Set back whatever came of it.
+	if back := j.holdLimits(j.limitValues(), safety.LimitWrite{At: j.h.Now()}); back != nil {
+		return "", errors.Join(err, back)
+	}
+	if err != nil {
+		return "", err
+	}
+	l := r.BoardStop
+	if l == nil || l.Cause != protocol.CauseSpeed {
+		finding := "the board did not trip at its speed ceiling: " + r.Cause.Words
+		j.check("limit", "board", false, finding)
+		return "", refuse(717, "limit check", finding, "a board that does not keep its limits is look-only")
+	}
+	finding := fmt.Sprintf("ceiling set to %s, tripped at %s, set back and read back", rpm(low), rpm(l.SpeedRadS))
+	j.h.Check(safety.CheckLimit, true)
+	j.check("limit", "board", true, finding, sheet.Quantity{Name: "trip speed", Value: &l.SpeedRadS, Unit: "rad/s"})
+	return result(finding), nil
+}
+
+// check keeps a check in record and view.
+func (j *Job) check(name, layer string, passed bool, finding string, q ...sheet.Quantity) {
+	rec := sheet.CheckRecord{Check: name, Layer: layer, Passed: &passed, Measured: q, Finding: finding}
+	j.Checks = append(j.Checks, rec)
+	_ = j.h.Keep("check", name, rec)
+	var views []CheckView
+	for _, c := range j.Checks {
+		state := "failed"
+		if *c.Passed {
+			state = "seen working"
+		}
+		views = append(views, CheckView{Name: c.Check, State: state, Detail: c.Finding})
+	}
+	j.h.Show(func(v *View) { v.Checks = views })
+}

@@ -1,0 +1,127 @@
+package job
+
+import (
+	"errors"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/tune/trace"
+)
+
+// Errors that end a step without ending the job.
+var (
+	// ErrDeclined says that the person put the plan or the question aside.
+	ErrDeclined = errors.New("put aside")
+	// ErrOver says that the session ends.
+	ErrOver = errors.New("the session ends")
+)
+
+// Hands does for a job what it cannot do itself. All methods block until the
+// thing is done; they are called from one goroutine.
+type Hands interface {
+	// Now is console time since the start of the session.
+	Now() time.Duration
+	// Wall is the time of day, for the record only.
+	Wall() time.Time
+
+	// Ask puts a question to the person and waits for the answer.
+	Ask(Question) (Answer, error)
+	// Request asks the board; a refusal is a *protocol.RefusedError.
+	Request(verb, args string) (protocol.Answer, error)
+	// Connected takes an identity into use. Look is a reason to keep the board
+	// look-only, or "".
+	Connected(id protocol.Identity, look string)
+	// Stream says that telemetry was asked for.
+	Stream(on bool)
+	// Rig puts an envelope in force; the limiter disarms.
+	Rig(env safety.Envelope)
+	// Look gives the limiter a model to look ahead with. It only tightens.
+	Look(safety.LookAhead)
+	// LimitsHeld says that the board holds the limits of that crc, read back equal.
+	LimitsHeld(crc uint16)
+	// Check says whether a check was seen working.
+	Check(c safety.Check, passed bool)
+	// Permit asks the limiter whether a write may be done now.
+	Permit(safety.Event) error
+	// Wrote ends a write that was permitted.
+	Wrote(ok bool)
+
+	// Run shows the plan, has it armed and started, runs it and returns what was
+	// measured. It returns ErrDeclined if the person puts it aside, and a Result
+	// with its reason in every other case.
+	Run(Run) (Result, error)
+	// StopKey waits for a stop by key at rest and returns its times.
+	StopKey(q Question) (StopSeen, error)
+	// ClearTrip waits until a latched trip was acknowledged and reset.
+	ClearTrip(q Question) error
+	// Watch collects samples at rest for d.
+	Watch(d time.Duration) ([]protocol.Sample, error)
+	// PowerCycle has the board switched off and on and waits until it speaks.
+	PowerCycle(q Question) error
+
+	// Keep writes an entry into the record.
+	Keep(kind, name string, v any) error
+	// KeepText writes a text into the record.
+	KeepText(kind, name, text string) error
+	// KeepTrace writes a trace into the record and returns its file name.
+	KeepTrace(name string, tr *trace.Trace, remarks ...string) (string, error)
+
+	// Card makes card and sticker line from what the record holds so far.
+	Card() (card, sticker string, err error)
+
+	// Show changes what the screens show.
+	Show(func(*View))
+	// Say puts one line into the log of the session.
+	Say(format string, args ...any)
+}
+
+// Run is a plan with what the person sees before it runs.
+type Run struct {
+	Plan    safety.Plan
+	View    PlanView
+	Capture *Capture // at loop rate in board memory; nil: telemetry only
+}
+
+// Capture is a capture that the first drive value of a run triggers.
+type Capture struct {
+	Decimation    int
+	Before, Count int // samples
+}
+
+// Sample is a telemetry sample with the console time at which it was read.
+type Sample struct {
+	At time.Duration
+	protocol.Sample
+}
+
+// Result is what a run gave.
+type Result struct {
+	Name      string
+	Reason    safety.EndReason
+	Cause     safety.Cause
+	Started   bool
+	Begun     time.Duration
+	Lasted    time.Duration
+	Samples   []Sample
+	Capture   *trace.Trace // nil without capture
+	Judged    *safety.CheckJudged
+	Stop      *StopSeen  // of a stop during the run
+	BoardStop *BoardStop // the board's own record of the stop, where it tripped
+	Marks     []float64  // s since the first drive value
+	File      string     // of the trace in the record, filled by the job
+}
+
+// BoardStop is what the board kept of a stop of its own.
+type BoardStop struct {
+	Cause     protocol.Cause
+	SpeedRadS float64
+	SinceBeat time.Duration
+}
+
+// StopSeen is one stop, from the key to the board's answer.
+type StopSeen struct {
+	KeyToWire   time.Duration `json:"key_to_wire_ns"`
+	WireToBoard time.Duration `json:"wire_to_answer_ns"`
+	Cuts        int           `json:"cuts"`
+}

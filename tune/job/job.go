@@ -1,0 +1,236 @@
+package job
+
+import (
+	"errors"
+	"fmt"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/safety/rig"
+	"gainwright/tune/design"
+	"gainwright/tune/excite"
+	"gainwright/tune/identify"
+	"gainwright/tune/sheet"
+	"gainwright/tune/trace"
+)
+
+// Options of a job.
+type Options struct {
+	Rig      rig.Rig
+	RigText  []byte // the rig file as read; nil: the person is asked
+	Operator string
+	Version  string // of the program
+	Seed     uint32 // of the pseudo-random test
+	MsMax    float64
+}
+
+// Known is all that the job knows so far. Steps add to it; nothing is lost by
+// going back.
+type Known struct {
+	Rig     rig.Rig
+	RigText []byte // the rig file as read
+	Env     safety.Envelope
+
+	ID        protocol.Identity
+	IDLines   []string
+	Hz        int // telemetry rate
+	Running   GainSet
+	Stored    GainSet
+	Found     GainSet // running gains as found
+	FoundRec  *sheet.Snapshot
+	Limits    []sheet.Quantity // held by the board, as read back
+	LimitsCRC uint16
+
+	StartForward, StartReverse float64 // V, of the sign ramp
+	Noise                      float64 // rad/s at rest
+	Silence                    safety.CheckJudged
+	Gain, Tau                  float64 // first idea: rad/s per V, s
+	BreakForward, BreakReverse []float64
+	Levels                     []identify.Level
+	rising                     []bool // of Levels: reached from below
+	Static                     *identify.Static
+	Bias, Amplitude            float64 // V, of the step test
+
+	StepTrace, SecondTrace *trace.Trace
+	StepFile, SecondFile   string
+	Fit                    *identify.Result
+
+	FoundMargins *design.Margins
+	Proposals    []design.Proposal
+	Chosen       int
+	Gains        *design.Gains // proposed, as the board will hold them
+	NewSet       *GainSet
+	Margins      *design.Margins
+	NoChange     bool
+	Refused      string // why nothing is proposed
+
+	Pushed   bool
+	Verified *sheet.VerifyRecord
+	StoredOK bool
+	LeftRec  *sheet.Snapshot
+	Checks   []sheet.CheckRecord
+	Remarks  []string
+}
+
+// Job is one job on one rig. Its methods are called from one goroutine.
+type Job struct {
+	Known
+	h     Hands
+	opt   Options
+	steps map[StepID]*StepView
+}
+
+// New returns a job at its beginning.
+func New(h Hands, opt Options) *Job {
+	if opt.MsMax == 0 {
+		opt.MsMax = 1.6
+	}
+	if opt.Seed == 0 {
+		opt.Seed = 0x5A
+	}
+	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}}
+	j.Rig, j.RigText = opt.Rig, opt.RigText
+	for i := range Path {
+		p := &Path[i]
+		j.steps[p.ID] = &StepView{ID: p.ID, Title: p.Title, For: p.For, Needs: p.Needs, Moves: p.Moves, Takes: p.Takes,
+			Gives: p.Gives, Status: ToDo}
+	}
+	j.publish()
+	return j
+}
+
+// RefusedError is a step that will not go on, with its number, cause and remedy.
+type RefusedError struct {
+	Number        int
+	What          string
+	Cause, Remedy string
+}
+
+func (e *RefusedError) Error() string {
+	return fmt.Sprintf("%s: %s; %s (%d)", e.What, e.Cause, e.Remedy, e.Number)
+}
+
+// refuse makes a RefusedError. Numbers from 700 on are the job's own; those below
+// are the limiter's.
+func refuse(number int, what, cause, remedy string) error {
+	return &RefusedError{Number: number, What: what, Cause: cause, Remedy: remedy}
+}
+
+// result is what a step reports when it is done, in one line.
+type result string
+
+// Do carries out one step. The error is also shown in the path; ErrOver ends the
+// job, every other error leaves the person free to go on elsewhere.
+func (j *Job) Do(id StepID) error {
+	s := j.steps[id]
+	if missing := j.missing(id); missing != "" {
+		return j.refused(id, refuse(700, s.Title, "it needs "+missing, "do that step first"))
+	}
+	s.Status, s.Reason = Doing, ""
+	j.h.Show(func(v *View) { v.Current, v.Doing, v.Refusal = id, true, nil })
+	j.publish()
+	words, err := j.procedure(id)()
+	j.h.Show(func(v *View) { v.Doing, v.Busy, v.Ask, v.Plan = false, "", nil, nil })
+	if err != nil {
+		return j.refused(id, err)
+	}
+	s.Status, s.Result = Done, string(words)
+	j.h.Say("%s: %s", s.Title, words)
+	j.publish()
+	j.h.Show(func(v *View) { v.Current = j.Next() })
+	return nil
+}
+
+func (j *Job) refused(id StepID, err error) error {
+	s := j.steps[id]
+	s.Status, s.Reason = Refused, err.Error()
+	if errors.Is(err, ErrDeclined) {
+		s.Status = ToDo
+	}
+	var r *RefusedError
+	if errors.As(err, &r) {
+		j.h.Show(func(v *View) {
+			v.Refusal = &RefusalView{Number: r.Number, What: r.What, Cause: r.Cause, Remedy: r.Remedy}
+		})
+	} else if !errors.Is(err, ErrDeclined) && !errors.Is(err, ErrOver) {
+		j.h.Show(func(v *View) {
+			v.Refusal = &RefusalView{Number: 799, What: s.Title, Cause: err.Error(), Remedy: "mend the cause and do the step again"}
+		})
+	}
+	j.h.Say("%s: %v", s.Title, err)
+	_ = j.h.Keep("event", string(id), sheet.EventRecord{What: s.Title + " not done", Detail: err.Error()})
+	j.publish()
+	return err
+}
+
+// Skip leaves a step out, with a reason that is kept. A check cannot be skipped
+// into being passed: what needs it stays refused by the limiter.
+func (j *Job) Skip(id StepID, reason string) {
+	s := j.steps[id]
+	s.Status, s.Reason = Skipped, reason
+	_ = j.h.Keep("event", string(id), sheet.EventRecord{What: s.Title + " skipped", Detail: reason})
+	j.publish()
+}
+
+// Next is the first step of the path that is still to do and can be done.
+func (j *Job) Next() StepID {
+	for i := range Path {
+		id := Path[i].ID
+		if st := j.steps[id].Status; (st == ToDo || st == Refused) && j.missing(id) == "" {
+			return id
+		}
+	}
+	return StepCard
+}
+
+// StatusOf returns where a step stands.
+func (j *Job) StatusOf(id StepID) Status { return j.steps[id].Status }
+
+// missing names what a step needs and is not there, "" if nothing.
+func (j *Job) missing(id StepID) string {
+	for _, n := range info(id).needs {
+		if st := j.steps[n].Status; st != Done && !(st == Skipped && canSkip[n]) {
+			return info(n).Title
+		}
+	}
+	return ""
+}
+
+// canSkip are the steps that later ones can do without.
+var canSkip = map[StepID]bool{StepLimits: true, StepSecond: true, StepVerify: true}
+
+func (j *Job) publish() {
+	steps := make([]StepView, len(Path))
+	for i := range Path {
+		steps[i] = *j.steps[Path[i].ID]
+		steps[i].Ready = j.missing(Path[i].ID) == ""
+	}
+	j.h.Show(func(v *View) { v.Steps = steps })
+}
+
+func (j *Job) procedure(id StepID) func() (result, error) {
+	return map[StepID]func() (result, error){
+		StepPort: j.doPort, StepIdentity: j.doIdentity, StepCount: j.doCount, StepSign: j.doSign, StepStop: j.doStop,
+		StepSilence: j.doSilence, StepLimits: j.doLimits, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
+		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepDesign: j.doDesign, StepPush: j.doPush,
+		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
+	}[id]
+}
+
+// sizing is what the experiments are sized from.
+func (j *Job) sizing() excite.Known {
+	k := excite.Known{Env: j.Env, StartForward: j.StartForward, StartReverse: j.StartReverse, Gain: j.Gain, Tau: j.Tau,
+		Noise: j.Noise, Loop: j.ID.Loop.Seconds()}
+	if w := j.ID.Window().Seconds(); w > 0 {
+		k.SpeedStep = j.ID.RadPerCount() / w
+	}
+	if len(j.BreakForward) > 0 {
+		k.StartForward = mean(j.BreakForward)
+	}
+	if len(j.BreakReverse) > 0 {
+		k.StartReverse = mean(j.BreakReverse)
+	}
+	return k
+}
+
+func (j *Job) doPort() (result, error) { return "open", nil }

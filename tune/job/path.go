@@ -1,0 +1,80 @@
+package job
+
+// Info is what the path says of a step before it is done.
+type Info struct {
+	ID                              StepID
+	Title                           string
+	For, Needs, Moves, Takes, Gives string
+	needs                           []StepID // that must be done before it
+}
+
+// Path is the order of work. A person may go straight to any step whose needs
+// are met, and back to any step: what was found stays until it is found anew.
+var Path = []Info{
+	{ID: StepPort, Title: "Port", For: "choose the line to the board",
+		Needs: "cable in, board powered", Moves: "nothing; opening may restart the board", Takes: "seconds", Gives: "an open line"},
+	{ID: StepIdentity, Title: "Identity, as-found", For: "ask the board what it is and keep what it holds, before anything is touched",
+		Needs: "an open line", Moves: "nothing", Takes: "a few seconds", Gives: "as-found: gains running and stored, limits, flags; limits held by the board",
+		needs: []StepID{StepPort}},
+	{ID: StepCount, Title: "Count check", For: "see that one turn of the shaft reads as one turn",
+		Needs: "your hand on the shaft, drive off", Moves: "nothing; you turn the shaft", Takes: "half a minute", Gives: "counts per turn",
+		needs: []StepID{StepIdentity}},
+	{ID: StepSign, Title: "Sign check", For: "see that positive drive turns the shaft the positive way",
+		Needs: "count check, area clear", Moves: "a slow ramp each way, ended by the first counts", Takes: "a few seconds a way", Gives: "sign of the encoder, first idea of breakaway",
+		needs: []StepID{StepCount}},
+	{ID: StepStop, Title: "Stop check", For: "see the stop key work, at rest and at creep speed",
+		Needs: "sign check, area clear", Moves: "creep speed until you press the stop key", Takes: "half a minute", Gives: "time from key to wire to board",
+		needs: []StepID{StepSign}},
+	{ID: StepSilence, Title: "Silence check", For: "see the board stop by itself when the console goes silent",
+		Needs: "stop check, area clear", Moves: "creep speed, then the board cuts", Takes: "a few seconds", Gives: "board timeout, measured on the board's clock",
+		needs: []StepID{StepStop}},
+	{ID: StepLimits, Title: "Limit check", For: "see a trip of the board work: the speed ceiling is set low, provoked, and set back",
+		Needs: "silence check, area clear", Moves: "up to a low speed, then the board trips", Takes: "a few seconds", Gives: "trip speed, limits set back and read back",
+		needs: []StepID{StepSilence}},
+	{ID: StepBreakaway, Title: "Breakaway", For: "find the voltage at which the shaft starts to turn, both ways",
+		Needs: "checks seen working", Moves: "slow ramps, each ended by the first motion", Takes: "half a minute", Gives: "breakaway volts each way with ±",
+		needs: []StepID{StepLimits}},
+	{ID: StepStaircase, Title: "Staircase", For: "steady speed against voltage, up and down, both ways",
+		Needs: "breakaway", Moves: "levels of voltage up to the size shown", Takes: "half a minute", Gives: "gain, friction each way, first time constant",
+		needs: []StepID{StepBreakaway}},
+	{ID: StepStep, Title: "Step test", For: "the quick part of the motion: time constant and dead time",
+		Needs: "staircase", Moves: "small steps about a middle speed", Takes: "ten seconds", Gives: "the record the model is fitted on",
+		needs: []StepID{StepStaircase}},
+	{ID: StepSecond, Title: "Second test", For: "a record of another kind that the model has not seen",
+		Needs: "step test", Moves: "a pseudo-random pattern about a middle speed", Takes: "ten seconds", Gives: "the record the model is judged on",
+		needs: []StepID{StepStep}},
+	{ID: StepFit, Title: "Model", For: "fit, and judge on what the fit has not seen",
+		Needs: "step test; second test for a full verdict", Moves: "nothing", Takes: "a second", Gives: "gain, time constant, dead time, each with ±; a verdict",
+		needs: []StepID{StepStep}},
+	{ID: StepDesign, Title: "Proposal", For: "gains that keep their margins on the real sampled loop",
+		Needs: "a model that is not refused", Moves: "nothing", Takes: "a second", Gives: "gains, margins, forecast, worst case",
+		needs: []StepID{StepFit}},
+	{ID: StepPush, Title: "Push", For: "write the proposed gains to the board's memory that a power cut forgets",
+		Needs: "a proposal, disarmed and still", Moves: "nothing", Takes: "seconds", Gives: "gains running, read back bit by bit",
+		needs: []StepID{StepDesign}},
+	{ID: StepFirstLoop, Title: "First closed loop", For: "see the loop hold, with tight limits and a low setpoint",
+		Needs: "gains pushed, area clear", Moves: "20 % of top speed for 3 s in closed loop", Takes: "a few seconds", Gives: "the loop holds, or not",
+		needs: []StepID{StepPush}},
+	{ID: StepVerify, Title: "Verify", For: "measured against forecast and against the targets",
+		Needs: "first closed loop", Moves: "setpoint steps both ways in closed loop", Takes: "ten seconds", Gives: "pass or fail per target",
+		needs: []StepID{StepFirstLoop}},
+	{ID: StepStore, Title: "Store", For: "keep the gains through a power cut, and see that they were kept",
+		Needs: "verify", Moves: "nothing; you switch the board off and on", Takes: "a minute", Gives: "stored gains read back equal after a restart",
+		needs: []StepID{StepVerify}},
+	{ID: StepAsLeft, Title: "As-left", For: "keep what the board holds now, the last look before you go",
+		Needs: "nothing but the line", Moves: "nothing", Takes: "seconds", Gives: "as-left: gains, limits, flags",
+		needs: []StepID{StepIdentity}},
+	{ID: StepCard, Title: "Card", For: "one page to print, sign and leave with the machine",
+		Needs: "as-left", Moves: "nothing", Takes: "a moment", Gives: "card and sticker line",
+		needs: []StepID{StepAsLeft}},
+}
+
+// info returns what the path says of a step.
+func info(id StepID) *Info {
+	for i := range Path {
+		if Path[i].ID == id {
+			return &Path[i]
+		}
+	}
+	panic("job: unknown step " + string(id))
+}

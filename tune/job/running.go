@@ -1,0 +1,176 @@
+package job
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/tune/sheet"
+	"gainwright/tune/trace"
+)
+
+// run has a plan forecast, shown, armed, run and recorded.
+func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, error) {
+	view, quantities := j.forecast(plan)
+	r, err := j.h.Run(Run{Plan: plan, View: view, Capture: capture})
+	if err != nil {
+		return r, j.admitError(plan.Name, err)
+	}
+	tr := j.traceOf(plan.Name, r.Samples)
+	file := ""
+	rec := sheet.RunRecord{Name: plan.Name, Purpose: plan.Purpose, Step: string(step), Forecast: quantities, Limits: envelopeQuantities(j.Env),
+		BoardLimits: j.Limits, Seed: uint64(j.opt.Seed), Versions: map[string]string{"program": j.opt.Version, "firmware": j.ID.Firmware},
+		Operator: j.opt.Operator, LoadState: j.Rig.Load.State, Complete: r.Reason == safety.EndDone}
+	if rec.Plan, err = rawJSON(plan); err != nil {
+		return r, err
+	}
+	rec.Reason = r.Reason.String()
+	if r.Cause.Words != "" {
+		rec.Reason += ": " + r.Cause.Words
+	}
+	for _, m := range r.Marks {
+		rec.Marks = append(rec.Marks, sheet.Mark{TimeS: m})
+	}
+	if tr.Len() > 1 {
+		if file, err = j.h.KeepTrace(plan.Name, tr); err != nil {
+			return r, err
+		}
+	}
+	rec.TraceFile = file
+	rec.Extremes = extremes(tr)
+	if err := j.h.Keep("run", plan.Name, rec); err != nil {
+		return r, err
+	}
+	r.File = file
+	if r.Capture != nil && r.Capture.Len() > 1 {
+		if r.File, err = j.h.KeepTrace(plan.Name+"-capture", r.Capture); err != nil {
+			return r, err
+		}
+	}
+	return r, nil
+}
+
+// admitError turns a plan that the envelope does not allow into a refusal.
+func (j *Job) admitError(name string, err error) error {
+	var l *safety.LimitError
+	if errors.As(err, &l) {
+		return refuse(720, name+" refused", err.Error(), "make the run smaller, or change the limit in the rig file with a reason")
+	}
+	return err
+}
+
+// notDone is the refusal for a run that did not come to its end.
+func (j *Job) notDone(r Result) error {
+	remedy := r.Cause.Do
+	if remedy == "" {
+		remedy = "do it again when you are ready"
+	}
+	words := r.Cause.Words
+	if words == "" {
+		words = "it was " + r.Reason.String()
+	}
+	if r.BoardStop != nil && r.BoardStop.Cause.Trip() {
+		words += " (the board: " + r.BoardStop.Cause.String() + ")"
+	}
+	number := int(r.Cause.Code)
+	if number == 0 {
+		number = 721
+	}
+	return refuse(number, r.Name+" did not finish", words, remedy)
+}
+
+// traceOf makes a trace of telemetry, time from its first sample.
+func (j *Job) traceOf(name string, s []Sample) *trace.Trace {
+	tr := &trace.Trace{Name: name, Window: j.ID.Window().Seconds(), RadPerCount: j.ID.RadPerCount()}
+	if len(s) == 0 {
+		return tr
+	}
+	t0 := s[0].BoardUS
+	cur, bus := j.ID.Scales.CurrentLSB > 0, j.ID.Scales.BusLSB > 0 && j.ID.BusMeasured
+	last := math.Inf(-1)
+	for i := range s {
+		t := float64(s[i].BoardUS-t0) * 1e-6
+		if t <= last || s[i].Has&protocol.HasCounts == 0 {
+			continue
+		}
+		last = t
+		tr.Time = append(tr.Time, t)
+		tr.Voltage = append(tr.Voltage, float64(s[i].Volts))
+		tr.Speed = append(tr.Speed, float64(s[i].Speed))
+		tr.Counts = append(tr.Counts, float64(s[i].Counts-s[0].Counts))
+		tr.Setpoint = append(tr.Setpoint, float64(s[i].Setpoint))
+		if cur {
+			tr.Current = append(tr.Current, float64(s[i].Current))
+		}
+		if bus {
+			tr.Bus = append(tr.Bus, float64(s[i].Bus))
+		}
+		m := trace.Used
+		if s[i].Saturated {
+			m = trace.Saturated
+		}
+		tr.Mask = append(tr.Mask, m)
+	}
+	return tr
+}
+
+// window returns the samples of a trace between two times after the first drive
+// value, as indices.
+func window(r Result, from, to time.Duration) []Sample {
+	var out []Sample
+	for _, s := range r.Samples {
+		if at := s.At - r.Begun; at >= from && at < to {
+			out = append(out, s)
+		}
+	}
+	return out
+}
+
+func extremes(tr *trace.Trace) []sheet.Quantity {
+	top := func(v []float64) *float64 {
+		if len(v) == 0 {
+			return nil
+		}
+		m := 0.0
+		for _, x := range v {
+			m = math.Max(m, math.Abs(x))
+		}
+		return &m
+	}
+	return []sheet.Quantity{{Name: "voltage", Value: top(tr.Voltage), Unit: "V"}, {Name: "speed", Value: top(tr.Speed), Unit: "rad/s"},
+		{Name: "current", Value: top(tr.Current), Unit: "A"}, {Name: "bus", Value: top(tr.Bus), Unit: "V"}}
+}
+
+func envelopeQuantities(e safety.Envelope) []sheet.Quantity {
+	q := func(name, unit string, v float64) sheet.Quantity {
+		return sheet.Quantity{Name: name, Value: &v, Unit: unit}
+	}
+	return []sheet.Quantity{q("volts", "V", float64(e.VoltsMax)), q("speed", "rad/s", float64(e.SpeedMax)), q("current", "A", float64(e.CurrentMax)),
+		q("bus high", "V", float64(e.BusMax)), q("bus low", "V", float64(e.BusMin)), q("acceleration", "rad/s²", e.AccelMax),
+		q("rate of change of volts", "V/s", e.SlewMax), q("turns", "1", e.TurnsMax), q("run time", "s", e.RunTimeMax.Seconds()),
+		q("stall time", "s", e.StallTime.Seconds()), q("telemetry age", "s", e.TelemetryAgeMax.Seconds()), q("board timeout", "s", e.BoardTimeout.Seconds())}
+}
+
+// profile is the drive of a plan as points to draw.
+func profile(p safety.Plan) []Point {
+	var pts []Point
+	t := 0.0
+	for _, s := range p.Segments {
+		pts = append(pts, Point{t, s.From})
+		t += s.Duration.Seconds()
+		pts = append(pts, Point{t, s.To})
+	}
+	return pts
+}
+
+func modeWords(p safety.Plan) (mode, unit string) {
+	if len(p.Segments) > 0 && p.Segments[0].Mode == safety.ModeSpeed {
+		return "closed loop", "rad/s"
+	}
+	return "volts", "V"
+}
+
+func milliseconds(d time.Duration) string { return fmt.Sprintf("%.1f ms", d.Seconds()*1000) }
