@@ -15,7 +15,10 @@ func compare(fits []Fit) {
 	if first == nil || second == nil {
 		return
 	}
-	gain := first.AICc - second.AICc
+	// Coloured residuals carry less: the fall of the criterion is divided by the
+	// widening they cause in the better model.
+	widening := math.Max(second.Inflation, 1)
+	gain := (first.AICc - second.AICc) / (widening * widening)
 	supported := gain > aiccSupport && secondShown(second)
 	switch {
 	case !supported:

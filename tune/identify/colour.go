@@ -122,7 +122,7 @@ func (e *estimate) correct() {
 	cov := sandwich(e.white, meat, dim, 1/(variance*variance))
 	for i := 0; i < dim; i++ {
 		w, c := e.white[i*dim+i], cov[i*dim+i]
-		if w <= 0 || !finite(c) {
+		if !(w > 0) || !finite(c) {
 			continue
 		}
 		e.inflated = math.Max(e.inflated, math.Sqrt(c/w))

@@ -2,6 +2,7 @@ package identify
 
 import (
 	"math"
+	"sort"
 
 	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/stat/distuv"
@@ -21,16 +22,18 @@ func (f Finding) z() float64 { return math.Abs(f.Effect) / f.SD }
 
 // Names of the tests, and what their effect means.
 const (
-	testDrift     = "gain-drift"  // relative change of the gain from the start of the record to its end
-	testBreak     = "gain-break"  // relative change of the gain at the worst moment
-	testJump      = "offset-jump" // jump of the speed at the worst moment, over the spread of the speed
-	testLevel     = "gain-level"  // relative change of the slope from the lowest voltage to the highest
-	testTop       = "top"         // relative loss of slope above the knee that fits best
-	testDirection = "rise-fall"   // log of the ratio of the time constants rising and falling
-	testReversal  = "reversal"    // friction voltage at the change of direction, over the largest voltage
-	testDynamics  = "dynamics"    // speed that past voltages still explain, over the spread of the model's speed
-	testResonance = "resonance"   // share of the residual's power in its sharpest peak
-	testCoupled   = "coupled"     // share of the residual that its own past foretells
+	testDrift       = "gain-drift"   // relative change of the gain from the start of the record to its end
+	testBreak       = "gain-break"   // relative change of the gain at the worst moment
+	testJump        = "offset-jump"  // jump of the speed at the worst moment, over the spread of the speed
+	testLevel       = "gain-level"   // relative change of the slope from the lowest voltage to the highest
+	testTop         = "top"          // relative loss of slope above the knee that fits best
+	testDirection   = "rise-fall"    // log of the ratio of the time constants rising and falling
+	testReversal    = "reversal"     // friction voltage at the change of direction, over the largest voltage
+	testDynamics    = "dynamics"     // speed that past voltages still explain, over the spread of the model's speed
+	testResonance   = "resonance"    // speed in the residual's sharpest peak, over that spread
+	testSystematic  = "systematic"   // slow part of the residual, over that spread
+	testThroughZero = "through-zero" // the same, where the record goes through zero speed
+	testSlip        = "slip"         // jump of the speed between two samples, over that spread
 )
 
 // examiner holds what the tests share.
@@ -280,23 +283,49 @@ func (x *examiner) direction() []Finding {
 }
 
 // reversal tests for friction that changes sign with the speed, where the record
-// goes through zero.
+// goes through zero: the response to a voltage that follows the sign of the
+// simulated speed.
 func (x *examiner) reversal() []Finding {
+	if !x.reverses() || x.e.proj.kern.shapes() == 0 {
+		return nil
+	}
+	sim := x.e.simulated()
+	top := math.Max(-floats.Min(sim), floats.Max(sim))
+	p := x.e.proj
+	keep := make([]*drive, len(p.pieces))
+	for k, s := range p.pieces {
+		keep[k] = s.drive
+	}
+	at, piece := 0, 0
+	p.each(x.e.params, false, func(gm *spanGram, s *stretch, sp span, cols [][]float64) {
+		for p.pieces[piece] != s {
+			piece++
+		}
+		y := combine(gm.lay, cols, x.e.linear, x.e.locals[at])
+		at++
+		u := make([]float64, len(s.drive.u))
+		for i := sp.from; i < sp.to; i++ {
+			u[i] = math.Tanh(y[i-sp.from] / (0.05 * top))
+		}
+		keep[piece] = newDrive(s.drive.t, u, u[0])
+	})
+	for k, s := range p.pieces {
+		s.drive, keep[k] = keep[k], s.drive
+	}
+	col := x.responseColumn()
+	for k, s := range p.pieces {
+		s.drive = keep[k]
+	}
+	lo, hi := x.voltages()
+	return x.effect(testReversal, col, -x.gain*math.Max(math.Abs(lo), math.Abs(hi)))
+}
+
+// reverses reports whether the simulated speed takes both signs.
+func (x *examiner) reverses() bool {
 	sim := x.e.simulated()
 	lo, hi := floats.Min(sim), floats.Max(sim)
 	top := math.Max(-lo, hi)
-	if !(lo < -0.1*top && hi > 0.1*top) || x.e.proj.kern.shapes() == 0 {
-		return nil
-	}
-	_, umax := x.voltages()
-	umin, _ := x.voltages()
-	u := math.Max(math.Abs(umax), math.Abs(umin))
-	scale := u / 2
-	if scale == 0 {
-		return nil
-	}
-	// The sign of the speed stands in for the sign of the voltage that drives it.
-	return x.effect(testReversal, x.response(func(v float64) float64 { return math.Tanh(v / (0.05 * u)) }), -x.gain*u)
+	return lo < -0.1*top && hi > 0.1*top
 }
 
 // dynamics asks whether past voltages explain anything that is left over, by
@@ -376,29 +405,86 @@ func (d *drive) at(t float64) float64 {
 	return d.u[lo-1]
 }
 
-// spectrum looks for a sharp peak in the residual, and for residuals that hang
-// together.
+// spectrum measures what is left over slowly (systematic misfit) and sharply (a
+// resonance), against the noise that cannot be foretold.
 func (x *examiner) spectrum() []Finding {
 	n := len(x.residual)
 	ar := fitAutoregression(x.residual, min(12, n/20))
-	total := floats.Dot(x.residual, x.residual) / float64(n)
-	coupled := math.Sqrt(math.Max(1-ar.variance/total, 0))
-	out := []Finding{{testCoupled, coupled, 1 / math.Sqrt(float64(n))}}
-	share, chance := sharpestPeak(x.residual)
-	return append(out, Finding{testResonance, share, chance})
+	x.e.noise = math.Sqrt(ar.variance)
+	h, _ := x.e.proj.extent()
+	width := min(max(3, int(x.timescale()/h/3)), max(3, n/20))
+	slow := movingPower(x.residual, width)
+	chance := ar.variance / float64(width)
+	effect := math.Sqrt(math.Max(slow-chance, 0)) / x.spread
+	z := (slow - chance) / (chance * math.Sqrt(2*float64(width)/float64(n)))
+	out := []Finding{{testSystematic, effect, effect / math.Max(z, 1e-9)}}
+	if x.reverses() {
+		f := out[0]
+		f.Test = testThroughZero
+		out = append(out, f)
+	}
+	first := int(2 / x.timescale() / math.Pi * h * float64(len(periodogram(x.residual))))
+	share, white := sharpestPeak(x.residual, max(8, first))
+	total := math.Sqrt(floats.Dot(x.residual, x.residual)/float64(n)) / x.spread
+	if share > 8*white {
+		out = append(out, Finding{testResonance, math.Sqrt(share) * total, math.Sqrt(white) * total})
+	}
+	return append(out, x.jump()...)
+}
+
+// movingPower is the mean square of the moving average of r over width samples.
+func movingPower(r []float64, width int) float64 {
+	if len(r) < width {
+		return 0
+	}
+	sum, total := 0.0, 0.0
+	for i, v := range r {
+		sum += v
+		if i >= width {
+			sum -= r[i-width]
+		}
+		if i >= width-1 {
+			total += sum * sum
+		}
+	}
+	return total / float64(len(r)-width+1) / float64(width*width)
+}
+
+// jump looks for a single change of the measured speed from one sample to the
+// next that is out of line with all others: the eighth largest is the measure,
+// since steps repeat and slips seldom do. Effect is the jump over the spread.
+func (x *examiner) jump() []Finding {
+	var d []float64
+	for _, s := range x.e.proj.pieces {
+		for _, sp := range s.spans {
+			for i := sp.from + 1; i < sp.to; i++ {
+				d = append(d, math.Abs(s.y[i]-s.y[i-1]))
+			}
+		}
+	}
+	if len(d) < 100 {
+		return nil
+	}
+	sort.Float64s(d)
+	largest, eighth := d[len(d)-1], d[len(d)-8]
+	if eighth <= 0 || largest < 2.5*eighth {
+		return nil
+	}
+	return []Finding{{testSlip, largest / x.spread, eighth / x.spread / 2}}
 }
 
 // sharpestPeak returns the largest share of the power of r that lies in one of 48
 // narrow bands of its spectrum (each ±3 % of its frequency, at least two bins),
 // and what white noise would put there.
-func sharpestPeak(r []float64) (share, chance float64) {
+// Bins below first are not looked at.
+func sharpestPeak(r []float64, first int) (share, chance float64) {
 	power := periodogram(r)
 	total := floats.Sum(power)
 	if !(total > 0) {
 		return 0, 1
 	}
 	best, width := 0.0, 1
-	for k := 8; k < len(power)-2; k++ {
+	for k := first; k < len(power)-2; k++ {
 		half := max(1, k*6/100)
 		if k+half >= len(power) {
 			break

@@ -40,6 +40,7 @@ type estimate struct {
 	dead     *[2]float64 // 95 % interval of the dead time, where its profile was computed
 	set      Settings
 	findings []Finding
+	noise    float64 // rad/s, what the residual's own past does not foretell
 	inputP   float64 // see Fit.InputP
 	inflated float64 // largest ratio of corrected to white standard deviation
 }
@@ -218,7 +219,7 @@ func (pb problem) starts(proj *projection, set Settings) [][]float64 {
 // finish computes linear parameters, residuals and covariance at e.params.
 func (e *estimate) finish(set Settings) {
 	p := e.proj
-	e.set, e.inputP = set, math.NaN()
+	e.set, e.inputP, e.noise = set, math.NaN(), math.NaN()
 	pt := NewPoint(p.Dim())
 	p.Evaluate(e.params, pt)
 	e.linear = append([]float64(nil), p.linear...)

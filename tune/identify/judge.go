@@ -3,6 +3,7 @@ package identify
 import (
 	"fmt"
 	"math"
+	"sort"
 
 	"gainwright/tune/trace"
 )
@@ -51,7 +52,9 @@ func (f *Fit) judge() {
 	v := &verdicts{worst: Believed}
 	judgeResponse(f, v)
 	judgeWidths(f, v)
+	judgeMasks(f, v)
 	judgePrediction(f, v)
+	judgeFindings(f, v)
 	f.Verdict, f.Reasons, f.Helps = v.worst, v.reasons, v.helps
 }
 
@@ -143,9 +146,13 @@ func judgePrediction(f *Fit, v *verdicts) {
 		judgeLevel(f.NRMSE, "on the data of the fit", v)
 		return
 	}
-	if f.HoldoutNRMSE > nrmseBelieved && f.HoldoutRMSE <= noiseAllowance*f.RMSE {
+	noise := f.RMSE
+	if finite(f.Noise) {
+		noise = math.Min(noise, f.Noise)
+	}
+	if f.HoldoutNRMSE > nrmseBelieved && f.HoldoutRMSE <= noiseAllowance*noise {
 		v.add(Care, "a hold-out with larger motion", "the hold-out moves too little against the noise to judge by (NRMSE %.2f, of which noise alone gives %.2f)",
-			f.HoldoutNRMSE, f.HoldoutNRMSE*f.RMSE/f.HoldoutRMSE)
+			f.HoldoutNRMSE, f.HoldoutNRMSE*noise/f.HoldoutRMSE)
 		judgeLevel(f.NRMSE, "on the data of the fit", v)
 		return
 	}
@@ -160,3 +167,90 @@ func judgeLevel(nrmse float64, where string, v *verdicts) {
 		v.add(Care, "a second kind of excitation (PRBS after steps)", "simulated speed is rough %s: NRMSE %.2f is over %.3f", where, nrmse, nrmseBelieved)
 	}
 }
+
+// Shares of the samples left out beyond which the rest is not trusted as before.
+const maskedCare, maskedRefused = 0.02, 0.40
+
+func judgeMasks(f *Fit, v *verdicts) {
+	for _, m := range []struct{ mask, what, help string }{
+		{"sag", "because the bus sagged: they measure the supply", "a smaller step, or a supply with a higher limit"},
+		{"saturated", "because the drive was saturated", "a smaller step"},
+		{"stall", "because the shaft stood still under drive", "free the shaft, then a larger step from a moving start"},
+		{"slip", "because counts and shaft disagree", "look at the encoder and its coupling"},
+	} {
+		n := f.Masked[m.mask]
+		share := float64(n) / float64(max(f.Used+n, 1))
+		switch {
+		case share > maskedRefused:
+			v.add(Refused, m.help, "%d samples (%.0f %%) left out %s", n, 100*share, m.what)
+		case share > maskedCare:
+			v.add(Care, m.help, "%d samples (%.0f %%) left out %s", n, 100*share, m.what)
+		}
+	}
+}
+
+// rule says from which sizes on a finding counts, and what it means.
+type rule struct {
+	test          string
+	care, refused float64
+	text          string // with the effect in percent
+	helps         string
+}
+
+// rules are in the order in which reasons of equal strength are given. The sizes
+// are our choice: care begins below what moves a parameter by a tenth.
+var rules = []rule{
+	{testSlip, 0.2, 2, "the speed jumps between two samples by %.0f %% of its spread, more than any step makes it: encoder or coupling slipping, or samples lost", "look at the encoder and its coupling, then repeat"},
+	{testBreak, 0.04, 0.15, "the gain changes suddenly by %+.0f %% within the record: encoder or coupling slipping, or the load changed", "look at the encoder, its coupling and the load, then repeat"},
+	{testDrift, 0.05, 0.2, "the gain drifts by %+.0f %% over the record", "warm up until repeats agree, then repeat"},
+	{testLevel, 0.2, 1, "the slope changes by %+.0f %% from the lowest voltage to the highest: the gain depends on the level, or the drive saturates", "a staircase, then smaller steps about one level"},
+	{testTop, 0.2, 1, "the slope changes by %+.0f %% above a knee: the drive saturates, or the gain depends on the level", "a staircase, then smaller steps below the knee"},
+	{testDirection, 0.15, 0.7, "rising and falling speed differ in time constant by %+.0f %%: drive and coast are not alike", "steps that stay well above zero voltage, or a drive that brakes as it drives"},
+	{testReversal, 0.08, 0.3, "friction changes sign with the speed (%+.0f %% of the voltage)", "steps in one direction, away from standstill"},
+	{testThroughZero, 0.03, 0.3, "the record goes through zero speed, where friction and play in gears (backlash) take over: %.0f %% of the motion is missed", "steps in one direction, away from standstill"},
+	{testResonance, 0.03, 0.3, "the residual has a sharp peak (%.0f %% of the motion): a resonance that the model lacks", "PRBS or multisine for the frequency response, then a filter or a stiffer coupling"},
+	{testDynamics, 0.03, 0.2, "past voltages explain a further %.0f %% of the motion: dynamics, or a resonance, that the model lacks", "PRBS with a shorter clock and faster sampling"},
+	{testSystematic, 0.025, 0.3, "%.0f %% of the motion is missed in a way that is not noise", "a staircase and steps at other levels, to find what the model misses"},
+}
+
+// findingLevel is how many standard deviations an effect must be away from none.
+const findingLevel = 3.5
+
+// reasonsMost is how many findings are given as reasons.
+const reasonsMost = 4
+
+// judgeFindings turns what the tests of the residuals found into reasons,
+// strongest first.
+func judgeFindings(f *Fit, v *verdicts) {
+	type hit struct {
+		rule
+		Finding
+	}
+	var hits []hit
+	for _, r := range rules {
+		for _, x := range f.Findings {
+			if x.Test == r.test && math.Abs(x.Effect) >= r.care && x.z() >= findingLevel {
+				hits = append(hits, hit{r, x})
+			}
+		}
+	}
+	sort.SliceStable(hits, func(i, j int) bool { return hits[i].z() > hits[j].z() })
+	for i, h := range hits {
+		level := Care
+		if math.Abs(h.Effect) >= h.refused {
+			level = Refused
+		}
+		if i < reasonsMost || level == Refused {
+			v.add(level, h.helps, h.text, 100*h.Effect)
+		}
+	}
+	if d, _, ok := f.Value("damping"); ok && d < dampingCare {
+		w, _, _ := f.Value("natural_frequency")
+		v.add(Care, "frequency response by PRBS or multisine", "a resonance at %.3g rad/s with damping %.2f: no motor alone has that", w, d)
+	}
+}
+
+// dampingCare is the damping below which a second-order model is a resonance of
+// what hangs on the motor: electrical and mechanical time constants of equal size
+// give 0.5.
+const dampingCare = 0.3

@@ -28,7 +28,7 @@ func (e *estimate) report() Fit {
 	}
 	f := Fit{
 		Params: params, Cov: cov, Inflation: e.inflated, Used: e.proj.samples, DeadTimeBound: e.fixed,
-		HoldoutNRMSE: math.NaN(), HoldoutRMSE: math.NaN(), Offset: math.NaN(), InputP: e.inputP, Findings: e.findings,
+		HoldoutNRMSE: math.NaN(), HoldoutRMSE: math.NaN(), Offset: math.NaN(), InputP: e.inputP, Noise: e.noise, Findings: e.findings,
 	}
 	f.Model = e.linearModel()
 	f.Model.CI95 = e.intervals(params)
@@ -170,9 +170,7 @@ func (e *estimate) quality(f *Fit) {
 	f.NRMSE = math.Sqrt(e.cost) / spread
 	f.VAF = 1 - bias*bias/(spread*spread)
 	k := float64(n - e.dof + 1) // parameters, the variance among them
-	// Coloured residuals carry less: n is divided by the widening they cause.
-	eff := float64(n) / (e.inflated * e.inflated)
-	f.AICc = eff*math.Log(e.cost/float64(n)) + 2*k + 2*k*(k+1)/math.Max(eff-k-1, 1)
+	f.AICc = float64(n)*math.Log(e.cost/float64(n)) + 2*k + 2*k*(k+1)/math.Max(float64(n)-k-1, 1)
 	f.WhitenessP = ljungBox(e.residual, 0)
 }
 

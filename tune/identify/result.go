@@ -31,6 +31,7 @@ type Fit struct {
 	AICc          float64
 	WhitenessP    float64 // Ljung–Box: probability of such residuals if they were white
 	InputP        float64 // probability of such residuals if they did not depend on the input
+	Noise         float64 // rad/s, the part of the residual that its own past does not foretell
 	Inflation     float64 // largest widening of an interval because residuals are coloured
 	Drift         float64 // rad/s², 0 unless asked for
 	Offset        float64 // rad/s at zero voltage (integrating: rad/s²); NaN where each record has its own
@@ -64,6 +65,7 @@ type fitJSON struct {
 	AICc         *float64       `json:"aicc"`
 	WhitenessP   *float64       `json:"whiteness_p"`
 	InputP       *float64       `json:"input_p"`
+	Noise        *float64       `json:"noise"`
 	Inflation    *float64       `json:"inflation"`
 	Offset       *float64       `json:"offset"`
 	Drift        float64        `json:"drift,omitempty"`
@@ -109,7 +111,7 @@ func (f Fit) MarshalJSON() ([]byte, error) {
 		SpeedMin: m.SpeedMin, SpeedMax: m.SpeedMax,
 		RMSE: known(f.RMSE), NRMSE: known(f.NRMSE), HoldoutNRMSE: known(f.HoldoutNRMSE), HoldoutRMSE: known(f.HoldoutRMSE),
 		VAF: known(f.VAF), AICc: known(f.AICc), WhitenessP: known(f.WhitenessP), InputP: known(f.InputP),
-		Inflation: known(f.Inflation), Offset: known(f.Offset), Drift: f.Drift,
+		Noise: known(f.Noise), Inflation: known(f.Inflation), Offset: known(f.Offset), Drift: f.Drift,
 		Verdict: f.Verdict, Reasons: reasons, Helps: f.Helps, Params: f.Params, Cov: f.Cov,
 		Used: f.Used, Masked: masked, Findings: f.Findings, FittedCounts: f.FittedCounts, AtBound: f.DeadTimeBound,
 	})
@@ -131,7 +133,7 @@ func (f *Fit) UnmarshalJSON(b []byte) error {
 	*f = Fit{
 		Model: m, Params: w.Params, Cov: w.Cov, RMSE: orNaN(w.RMSE), NRMSE: orNaN(w.NRMSE),
 		HoldoutNRMSE: orNaN(w.HoldoutNRMSE), HoldoutRMSE: orNaN(w.HoldoutRMSE), VAF: orNaN(w.VAF), AICc: orNaN(w.AICc),
-		WhitenessP: orNaN(w.WhitenessP), InputP: orNaN(w.InputP), Inflation: orNaN(w.Inflation), Offset: orNaN(w.Offset),
+		WhitenessP: orNaN(w.WhitenessP), InputP: orNaN(w.InputP), Noise: orNaN(w.Noise), Inflation: orNaN(w.Inflation), Offset: orNaN(w.Offset),
 		Drift: w.Drift, Verdict: w.Verdict, Reasons: w.Reasons, Helps: w.Helps, Used: w.Used, Masked: w.Masked,
 		Findings: w.Findings, FittedCounts: w.FittedCounts, DeadTimeBound: w.AtBound,
 	}

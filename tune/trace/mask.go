@@ -97,7 +97,7 @@ func (tr *Trace) MarkGaps() int {
 // Thresholds for MarkDrive. All are our choice.
 const (
 	saturatedShare = 0.985 // of the bus: above it the drive has nothing left to give
-	sagShare       = 0.92  // of the bus at the start and end of the record
+	sagShare       = 0.95  // of the bus at the start and end of the record
 	stallSamples   = 20    // driven without a single count for so long
 )
 
