@@ -111,11 +111,17 @@ func (s *kiSearch) frequencies(l *loop) {
 			return
 		}
 		before = p
-		next := w * ratio
+		step := w * (ratio - 1)
 		if l.deadTime > 0 {
-			next = math.Min(next, w+0.1/l.deadTime)
+			step = math.Min(step, 0.1/l.deadTime)
 		}
-		w = next
+		for range 6 { // a resonance turns fast and needs finer steps
+			if turn(p, l.at(w+step)) <= 0.15 {
+				break
+			}
+			step /= 2
+		}
+		w += step
 	}
 	if !math.IsInf(l.end, 1) {
 		s.w = append(s.w, l.end)
@@ -182,7 +188,7 @@ func (s *kiSearch) limit(i int, kp float64) float64 {
 
 // best returns the kp ≤ kpMax with the largest ki, and that ki.
 func (s *kiSearch) best(kpMax float64) (kp, ki float64) {
-	const cells = 48
+	const cells = 24
 	at := 0
 	for j := 0; j <= cells; j++ {
 		if v := s.allowed(kpMax * float64(j) / cells); v > ki {
@@ -191,7 +197,7 @@ func (s *kiSearch) best(kpMax float64) (kp, ki float64) {
 	}
 	lo := kpMax * math.Max(0, float64(at-1)) / cells
 	hi := math.Min(kpMax, kpMax*float64(at+1)/cells)
-	kp = maximumWithin(s.allowed, lo, hi, 1e-6*kpMax)
+	kp = maximumWithin(s.allowed, lo, hi, 1e-5*kpMax)
 	if v := s.allowed(kp); v >= ki {
 		return kp, v
 	}
