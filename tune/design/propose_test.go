@@ -95,7 +95,7 @@ func TestProposeRefusesInWords(t *testing.T) {
 		{"no dead time at all", model.FirstOrder(20, 0.05, 0), Options{}, "sample time"},
 		{"published rule without dead time", model.FirstOrder(20, 0.05, 0), Options{Rule: "simc"}, "dead time"},
 		{"Ziegler–Nichols far outside", model.FirstOrder(20, 1, 0.001), Options{Rule: "ziegler-nichols-step"}, "the rule is for"},
-		{"resonance", model.Linear{Num: []float64{18000}, Den: []float64{1, 3, 900}}, Options{SampleTime: 0.001, Rule: "pole-placement", Law: LawPID}, "resonance"},
+		{"resonance", model.Linear{Num: []float64{18000}, Den: []float64{1, 3, 900}}, Options{SampleTime: 0.001, ComputeDelay: 0.005, Rule: "pole-placement", Law: LawPID}, "resonance"},
 	} {
 		ps, chosen, err := Propose(c.m, c.o)
 		if err != nil {
