@@ -155,6 +155,15 @@ func (c *Core) Connected(now time.Duration, id protocol.Identity, why string) {
 		BootCount: id.Boots})
 }
 
+// Opened says that a port was opened: what came before it counts no more.
+func (c *Core) Opened(now time.Duration) {
+	c.advance(now)
+	c.framer.Reset()
+	c.lost, c.lostWhy, c.connected, c.streaming, c.seen, c.boots = false, "", false, false, false, -1
+	c.lastAt = now
+	c.void()
+}
+
 // Streaming says whether telemetry was asked for, so that its absence means
 // something.
 func (c *Core) Streaming(now time.Duration, on bool) {

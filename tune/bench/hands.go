@@ -34,11 +34,12 @@ var errBoardTripped = errors.New("the board holds a trip: it has to be reset fir
 // hands lends a job its hands over an engine.
 type hands struct {
 	engine
-	sheet *sheet.Sheet
-	first uint16
-}
+	sheet *sheet.Sheet // nil until there is one
+	open  func(board string) (*sheet.Sheet, error)
+	late  *lateFile
 
-var _ job.Hands = (*hands)(nil)
+	outcome, reason string
+}
 
 func (h *hands) Now() (t time.Duration) {
 	h.do(func(s *session) { t = s.now })
@@ -293,30 +294,28 @@ func (h *hands) result(r *running) job.Result {
 }
 
 func (h *hands) Keep(kind, name string, v any) error {
-	if h.sheet == nil {
-		return nil
+	sh, err := h.record()
+	if sh != nil {
+		_, err = sh.Entry(sheet.Kind(kind), name, v)
 	}
-	_, err := h.sheet.Entry(sheet.Kind(kind), name, v)
-	h.record(err)
-	return err
+	return h.wrote(err)
 }
 
 func (h *hands) KeepText(kind, name, text string) error {
-	if h.sheet == nil {
-		return nil
+	sh, err := h.record()
+	if sh != nil {
+		_, err = sh.Text(sheet.Kind(kind), name, text)
 	}
-	_, err := h.sheet.Text(sheet.Kind(kind), name, text)
-	h.record(err)
-	return err
+	return h.wrote(err)
 }
 
 func (h *hands) KeepTrace(name string, tr *trace.Trace, meta ...string) (string, error) {
-	if h.sheet == nil {
-		return "", nil
+	sh, err := h.record()
+	var l sheet.Line
+	if sh != nil {
+		l, err = sh.Trace(name, tr, meta...)
 	}
-	l, err := h.sheet.Trace(name, tr, meta...)
-	h.record(err)
-	return l.File, err
+	return l.File, h.wrote(err)
 }
 
 func (h *hands) Card() (card, sticker string, err error) {
@@ -331,12 +330,13 @@ func (h *hands) Card() (card, sticker string, err error) {
 	return sheet.Card(d), sheet.Sticker(d), nil
 }
 
-// record tells the limiter when the record cannot be written: the job stops, the
+// wrote tells the limiter when the record cannot be written: the job stops, the
 // motor's limits do not depend on it.
-func (h *hands) record(err error) {
+func (h *hands) wrote(err error) error {
 	if err != nil {
 		h.do(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
 	}
+	return err
 }
 
 func (h *hands) Show(f func(*job.View)) { h.do(func(s *session) { f(&s.view) }) }

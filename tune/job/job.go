@@ -172,6 +172,25 @@ func (j *Job) Skip(id StepID, reason string) {
 	j.publish()
 }
 
+// Again is called when the line to the board came back. Nothing is resumed: the
+// identity is asked for anew, and what the limiter forgot has to be seen again.
+func (j *Job) Again() error {
+	for _, id := range []StepID{StepCount, StepSign, StepStop, StepSilence, StepLimits} {
+		if s := j.steps[id]; s.Status == Done {
+			s.Status, s.Reason = ToDo, "the line was lost: to be seen again this session"
+		}
+	}
+	return j.Do(StepIdentity)
+}
+
+// Remark keeps a remark.
+func (j *Job) Remark(text string) {
+	j.Remarks = append(j.Remarks, text)
+	if err := j.h.KeepText("remark", "operator", text+"\n"); err == nil {
+		j.h.Say("remark: %s", text)
+	}
+}
+
 // Next is the first step of the path that is still to do and can be done.
 func (j *Job) Next() StepID {
 	for i := range Path {

@@ -1,0 +1,556 @@
+package bench
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"gainwright/link"
+	"gainwright/link/tape"
+	"gainwright/protocol"
+	"gainwright/safety"
+	"gainwright/safety/supervisor"
+	"gainwright/tune/job"
+	"gainwright/tune/sheet"
+)
+
+// Options of a live bench.
+type Options struct {
+	Job     job.Options
+	Program string // name and version
+	// Ports lists what could be opened; nil where the port is given.
+	Ports func() []job.PortView
+	// Open opens a port. It is called again, with the same path, when a port that
+	// was lost comes back.
+	Open func(path string) (Opened, error)
+	// NewSheet makes the record, once the board is known. nil: no record.
+	NewSheet func(board string) (*sheet.Sheet, error)
+	// Simulated says that the far end is a simulated rig of this program's own.
+	Simulated bool
+	// Hand and Cycle act on a simulated rig: one turn of its shaft, its power. nil
+	// where people have to.
+	Hand, Cycle func()
+	// OnPanic is called, after a stop was sent, when a goroutine of ours panics.
+	OnPanic func(v any, stack []byte)
+}
+
+// Opened is an open port.
+type Opened struct {
+	Port link.Port
+	Baud int
+	Note string // what opening did to the board's lines, in words
+}
+
+// Live is a bench on a real line: the same session as in virtual time, owned by
+// one goroutine, with others around it that never make it wait.
+type Live struct {
+	opt   Options
+	start time.Time
+	s     *session
+	h     *hands
+	job   *job.Job
+
+	rx       chan chunk
+	mail     chan func(*session)
+	steps    chan func(*job.Job)
+	over     chan struct{}
+	overOnce sync.Once
+	done     sync.WaitGroup
+	waiters  []*waiter
+
+	view     atomic.Pointer[job.View]
+	phase    atomic.Int32
+	style    atomic.Int32 // 1: the stop key asks for a ramp first
+	leaseAt  atomic.Int64
+	cutWrote atomic.Int64
+	rxLost   atomic.Uint64
+	line     atomic.Pointer[liveLine]
+	tape     *tape.Writer
+	late     *lateFile
+	wallWas  time.Time
+	monoWas  time.Duration
+	shownAt  time.Duration
+	path     string
+	opening  atomic.Bool
+}
+
+type chunk struct {
+	at   time.Duration
+	data []byte
+	line *liveLine
+	err  error // the port is gone
+}
+
+type waiter struct {
+	cond func(*session) bool
+	end  time.Duration // 0: none
+	done chan error
+}
+
+// liveLine is one opening of a port.
+type liveLine struct {
+	port   link.Port
+	writer *link.Writer
+	cancel context.CancelFunc
+}
+
+// Bounds of the mailboxes. A full one means that the session's goroutine has not
+// run for long: bytes are counted as lost, which telemetry's age then shows.
+const (
+	rxMax   = 1024
+	mailMax = 256
+)
+
+// NewLive starts a live bench. Nothing is opened yet.
+func NewLive(opt Options) *Live {
+	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), mail: make(chan func(*session), mailMax),
+		steps: make(chan func(*job.Job), 4), over: make(chan struct{}), late: &lateFile{}}
+	l.s = &session{}
+	l.s.core = supervisor.NewCore(liveWire{l}, l.s, uint16(l.start.UnixNano()>>10))
+	l.s.core.Simulated = opt.Simulated
+	l.s.view = job.View{Program: opt.Program, Simulated: opt.Simulated, Rig: opt.Job.Rig.Name, Hand: opt.Hand != nil}
+	l.s.view.Link.State = job.NoPort
+	l.s.tapeNote = func(text string) { l.tape.Remark(l.now(), text) }
+	l.tape = tape.NewWriter(l.late, tape.Config{Start: l.start, OnPanic: l.panicked, OnError: func(err error) {
+		l.post(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
+	}})
+	l.h = &hands{engine: l, open: opt.NewSheet, late: l.late}
+	l.wallWas, l.monoWas = l.start.Round(0), 0
+	if opt.Ports != nil {
+		l.s.view.Ports = opt.Ports()
+	}
+	l.publish()
+	l.goes(l.supervise)
+	l.job = job.New(l.h, opt.Job)
+	l.goes(l.work)
+	return l
+}
+
+// goes starts a goroutine of ours. If it panics, a stop goes out first.
+func (l *Live) goes(f func()) {
+	l.done.Add(1)
+	go func() {
+		defer l.done.Done()
+		link.WithPanicHook(l.panicked, f)
+	}()
+}
+
+func (l *Live) panicked(v any, stack []byte) {
+	l.cut()
+	time.Sleep(20 * time.Millisecond) // for the byte to leave; the program ends after this
+	if l.opt.OnPanic != nil {
+		l.opt.OnPanic(v, stack)
+	}
+}
+
+func (l *Live) now() time.Duration { return time.Since(l.start) }
+
+// cut puts the cut byte on the wire from whatever goroutine asks.
+func (l *Live) cut() {
+	if line := l.line.Load(); line != nil {
+		line.writer.Stop([]byte{protocol.Cut})
+	}
+}
+
+// Stop asks for a stop. It never blocks; the byte is handed to the line before
+// anything else is done.
+func (l *Live) Stop(source safety.StopSource) {
+	at := l.now()
+	if source != safety.ByStopKey || l.style.Load() == 0 {
+		l.cut()
+	}
+	l.post(func(s *session) { s.core.Stop(at, source) })
+}
+
+// Key tells of a key that is not the stop key. In count-down and in motion every
+// key but mark stops.
+func (l *Live) Key(mark bool) {
+	switch safety.Phase(l.phase.Load()) {
+	case safety.CountDown, safety.Running, safety.Stopping:
+	default:
+		return
+	}
+	at := l.now()
+	if mark && safety.Phase(l.phase.Load()) == safety.Running {
+		return // comes as an intent
+	}
+	l.cut()
+	l.post(func(s *session) { s.core.Do(safety.Key{At: at}) })
+}
+
+// Paste tells of many keys at once.
+func (l *Live) Paste() {
+	at := l.now()
+	if safety.Phase(l.phase.Load()).ArmHeld() {
+		l.cut()
+	}
+	l.post(func(s *session) { s.core.Do(safety.Paste{At: at}) })
+}
+
+// Alive renews the lease of the screen.
+func (l *Live) Alive() { l.leaseAt.Store(int64(l.now())) }
+
+// View is what the screens show now. It is never written again.
+func (l *Live) View() *job.View { return l.view.Load() }
+
+// post hands f to the session without waiting. If the mailbox is full the
+// session has hung; the stop byte has gone out already where it matters.
+func (l *Live) post(f func(*session)) bool {
+	select {
+	case l.mail <- f:
+		return true
+	default:
+		return false
+	}
+}
+
+func (l *Live) do(f func(*session)) {
+	ran := make(chan struct{})
+	select {
+	case l.mail <- func(s *session) { f(s); close(ran) }:
+	case <-l.over:
+		return
+	}
+	select {
+	case <-ran:
+	case <-l.over:
+	}
+}
+
+func (l *Live) until(limit time.Duration, cond func(*session) bool) error {
+	w := &waiter{cond: cond, done: make(chan error, 1)}
+	l.do(func(s *session) {
+		if limit > 0 {
+			w.end = s.now + limit
+		}
+		l.waiters = append(l.waiters, w)
+	})
+	select {
+	case err := <-w.done:
+		return err
+	case <-l.over:
+		return job.ErrOver
+	}
+}
+
+func (l *Live) wall() time.Time { return l.start.Round(0).Add(l.now()) }
+
+func (l *Live) cycle() bool {
+	if l.opt.Cycle == nil {
+		return false
+	}
+	l.opt.Cycle()
+	return true
+}
+
+// supervise is the goroutine that owns the drive.
+func (l *Live) supervise() {
+	tick := time.NewTicker(tickEach)
+	defer tick.Stop()
+	for {
+		select {
+		case <-l.over:
+			return
+		case c := <-l.rx:
+			l.enter()
+			l.received(c)
+		case f := <-l.mail:
+			l.enter()
+			f(l.s)
+		case <-tick.C:
+			l.enter()
+			l.tick()
+		}
+		l.leave()
+	}
+}
+
+func (l *Live) enter() {
+	l.s.now = l.now()
+	if t := l.cutWrote.Swap(0); t != 0 {
+		l.s.core.Wrote(time.Duration(t), []byte{protocol.Cut})
+	}
+}
+
+func (l *Live) leave() {
+	keep := l.waiters[:0]
+	for _, w := range l.waiters {
+		switch {
+		case w.cond(l.s):
+			w.done <- nil
+		case w.end > 0 && l.s.now >= w.end:
+			w.done <- errLimit
+		default:
+			keep = append(keep, w)
+		}
+	}
+	l.waiters = keep
+	st := l.s.core.State()
+	if old := safety.Phase(l.phase.Swap(int32(st.Phase))); old != st.Phase || l.s.now-l.shownAt > 15*time.Millisecond {
+		l.publish()
+	}
+	ramp := int32(0)
+	if st.Phase == safety.Running && l.s.core.Envelope().Stop == safety.StopRamp {
+		ramp = 1
+	}
+	l.style.Store(ramp)
+}
+
+func (l *Live) publish() {
+	l.shownAt = l.s.now
+	l.view.Store(l.s.snapshot())
+}
+
+func (l *Live) received(c chunk) {
+	if c.line != l.line.Load() {
+		return // from a port that was given up
+	}
+	if c.err != nil {
+		l.lost(c.err.Error())
+		return
+	}
+	l.s.core.Bytes(l.s.now, c.data)
+}
+
+// clockSlack is by how much the two clocks may part between two ticks before it
+// counts as a sleep of the laptop or a step of its clock.
+const clockSlack = 700 * time.Millisecond
+
+func (l *Live) tick() {
+	s := l.s
+	wall := time.Now().Round(0)
+	switch drift := wall.Sub(l.wallWas) - (s.now - l.monoWas); {
+	case drift > clockSlack && s.now-l.monoWas < time.Second:
+		s.core.Do(safety.Wake{At: s.now})
+	case drift < -clockSlack:
+		s.core.Do(safety.ClockJump{At: s.now})
+	}
+	l.wallWas, l.monoWas = wall, s.now
+	if t := time.Duration(l.leaseAt.Load()); t > 0 && t <= s.now {
+		s.core.Do(safety.Lease{At: t})
+	}
+	wasLost := s.core.Link().Lost
+	s.core.Tick(s.now)
+	if !wasLost && s.core.Link().Lost {
+		l.giveUp()
+	}
+	if s.core.Link().Lost && !l.opening.Load() && l.path != "" {
+		l.reopen()
+	}
+}
+
+// lost ends a line whose port is gone.
+func (l *Live) lost(why string) {
+	l.s.core.LinkLost(l.s.now, why)
+	l.giveUp()
+}
+
+func (l *Live) giveUp() {
+	if line := l.line.Swap(nil); line != nil {
+		line.cancel()
+		go line.port.Close() // a Close may hang with its device
+	}
+	s := l.s
+	s.view.Refusal = &job.RefusalView{Number: int(safety.CodeLinkLost), What: "LINK LOST", Cause: s.core.Link().LostWhy,
+		Remedy: "watch the shaft; use the E-stop if it turns. The port is looked for; then do the step \"Identity\" again"}
+}
+
+// reopenEvery is how often a port that was lost is looked for.
+const reopenEvery = 500 * time.Millisecond
+
+// reopen looks for a port that was lost until it is there again. What was going
+// on is not resumed: the identity is asked for anew, disarmed.
+func (l *Live) reopen() {
+	l.opening.Store(true)
+	path := l.path
+	l.goes(func() {
+		defer l.opening.Store(false)
+		for {
+			select {
+			case <-l.over:
+				return
+			case <-time.After(reopenEvery):
+			}
+			o, err := l.opt.Open(path)
+			if err != nil {
+				continue
+			}
+			l.connect(o, path)
+			l.step(func(j *job.Job) { _ = j.Again() })
+			return
+		}
+	})
+}
+
+// connect puts a line behind the session.
+func (l *Live) connect(o Opened, path string) {
+	ctx, cancel := context.WithCancel(context.Background())
+	line := &liveLine{port: o.Port, cancel: cancel}
+	line.writer = link.NewWriter(o.Port, link.Config{Baud: o.Baud, Clock: l.now, OnPanic: l.panicked,
+		OnWrote: func(t time.Duration, b []byte) {
+			if b[0] == protocol.Cut {
+				l.cutWrote.CompareAndSwap(0, int64(t))
+			}
+			l.tape.Record(t, tape.ToBoard, b)
+		},
+		OnStall: func(err *link.StallError) {
+			l.post(func(s *session) { s.core.Do(safety.PortStalled{At: s.now}); l.lost(err.Error()) })
+		}})
+	reader := link.NewReader(o.Port, link.ReaderConfig{Clock: l.now, OnPanic: l.panicked, OnBytes: func(t time.Duration, b []byte) {
+		l.tape.Record(t, tape.FromBoard, b)
+		select {
+		case l.rx <- chunk{at: t, data: append([]byte(nil), b...), line: line}:
+		default:
+			l.rxLost.Add(1)
+		}
+	}})
+	l.do(func(s *session) {
+		l.line.Store(line)
+		l.path = path
+		s.view.Port = path
+		s.view.Link.State = job.Opening
+		s.core.Opened(s.now)
+		s.say("opened " + path + "; " + o.Note)
+	})
+	l.goes(func() { l.ended(line, line.writer.Run(ctx)) })
+	l.goes(func() { l.ended(line, reader.Run(ctx)) })
+}
+
+func (l *Live) ended(line *liveLine, err error) {
+	if err == nil || errors.Is(err, context.Canceled) {
+		return
+	}
+	select {
+	case l.rx <- chunk{line: line, err: err}:
+	case <-l.over:
+	}
+}
+
+// work is the goroutine of the job: one step after another.
+func (l *Live) work() {
+	for {
+		select {
+		case <-l.over:
+			return
+		case f := <-l.steps:
+			f(l.job)
+		}
+	}
+}
+
+// step hands something to the job's goroutine, unless one step is in work.
+func (l *Live) step(f func(*job.Job)) {
+	select {
+	case l.steps <- f:
+	default:
+		l.post(func(s *session) { s.say("a step is in work: end it first") })
+	}
+}
+
+// Post does what a person asks for. It never blocks.
+func (l *Live) Post(i job.Intent) {
+	switch i := i.(type) {
+	case job.PickPort:
+		l.step(func(j *job.Job) { l.pick(i.Path) })
+	case job.LookAgain:
+		if l.opt.Ports != nil {
+			l.step(func(*job.Job) { ports := l.opt.Ports(); l.do(func(s *session) { s.view.Ports = ports }) })
+		}
+	case job.DoStep:
+		l.step(func(j *job.Job) { _ = j.Do(i.Step) })
+	case job.SkipStep:
+		l.step(func(j *job.Job) { j.Skip(i.Step, i.Reason) })
+	case job.Revert:
+		l.step(func(j *job.Job) { _ = j.Revert() })
+	case job.AddRemark:
+		l.step(func(j *job.Job) { j.Remark(i.Text) })
+	case job.Nudge:
+		l.step(func(j *job.Job) { j.Nudge(i.By) })
+	case job.TurnHand:
+		if l.opt.Hand != nil {
+			l.opt.Hand()
+		}
+	case job.CyclePower:
+		if l.opt.Cycle != nil {
+			l.opt.Cycle()
+		}
+	case job.Quit:
+		l.Stop(safety.ByQuit)
+	default:
+		l.post(func(s *session) { s.intent(i) })
+	}
+}
+
+// pick opens a port and asks the board what it is.
+func (l *Live) pick(path string) {
+	if l.line.Load() != nil {
+		l.do(func(s *session) { s.say("a port is open already: " + l.path) })
+		return
+	}
+	o, err := l.opt.Open(path)
+	if err != nil {
+		l.do(func(s *session) {
+			s.say(err.Error())
+			s.view.Refusal = &job.RefusalView{Number: 750, What: "port not opened", Cause: err.Error(), Remedy: "mend that, or choose another port"}
+		})
+		return
+	}
+	l.connect(o, path)
+	if l.job.Do(job.StepPort) == nil {
+		_ = l.job.Do(job.StepIdentity)
+	}
+}
+
+// Connect opens a port from the command line, as a person's pick would.
+func (l *Live) Connect(path string) { l.step(func(*job.Job) { l.pick(path) }) }
+
+// closeWait is how long leaving waits for the board's word that its output is
+// off, and for the disk.
+const closeWait = time.Second
+
+// Close stops the motor, waits for the board's word, ends the record and the
+// session. It returns the folder of the record and its first error.
+func (l *Live) Close() (dir string, err error) {
+	l.Stop(safety.ByQuit)
+	_ = l.until(closeWait, func(s *session) bool {
+		return s.core.Link().Lost || !s.core.Link().Connected || s.core.State().BoardOff() && !s.core.State().Phase.ArmHeld()
+	})
+	l.overOnce.Do(func() { close(l.over) })
+	if line := l.line.Swap(nil); line != nil {
+		line.cancel()
+		go line.port.Close()
+	}
+	ctx, cancel := context.WithTimeout(context.Background(), closeWait)
+	defer cancel()
+	err = l.tape.Close(ctx)
+	return l.h.closeRecord(err)
+}
+
+// liveWire is the line that is open now.
+type liveWire struct{ l *Live }
+
+func (w liveWire) Stop(b []byte) uint64 {
+	if line := w.l.line.Load(); line != nil {
+		return line.writer.Stop(b)
+	}
+	return 0
+}
+
+var errNoLine = fmt.Errorf("bench: no port is open")
+
+func (w liveWire) Motion(b []byte) error {
+	if line := w.l.line.Load(); line != nil {
+		return line.writer.Motion(b)
+	}
+	return errNoLine
+}
+
+func (w liveWire) Request(b []byte) error {
+	if line := w.l.line.Load(); line != nil {
+		return line.writer.Request(b)
+	}
+	return errNoLine
+}
