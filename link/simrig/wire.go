@@ -1,0 +1,192 @@
+package simrig
+
+import (
+	"time"
+
+	"gainwright/protocol"
+)
+
+// transmitter lets bytes leave no faster than the line carries them.
+type transmitter struct {
+	byteNS  int64
+	pending []byte
+	sent    []byte // left the board, not yet taken by Output
+	free    int64  // ns at which the last byte that left was through
+}
+
+// ringMax is the board's transmit ring. A telemetry line that does not fit is
+// dropped, as on a chip; answers always fit, since requests come one at a time.
+const ringMax = 4096
+
+func (t *transmitter) skipTo(now int64) { t.free = max(t.free, now) }
+
+func (t *transmitter) put(now int64, b []byte) {
+	t.drain(now)
+	if len(t.pending) == 0 {
+		t.skipTo(now)
+	}
+	t.pending = append(t.pending, b...)
+}
+
+func (t *transmitter) room() int { return ringMax - len(t.pending) }
+
+// drain moves what the line has carried by now.
+func (t *transmitter) drain(now int64) {
+	n := min(int((now-t.free)/t.byteNS), len(t.pending))
+	if n <= 0 {
+		return
+	}
+	t.sent = append(t.sent, t.pending[:n]...)
+	t.pending = append(t.pending[:0], t.pending[n:]...)
+	t.free += int64(n) * t.byteNS
+}
+
+// Output returns the bytes that have left the board since the last call. The
+// slice is the caller's.
+func (r *Rig) Output() []byte {
+	t := &r.board.tx
+	t.drain(r.now)
+	out := t.sent
+	t.sent = nil
+	if r.wrong[FaultMute] {
+		return nil
+	}
+	return out
+}
+
+// NextOutput is the console time at which the next byte will have left the
+// board; ok is false while nothing waits.
+func (r *Rig) NextOutput() (at time.Duration, ok bool) {
+	t := &r.board.tx
+	if len(t.sent) > 0 {
+		return time.Duration(r.now), true
+	}
+	if len(t.pending) == 0 || r.wrong[FaultMute] {
+		return 0, false
+	}
+	return time.Duration(max(t.free, 0) + t.byteNS), true
+}
+
+// line closes a body with its CRC and queues it.
+func (r *Rig) line(body []byte) {
+	var buf [protocol.LineMax + 2]byte
+	r.raw(protocol.AppendLine(buf[:0], body))
+}
+
+// raw queues a finished line.
+func (r *Rig) raw(line []byte) {
+	if r.wrong[FaultWrongCRC] {
+		spoil(line)
+	}
+	r.board.tx.put(r.now, line)
+}
+
+// spoil changes the last digit of a line's CRC.
+func spoil(line []byte) {
+	d := &line[len(line)-2]
+	if *d == '0' {
+		*d = '1'
+	} else {
+		*d = '0'
+	}
+}
+
+// receiver puts received bytes together to lines.
+type receiver struct {
+	line      [protocol.LineMax]byte
+	n         int
+	over, bad bool
+	grumbled  int64 // ns of the last answer to a bad line
+	fields    [][]byte
+	bootCause string
+
+	lastN   uint16 // the request answered last, its CRC and its answer
+	lastCRC uint16
+	any     bool
+	answer  []byte
+}
+
+// grumbleEvery is the shortest time between two answers to bad lines.
+const grumbleEvery = int64(10 * time.Millisecond)
+
+// Receive hands bytes from the console to the board at the instant to which the
+// rig was last advanced.
+func (r *Rig) Receive(b []byte) {
+	x := &r.board.rx
+	if !r.board.booted || r.wrong[FaultDeaf] {
+		return
+	}
+	for _, c := range b {
+		switch {
+		case c == protocol.Cut:
+			r.cut()
+			x.n, x.over, x.bad = 0, false, false
+		case c == '\n':
+			line, over, bad := x.line[:x.n], x.over, x.bad
+			x.n, x.over, x.bad = 0, false, false
+			r.take(line, over, bad)
+		case c == '\r':
+		case x.n == protocol.LineMax-1:
+			x.over = true
+		default:
+			x.bad = x.bad || c < 0x20 || c > 0x7E
+			x.line[x.n] = c
+			x.n++
+		}
+	}
+}
+
+// take works off one whole line.
+func (r *Rig) take(line []byte, over, bad bool) {
+	x := &r.board.rx
+	switch {
+	case over:
+		r.grumble("no 0 2 line too long")
+		return
+	case bad:
+		r.grumble("no 0 1 bad crc")
+		return
+	case len(line) == 0:
+		return
+	}
+	switch string(line) {
+	case protocol.VerbID:
+		r.identity(0)
+		return
+	case protocol.VerbTel:
+		r.tell()
+		return
+	case protocol.VerbStop:
+		r.cut()
+		return
+	}
+	body, err := protocol.SplitCRC(line)
+	if err != nil {
+		r.grumble("no 0 1 bad crc")
+		return
+	}
+	crc := protocol.CRC16(body)
+	var c protocol.Command
+	c, x.fields, err = protocol.ParseCommand(x.fields, body)
+	if err != nil || c.N == 0 && !motionVerb(c.Verb) {
+		return
+	}
+	if motionVerb(c.Verb) {
+		r.drive(c)
+		return
+	}
+	r.request(c, crc)
+}
+
+func (r *Rig) grumble(body string) {
+	x := &r.board.rx
+	if x.grumbled != 0 && r.now-x.grumbled < grumbleEvery {
+		return
+	}
+	x.grumbled = r.now
+	r.line([]byte(body))
+}
+
+func motionVerb(v string) bool {
+	return v == protocol.VerbBeat || v == protocol.VerbVolts || v == protocol.VerbSpeed
+}
