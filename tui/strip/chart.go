@@ -42,6 +42,7 @@ type Axes struct {
 	Y0, Y1 float64 // in the unit of the vertical axis
 	Title  string  // first row: quantity and unit of the vertical axis
 	XUnit  string  // written behind the last horizontal label
+	Gutter int     // least width of the column of labels, so that charts below each other line up
 	Bare   bool    // no labels at all
 }
 

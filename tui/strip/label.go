@@ -21,12 +21,12 @@ func (c *Chart) frame() {
 		c.ph--
 	}
 	c.ph-- // labels of the horizontal axis
-	step := niceStep(c.ax.Y1-c.ax.Y0, max(1, c.ph/3))
+	step := niceStep(c.ax.Y1-c.ax.Y0, max(min(2, c.ph-1), c.ph/3, 1))
 	widest := 1
 	c.eachTick(c.ax.Y0, c.ax.Y1, step, func(v float64) {
 		widest = max(widest, len(c.number(v, step)))
 	})
-	gutter := min(widest, gutterMax)
+	gutter := min(max(widest, c.ax.Gutter), gutterMax)
 	c.px, c.pw = gutter+1, c.w-gutter-1
 	c.text(c.px, 0, 0, c.title(), Label)
 

@@ -1,0 +1,150 @@
+package tui
+
+import (
+	"strings"
+
+	"gainwright/tui/palette"
+)
+
+// scroll draws rows from the one that the person scrolled to, and says how many
+// are left below.
+func (p *painter) scroll(a area, x int, rows []line) {
+	first := 0
+	if p.s.rowPage == p.page {
+		first = max(0, min(p.s.row, len(rows)-a.h))
+	}
+	for y := 0; y < a.h && first+y < len(rows); y++ {
+		a.put(x, y, rows[first+y].role, rows[first+y].text)
+	}
+	if rest := len(rows) - first - a.h; rest > 0 && a.h > 1 {
+		a.fill(0, a.h-1, palette.Plain)
+		a.put(1, a.h-1, palette.Key, "j: "+number(float64(rest+1), 0)+" more rows below")
+	}
+}
+
+// card shows the card as it will be printed.
+func (p *painter) card(a area) {
+	if p.v.Card == "" {
+		a.put(1, 0, palette.Plain, "The card is written when the job is done.")
+		return
+	}
+	x := 0 // the card is as wide as the least screen
+	if a.w > fullWidth {
+		x = (a.w - fullWidth) / 2
+	}
+	var rows []line
+	for _, s := range strings.Split(strings.TrimRight(p.v.Card, "\n"), "\n") {
+		rows = append(rows, line{palette.Plain, strings.TrimRight(strings.ReplaceAll(s, "\t", "    "), "\r")})
+	}
+	p.scroll(a, x, rows)
+}
+
+func unacknowledged(state string) bool { return strings.HasPrefix(state, "unack") }
+
+// alarms lists the alarms in their standard states, the newest first, and then
+// what happened.
+func (p *painter) alarms(a area) {
+	v := p.v
+	var rows []line
+	if len(v.Alarms) == 0 {
+		rows = append(rows, line{palette.Plain, "No alarm in this session."})
+	}
+	for i := len(v.Alarms) - 1; i >= 0; i-- {
+		al := v.Alarms[i]
+		role := palette.Plain
+		switch {
+		case unacknowledged(al.State):
+			role = p.flash(true)
+		case al.State == "acknowledged":
+			role = palette.Strong
+		}
+		rows = append(rows, line{role, clock(al.At) + "  " + strings.ToUpper(p.tame(al.State)) + "  " + al.Text})
+		for _, l := range [][2]string{{"first cause: ", al.Cause}, {"do: ", al.Do}} {
+			if l[1] == "" {
+				continue
+			}
+			for _, s := range lines(p.tame(l[0]+l[1]), a.w-12) {
+				rows = append(rows, line{palette.Plain, "        " + s})
+			}
+		}
+	}
+	rows = append(rows, line{}, line{palette.Strong, "What happened, the newest first"})
+	for i := len(v.Log) - 1; i >= 0 && len(rows) < 400; i-- {
+		rows = append(rows, line{palette.Plain, clock(v.Log[i].At) + "  " + v.Log[i].Text})
+	}
+	p.scroll(a, 1, rows)
+}
+
+// help lists the keys from the key table.
+func (p *painter) help(a area) {
+	var rows []line
+	group := ""
+	for i := range bindings {
+		b := &bindings[i]
+		if b.group != group {
+			if group != "" {
+				rows = append(rows, line{})
+			}
+			group = b.group
+			rows = append(rows, line{palette.Strong, group})
+		}
+		for k, s := range lines(b.help, a.w-14) {
+			label := ""
+			if k == 0 {
+				label = b.label
+			}
+			rows = append(rows, line{palette.Plain, "  " + label + strings.Repeat(" ", max(1, 11-len(label))) + s})
+		}
+	}
+	p.scroll(a, 1, rows)
+}
+
+// glossary holds the words of the console, each with one meaning.
+var glossary = [][2]string{
+	{"arm", "give permission to drive for one run; it lapses by itself"},
+	{"as-found", "the board and its gains before the first touch"},
+	{"as-left", "the board and its gains when the job ended"},
+	{"breakaway", "the voltage at which a shaft at rest begins to turn"},
+	{"check", "a test in each session that something was seen working"},
+	{"cut", "output off; the motor coasts"},
+	{"dead time", "how long the speed does not answer a change of voltage"},
+	{"disarmed", "will not be commanded to turn; it may still coast"},
+	{"envelope", "the limits that no run may cross: volts, speed, current, bus, turns, heat, time"},
+	{"forecast", "what a plan is expected to do"},
+	{"gain K", "steady speed for each volt"},
+	{"GM", "gain margin: how much more gain the loop bears"},
+	{"hold-out", "data kept back from the fit, on which it is judged"},
+	{"look-only", "connected, never driving"},
+	{"Ms", "peak of the sensitivity: how near the loop comes to hunting; less is calmer"},
+	{"NRMSE", "error of the model as a share of the spread of the data; 0 is perfect"},
+	{"plan", "segments of drive with an end, held against the envelope"},
+	{"PM", "phase margin: how much more delay the loop bears, as an angle"},
+	{"proposal", "gains with their margins, forecast and worst case"},
+	{"push", "write gains to the board's RAM"},
+	{"ramp and cut", "bring to rest under power, then output off"},
+	{"re-read", "read the gains back after the power was off"},
+	{"rig", "motor, driver, board and load as one thing with a name"},
+	{"sheet", "the record of one job: a folder readable without this program"},
+	{"silence", "the check that the board stops by itself when it hears nothing"},
+	{"speed ceiling", "the speed at which the board trips"},
+	{"staircase", "steady speeds at rising and falling voltages"},
+	{"store", "keep gains in memory that lasts; an act of its own"},
+	{"trip", "a limiter stopped the motor; kept with its first cause until acknowledged and reset"},
+	{"verdict", "believed, usable with care, or refused, with reasons"},
+	{"verify", "the closed loop, measured against its forecast"},
+}
+
+// words shows the glossary.
+func (p *painter) words(a area) {
+	var rows []line
+	for _, g := range glossary {
+		for k, s := range lines(g[1], a.w-18) {
+			name := ""
+			if k == 0 {
+				name = g[0]
+			}
+			rows = append(rows, line{palette.Plain, name + strings.Repeat(" ", max(1, 15-len(name))) + s})
+		}
+	}
+	p.scroll(a, 1, rows)
+}
