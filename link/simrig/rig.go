@@ -22,7 +22,7 @@ type Rig struct {
 	faults []fault
 	wrong  map[string]bool // faults of the board that have begun
 
-	now           int64 // ns, console time
+	now           int64   // ns, console time
 	loop, compute int64   // ns
 	speedStep     float64 // rad/s that one count over the window is
 	current       sensor
