@@ -58,6 +58,35 @@ func TestCardHash(t *testing.T) {
 	}
 }
 
+// A box is ticked only for what was seen.
+func TestCardTicksOnlyAfterPowerCycle(t *testing.T) {
+	for _, tt := range []struct {
+		store StoreRecord
+		want  string
+	}{
+		{StoreRecord{Stored: ptr(true), PowerCycled: ptr(true), Identical: ptr(true)}, "power-cycle [x]"},
+		{StoreRecord{Stored: ptr(true), PowerCycled: ptr(false), Identical: ptr(true)}, "power-cycle [ ]"},
+		{StoreRecord{Stored: ptr(true), PowerCycled: ptr(true), Identical: ptr(false)}, "power-cycle [ ]"},
+		{StoreRecord{Stored: ptr(true)}, "power-cycle [ ]"},
+	} {
+		dir := filepath.Join(t.TempDir(), "job")
+		s, err := Create(dir, testHeader, testClock())
+		if err != nil {
+			t.Fatal(err)
+		}
+		if _, err := s.Entry(KindStore, "gains", tt.store); err != nil {
+			t.Fatal(err)
+		}
+		if err := s.Close("accepted", ""); err != nil {
+			t.Fatal(err)
+		}
+		r, _ := Open(dir)
+		if card := Card(CardOf(r)); !strings.Contains(card, tt.want) {
+			t.Errorf("%s is missing:\n%s", tt.want, card)
+		}
+	}
+}
+
 // A card of which nothing is known must not show a single figure as 0.
 func TestCardUnknown(t *testing.T) {
 	card := Card(CardData{})

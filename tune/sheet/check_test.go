@@ -149,6 +149,7 @@ func TestTampering(t *testing.T) {
 		{"the beginning of the tape", func(x tamper) { x.replace("tape-session.txt", "id 1", "id 2") }, Changed, 2, "tape-session.txt", ""},
 		{"the end of the tape", func(x tamper) { x.replace("tape-session.txt", "ok 1", "no 1") }, Changed, 8, "tape-session.txt", ""},
 		{"a way out of the folder", func(x tamper) { x.replace(indexName, " 0004-check-count.json", " ../0004-check-count.json") }, Changed, 0, indexName, "no file name"},
+		{"a folder below", func(x tamper) { x.replace(indexName, " 0004-check-count.json", " other/0004-check-count.json") }, Changed, 0, indexName, "no file name"},
 		{"line ends of another system", func(x tamper) {
 			x.edit(indexName, func(s string) string { return strings.ReplaceAll(s, "\n", "\r\n") })
 		}, Changed, 0, indexName, ""},

@@ -178,3 +178,69 @@ func TestEntryRefuses(t *testing.T) {
 		t.Errorf("%d entries, problems %v", sum.Entries, problems)
 	}
 }
+
+// Characters that do not print, the ones past the first 65536 too, are escapes
+// in the file and themselves again when read.
+func TestEntryReadsBackWhatDoesNotPrint(t *testing.T) {
+	dir := filepath.Join(t.TempDir(), "job")
+	s, err := Create(dir, testHeader, testClock())
+	if err != nil {
+		t.Fatal(err)
+	}
+	const text = "a\U000e0041\u202e\u0085\x1b\x7f<&>b é 試"
+	line, err := s.Entry(KindEvent, "x", EventRecord{What: text})
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, _ := Open(dir)
+	var e EventRecord
+	if err := r.JSON(line, &e); err != nil || e.What != text {
+		t.Errorf("read back %q, %v", e.What, err)
+	}
+	b, _ := os.ReadFile(filepath.Join(dir, line.File))
+	if want := `a\udb40\udc41\u202e\u0085\u001b\u007f<&>b é 試`; !strings.Contains(string(b), want) {
+		t.Errorf("the file holds %s, want %s", b, want)
+	}
+}
+
+// Words that come with a trace must not become settings of it.
+func TestTraceNotesAreNotSettings(t *testing.T) {
+	dir := filepath.Join(t.TempDir(), "job")
+	s, err := Create(dir, testHeader, testClock())
+	if err != nil {
+		t.Fatal(err)
+	}
+	tr := testTrace()
+	tr.Name = "step\n# window_s = 9"
+	cells := make([]string, tr.Len())
+	cells[3] = "\x1b[2J"
+	tr.Other = []trace.Column{{Name: "remark", Unit: "1", Text: cells}}
+	line, err := s.Trace("step", tr, "hold = from", "rad_per_count = 7\nhold = from")
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, _ := Open(dir)
+	got, err := r.Trace(line)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got.Window != tr.Window || got.Hold != tr.Hold || got.RadPerCount != tr.RadPerCount {
+		t.Errorf("settings changed: window %g, hold %s, %g rad a count", got.Window, got.Hold, got.RadPerCount)
+	}
+	if got.Other[0].Text[3] != `\x1b[2J` {
+		t.Errorf("an escape sequence in a cell: %q", got.Other[0].Text[3])
+	}
+	if diff := cmp.Diff(tr.Speed, got.Speed); diff != "" {
+		t.Error(diff)
+	}
+}
+
+// A record with more behind its end is not a closed one.
+func TestTextBehindTheEnd(t *testing.T) {
+	dir := mustWrite(t)
+	tamper{t, dir}.edit(indexName, func(s string) string { return s + "0010 2025-11-04" })
+	r, problems := Open(dir)
+	if r.Closed() || len(problems) == 0 {
+		t.Errorf("passes for closed; problems %v", problems)
+	}
+}
