@@ -62,6 +62,11 @@ type (
 		Started bool          // the motor was driven
 		Lasted  time.Duration // from the first drive value to the end
 	}
+	// TripLatched comes once for every trip that latches, with its first cause.
+	TripLatched struct {
+		At    time.Duration
+		Cause Cause
+	}
 	// CheckJudged is Step's own verdict on the silence check.
 	CheckJudged struct {
 		Check     Check
@@ -87,5 +92,6 @@ func (ArmRefused) rank() int    { return 7 }
 func (WriteAllowed) rank() int  { return 7 }
 func (WriteRefused) rank() int  { return 7 }
 func (CheckJudged) rank() int   { return 7 }
+func (TripLatched) rank() int   { return 7 }
 func (RunEnded) rank() int      { return 8 }
 func (Log) rank() int           { return 9 }

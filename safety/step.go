@@ -185,9 +185,11 @@ func (m *machine) world(e Event) {
 	case Panicked:
 		m.trip(CodePanic, e.Why)
 	case LimitsHeld:
-		m.LimitsHeld = e.OK && m.Phase == Disarmed
-		if !m.LimitsHeld {
+		if !e.OK {
+			m.LimitsHeld = false
 			m.tripIfHeld(CodeLimits, "")
+		} else if m.Phase == Disarmed {
+			m.LimitsHeld = true
 		}
 	case CheckPassed, CheckFailed:
 		m.checked(e)

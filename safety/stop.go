@@ -131,6 +131,7 @@ func (m *machine) trip(code Code, detail string) {
 	m.still()
 	m.Phase = Tripped
 	m.Trip = Trip{At: m.Now, Cause: c}
+	m.do(TripLatched{At: m.Now, Cause: c})
 }
 
 // tripIfHeld trips when the board may be armed or moving, and only notes the

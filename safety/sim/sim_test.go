@@ -1,0 +1,116 @@
+package sim
+
+import (
+	"os"
+	"strconv"
+	"sync"
+	"testing"
+	"time"
+
+	"gainwright/safety"
+)
+
+const worldTime = 4 * time.Minute
+
+// TestOneSeed plays the world of GAINWRIGHT_SEED, with every event if
+// GAINWRIGHT_TRACE is set; without, it shows that a seed gives the same history
+// twice.
+func TestOneSeed(t *testing.T) {
+	seed := uint64(1)
+	if s := os.Getenv("GAINWRIGHT_SEED"); s != "" {
+		n, err := strconv.ParseUint(s, 10, 64)
+		if err != nil {
+			t.Fatal(err)
+		}
+		seed = n
+	}
+	one := New(seed, nil)
+	if os.Getenv("GAINWRIGHT_TRACE") != "" {
+		one.Trace = func(s string) { t.Log(s) }
+	}
+	a := one.Run(worldTime)
+	for _, v := range a.Violations {
+		t.Error(v)
+	}
+	b := New(seed, nil).Run(worldTime)
+	if a.Digest != b.Digest || a.Active != b.Active {
+		t.Errorf("seed %d gave two histories: %x, %x", seed, a.Digest, b.Digest)
+	}
+	if c := New(seed+1, nil).Run(worldTime); c.Digest == a.Digest {
+		t.Error("two seeds gave the same history: the digest sees nothing")
+	}
+	t.Logf("ends %v, trips %v, active %v", a.Ends, a.Codes, a.Active)
+}
+
+// TestWorlds lets many seeded worlds go wrong in every way and has the referee
+// judge each. GAINWRIGHT_SIM_MINUTES asks for that many simulated minutes in
+// Armed, Count-down, Running and Stopping instead of the few of a usual run.
+func TestWorlds(t *testing.T) {
+	minutes, each := 400.0, 0
+	if s := os.Getenv("GAINWRIGHT_SIM_MINUTES"); s != "" {
+		n, err := strconv.ParseFloat(s, 64)
+		if err != nil {
+			t.Fatal(err)
+		}
+		minutes, each = n, 100
+	}
+	if testing.Short() {
+		minutes = 50
+	}
+	total := crowd(t, time.Duration(minutes*float64(time.Minute)))
+	t.Logf("%v active; ends %v; trips %v", total.Active, total.Ends, total.Codes)
+	for p := safety.Disarmed; p <= safety.Tripped; p++ {
+		for f := NoFault + 1; f < FaultEnd; f++ {
+			if minutes >= 400 && total.Cover[p][f] <= each {
+				t.Errorf("%v with %v came %d times", p, f, total.Cover[p][f])
+			}
+		}
+	}
+}
+
+// crowd runs worlds on all cores until they have been active for d in all.
+func crowd(t *testing.T, d time.Duration) (total Result) {
+	total.Codes = map[safety.Code]int{}
+	var mu sync.Mutex
+	var wg sync.WaitGroup
+	seed := uint64(0)
+	for range 2 {
+		wg.Go(func() {
+			for {
+				mu.Lock()
+				if total.Active >= d || len(total.Violations) > 0 {
+					mu.Unlock()
+					return
+				}
+				seed++
+				mine := seed
+				mu.Unlock()
+				r := New(mine, nil).Run(worldTime)
+				mu.Lock()
+				add(t, &total, r)
+				mu.Unlock()
+			}
+		})
+	}
+	wg.Wait()
+	return total
+}
+
+func add(t *testing.T, total *Result, r Result) {
+	total.Active += r.Active
+	for p := range r.Cover {
+		for f := range r.Cover[p] {
+			total.Cover[p][f] += r.Cover[p][f]
+		}
+	}
+	for i := range r.Ends {
+		total.Ends[i] += r.Ends[i]
+	}
+	for c, n := range r.Codes {
+		total.Codes[c] += n
+	}
+	if len(r.Violations) > 0 {
+		total.Violations = append(total.Violations, r.Violations...)
+		t.Errorf("seed %d: %v\nplay it: GAINWRIGHT_SEED=%d GAINWRIGHT_TRACE=1 go test ./safety/sim -run TestOneSeed -v", r.Seed, r.Violations[0], r.Seed)
+	}
+}
