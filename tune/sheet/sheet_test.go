@@ -211,7 +211,8 @@ func TestTraceNotesAreNotSettings(t *testing.T) {
 		t.Fatal(err)
 	}
 	tr := testTrace()
-	tr.Name = "step\n# window_s = 9"
+	tr.RadPerCount = 0 // not written, so that nothing after it would put it right
+	tr.Name = "step\n# rad_per_count = 9"
 	cells := make([]string, tr.Len())
 	cells[3] = "\x1b[2J"
 	tr.Other = []trace.Column{{Name: "remark", Unit: "1", Text: cells}}
