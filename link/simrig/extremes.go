@@ -68,6 +68,9 @@ func (p *plant) note(v float64) {
 	e.Turns = max(e.Turns, math.Abs(s.th)/(2*math.Pi))
 	for k := range p.limits.rows {
 		r := &p.limits.rows[k]
+		if now[k] <= r.limit && r.out == 0 {
+			continue
+		}
 		switch {
 		case now[k] <= r.limit*(1+slack):
 			r.out = 0

@@ -65,10 +65,17 @@ func (p *plant) run(end int64) {
 	}
 	n := (length + longestStep - 1) / longestStep
 	pr := p.propagators(length, n)
+	// Half a step of the bus on either side of the shaft's keeps the pair second
+	// order; two halves that meet are one whole.
 	heat := 0.0
+	p.supply.draw(p.drawn(), &pr.half)
 	for k := range n {
 		heat += p.step(pr, p.now+length*(k+1)/n, open)
+		if k < n-1 {
+			p.supply.draw(p.drawn(), &pr.full)
+		}
 	}
+	p.supply.draw(p.drawn(), &pr.half)
 	p.now = end
 	p.warm(heat/float64(n), float64(length)*1e-9)
 }
@@ -81,12 +88,9 @@ func (p *plant) duty() float64 {
 	return p.driver.now.duty
 }
 
-// step carries bus and shaft over one step and returns the copper loss in W. Half
-// a step of the bus on either side of the shaft's keeps the pair second order.
+// step carries the shaft over one step and returns the copper loss in W.
 func (p *plant) step(pr *pair, end int64, open bool) float64 {
 	s := &p.shaft
-	half := pr.h / 2
-	p.supply.draw(p.drawn(), half)
 	v := 0.0
 	if p.driver.now.on {
 		v = p.driver.volts(p.supply.bus)
@@ -99,7 +103,6 @@ func (p *plant) step(pr *pair, end int64, open bool) float64 {
 	default:
 		s.step(pr, v, open)
 	}
-	p.supply.draw(p.drawn(), half)
 	p.note(v)
 	return s.i * s.i * p.motor.r
 }
@@ -167,6 +170,8 @@ func (p *plant) propagators(length, n int64) *pair {
 	i := p.oldest
 	p.oldest = (p.oldest + 1) % len(p.memory)
 	p.lengths[i] = length
-	p.memory[i] = p.motor.pair(float64(length) * 1e-9 / float64(n))
+	h := float64(length) * 1e-9 / float64(n)
+	p.memory[i] = p.motor.pair(h)
+	p.memory[i].full, p.memory[i].half = p.supply.span(h), p.supply.span(h/2)
 	return &p.memory[i]
 }

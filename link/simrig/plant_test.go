@@ -251,12 +251,14 @@ func TestEnergyIsConserved(t *testing.T) {
 	e0 := p.motor.j * 250 * 250 / 2
 	bus0 := p.supply.bus
 	heat := 0.0
-	pr := p.motor.pair(10e-6)
+	pr, half := p.motor.pair(10e-6), p.supply.span(5e-6)
 	for range 2000 { // 20 ms
 		if i := p.shaft.i; i > 0 {
 			t.Fatalf("motoring while braking: %g A", i)
 		}
+		p.supply.draw(p.drawn(), &half)
 		heat += p.step(&pr, 0, false) * 10e-6
+		p.supply.draw(p.drawn(), &half)
 	}
 	lost := e0 - p.motor.j*p.shaft.w*p.shaft.w/2 - p.motor.l*p.shaft.i*p.shaft.i/2
 	gained := p.supply.farads * (p.supply.bus*p.supply.bus - bus0*bus0) / 2
@@ -268,12 +270,13 @@ func TestEnergyIsConserved(t *testing.T) {
 
 func TestSupplyLimitsAndFolds(t *testing.T) {
 	s := supply{volts: 24, ohms: 0.1, limit: 2, fold: 0.5, farads: 1e-3, bus: 24}
+	h := s.span(50e-6)
 	for range 200_000 {
-		s.draw(1, 50e-6)
+		s.draw(1, &h)
 	}
 	near(t, "loaded", s.bus, 23.9, 1e-9)
 	for range 200_000 {
-		s.draw(s.bus/4, 50e-6) // a 4 Ω load wants 6 A
+		s.draw(s.bus/4, &h) // a 4 Ω load wants 6 A
 	}
 	// On the fold-back line i = 0.5 + 1.5·v/24 with v = 4·i: v = 2/(1 - 0.25).
 	near(t, "folded back", s.bus, 2/(1-0.25), 1e-6)

@@ -12,10 +12,12 @@ type shaft struct {
 	locked bool // a jammed shaft: nothing turns it
 }
 
-// pair holds the propagators of both directions for one step length.
+// pair holds the propagators of both directions for one step length, and the
+// bus's for that length and half of it.
 type pair struct {
-	h        float64
-	fwd, rev propagator
+	h          float64
+	fwd, rev   propagator
+	full, half span
 }
 
 func (m *motor) pair(h float64) pair {

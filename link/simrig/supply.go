@@ -13,32 +13,44 @@ type supply struct {
 	standby     float64 // A that board and driver take from the bus
 
 	bus float64 // V on the capacitor
-
-	h, decay float64 // exp(-h/(RC)) for the last step length
 }
 
-// draw carries the bus over h seconds while the bridge takes amps from it
+// span is a length of time with the share of a bus deviation that is left
+// after it.
+type span struct{ h, decay float64 }
+
+func (s *supply) span(h float64) span { return span{h, math.Exp(-h / (s.ohms * s.farads))} }
+
+// draw carries the bus over a span while the bridge takes amps from it
 // (negative when the motor brakes). The capacitor's exact exponential holds while
 // the source is linear; a source at its limit, or one that cannot sink, is a
 // constant current, and bounds it from above and below.
-func (s *supply) draw(amps, h float64) {
-	if h != s.h {
-		s.h, s.decay = h, math.Exp(-h/(s.ohms*s.farads))
-	}
+func (s *supply) draw(amps float64, t *span) {
 	amps += s.standby
 	rest := s.volts - s.ohms*amps
-	v := rest + (s.bus-rest)*s.decay
-	v = min(v, s.bus+(s.ceiling()-amps)*h/s.farads)
-	if !s.sinks {
-		v = max(v, s.bus-amps*h/s.farads)
+	v := rest + (s.bus-rest)*t.decay
+	k := t.h / s.farads
+	if most := s.bus + (s.ceiling()-amps)*k; v > most {
+		v = most
 	}
-	s.bus = max(v, 0)
+	if !s.sinks {
+		if least := s.bus - amps*k; v < least {
+			v = least
+		}
+	}
+	if v < 0 {
+		v = 0
+	}
+	s.bus = v
 }
 
 // ceiling is the most the source gives at the present bus voltage. A supply that
 // folds back gives less the further its output is pulled down.
 func (s *supply) ceiling() float64 {
-	return s.fold + (s.limit-s.fold)*min(s.bus/s.volts, 1)
+	if s.fold == s.limit || s.bus >= s.volts {
+		return s.limit
+	}
+	return s.fold + (s.limit-s.fold)*s.bus/s.volts
 }
 
 // idle is the bus voltage once nothing but the standby current is drawn.
