@@ -208,3 +208,5 @@ func TestHostileTextAppearsNowhereRaw(t *testing.T) {
 		t.Error("the header does not give back what was recorded")
 	}
 }
+
+func newOf(form reflect.Type) any { return reflect.New(form).Interface() }
