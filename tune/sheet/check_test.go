@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 )
@@ -213,5 +214,40 @@ func TestHasNeedsEightDigits(t *testing.T) {
 	_, sum := Check(mustWrite(t))
 	if sum.Has(sum.Chain[:7]) || sum.Has("") || !sum.Has(strings.ToUpper(sum.Chain[:8])) {
 		t.Error("Has takes too short a hash, or not an upper-case one")
+	}
+}
+
+// No single bit of a sheet can change unseen: in every file, every byte in turn
+// has one bit turned over, and the check must name that file.
+func TestNoBitChangesUnseen(t *testing.T) {
+	dir := mustWrite(t)
+	found, err := os.ReadDir(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	bytes := 0
+	for _, e := range found {
+		f, err := os.OpenFile(filepath.Join(dir, e.Name()), os.O_RDWR, 0)
+		if err != nil {
+			t.Fatal(err)
+		}
+		defer f.Close()
+		content, _ := os.ReadFile(f.Name())
+		for i, b := range content {
+			if _, err := f.WriteAt([]byte{b ^ 1<<(i%8)}, int64(i)); err != nil {
+				t.Fatal(err)
+			}
+			problems, _ := Check(dir)
+			if !slices.ContainsFunc(problems, func(p Problem) bool { return p.File == e.Name() }) {
+				t.Fatalf("%s, byte %d, bit %d: %v", e.Name(), i, i%8, problems)
+			}
+			if _, err := f.WriteAt([]byte{b}, int64(i)); err != nil {
+				t.Fatal(err)
+			}
+			bytes++
+		}
+	}
+	if problems, _ := Check(dir); len(problems) > 0 || bytes < 2000 {
+		t.Errorf("%d bytes tried; put back, the sheet has %v", bytes, problems)
 	}
 }
