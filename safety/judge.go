@@ -14,7 +14,7 @@ const (
 	slipShare   = 0.3                    // speed may leave (V−IR)/Ke by this share
 	slipTime    = 300 * time.Millisecond // for this long
 	looseRatio  = 2.5                    // acceleration against the model's
-	looseTime   = 100 * time.Millisecond
+	looseTime   = 30 * time.Millisecond
 	aheadFrom   = 0.7                   // share of the ceiling from which to look ahead
 	aheadStop   = 20 * time.Millisecond // console and wire, from sample to output off
 	voltsSlack  = 0.03                  // share by which applied volts may be over what was asked
@@ -308,11 +308,17 @@ func (m *machine) judgeLoose(s protocol.Sample) bool {
 	if l.Gain <= 0 || l.Tau <= 0 || !j.sloped {
 		return false
 	}
-	// The volts of the slope's span are not known one by one, so the largest drive
-	// asked for stands for them.
-	end := l.Gain * math.Max(math.Abs(float64(s.Volts)), math.Abs(m.asked()))
-	most := (end + math.Abs(float64(s.Speed))) / l.Tau.Seconds()
-	far := math.Abs(j.slope) > looseRatio*most+float64(m.env.RestSpeed)/slopeSpan.Seconds()
+	// The volts of the slope's span are not known one by one, so the drive asked
+	// for and none at all stand beside those applied.
+	k, w := l.Gain, float64(s.Speed)
+	lo, hi := m.driveRange(float64(s.Volts))
+	most := (k*hi - w) / l.Tau.Seconds()
+	if j.slope < 0 {
+		most = (w - k*lo) / l.Tau.Seconds()
+	}
+	span := slopeSpan.Seconds()
+	grain := 4*float64(m.env.RestSpeed)/span + 4*m.env.RadPerCount/(span*span) // of encoder and window
+	far := math.Abs(j.slope) > looseRatio*math.Max(most, 0)+grain
 	if !j.lasts(far, &j.loose, &j.looseFrom, looseTime) {
 		return false
 	}
@@ -320,12 +326,14 @@ func (m *machine) judgeLoose(s protocol.Sample) bool {
 	return true
 }
 
-// asked is the drive in V last asked for; in closed loop the envelope's limit.
-func (m *machine) asked() float64 {
-	if m.Plan.plan.Segments[0].Mode == ModeVolts {
-		return m.Value
+// driveRange is what may have been applied of late; in closed loop anything up to
+// the envelope's limit.
+func (m *machine) driveRange(applied float64) (lo, hi float64) {
+	asked := m.Value
+	if m.Plan.plan.Segments[0].Mode == ModeSpeed {
+		return -float64(m.env.VoltsMax), float64(m.env.VoltsMax)
 	}
-	return float64(m.env.VoltsMax)
+	return math.Min(0, math.Min(applied, asked)), math.Max(0, math.Max(applied, asked))
 }
 
 func (m *machine) judgeInputs() {

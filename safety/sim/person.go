@@ -169,7 +169,7 @@ func (w *World) faults() {
 		}
 		return
 	}
-	if w.s.Phase != w.target || w.now < w.faultEnds+w.quiet() || w.rng.IntN(40) != 0 && w.s.Phase != safety.Stopping {
+	if w.s.Phase != w.target || w.now < w.faultEnds+w.quiet() || w.rng.IntN(40) != 0 && w.s.Phase != safety.Stopping && w.s.Phase != safety.Arming {
 		if w.now > w.faultEnds+40*time.Second {
 			w.faultEnds = w.now - 30*time.Second
 			w.pickFault() // that phase does not come

@@ -17,7 +17,7 @@ import (
 
 const (
 	ms         = time.Millisecond
-	boardStep  = 5 * ms
+	boardStep  = 10 * ms
 	tickStep   = 10 * ms
 	sampleStep = 20 * ms
 	frameStep  = 200 * ms
