@@ -138,6 +138,7 @@ func (c *console) hold(over map[string]float64) {
 
 func (c *console) arm() {
 	c.t.Helper()
+	c.wait(100 * time.Millisecond) // a board has to have seen the shaft at rest
 	n := c.must("nonce", "").Field(0)
 	crc := c.must("lim", "crc").Field(0)
 	tok, ok := protocol.ParseHex16([]byte(c.must("arm", n+" "+crc).Field(0)))
