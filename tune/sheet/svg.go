@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"html"
 	"math"
+	"slices"
 	"strings"
 
 	"gainwright/tune/sheet/plain"
@@ -275,12 +276,14 @@ func pointMark(x, y float64, i int) string {
 
 func (a axes) band(b *strings.Builder, s band) {
 	var up, back []string
-	for k := range min(len(s.x), len(s.low), len(s.high)) {
+	n := min(len(s.x), len(s.low), len(s.high))
+	for k := 0; k < n; k += 1 + n/pointsMax {
 		if a.drawable(s.x[k], s.low[k]) && a.drawable(s.x[k], s.high[k]) {
 			up = append(up, fmt.Sprintf("%.1f %.1f", a.x(s.x[k]), a.y(s.high[k])))
-			back = append([]string{fmt.Sprintf("%.1f %.1f", a.x(s.x[k]), a.y(s.low[k]))}, back...)
+			back = append(back, fmt.Sprintf("%.1f %.1f", a.x(s.x[k]), a.y(s.low[k])))
 		}
 	}
+	slices.Reverse(back)
 	if len(up) > 1 {
 		fmt.Fprintf(b, `<path d="M%s z" class="b"/>`+"\n", strings.Join(append(up, back...), "L"))
 	}

@@ -1,6 +1,7 @@
 package sheet
 
 import (
+	"fmt"
 	"math"
 	"strings"
 	"testing"
@@ -90,5 +91,22 @@ func TestPlotPutsMarksOnTheScale(t *testing.T) {
 	}
 	if a.y(20) >= a.y(-20) {
 		t.Error("the scale is upside down")
+	}
+}
+
+// The worst case's band goes out along its upper edge and back along its lower.
+func TestPlotBand(t *testing.T) {
+	x := []float64{0, 1, 2}
+	p := plot{bands: []band{{x: x, low: []float64{0, 1, 2}, high: []float64{10, 11, 12}}}}
+	a := p.axes()
+	want := `<path d="M`
+	for i, corner := range [][2]float64{{0, 10}, {1, 11}, {2, 12}, {2, 2}, {1, 1}, {0, 0}} {
+		if i > 0 {
+			want += "L"
+		}
+		want += fmt.Sprintf("%.1f %.1f", a.x(corner[0]), a.y(corner[1]))
+	}
+	if svg := p.svg(); !strings.Contains(svg, want+` z"`) {
+		t.Errorf("no band %s in\n%s", want, svg)
 	}
 }
