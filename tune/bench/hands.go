@@ -195,17 +195,21 @@ func (h *hands) PowerCycle(q job.Question) error {
 		s.asking, s.answer = &q, nil
 	})
 	h.cycle()
-	err := h.until(0, func(s *session) bool { return s.answer != nil || s.boots > before })
-	h.do(func(s *session) {
-		if s.answer != nil && s.answer.ID < 0 {
-			err = errors.Join(err, job.ErrDeclined)
+	// A start is told by the board itself, or shows as silence: its first line may
+	// be lost with the half line that the power cut off.
+	err := h.until(0, func(s *session) bool { return s.answer != nil || s.boots > before || s.core.Link().Lost })
+	for err == nil {
+		if _, e := h.Request(protocol.VerbLimit, "crc"); e == nil || errors.Is(e, job.ErrOver) {
+			err = e
+			break
 		}
-		s.asking, s.answer = nil, nil
-	})
-	if err != nil {
-		return err
+		declined := false
+		h.do(func(s *session) { declined = s.answer != nil && s.answer.ID < 0 })
+		if declined {
+			err = job.ErrDeclined
+		}
 	}
-	_, err = h.Watch(300 * time.Millisecond)
+	h.do(func(s *session) { s.asking, s.answer = nil, nil })
 	return err
 }
 
@@ -294,11 +298,17 @@ func (h *hands) result(r *running) job.Result {
 }
 
 func (h *hands) Keep(kind, name string, v any) error {
+	_, err := h.KeepFile(kind, name, v)
+	return err
+}
+
+func (h *hands) KeepFile(kind, name string, v any) (string, error) {
 	sh, err := h.record()
+	var l sheet.Line
 	if sh != nil {
-		_, err = sh.Entry(sheet.Kind(kind), name, v)
+		l, err = sh.Entry(sheet.Kind(kind), name, v)
 	}
-	return h.wrote(err)
+	return l.File, h.wrote(err)
 }
 
 func (h *hands) KeepText(kind, name, text string) error {

@@ -12,6 +12,7 @@ import (
 	"gainwright/link/tape"
 	"gainwright/protocol"
 	"gainwright/safety"
+	"gainwright/safety/rig"
 	"gainwright/safety/supervisor"
 	"gainwright/tune/job"
 	"gainwright/tune/sheet"
@@ -27,7 +28,7 @@ type Options struct {
 	// was lost comes back.
 	Open func(path string) (Opened, error)
 	// NewSheet makes the record, once the board is known. nil: no record.
-	NewSheet func(board string) (*sheet.Sheet, error)
+	NewSheet func(board string, r rig.Rig) (*sheet.Sheet, error)
 	// Simulated says that the far end is a simulated rig of this program's own.
 	Simulated bool
 	// Hand and Cycle act on a simulated rig: one turn of its shaft, its power. nil
@@ -117,7 +118,10 @@ func NewLive(opt Options) *Live {
 	l.tape = tape.NewWriter(l.late, tape.Config{Start: l.start, OnPanic: l.panicked, OnError: func(err error) {
 		l.post(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
 	}})
-	l.h = &hands{engine: l, open: opt.NewSheet, late: l.late}
+	l.h = &hands{engine: l, late: l.late}
+	if opt.NewSheet != nil {
+		l.h.open = func(board string) (*sheet.Sheet, error) { return opt.NewSheet(board, l.job.Rig) }
+	}
 	l.wallWas, l.monoWas = l.start.Round(0), 0
 	if opt.Ports != nil {
 		l.s.view.Ports = opt.Ports()

@@ -62,6 +62,8 @@ type Hands interface {
 
 	// Keep writes an entry into the record.
 	Keep(kind, name string, v any) error
+	// KeepFile is Keep, and returns the file's name.
+	KeepFile(kind, name string, v any) (string, error)
 	// KeepText writes a text into the record.
 	KeepText(kind, name, text string) error
 	// KeepTrace writes a trace into the record and returns its file name.

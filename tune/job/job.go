@@ -54,6 +54,7 @@ type Known struct {
 	StepTrace, SecondTrace *trace.Trace
 	StepFile, SecondFile   string
 	Fit                    *identify.Result
+	FitFile                string // of the chosen fit, in the record
 
 	FoundMargins *design.Margins
 	Proposals    []design.Proposal
@@ -61,15 +62,17 @@ type Known struct {
 	Gains        *design.Gains // proposed, as the board will hold them
 	NewSet       *GainSet
 	Margins      *design.Margins
+	Worst        *design.Worst
 	NoChange     bool
 	Refused      string // why nothing is proposed
 
-	Pushed   bool
-	Verified *sheet.VerifyRecord
-	StoredOK bool
-	LeftRec  *sheet.Snapshot
-	Checks   []sheet.CheckRecord
-	Remarks  []string
+	Pushed     bool
+	Verified   *sheet.VerifyRecord
+	forecastOf StepMetrics
+	StoredOK   bool
+	LeftRec    *sheet.Snapshot
+	Checks     []sheet.CheckRecord
+	Remarks    []string
 }
 
 // Job is one job on one rig. Its methods are called from one goroutine.

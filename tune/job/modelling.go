@@ -89,8 +89,13 @@ func (j *Job) doFit() (result, error) {
 	j.showModel()
 	best := res.Best()
 	for i := range res.Models {
-		if err := j.keepFit(&res.Models[i], res, set, best == &res.Models[i]); err != nil {
+		chosen := best == &res.Models[i]
+		file, err := j.keepFit(&res.Models[i], set, chosen)
+		if err != nil {
 			return "", err
+		}
+		if chosen {
+			j.FitFile = file
 		}
 	}
 	if err := j.keepMotor(); err != nil {
@@ -151,19 +156,18 @@ func paramWords(f identify.Fit) string {
 var words = map[string]string{"gain": "gain", "tau": "time constant", "tau2": "second time constant", "dead_time": "dead time",
 	"natural_frequency": "natural frequency", "damping": "damping", "slope": "slope", "offset": "offset", "drift": "drift"}
 
-func (j *Job) keepFit(f *identify.Fit, res identify.Result, set fitSettings, chosen bool) error {
+func (j *Job) keepFit(f *identify.Fit, set fitSettings, chosen bool) (file string, err error) {
 	rec := sheet.FitRecord{Kind: f.Model.Kind, InputFiles: []string{j.StepFile}, Used: f.Used, Masked: f.Masked,
 		NRMSE: sheet.Known(f.NRMSE), HoldoutNRMSE: sheet.Known(f.HoldoutNRMSE), VAF: sheet.Known(f.VAF * 100), WhitenessP: sheet.Known(f.WhitenessP),
 		Verdict: string(f.Verdict), Reasons: f.Reasons, Helps: f.Helps}
 	if j.SecondFile != "" {
 		rec.HoldoutFiles = []string{j.SecondFile}
 	}
-	var err error
 	if rec.Model, err = rawJSON(f); err != nil {
-		return err
+		return "", err
 	}
 	if rec.Settings, err = rawJSON(set); err != nil {
-		return err
+		return "", err
 	}
 	for _, p := range f.Params {
 		rec.Params = append(rec.Params, sheet.Quantity{Name: p.Name, Value: ptr(p.Value), Unit: p.Unit, PlusMinus: ptr(1.96 * p.SD),
@@ -173,7 +177,7 @@ func (j *Job) keepFit(f *identify.Fit, res identify.Result, set fitSettings, cho
 		t, y, yh := simulated(about(j.StepTrace), f.Model)
 		rec.Curve = &sheet.FitCurve{TimeS: t, MeasuredRadS: y, FittedRadS: yh}
 	}
-	return j.h.Keep("fit", f.Model.Kind, rec)
+	return j.h.KeepFile("fit", f.Model.Kind, rec)
 }
 
 // keepMotor keeps the row of values that a later job is compared with.
@@ -199,13 +203,19 @@ func (j *Job) keepMotor() error {
 	return j.h.Keep("fit", "motor", m)
 }
 
-// simulated is the model's answer to a record, offset and start at their best.
+// simulated is the model's answer to a record, offset and start at their best,
+// at the samples that are used.
 func simulated(tr *trace.Trace, m model.Linear) (t, y, yh []float64) {
-	yh, err := identify.Simulate(tr, m)
+	sim, err := identify.Simulate(tr, m)
 	if err != nil {
 		return nil, nil, nil
 	}
-	return tr.Time, tr.Speed, yh
+	for i, v := range sim {
+		if !math.IsNaN(v) {
+			t, y, yh = append(t, tr.Time[i]), append(y, tr.Speed[i]), append(yh, v)
+		}
+	}
+	return t, y, yh
 }
 
 func points(t, v []float64) []Point {

@@ -1,0 +1,232 @@
+package main
+
+import (
+	"context"
+	"crypto/rand"
+	"errors"
+	"fmt"
+	"os"
+	"os/signal"
+	"path/filepath"
+	"runtime"
+	"syscall"
+	"time"
+
+	"github.com/spf13/cobra"
+	"golang.org/x/term"
+
+	"gainwright/link/serialport"
+	"gainwright/link/simrig"
+	"gainwright/safety"
+	"gainwright/safety/rig"
+	"gainwright/tui"
+	"gainwright/tui/tap"
+	"gainwright/tune/bench"
+	"gainwright/tune/job"
+	"gainwright/tune/sheet"
+)
+
+// consoleFlags are what console and demo share.
+type consoleFlags struct {
+	port, rigFile, out, operator string
+	baud                         int
+}
+
+// consoleCommand opens the console. No script arms a real board: it insists on a
+// terminal for its standard input.
+func consoleCommand() *cobra.Command {
+	var f consoleFlags
+	c := &cobra.Command{
+		Use: "console [--port PATH] [--rig RIG.toml] [--out SHEET_DIR]", Short: "open the console (also what a bare gainwright does)", Args: cobra.NoArgs,
+		RunE: func(c *cobra.Command, _ []string) error {
+			o := bench.Options{Ports: portViews, Open: f.open}
+			if f.rigFile != "" {
+				r, text, err := readRig(f.rigFile)
+				if err != nil {
+					return err
+				}
+				o.Job.Rig, o.Job.RigText = r, text
+			}
+			return console(f, o)
+		},
+	}
+	c.Flags().StringVar(&f.port, "port", "", "serial port or pseudo-terminal; without it the console lists the ports")
+	c.Flags().StringVar(&f.rigFile, "rig", "", "rig file; without it the console asks for the nameplate")
+	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it one in the data directory")
+	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
+	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s")
+	return c
+}
+
+// demoCommand opens the console on a built-in rig behind a pseudo-terminal.
+func demoCommand() *cobra.Command {
+	var f consoleFlags
+	var simFile string
+	c := &cobra.Command{
+		Use: "demo", Short: "open the console on a built-in simulated rig", Args: cobra.NoArgs,
+		Long: "demo opens the console on a built-in simulated rig: a board in software behind a pseudo-terminal that is opened\n" +
+			"like any port. Nothing real moves. On screen, t turns its shaft by hand and p switches its power.",
+		RunE: func(c *cobra.Command, _ []string) error {
+			cfg, err := demoConfig(simFile)
+			if err != nil {
+				return usage(err)
+			}
+			r, text, err := bench.RigOf(cfg)
+			if err != nil {
+				return err
+			}
+			o := bench.Options{Simulated: true}
+			o.Job.Rig, o.Job.RigText = r, text
+			sim, err := bench.ServePTY(simrig.New(cfg, 1))
+			if errors.Is(err, bench.ErrNoPTY) {
+				sim = bench.ServePipe(simrig.New(cfg, 1))
+				o.Open = func(string) (bench.Opened, error) {
+					return bench.Opened{Port: sim.Port(), Baud: cfg.Board.Baud, Note: "a pipe in memory: this system has no pseudo-terminals"}, nil
+				}
+			} else if err != nil {
+				return err
+			} else {
+				f.baud = cfg.Board.Baud
+				o.Open = f.open
+			}
+			defer sim.Close()
+			o.Ports = func() []job.PortView {
+				return []job.PortView{{Path: sim.Path, Name: cfg.Name, Product: "simulated board " + cfg.Board.ID, Note: "built in, nothing real moves"}}
+			}
+			o.Hand, o.Cycle = sim.Hand, sim.Cycle
+			if f.out == "" {
+				if f.out, err = os.MkdirTemp("", "gainwright-demo-"); err != nil {
+					return err
+				}
+			}
+			return console(f, o)
+		},
+	}
+	c.Flags().StringVar(&simFile, "sim", "", "another simulated board (TOML)")
+	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
+	return c
+}
+
+func (f consoleFlags) open(path string) (bench.Opened, error) {
+	p, err := serialport.Open(path, f.baud)
+	if err != nil {
+		return bench.Opened{}, err
+	}
+	return bench.Opened{Port: p, Baud: p.Baud, Note: p.Lines}, nil
+}
+
+// newSheet opens the record: in the folder asked for, or in a new one of the
+// data directory.
+func (f consoleFlags) newSheet(o *bench.Options) func(board string, r rig.Rig) (*sheet.Sheet, error) {
+	return func(board string, r rig.Rig) (*sheet.Sheet, error) {
+		now := time.Now()
+		dir := f.out
+		if dir == "" {
+			data, err := sheet.DataDir(runtime.GOOS, os.Getenv)
+			if err != nil {
+				return nil, err
+			}
+			suffix, err := sheet.NewSuffix(rand.Reader)
+			if err != nil {
+				return nil, err
+			}
+			dir = filepath.Join(data, sheet.NewDirName(r.Name, board, now, suffix))
+		}
+		return sheet.Create(dir, sheet.Header{Rig: r.Name, BoardID: board, Program: o.Program, Operator: f.operator,
+			Start: now.Format(time.RFC3339Nano), Simulated: o.Simulated})
+	}
+}
+
+// restoreWait is how long a terminal gets to take its old looks back.
+const restoreWait = 500 * time.Millisecond
+
+// session is a live bench as the screens see it.
+type session struct{ *bench.Live }
+
+func (s session) Stop(source string) { s.Live.Stop(safety.ByStopKey) }
+
+// console runs the screens over a live bench until the person leaves or the
+// terminal goes away.
+func console(f consoleFlags, o bench.Options) error {
+	in := int(os.Stdin.Fd())
+	if !term.IsTerminal(in) {
+		return usage(errors.New("standard input is not a terminal: the console is worked by a person with keys; no script arms a board. For a simulated rig without a person use dryrun"))
+	}
+	o.Program = "gainwright " + versionWords()
+	o.Job.Version, o.Job.Operator = o.Program, f.operator
+	o.NewSheet = f.newSheet(&o)
+	// More threads than cores: a fit on every core must not keep the stop waiting
+	// for one.
+	runtime.GOMAXPROCS(runtime.NumCPU() + 2)
+	terminal, err := tap.MakeRaw(os.Stdin, os.Stdout)
+	if err != nil {
+		return fmt.Errorf("the terminal cannot be set up: %w", err)
+	}
+	defer terminal.Restore(restoreWait)
+	var live *bench.Live
+	o.OnPanic = func(v any, stack []byte) {
+		terminal.Restore(restoreWait)
+		fmt.Fprintf(os.Stderr, "\ngainwright: a fault of this program; a stop was sent. Watch the shaft.\n%v\n%s\n", v, stack)
+		if live != nil {
+			fmt.Fprintf(os.Stderr, "record: %s\n", live.View().Sheet)
+		}
+	}
+	live = bench.NewLive(o)
+	ctx, leave := context.WithCancel(context.Background())
+	defer leave()
+	keys := tap.New(os.Stdin, hooks(live, leave, o.OnPanic))
+	go keys.Run()
+	stopSignals := onSignals(live, leave)
+	defer stopSignals()
+	if f.port != "" {
+		live.Connect(f.port)
+	}
+	uiErr := tui.Run(ctx, tui.Options{Session: session{live}, Input: keys, Output: os.Stdout, Getenv: os.Getenv})
+	dir, recErr := live.Close()
+	terminal.Restore(restoreWait)
+	if dir != "" {
+		fmt.Fprintf(os.Stdout, "record: %s\n", dir)
+	}
+	if uiErr != nil && !errors.Is(uiErr, context.Canceled) {
+		return &exitError{exitFailed, uiErr}
+	}
+	if recErr != nil {
+		return &exitError{exitFailed, recErr}
+	}
+	return nil
+}
+
+// hooks are what the keys do ahead of the screens.
+func hooks(live *bench.Live, leave context.CancelFunc, onPanic func(any, []byte)) tap.Hooks {
+	return tap.Hooks{
+		OnStop: func(key byte) {
+			if key == tap.Space {
+				live.Stop(safety.ByStopKey)
+				return
+			}
+			live.Stop(safety.BySignal)
+			leave()
+		},
+		OnKey:    func(key byte) { live.Key(key == 'm') },
+		OnPaste:  func(int) { live.Paste() },
+		OnClosed: func(error) { live.Stop(safety.BySignal); leave() },
+		OnPanic: func(v any, stack []byte) {
+			live.Stop(safety.ByPanic)
+			onPanic(v, stack)
+		},
+	}
+}
+
+// onSignals stops the motor and leaves on every signal that asks a program to
+// end. Ctrl-Z reaches nobody: the terminal is raw.
+func onSignals(live *bench.Live, leave context.CancelFunc) (end func()) {
+	c := make(chan os.Signal, 4)
+	signal.Notify(c, os.Interrupt, syscall.SIGTERM, syscall.SIGHUP)
+	go func() {
+		for range c {
+			live.Stop(safety.BySignal)
+			leave()
+		}
+	}()
+	return func() { signal.Stop(c) }
+}

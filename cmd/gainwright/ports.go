@@ -1,0 +1,115 @@
+package main
+
+import (
+	"fmt"
+	"os"
+	"runtime/debug"
+
+	"github.com/spf13/cobra"
+
+	"gainwright/link/serialport"
+	"gainwright/protocol"
+	"gainwright/safety/rig"
+	"gainwright/tune/job"
+)
+
+// version is stamped by the linker: -ldflags "-X main.version=1.2.3".
+var version = ""
+
+func versionWords() string {
+	v := version
+	if v == "" {
+		v = "development"
+		if bi, ok := debug.ReadBuildInfo(); ok {
+			for _, s := range bi.Settings {
+				if s.Key == "vcs.revision" && len(s.Value) >= 12 {
+					v = "development " + s.Value[:12]
+				}
+			}
+		}
+	}
+	return v
+}
+
+func versionCommand() *cobra.Command {
+	return &cobra.Command{Use: "version", Short: "say which version this is", Args: cobra.NoArgs,
+		Run: func(c *cobra.Command, _ []string) {
+			fmt.Fprintf(c.OutOrStdout(), "gainwright %s, protocol %d\n", versionWords(), protocol.Major)
+		}}
+}
+
+// portViews lists the ports of this machine for the screens.
+func portViews() []job.PortView {
+	ports, err := serialport.List()
+	if err != nil {
+		return []job.PortView{{Note: err.Error()}}
+	}
+	var out []job.PortView
+	for _, p := range ports {
+		out = append(out, job.PortView{Path: p.Path, Name: p.ByID, Product: p.Product, Serial: p.Serial, Note: usbWords(p)})
+	}
+	return out
+}
+
+func usbWords(p serialport.Info) string {
+	if !p.USB {
+		return ""
+	}
+	return "USB " + p.VID + ":" + p.PID + " " + p.Manufacturer
+}
+
+func portsCommand() *cobra.Command {
+	var asJSON bool
+	c := &cobra.Command{Use: "ports", Short: "list serial ports; nothing is opened", Args: cobra.NoArgs,
+		RunE: func(c *cobra.Command, _ []string) error {
+			views := portViews()
+			if asJSON {
+				return printJSON(c.OutOrStdout(), map[string]any{"ports": views})
+			}
+			if len(views) == 0 {
+				fmt.Fprintln(c.OutOrStdout(), "no serial port found: is the cable in, and the adapter's driver installed? A pseudo-terminal is opened by its path: console --port PATH")
+			}
+			for _, v := range views {
+				fmt.Fprintf(c.OutOrStdout(), "%-24s %s %s %s %s\n", v.Path, v.Name, v.Product, v.Serial, v.Note)
+			}
+			return nil
+		}}
+	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object")
+	return c
+}
+
+// readRig reads a rig file; every error has its place.
+func readRig(path string) (rig.Rig, []byte, error) {
+	text, err := os.ReadFile(path)
+	if err != nil {
+		return rig.Rig{}, nil, usage(err)
+	}
+	r, err := rig.Parse(path, text)
+	return r, text, usage(err)
+}
+
+func checkCommand() *cobra.Command {
+	var asJSON bool
+	c := &cobra.Command{Use: "check RIG.toml", Short: "check a rig file", Args: cobra.ExactArgs(1),
+		RunE: func(c *cobra.Command, args []string) error {
+			r, _, err := readRig(args[0])
+			if err != nil {
+				return err
+			}
+			e := r.Envelope()
+			if asJSON {
+				return printJSON(c.OutOrStdout(), map[string]any{"name": r.Name, "hash": r.Hash, "volts_max_V": e.VoltsMax, "speed_max_rad_s": e.SpeedMax,
+					"current_max_A": e.CurrentMax, "bus_max_V": e.BusMax, "energy_J": r.Energy()})
+			}
+			fmt.Fprintf(c.OutOrStdout(), "%s: rig %q, up to %g V, %.0f rpm, %g A, bus %g to %g V\n", args[0], r.Name, e.VoltsMax, e.SpeedMax.RPM(), e.CurrentMax, e.BusMin, e.BusMax)
+			if j := r.Energy(); j > 0 {
+				fmt.Fprintf(c.OutOrStdout(), "stored motion at the speed limit: %.3g J\n", j)
+			}
+			if e.BusMax > 60 {
+				fmt.Fprintln(c.OutOrStdout(), "the bus may pass 60 V: treat it as hazardous by touch; qualified persons and local codes apply")
+			}
+			return nil
+		}}
+	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object")
+	return c
+}

@@ -1,0 +1,57 @@
+package job
+
+import (
+	"math"
+	"math/cmplx"
+
+	"gainwright/tune/design"
+	"gainwright/tune/model"
+	"gainwright/tune/sheet"
+)
+
+// bodePoints is how many frequencies a Bode plot of the record has.
+const bodePoints = 160
+
+// bode is the open loop of the proposal, and of its worst draw.
+func (j *Job) bode() *sheet.Bode {
+	f := j.Fit.Best()
+	if f == nil || j.Gains == nil || !j.Margins.Crossover.Known() {
+		return nil
+	}
+	g := *j.Gains
+	g.UMin, g.UMax = nil, nil
+	top := 0.999 * math.Pi / g.SampleTime
+	low := float64(j.Margins.Crossover) / 100
+	b := &sheet.Bode{CrossoverRadS: sheet.Known(float64(j.Margins.Crossover)), PhaseMarginDeg: sheet.Known(float64(j.Margins.PhaseMargin)),
+		PhaseCrossRadS: sheet.Known(float64(j.Margins.PhaseCrossover)), GainMarginDB: sheet.Known(float64(j.Margins.GainMarginDB))}
+	for i := range bodePoints {
+		b.FrequencyRadS = append(b.FrequencyRadS, low*math.Pow(top/low, float64(i)/(bodePoints-1)))
+	}
+	b.MagnitudeDB, b.PhaseDeg = response(j.loopModel(f), g, b.FrequencyRadS)
+	if j.Worst != nil {
+		b.WorstMagnitudeDB, b.WorstPhaseDeg = response(j.Worst.Model, g, b.FrequencyRadS)
+	}
+	return b
+}
+
+// response is an open loop in dB and degrees, the phase unwrapped from below.
+func response(m model.Linear, g design.Gains, w []float64) (db, deg []float64) {
+	l, err := design.OpenLoop(m, g, w)
+	if err != nil {
+		return nil, nil
+	}
+	turn := 0.0
+	for i, v := range l {
+		p := cmplx.Phase(v) * 180 / math.Pi
+		if i > 0 {
+			for p+turn-deg[i-1] > 180 {
+				turn -= 360
+			}
+			for p+turn-deg[i-1] < -180 {
+				turn += 360
+			}
+		}
+		db, deg = append(db, 20*math.Log10(cmplx.Abs(v))), append(deg, p+turn)
+	}
+	return db, deg
+}
