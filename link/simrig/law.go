@@ -10,7 +10,6 @@ type law struct {
 	windup                        string
 	onError                       bool // the derivative acts on r - y
 
-	begun bool
 	i, d  float32
 	lastE float32 // r - y of the period before
 	lastP float32 // kp·(b·r - y) of the period before
@@ -18,9 +17,9 @@ type law struct {
 	lastU float32
 }
 
-// reset is what entering the closed loop does: a zero integral.
+// reset is what entering the closed loop does: a zero integral, and nothing
+// before the first period, since an arm is only given at rest.
 func (l *law) reset() {
-	l.begun = false
 	l.i, l.d, l.lastE, l.lastP, l.lastD, l.lastU = 0, 0, 0, 0, 0, 0
 }
 
@@ -32,15 +31,6 @@ func (l *law) step(r, y, low, high float32) (u float32, clipped bool) {
 	in := -y
 	if l.onError {
 		in = e
-	}
-	if !l.begun {
-		l.begun = true
-		l.lastE, l.lastP, l.lastD = e, p, in
-		if l.disc == "incremental" {
-			// Differences need a period before the first. Starting from the
-			// feed-through alone makes the law equal to its position form.
-			l.lastP, l.lastE = 0, 0
-		}
 	}
 	ff := l.kv * r
 	switch {

@@ -18,6 +18,9 @@ type transmitter struct {
 // dropped, as on a chip; answers always fit, since requests come one at a time.
 const ringMax = 4096
 
+// sentMax bounds the bytes that have left the board and that nobody has taken.
+const sentMax = 1 << 16
+
 func (t *transmitter) skipTo(now int64) { t.free = max(t.free, now) }
 
 func (t *transmitter) put(now int64, b []byte) {
@@ -36,7 +39,9 @@ func (t *transmitter) drain(now int64) {
 	if n <= 0 {
 		return
 	}
-	t.sent = append(t.sent, t.pending[:n]...)
+	if len(t.sent) < sentMax { // nobody took them for so long: they are lost, as on a wire
+		t.sent = append(t.sent, t.pending[:n]...)
+	}
 	t.pending = append(t.pending[:0], t.pending[n:]...)
 	t.free += int64(n) * t.byteNS
 }
