@@ -1,0 +1,30 @@
+/* The host build: a small 24 V motor with a 2000-count encoder, 1 kHz. */
+#ifndef GW_CONFIG_H
+#define GW_CONFIG_H
+
+#define GW_FIRMWARE "reference-core 1.0"
+#define GW_BOARD "host"
+#define GW_BAUD 115200
+#define GW_LOOP_US 1000
+#define GW_DELAY_US 200
+#define GW_WIN 5
+#ifndef GW_PID
+#define GW_PID 1
+#endif
+#define GW_CPT 2000.0f
+#define GW_CURRENT_LSB_MA 1
+#define GW_BUS_LSB_MV 2
+#define GW_BUS_NOMINAL 24.0f
+#define GW_VMAX 24.0f
+#define GW_WMAX 600.0f
+#define GW_IMAX 10.0f
+#define GW_BUS_HARD_MAX 40.0f
+#define GW_CAPTURE 4000
+#define GW_INPUT_NAMES " estop guard"
+#define GW_ESTOP_MASK 1u
+#define GW_GUARD_MASK 2u
+#define GW_NOINIT /* static memory outlives a restart within one process */
+#define GW_RX_SIZE 256u
+#define GW_TX_SIZE 512u
+
+#endif
