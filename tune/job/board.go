@@ -180,7 +180,7 @@ func (j *Job) holdLimits(values map[string]float64, ask safety.LimitWrite) error
 		j.Limits = append(j.Limits, sheet.Quantity{Name: name, Value: &v, Unit: limitUnits[name], Why: "held by the board, read back equal"})
 	}
 	j.h.LimitsHeld(j.LimitsCRC)
-	return j.h.Keep("event", "limits-held", j.Limits)
+	return j.h.Keep("event", sheet.NameLimitsHeld, sheet.EventRecord{What: "limits held by the board", Detail: fmt.Sprintf("%d limits, read back equal bit for bit", len(j.Limits)), Limits: j.Limits})
 }
 
 func (j *Job) limitBits(values map[string]float64) ([]uint32, error) {

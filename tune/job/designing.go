@@ -1,6 +1,7 @@
 package job
 
 import (
+	"errors"
 	"fmt"
 	"math"
 
@@ -36,62 +37,15 @@ func (j *Job) Nudge(by int) {
 	_ = j.Do(StepDesign)
 }
 
-// designSettings is what the rules were told: enough to repeat the proposal from
-// the record.
-type designSettings struct {
-	MsMax          float64 `json:"ms_max"`
-	SampleTime     float64 `json:"sample_time"`
-	ComputeDelay   float64 `json:"compute_delay"`
-	Discretisation string  `json:"discretisation"`
-	Window         float64 `json:"window_s"`
-	Overshoot      float64 `json:"overshoot_target_percent"`
-	Weight         bool    `json:"has_setpoint_weight"`
-}
-
-// Design proposes gains for a model under a bound, and among them a setpoint
-// weight that keeps the overshoot target where the board has one. It is the
-// whole computation of the step "proposal": the record holds its inputs.
-func Design(m model.Linear, s designSettings) (proposals []design.Proposal, chosen int, err error) {
-	loop := LoopModel(m, s.Window)
-	bound := s.MsMax
-	for {
-		proposals, chosen, err = design.Propose(loop, design.Options{MsMax: bound, SampleTime: s.SampleTime, ComputeDelay: s.ComputeDelay,
-			Discretisation: s.Discretisation})
-		if err != nil || chosen < 0 {
-			return proposals, chosen, err
-		}
-		p := &proposals[chosen]
-		want := 0.8 * s.Overshoot
-		if float64(p.Margins.Step.Overshoot) <= want {
-			return proposals, chosen, nil
-		}
-		if s.Weight {
-			return proposals, chosen, weigh(loop, p, want)
-		}
-		if bound -= 0.05; bound < 1.15 {
-			p.Notes = append(p.Notes, fmt.Sprintf("the overshoot target of %.3g %% is not met even at Ms 1.2: the board has no setpoint weight; use a setpoint ramp", s.Overshoot))
-			return proposals, chosen, nil
-		}
-	}
-}
-
-// weigh lowers the setpoint weight until the forecast overshoot keeps want, in
-// percent. Margins do not depend on it.
-func weigh(m model.Linear, p *design.Proposal, want float64) error {
-	for b := 0.9; b > -0.05; b -= 0.1 {
-		g := p.Gains
-		g.SetpointWeight = math.Max(0, math.Round(b*10)/10)
-		judged, err := design.Judge(m, g)
-		if err != nil {
-			return err
-		}
-		if float64(judged.Step.Overshoot) <= want || b < 0.05 {
-			p.Gains, p.Margins = g, judged
-			p.Notes = append(p.Notes, fmt.Sprintf("setpoint weight %.1f keeps the forecast overshoot at %.1f %%", g.SetpointWeight, float64(judged.Step.Overshoot)))
-			return nil
-		}
-	}
-	return nil
+// designSettings is what the proposal of this job depends on beside the fit. The
+// worst case takes a winding up to 60 K warmer and ferrite magnets, −0.2 % per K
+// (common practice, no source).
+func (j *Job) designSettings() DesignSettings {
+	s := DesignSettings{MsMax: j.opt.MsMax, Overshoot: j.Rig.Targets.Overshoot, Settling: j.Rig.Targets.Settling, Law: LawOf(j.ID),
+		DriveMax: float64(j.Env.VoltsMax), Found: j.Found.digits(), Running: j.Running.digits(),
+		Seed: uint64(j.opt.Seed), WarmMin: 0, WarmMax: 60, MagnetPerKelvin: -0.002}
+	s.GainMin, s.GainMax = gainSpread(j.Static)
+	return s
 }
 
 // doDesign judges the gains as found, then proposes.
@@ -100,132 +54,44 @@ func (j *Job) doDesign() (result, error) {
 	if f == nil {
 		return "", refuse(731, "proposal", "the model is refused", "do the test that would help, then fit again")
 	}
-	loop := j.loopModel(f)
-	j.judgeFound(loop)
-	set := designSettings{MsMax: j.opt.MsMax, SampleTime: j.ID.Loop.Seconds(), ComputeDelay: j.ID.ComputeDelay.Seconds(), Discretisation: j.ID.Discretisation,
-		Window: j.ID.Window().Seconds(), Overshoot: j.Rig.Targets.Overshoot, Weight: contains(j.ID.GainNames, "b")}
-	proposals, chosen, err := Design(f.Model, set)
+	set := j.designSettings()
+	j.h.Show(func(v *View) { v.Busy = "proposal and its worst case" })
+	d, err := set.Design(*f)
+	j.h.Show(func(v *View) { v.Busy = "" })
+	j.FoundMargins, j.Proposals, j.Chosen, j.NoChange = d.Found, d.Proposals, d.Chosen, d.NoChange
 	if err != nil {
-		return "", err
-	}
-	j.Proposals, j.Chosen = proposals, chosen
-	if chosen < 0 {
-		why := "no rule applies"
-		if len(proposals) > 0 {
-			why = proposals[0].Refused
+		var r *RefusedError
+		if errors.As(err, &r) {
+			j.Refused = r.Cause
+			if keep := j.keepProposals(set, false); keep != nil {
+				err = errors.Join(err, keep)
+			}
 		}
-		j.Refused = why
-		return "", refuse(732, "proposal refused", why, "see the rules one by one on the design page")
+		return "", err
 	}
-	if j.NoChange = j.foundGoodEnough(); j.NoChange {
-		j.Gains, j.Margins = nil, j.FoundMargins
-		if g, err := j.Found.Design(j.ID, float64(j.Env.VoltsMax)); err == nil {
-			j.Gains = &g
+	j.NewSet, j.Gains, j.Margins, j.Worst = d.Set, d.Gains, d.Margins, d.Worst
+	j.showDesign()
+	if j.NoChange {
+		const words = "the gains as found meet targets and bounds: no adjustment needed"
+		if err := j.h.Keep("event", sheet.NameNoAdjustment, sheet.EventRecord{What: "no adjustment", Detail: words}); err != nil {
+			return "", err
 		}
-		j.showDesign(set)
-		return "the gains as found meet targets and bounds: no adjustment needed", j.keepProposals(set)
+		return words, j.keepProposals(set, true)
 	}
-	if err := j.round(loop, proposals[chosen].Gains); err != nil {
-		return "", err
-	}
-	if err := j.worstCase(loop, f); err != nil {
-		return "", err
-	}
-	j.showDesign(set)
 	m := j.Margins
 	return result(fmt.Sprintf("Kp %s V/(rad/s), Ki %s V/rad: Ms %.2f, PM %.0f°, forecast overshoot %.1f %%", number(j.Gains.Parallel().Kp), number(j.Gains.Parallel().Ki),
-		float64(m.Ms), float64(m.PhaseMargin), float64(m.Step.Overshoot))), j.keepProposals(set)
+		float64(m.Ms), float64(m.PhaseMargin), float64(m.Step.Overshoot))), j.keepProposals(set, true)
 }
 
-// judgeFound judges the gains as found on the same model.
-func (j *Job) judgeFound(loop model.Linear) {
-	j.FoundMargins = nil
-	g, err := j.Found.Design(j.ID, float64(j.Env.VoltsMax))
-	if err != nil {
-		return
-	}
-	g.UMin, g.UMax = nil, nil
-	if m, err := design.Judge(loop, g); err == nil {
-		j.FoundMargins = &m
-	}
-}
-
-// foundGoodEnough reports whether the as-found gains keep targets and bound, and
-// are not so slow that the proposal would more than halve the answer to a load.
-func (j *Job) foundGoodEnough() bool {
-	m := j.FoundMargins
-	if m == nil || !m.Stable || !m.Step.SettlingTime.Known() {
-		return false
-	}
-	t := j.Rig.Targets
-	if float64(m.Ms) > j.opt.MsMax+0.05 || float64(m.PhaseMargin) < 45 || float64(m.Step.Overshoot) > t.Overshoot ||
-		t.Settling > 0 && float64(m.Step.SettlingTime) > t.Settling {
-		return false
-	}
-	best := j.Proposals[j.Chosen].Margins
-	return float64(m.LoadStep.IAE) <= 2*float64(best.LoadStep.IAE)
-}
-
-// round puts the gains into the board's words, and judges what the board will
-// hold. Rounding may not cost the bound.
-func (j *Job) round(loop model.Linear, g design.Gains) error {
-	set, err := j.Running.With(g, j.ID)
-	if err != nil {
-		return refuse(733, "proposal", err.Error(), "the firmware has to offer that slot, or another law")
-	}
-	held, err := set.Design(j.ID, float64(j.Env.VoltsMax))
-	if err != nil {
-		return err
-	}
-	free := held
-	free.UMin, free.UMax = nil, nil // margins and unit step are those of the linear loop
-	m, err := design.Judge(loop, free)
-	if err != nil {
-		return err
-	}
-	if !m.Stable || float64(m.Ms) > j.opt.MsMax*1.01+1e-3 {
-		return refuse(734, "proposal", fmt.Sprintf("rounded to what the board holds, Ms is %.3f, over the bound of %.2f", float64(m.Ms), j.opt.MsMax),
-			"choose a smaller bound, or firmware with finer gains")
-	}
-	j.NewSet, j.Gains, j.Margins = &set, &held, &m
-	return nil
-}
-
-// worstCase judges the proposal on motors drawn from the ± of the model and from
-// what changes in service: temperature, and the stated spread of gain between
-// operating points and directions.
-func (j *Job) worstCase(loop model.Linear, f *identify.Fit) error {
-	s := design.Spread{Seed: uint64(j.opt.Seed), Cov: f.Cov, WarmMin: 0, WarmMax: 60, MagnetPerKelvin: -0.002}
-	for _, p := range f.Params {
-		v := p.Value
-		if p.Name == "dead_time" {
-			v = loop.DeadTime
-		}
-		s.Names, s.Values = append(s.Names, p.Name), append(s.Values, v)
-	}
-	if st := j.Static; st != nil && st.GainForward > 0 && st.GainReverse > 0 {
-		r := st.GainReverse / st.GainForward
-		s.GainMin, s.GainMax = math.Min(1, r), math.Max(1, r)
-	}
-	free := *j.Gains
-	free.UMin, free.UMax = nil, nil
-	j.h.Show(func(v *View) { v.Busy = "worst case" })
-	w, err := design.WorstCase(loop, free, s)
-	j.h.Show(func(v *View) { v.Busy = "" })
-	if err != nil {
-		return err
-	}
-	j.Worst = &w
-	return nil
-}
-
-func (j *Job) keepProposals(set designSettings) error {
+// keepProposals keeps every rule's answer with its settings, and what the board
+// will hold of the one that was chosen.
+func (j *Job) keepProposals(set DesignSettings, usable bool) error {
 	settings, err := rawJSON(set)
 	if err != nil {
 		return err
 	}
 	for i, p := range j.Proposals {
-		rec := sheet.ProposalRecord{Rule: p.Rule, Chosen: i == j.Chosen && !j.NoChange, Settings: settings, InputFiles: []string{j.FitFile}, Notes: p.Notes, Refused: p.Refused}
+		rec := sheet.ProposalRecord{Rule: p.Rule, Chosen: usable && i == j.Chosen && !j.NoChange, Settings: settings, InputFiles: []string{j.FitFile}, Notes: p.Notes, Refused: p.Refused}
 		if p.Refused == "" {
 			rec.Gains, rec.Margins = sheet.Raw(p.Gains), sheet.Raw(p.Margins)
 		}
@@ -241,7 +107,7 @@ func (j *Job) keepProposals(set designSettings) error {
 }
 
 // showDesign puts the proposal on the screens.
-func (j *Job) showDesign(set designSettings) {
+func (j *Job) showDesign() {
 	d := &DesignView{MsMax: j.opt.MsMax, NoChange: j.NoChange, CanBeMoved: true}
 	for i, p := range j.Proposals {
 		row := RuleRow{Rule: p.Rule, Chosen: i == j.Chosen && !j.NoChange, Note: p.Refused}

@@ -141,10 +141,11 @@ func (j *Job) doStaircase() (result, error) {
 }
 
 func (j *Job) keepStairs(static identify.Static, r Result) (result, error) {
-	rec := sheet.StaircaseRecord{TraceFile: r.File}
+	rec := sheet.StaircaseRecord{TraceFile: r.File, Params: staticQuantities(static, r.File)}
 	var pts []Point
 	for i, l := range j.Levels {
-		rec.Levels = append(rec.Levels, sheet.Level{VoltageV: l.Volts, SpeedRadS: l.Speed, Rising: j.rising[i]})
+		rec.Levels = append(rec.Levels, sheet.Level{VoltageV: l.Volts, SpeedRadS: l.Speed, Rising: j.rising[i], SpeedSDRadS: ptr(l.SpeedSD), Samples: l.N,
+			Settled: l.Settled, FromS: ptr(l.From), ToS: ptr(l.To)})
 		pts = append(pts, Point{l.Volts, l.Speed})
 	}
 	j.h.Show(func(v *View) {
@@ -157,6 +158,34 @@ func (j *Job) keepStairs(static identify.Static, r Result) (result, error) {
 	})
 	return result(fmt.Sprintf("gain about %.4g rad/s per V, sliding friction %.3g V forward, %.3g V reverse, time constant about %.3g s",
 		static.Gain, static.CoulombForward, static.CoulombReverse, j.Tau)), j.h.Keep("fit", "staircase", rec)
+}
+
+// staticQuantities is what a staircase tells, for the record.
+func staticQuantities(s identify.Static, file string) []sheet.Quantity {
+	why := fmt.Sprintf("weighted least squares on %d settled levels of %s", s.Used, file)
+	q := func(name, unit string, v, sd float64) sheet.Quantity {
+		out := sheet.Quantity{Name: name, Value: sheet.Known(v), Unit: unit, Why: why}
+		if sd > 0 {
+			out.PlusMinus = sheet.Known(1.96 * sd)
+		}
+		return out
+	}
+	return []sheet.Quantity{q("gain, both ways", "rad/s per V", s.Gain, s.GainSD), q("gain forward", "rad/s per V", s.GainForward, 0),
+		q("gain reverse", "rad/s per V", s.GainReverse, 0), q("sliding friction forward", "V", s.CoulombForward, s.CoulombForwardSD),
+		q("sliding friction reverse", "V", s.CoulombReverse, s.CoulombReverseSD), q("hysteresis", "1", s.Hysteresis, 0)}
+}
+
+// levelsOf turns recorded levels back into what a staircase is fitted on; nil
+// where a level lacks its spread.
+func levelsOf(rec sheet.StaircaseRecord) []identify.Level {
+	var out []identify.Level
+	for _, l := range rec.Levels {
+		if l.SpeedSDRadS == nil || l.FromS == nil || l.ToS == nil {
+			return nil
+		}
+		out = append(out, identify.Level{Volts: l.VoltageV, Speed: l.SpeedRadS, SpeedSD: *l.SpeedSDRadS, N: l.Samples, Settled: l.Settled, From: *l.FromS, To: *l.ToS})
+	}
+	return out
 }
 
 // levels averages the settled half of each stair.

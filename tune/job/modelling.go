@@ -11,17 +11,6 @@ import (
 	"gainwright/tune/trace"
 )
 
-// fitSettings is what a fit was told: enough to repeat it from the record.
-type fitSettings struct {
-	Kind      string  `json:"kind"`
-	Holdout   float64 `json:"holdout"`
-	FreeStart bool    `json:"free_start"`
-}
-
-func (f fitSettings) options() identify.Options {
-	return identify.Options{Kind: f.Kind, Holdout: f.Holdout, FreeStart: f.FreeStart}
-}
-
 // about cuts a trace to the part in which the plan drove about its middle: from
 // the middle of the settling on, to the end of the drive.
 func about(tr *trace.Trace) *trace.Trace {
@@ -64,23 +53,11 @@ func about(tr *trace.Trace) *trace.Trace {
 	return tr.Slice(from, last)
 }
 
-// Identify fits the models to a step record and judges them on a second one, or
-// on the step record's last half where there is none. It is the whole analysis
-// of the step "model": the record holds its inputs.
-func Identify(step, second *trace.Trace) (identify.Result, fitSettings, error) {
-	set := fitSettings{Kind: identify.KindAuto, Holdout: 0.5, FreeStart: true}
-	traces := []*trace.Trace{about(step)}
-	if second != nil {
-		traces = append(traces, about(second))
-	}
-	res, err := identify.RunJoint(traces, set.options())
-	return res, set, err
-}
-
 // doFit fits and judges.
 func (j *Job) doFit() (result, error) {
 	j.h.Show(func(v *View) { v.Busy, v.Share = "fitting", 0 })
-	res, set, err := Identify(j.StepTrace, j.SecondTrace)
+	set := fitDefaults
+	res, err := set.Identify(j.StepTrace, j.SecondTrace)
 	if err != nil {
 		return "", refuse(730, "model", err.Error(), "repeat the step test, larger if the envelope allows it")
 	}
@@ -156,7 +133,7 @@ func paramWords(f identify.Fit) string {
 var words = map[string]string{"gain": "gain", "tau": "time constant", "tau2": "second time constant", "dead_time": "dead time",
 	"natural_frequency": "natural frequency", "damping": "damping", "slope": "slope", "offset": "offset", "drift": "drift"}
 
-func (j *Job) keepFit(f *identify.Fit, set fitSettings, chosen bool) (file string, err error) {
+func (j *Job) keepFit(f *identify.Fit, set FitSettings, chosen bool) (file string, err error) {
 	rec := sheet.FitRecord{Kind: f.Model.Kind, InputFiles: []string{j.StepFile}, Used: f.Used, Masked: f.Masked,
 		NRMSE: sheet.Known(f.NRMSE), HoldoutNRMSE: sheet.Known(f.HoldoutNRMSE), VAF: sheet.Known(f.VAF * 100), WhitenessP: sheet.Known(f.WhitenessP),
 		Verdict: string(f.Verdict), Reasons: f.Reasons, Helps: f.Helps}
@@ -200,7 +177,7 @@ func (j *Job) keepMotor() error {
 	if j.Margins != nil {
 		m.PhaseMarginDeg = sheet.Known(float64(j.Margins.PhaseMargin))
 	}
-	return j.h.Keep("fit", "motor", m)
+	return j.h.Keep("fit", sheet.NameMotor, m)
 }
 
 // simulated is the model's answer to a record, offset and start at their best,

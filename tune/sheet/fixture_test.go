@@ -100,7 +100,7 @@ func (j job) write(t testing.TB, dir string) string {
 	stepFile := traced("step", stepTrace("step", 128))
 	entry(KindRun, "step", RunRecord{Name: "step", Purpose: "gain and time constant", TraceFile: stepFile, Reason: "plan done", Complete: true, Seed: 7, Versions: map[string]string{"gainwright": "test"}})
 	entry(KindFit, NameBreakaway, BreakawayRecord{ForwardV: []float64{1.3, 1.4, 1.5}, ReverseV: []float64{1.5, 1.6, 1.8}})
-	entry(KindFit, NameStaircase, StaircaseRecord{Levels: []Level{{2, 12, true}, {4, 55, true}, {6, 98, true}, {8, 141, true}, {6, 99, false}, {4, 56, false}}})
+	entry(KindFit, NameStaircase, StaircaseRecord{Levels: []Level{{VoltageV: 2, SpeedRadS: 12, Rising: true}, {VoltageV: 4, SpeedRadS: 55, Rising: true}, {VoltageV: 6, SpeedRadS: 98, Rising: true}, {VoltageV: 8, SpeedRadS: 141, Rising: true}, {VoltageV: 6, SpeedRadS: 99, Rising: false}, {VoltageV: 4, SpeedRadS: 56, Rising: false}}})
 	ft, fy := speeds(128, 0.088)
 	fitFile := entry(KindFit, "first-order", FitRecord{
 		Kind: "first-order", Model: []byte(`{"kind":"first-order","num":[21.4],"den":[0.088,1],"dead_time":0.0026}`),

@@ -13,6 +13,9 @@ const (
 	NameStaircase = "staircase"    // KindFit, StaircaseRecord
 	NameBreakaway = "breakaway"    // KindFit, BreakawayRecord
 	NameMotor     = "motor-values" // KindFit, MotorRecord
+
+	NameLimitsHeld   = "limits-held"   // KindEvent, with Limits
+	NameNoAdjustment = "no-adjustment" // KindEvent: the gains as found were good enough
 )
 
 // Quantity is one number with what a reader may ask of it.
@@ -135,6 +138,13 @@ type Level struct {
 	VoltageV  float64 `json:"voltage_V"`
 	SpeedRadS float64 `json:"speed_rad_s"`
 	Rising    bool    `json:"rising"` // reached from below
+
+	// Enough to fit the staircase again.
+	SpeedSDRadS *float64 `json:"speed_sd_rad_s,omitempty"` // of the single samples
+	Samples     int      `json:"samples,omitempty"`
+	Settled     bool     `json:"settled,omitempty"`
+	FromS       *float64 `json:"from_s,omitempty"` // of the averaged part, after the first drive value
+	ToS         *float64 `json:"to_s,omitempty"`
 }
 
 // StaircaseRecord is what a staircase showed. Kind fit, NameStaircase.
@@ -278,6 +288,7 @@ type Answer struct {
 // EventRecord is anything else worth a line: a trip, a restart of the board, an
 // override with its reason. Kind event.
 type EventRecord struct {
-	What   string `json:"what"`
-	Detail string `json:"detail"`
+	What   string     `json:"what"`
+	Detail string     `json:"detail"`
+	Limits []Quantity `json:"limits,omitempty"` // NameLimitsHeld: read back from the board
 }

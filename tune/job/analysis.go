@@ -1,0 +1,281 @@
+package job
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"time"
+
+	"gainwright/protocol"
+	"gainwright/tune/design"
+	"gainwright/tune/identify"
+	"gainwright/tune/model"
+	"gainwright/tune/trace"
+)
+
+// The analysis of a job is two pure functions, FitSettings.Identify and
+// DesignSettings.Design. Everything they depend on is an argument, and every
+// argument is in the record: the same gains can be computed again from there.
+
+// FitSettings is what a fit was told.
+type FitSettings struct {
+	Kind      string  `json:"kind"`
+	Holdout   float64 `json:"holdout"`
+	FreeStart bool    `json:"free_start"`
+}
+
+// fitDefaults is how a job fits.
+var fitDefaults = FitSettings{Kind: identify.KindAuto, Holdout: 0.5, FreeStart: true}
+
+// Identify fits the models to a step record and judges them on a second one, or
+// on the step record's last part where second is nil.
+func (set FitSettings) Identify(step, second *trace.Trace) (identify.Result, error) {
+	traces := []*trace.Trace{about(step)}
+	if second != nil {
+		traces = append(traces, about(second))
+	}
+	return identify.RunJoint(traces, identify.Options{Kind: set.Kind, Holdout: set.Holdout, FreeStart: set.FreeStart})
+}
+
+// Law is what a board says of the loop that it closes, as far as gains and
+// margins depend on it.
+type Law struct {
+	Form           string   `json:"form"`
+	Number         string   `json:"number"`
+	DerivativeOn   string   `json:"derivative_on"`
+	Discretisation string   `json:"discretisation"`
+	AntiWindup     string   `json:"anti_windup"`
+	Quadrants      int      `json:"quadrants"`
+	SampleTime     float64  `json:"sample_time"`   // s
+	ComputeDelay   float64  `json:"compute_delay"` // s
+	Window         float64  `json:"window_s"`
+	Slots          []string `json:"slots"` // of a gain set, in order
+}
+
+// LawOf takes the law from a board's identity.
+func LawOf(id protocol.Identity) Law {
+	return Law{Form: id.Form, Number: id.Number, DerivativeOn: id.Derivative, Discretisation: id.Discretisation, AntiWindup: id.AntiWindup,
+		Quadrants: id.Quadrants, SampleTime: id.Loop.Seconds(), ComputeDelay: id.ComputeDelay.Seconds(), Window: id.Window().Seconds(), Slots: id.GainNames}
+}
+
+// identity is the law as gain sets take it.
+func (l Law) identity() protocol.Identity {
+	whole := func(s float64) time.Duration { return time.Duration(math.Round(s * 1e9)) }
+	return protocol.Identity{Form: l.Form, Number: l.Number, Derivative: l.DerivativeOn, Discretisation: l.Discretisation, AntiWindup: l.AntiWindup,
+		Quadrants: l.Quadrants, Loop: whole(l.SampleTime), ComputeDelay: whole(l.ComputeDelay), GainNames: l.Slots}
+}
+
+// DesignSettings is what the proposal was told beside the fit.
+type DesignSettings struct {
+	MsMax     float64 `json:"ms_max"`
+	Overshoot float64 `json:"overshoot_target_percent"`
+	Settling  float64 `json:"settling_target_s"` // 0: no target
+	Law
+	DriveMax float64  `json:"drive_max_V"`
+	Found    []string `json:"found_words"`   // gains as found, eight digits a slot
+	Running  []string `json:"running_words"` // gains running before the push
+
+	// The motors of the worst case.
+	Seed            uint64  `json:"worst_seed,string"`
+	GainMin         float64 `json:"worst_gain_min"` // factors; both 0: not varied
+	GainMax         float64 `json:"worst_gain_max"`
+	WarmMin         float64 `json:"worst_warm_min_K"`
+	WarmMax         float64 `json:"worst_warm_max_K"`
+	MagnetPerKelvin float64 `json:"worst_magnet_per_K"`
+}
+
+// Designed is what came of a design.
+type Designed struct {
+	Found     *design.Margins // of the gains as found; nil where they cannot be judged
+	Proposals []design.Proposal
+	Chosen    int  // in Proposals; -1 where no rule applies
+	NoChange  bool // the gains as found meet targets and bounds
+	Set       *GainSet
+	Gains     *design.Gains // as the board will hold them, or holds them with NoChange
+	Margins   *design.Margins
+	Worst     *design.Worst // nil with NoChange
+}
+
+// ErrNoRule is inside the refusal of a design for which no rule applies.
+var ErrNoRule = errors.New("no rule applies")
+
+// Design judges the gains as found, proposes, rounds to what the board holds,
+// and judges that, also in the worst case. With an error, what was found before
+// it is returned.
+func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
+	out := Designed{Chosen: -1}
+	found, err := wordsSet(s.Slots, s.Found)
+	if err != nil {
+		return out, err
+	}
+	running, err := wordsSet(s.Slots, s.Running)
+	if err != nil {
+		return out, err
+	}
+	id, loop := s.identity(), LoopModel(f.Model, s.Window)
+	held, heldErr := found.Design(id, s.DriveMax)
+	if heldErr == nil {
+		if m, err := design.Judge(loop, linear(held)); err == nil {
+			out.Found = &m
+		}
+	}
+	if out.Proposals, out.Chosen, err = s.propose(loop); err != nil {
+		return out, err
+	}
+	if out.Chosen < 0 {
+		why := ErrNoRule.Error()
+		if len(out.Proposals) > 0 {
+			why = out.Proposals[0].Refused
+		}
+		return out, refuse(732, "proposal refused", why, "see the rules one by one on the design page")
+	}
+	if out.NoChange = s.goodEnough(out.Found, out.Proposals[out.Chosen]); out.NoChange {
+		out.Gains, out.Margins = &held, out.Found
+		return out, nil
+	}
+	if err := s.round(&out, loop, running, id); err != nil {
+		return out, err
+	}
+	w, err := design.WorstCase(loop, linear(*out.Gains), s.spread(f, loop))
+	if err == nil {
+		out.Worst = &w
+	}
+	return out, err
+}
+
+// linear takes the drive limits off: margins and the unit step are those of the
+// linear loop.
+func linear(g design.Gains) design.Gains {
+	g.UMin, g.UMax = nil, nil
+	return g
+}
+
+// propose asks the rules, and finds among the answers a setpoint weight that
+// keeps the overshoot target where the board has one.
+func (s DesignSettings) propose(loop model.Linear) (proposals []design.Proposal, chosen int, err error) {
+	bound := s.MsMax
+	for {
+		proposals, chosen, err = design.Propose(loop, design.Options{MsMax: bound, SampleTime: s.SampleTime, ComputeDelay: s.ComputeDelay,
+			Discretisation: s.Discretisation})
+		if err != nil || chosen < 0 {
+			return proposals, chosen, err
+		}
+		p := &proposals[chosen]
+		want := 0.8 * s.Overshoot
+		if float64(p.Margins.Step.Overshoot) <= want {
+			return proposals, chosen, nil
+		}
+		if contains(s.Slots, "b") {
+			return proposals, chosen, weigh(loop, p, want)
+		}
+		if bound -= 0.05; bound < 1.15 {
+			p.Notes = append(p.Notes, fmt.Sprintf("the overshoot target of %.3g %% is not met even at Ms 1.2: the board has no setpoint weight; use a setpoint ramp", s.Overshoot))
+			return proposals, chosen, nil
+		}
+	}
+}
+
+// weigh lowers the setpoint weight until the forecast overshoot keeps want, in
+// percent. Margins do not depend on it.
+func weigh(m model.Linear, p *design.Proposal, want float64) error {
+	for b := 0.9; b > -0.05; b -= 0.1 {
+		g := p.Gains
+		g.SetpointWeight = math.Max(0, math.Round(b*10)/10)
+		judged, err := design.Judge(m, g)
+		if err != nil {
+			return err
+		}
+		if float64(judged.Step.Overshoot) <= want || b < 0.05 {
+			p.Gains, p.Margins = g, judged
+			p.Notes = append(p.Notes, fmt.Sprintf("setpoint weight %.1f keeps the forecast overshoot at %.1f %%", g.SetpointWeight, float64(judged.Step.Overshoot)))
+			return nil
+		}
+	}
+	return nil
+}
+
+// goodEnough reports whether the as-found gains keep targets and bound, and are
+// not so slow that the proposal would more than halve the answer to a load.
+func (s DesignSettings) goodEnough(m *design.Margins, best design.Proposal) bool {
+	if m == nil || !m.Stable || !m.Step.SettlingTime.Known() {
+		return false
+	}
+	if float64(m.Ms) > s.MsMax+0.05 || float64(m.PhaseMargin) < 45 || float64(m.Step.Overshoot) > s.Overshoot ||
+		s.Settling > 0 && float64(m.Step.SettlingTime) > s.Settling {
+		return false
+	}
+	return float64(m.LoadStep.IAE) <= 2*float64(best.Margins.LoadStep.IAE)
+}
+
+// round puts the gains into the board's words, and judges what the board will
+// hold. Rounding may not cost the bound.
+func (s DesignSettings) round(out *Designed, loop model.Linear, running GainSet, id protocol.Identity) error {
+	set, err := running.With(out.Proposals[out.Chosen].Gains, id)
+	if err != nil {
+		return refuse(733, "proposal", err.Error(), "the firmware has to offer that slot, or another law")
+	}
+	held, err := set.Design(id, s.DriveMax)
+	if err != nil {
+		return err
+	}
+	m, err := design.Judge(loop, linear(held))
+	if err != nil {
+		return err
+	}
+	if !m.Stable || float64(m.Ms) > s.MsMax*1.01+1e-3 {
+		return refuse(734, "proposal", fmt.Sprintf("rounded to what the board holds, Ms is %.3f, over the bound of %.2f", float64(m.Ms), s.MsMax),
+			"choose a smaller bound, or firmware with finer gains")
+	}
+	out.Set, out.Gains, out.Margins = &set, &held, &m
+	return nil
+}
+
+// spread is the motors that the worst case is drawn from: the ± of the model,
+// and what changes in service.
+func (s DesignSettings) spread(f identify.Fit, loop model.Linear) design.Spread {
+	sp := design.Spread{Seed: s.Seed, Cov: f.Cov, GainMin: s.GainMin, GainMax: s.GainMax, WarmMin: s.WarmMin, WarmMax: s.WarmMax,
+		MagnetPerKelvin: s.MagnetPerKelvin}
+	for _, p := range f.Params {
+		v := p.Value
+		if p.Name == "dead_time" {
+			v = loop.DeadTime
+		}
+		sp.Names, sp.Values = append(sp.Names, p.Name), append(sp.Values, v)
+	}
+	return sp
+}
+
+// gainSpread is how far apart the gains of the two directions are, as factors on
+// the forward one; 0, 0 where that is not known.
+func gainSpread(s *identify.Static) (low, high float64) {
+	if s == nil || !(s.GainForward > 0) || !(s.GainReverse > 0) {
+		return 0, 0
+	}
+	r := s.GainReverse / s.GainForward
+	return math.Min(1, r), math.Max(1, r)
+}
+
+// digits is a gain set as its words on the wire, eight digits a slot.
+func (s GainSet) digits() []string {
+	var w []string
+	for _, b := range s.Bits {
+		w = append(w, fmt.Sprintf("%08X", b))
+	}
+	return w
+}
+
+// wordsSet turns words back into a set.
+func wordsSet(slots, words []string) (GainSet, error) {
+	s := GainSet{Names: slots}
+	if len(words) != len(slots) {
+		return s, fmt.Errorf("%d words for %d gains", len(words), len(slots))
+	}
+	for i, w := range words {
+		bits, ok := protocol.ParseHex32([]byte(w))
+		if !ok {
+			return s, fmt.Errorf("gain %s: %q is not eight hex digits", slots[i], w)
+		}
+		s.Bits = append(s.Bits, bits)
+	}
+	return s, nil
+}
