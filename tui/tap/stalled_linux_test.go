@@ -145,7 +145,7 @@ func TestWatchSizeTellsChangesOnce(t *testing.T) {
 	}
 	defer terminal.Close()
 	defer tty.Close()
-	sizes := make(chan [2]int, 10)
+	sizes := make(chan [2]int, 100)
 	ctx, cancel := context.WithCancel(t.Context())
 	done := make(chan struct{})
 	go func() { WatchSize(ctx, tty, func(c, r int) { sizes <- [2]int{c, r} }); close(done) }()
