@@ -10,6 +10,9 @@ import (
 	"gainwright/tune/sheet"
 )
 
+// namePush is the entry of a push of the proposal; a revert has its own.
+const namePush = "push"
+
 // doPush writes the proposed set to the board's RAM: shown old to new, confirmed
 // by a typed word, one atomic change, read back and compared bit for bit.
 func (j *Job) doPush() (result, error) {
@@ -19,7 +22,7 @@ func (j *Job) doPush() (result, error) {
 		}
 		return "", refuse(740, "push", "there is no proposal", "do the proposal first")
 	}
-	return j.push(*j.NewSet, "push")
+	return j.push(*j.NewSet, namePush)
 }
 
 // Revert pushes the as-found gains back.
