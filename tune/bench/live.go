@@ -166,7 +166,7 @@ func (l *Live) Stop(source safety.StopSource) {
 	if source != safety.ByStopKey || l.style.Load() == 0 {
 		l.cut()
 	}
-	l.post(func(s *session) { s.core.Stop(at, source) })
+	l.post(func(s *session) { s.core.Stop(s.notLate(at), source) })
 }
 
 // Key tells of a key that is not the stop key. In count-down and in motion every
@@ -182,7 +182,7 @@ func (l *Live) Key(mark bool) {
 		return // comes as an intent
 	}
 	l.cut()
-	l.post(func(s *session) { s.core.Do(safety.Key{At: at}) })
+	l.post(func(s *session) { s.core.Do(safety.Key{At: s.notLate(at)}) })
 }
 
 // Paste tells of many keys at once.
@@ -191,7 +191,7 @@ func (l *Live) Paste() {
 	if safety.Phase(l.phase.Load()).ArmHeld() {
 		l.cut()
 	}
-	l.post(func(s *session) { s.core.Do(safety.Paste{At: at}) })
+	l.post(func(s *session) { s.core.Do(safety.Paste{At: s.notLate(at)}) })
 }
 
 // Alive renews the lease of the screen.
@@ -238,6 +238,12 @@ func (l *Live) until(limit time.Duration, cond func(*session) bool) error {
 	case <-l.over:
 		return job.ErrOver
 	}
+}
+
+// notLate is a stamp made in another goroutine, no older than the limiter takes
+// without calling it a clock that went back.
+func (s *session) notLate(at time.Duration) time.Duration {
+	return min(max(at, s.now-safety.LateEvent/2), s.now)
 }
 
 func (l *Live) wall() time.Time { return l.start.Round(0).Add(l.now()) }
@@ -333,8 +339,8 @@ func (l *Live) tick() {
 		s.core.Do(safety.ClockJump{At: s.now})
 	}
 	l.wallWas, l.monoWas = wall, s.now
-	if t := time.Duration(l.leaseAt.Load()); t > 0 && t <= s.now {
-		s.core.Do(safety.Lease{At: t})
+	if t := time.Duration(l.leaseAt.Swap(0)); t > 0 {
+		s.core.Do(safety.Lease{At: s.notLate(t)})
 	}
 	wasLost := s.core.Link().Lost
 	s.core.Tick(s.now)
@@ -358,6 +364,7 @@ func (l *Live) giveUp() {
 		go line.port.Close() // a Close may hang with its device
 	}
 	s := l.s
+	s.opened = false
 	s.view.Refusal = &job.RefusalView{Number: int(safety.CodeLinkLost), What: "LINK LOST", Cause: s.core.Link().LostWhy,
 		Remedy: "watch the shaft; use the E-stop if it turns. The port is looked for; then do the step \"Identity\" again"}
 }
@@ -415,7 +422,7 @@ func (l *Live) connect(o Opened, path string) {
 		l.line.Store(line)
 		l.path = path
 		s.view.Port = path
-		s.view.Link.State = job.Opening
+		s.opened = true
 		s.core.Opened(s.now)
 		s.say("opened " + path + "; " + o.Note)
 	})
@@ -464,7 +471,7 @@ func (l *Live) Post(i job.Intent) {
 			l.step(func(*job.Job) { ports := l.opt.Ports(); l.do(func(s *session) { s.view.Ports = ports }) })
 		}
 	case job.DoStep:
-		l.step(func(j *job.Job) { _ = j.Do(i.Step) })
+		l.step(func(j *job.Job) { l.doStep(j, i.Step) })
 	case job.SkipStep:
 		l.step(func(j *job.Job) { j.Skip(i.Step, i.Reason) })
 	case job.Revert:
@@ -486,6 +493,21 @@ func (l *Live) Post(i job.Intent) {
 	default:
 		l.post(func(s *session) { s.intent(i) })
 	}
+}
+
+// doStep begins a step. The step "port" is a port's opening: with one port there
+// is nothing to choose.
+func (l *Live) doStep(j *job.Job, id job.StepID) {
+	if id != job.StepPort || l.line.Load() != nil {
+		_ = j.Do(id)
+		return
+	}
+	ports := l.View().Ports
+	if len(ports) == 1 && ports[0].Path != "" {
+		l.pick(ports[0].Path)
+		return
+	}
+	l.do(func(s *session) { s.say("choose a port on the ports page") })
 }
 
 // pick opens a port and asks the board what it is.

@@ -22,6 +22,7 @@ type session struct {
 	now  time.Duration
 	view job.View
 
+	opened   bool     // a port is open
 	run      *running // the run that is shown, armed or under way
 	lastStop *supervisor.StopTimes
 	stops    int // answered stops so far

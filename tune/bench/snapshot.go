@@ -50,6 +50,8 @@ func (s *session) linkView() job.LinkView {
 	switch {
 	case l.Lost:
 		v.State, v.Why = job.LinkLost, l.LostWhy
+	case !s.opened:
+		v.State = job.NoPort
 	case !l.Connected && !l.Seen:
 		v.State = job.Opening
 	case !l.Seen || l.Age > limit:

@@ -41,7 +41,7 @@ const budgetMax = 2 * time.Hour
 func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
 	v := &Virtual{rig: rig, start: start, budget: budgetMax}
 	v.wire = virtualWire{baud: rig.Config().Board.Baud, now: func() time.Duration { return v.s.now }}
-	v.s = &session{}
+	v.s = &session{opened: true}
 	v.s.core = supervisor.NewCore(&v.wire, v.s, 1)
 	v.s.core.Simulated = true
 	v.s.view.Simulated = true

@@ -151,6 +151,9 @@ func (j *Job) refused(id StepID, err error) error {
 		s.Status = ToDo
 	}
 	var r *RefusedError
+	if errors.As(err, &r) && r.Number > int(safety.CodeAsked)-1 && r.Number < int(safety.CodeNoPlan) {
+		s.Status = ToDo // stopped by the person: nothing was refused
+	}
 	if errors.As(err, &r) {
 		j.h.Show(func(v *View) {
 			v.Refusal = &RefusalView{Number: r.Number, What: r.What, Cause: r.Cause, Remedy: r.Remedy}

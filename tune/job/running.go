@@ -14,7 +14,10 @@ import (
 
 // run has a plan forecast, shown, armed, run and recorded.
 func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, error) {
-	view, quantities := j.forecast(plan)
+	view, quantities, err := j.forecast(plan)
+	if err != nil {
+		return Result{}, err
+	}
 	r, err := j.h.Run(Run{Plan: plan, View: view, Capture: capture})
 	if err != nil {
 		return r, j.admitError(plan.Name, err)
