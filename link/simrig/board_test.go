@@ -166,6 +166,7 @@ func TestStaleDriveLinesAreIgnored(t *testing.T) { // P6.3, P6.5
 	c.r.Receive(protocol.AppendDriveVolts(nil, c.k, c.token, 15))
 	c.r.Receive(protocol.AppendDriveVolts(nil, c.k+1, c.token+1, 15))
 	c.r.Receive(protocol.AppendDriveSpeed(nil, c.k+1, c.token, 50))
+	c.wait(20 * time.Millisecond)
 	c.volts(200*time.Millisecond, 5)
 	if e := c.r.Extremes(); e.Volts > 5.1 {
 		t.Errorf("%g V after stale lines", e.Volts)
@@ -469,6 +470,15 @@ func TestCapture(t *testing.T) { // P10
 	if v := float64(word(19, 1)) * c.id.Scales.VoltsLSB; v != 0 {
 		t.Errorf("%g V before the trigger", v)
 	}
+	// The first order leaves the pins 100 µs into its loop period, so the sample
+	// after it has the mean of 0.1 of nothing and 0.9 of 8 V, and was the first
+	// after the 20 of before.
+	if v := float64(word(21, 1)) * c.id.Scales.VoltsLSB; math.Abs(v-0.9*8) > 0.02 {
+		t.Errorf("%g V over the first loop period", v)
+	}
+	if v := float64(word(20, 1)) * c.id.Scales.VoltsLSB; v != 0 {
+		t.Errorf("%g V at the trigger", v)
+	}
 	if v := float64(word(30, 1)) * c.id.Scales.VoltsLSB; math.Abs(v-8) > 0.02 {
 		t.Errorf("%g V after the trigger", v)
 	}
@@ -519,5 +529,63 @@ func TestSameSeedSameBytes(t *testing.T) {
 	}
 	if bytes.Equal(a, run(6, time.Millisecond)) {
 		t.Error("another seed gives the same bytes")
+	}
+}
+
+// TestBreakawayOfTheWholeRig ramps the drive up until the shaft moves: dead
+// band, friction of that direction, torque constant and resistance together.
+func TestBreakawayOfTheWholeRig(t *testing.T) {
+	for _, sign := range []float64{1, -1} {
+		c := newConsole(t, benchConfig())
+		c.hold(nil)
+		c.arm()
+		v := 1.0
+		for c.r.Speed() == 0 && v < 3 {
+			v += 0.002
+			c.volts(20*time.Millisecond, sign*v)
+		}
+		tr := c.r.Truth(0)
+		want := tr.BreakawayForward
+		if sign < 0 {
+			want = tr.BreakawayReverse
+		}
+		// The duty has steps of 12 mV, and the bus that it is worked out from
+		// 20 mV of noise.
+		if math.Abs(v-want) > 0.02 {
+			t.Errorf("breaks away at %g V, truth %g V", sign*v, want)
+		}
+	}
+}
+
+// TestDeadTimeIsContinuous finds when the winding first sees an order.
+func TestDeadTimeIsContinuous(t *testing.T) {
+	cfg := benchConfig()
+	cfg.Driver.DeadTime = 0.00237
+	c := newConsole(t, cfg)
+	c.hold(nil)
+	c.arm()
+	c.now = c.now.Truncate(time.Millisecond) + 1700*time.Microsecond
+	c.pump()
+	c.r.Receive(protocol.AppendDriveVolts(nil, 1, c.token, 5))
+	// The loop period after it begins 300 µs later; 100 µs compute delay.
+	want := c.now + 300*time.Microsecond + 100*time.Microsecond + 2370*time.Microsecond
+	for c.r.plant.shaft.i == 0 && c.now < want+time.Millisecond {
+		c.now += 10 * time.Microsecond
+		c.r.Advance(c.now)
+		c.r.sync()
+	}
+	if c.now != want+10*time.Microsecond {
+		t.Errorf("current flows at %v, want it just after %v", c.now, want)
+	}
+}
+
+func TestBrakingIsNotTheWrongWay(t *testing.T) {
+	c := newConsole(t, benchConfig())
+	c.hold(map[string]float64{"wrong": 0.02})
+	c.arm()
+	c.volts(time.Second, 10)
+	c.volts(time.Second, -6)
+	if !c.r.Powered() || c.r.Speed() > -50 {
+		t.Errorf("%g rad/s, %q", c.r.Speed(), c.events)
 	}
 }

@@ -230,7 +230,7 @@ func TestSplitStepsAgreeWithSmallOnes(t *testing.T) {
 		}
 		worst, top = max(worst, math.Abs(a.w-b.w)), max(top, math.Abs(b.w))
 	}
-	if worst > 2e-3*top {
+	if worst > 1e-6*top {
 		t.Errorf("50 µs and 1 µs differ by %g rad/s of %g", worst, top)
 	}
 	t.Logf("largest difference %.3g rad/s, top speed %.3g", worst, top)
