@@ -26,7 +26,7 @@ type canvas struct {
 	marks  map[int]string // combining marks by cell
 	styles *palette.Styles
 	ascii  bool
-	out    strings.Builder
+	out    []byte
 }
 
 func (c *canvas) reset(w, h int) {
@@ -64,15 +64,14 @@ func (c *canvas) set(x, y int, r rune, role palette.Role) {
 // roles around each piece. Blanks at the end of a row are left out unless they
 // show.
 func (c *canvas) String() string {
-	c.out.Reset()
-	c.out.Grow(c.w*c.h*2 + 64)
+	c.out = c.out[:0]
 	for y := 0; y < c.h; y++ {
 		if y > 0 {
-			c.out.WriteByte('\n')
+			c.out = append(c.out, '\n')
 		}
 		c.row(y)
 	}
-	return c.out.String()
+	return string(c.out)
 }
 
 func (c *canvas) row(y int) {
@@ -89,21 +88,25 @@ func (c *canvas) row(y int) {
 			role = at // a blank looks the same, so no sequence is spent on it
 		}
 		if role != at {
-			c.out.WriteString(after)
+			c.out = append(c.out, after...)
 			var before string
 			before, after = c.styles.Wrap(role)
-			c.out.WriteString(before)
+			c.out = append(c.out, before...)
 			at = role
 		}
 		if row[x].r == tail {
 			continue
 		}
-		c.out.WriteRune(row[x].r)
+		if r := row[x].r; r < utf8.RuneSelf {
+			c.out = append(c.out, byte(r))
+		} else {
+			c.out = utf8.AppendRune(c.out, r)
+		}
 		if len(c.marks) > 0 {
-			c.out.WriteString(c.marks[y*c.w+x])
+			c.out = append(c.out, c.marks[y*c.w+x]...)
 		}
 	}
-	c.out.WriteString(after)
+	c.out = append(c.out, after...)
 }
 
 // flat reports whether a blank in this role looks like no blank at all.

@@ -139,12 +139,17 @@ func Line[P ~struct{ T, V float64 }](c *Chart, k Kind, pts []P, scale float64) {
 	}
 	last := float64(len(c.lo) - 1)
 	var px, py float64
-	have := false
+	have, col := false, -1 // col: the column of the point before, if it lies inside
 	for i := range pts {
 		p := Point(pts[i])
 		x, y := (p.T-c.ax.X0)*c.kx, p.V*scale
 		if x-x != 0 || y-y != 0 { // NaN or infinite
-			have = false
+			have, col = false, -1
+			continue
+		}
+		if col >= 0 && x >= 0 && x <= last && int(x+0.5) == col {
+			c.extend(col, y) // most points share their column with the one before
+			px, py = x, y
 			continue
 		}
 		switch {
@@ -153,7 +158,10 @@ func Line[P ~struct{ T, V float64 }](c *Chart, k Kind, pts []P, scale float64) {
 		case x >= 0 && x <= last:
 			c.extend(int(x+0.5), y)
 		}
-		px, py, have = x, y, true
+		px, py, have, col = x, y, true, -1
+		if x >= 0 && x <= last {
+			col = int(x + 0.5)
+		}
 	}
 	c.emit(k)
 }
@@ -202,9 +210,21 @@ func (c *Chart) emit(k Kind) {
 		if c.lo[col] > c.hi[col] || !c.pattern(k, col) {
 			continue
 		}
-		for row := c.dotRow(c.hi[col]); row <= c.dotRow(c.lo[col]); row++ {
-			c.dot(k, col, row)
+		c.upright(k, col, c.dotRow(c.hi[col]), c.dotRow(c.lo[col]))
+	}
+}
+
+// upright sets the dots of a column from row top to row bottom, cell by cell.
+func (c *Chart) upright(k Kind, col, top, bottom int) {
+	x := col / c.dx
+	for y := top / c.dy; y <= bottom/c.dy; y++ {
+		var m uint8
+		for row := max(top-y*c.dy, 0); row <= min(bottom-y*c.dy, c.dy-1); row++ {
+			m |= bit(c.glyphs, col%c.dx, row)
 		}
+		i := (c.py+y)*c.w + c.px + x
+		c.mask[i] |= m
+		c.cells[i] = Cell{glyph(c.glyphs, c.mask[i], k), k}
 	}
 }
 
@@ -228,16 +248,6 @@ func (c *Chart) dotRow(y float64) int {
 	top := float64(c.ph*c.dy - 1)
 	r := (c.ax.Y1 - min(max(y, c.ax.Y0), c.ax.Y1)) * c.ky
 	return int(min(max(r, 0), top) + 0.5)
-}
-
-func (c *Chart) dot(k Kind, col, row int) {
-	x, y := col/c.dx, row/c.dy
-	if x >= c.pw || y >= c.ph || x < 0 || y < 0 {
-		return
-	}
-	i := (c.py+y)*c.w + c.px + x
-	c.mask[i] |= bit(c.glyphs, col%c.dx, row%c.dy)
-	c.cells[i] = Cell{glyph(c.glyphs, c.mask[i], k), k}
 }
 
 // Points draws every finite point by itself, with a sign that stands out from
