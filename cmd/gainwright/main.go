@@ -90,7 +90,7 @@ func newRoot() *cobra.Command {
 	root.RunE = c.RunE
 	root.Flags().AddFlagSet(c.Flags())
 	root.AddCommand(c, demoCommand(), portsCommand(), checkCommand(), dryrunCommand(), simCommand(), fitCommand(), designCommand(),
-		marginsCommand(), versionCommand())
+		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), versionCommand())
 	return root
 }
 

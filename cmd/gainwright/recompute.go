@@ -104,7 +104,7 @@ func (r recomputeReport) print(out io.Writer) {
 		return
 	}
 	if r.Model != nil {
-		line("model        %s, %s: %s", r.Model.Model.Kind, r.Model.Verdict, job.ParamWords(*r.Model))
+		line("model        %s", r.ModelWords())
 	} else {
 		line("model        none: every model is refused")
 	}

@@ -58,6 +58,15 @@ func Recompute(r *sheet.Reader) (Recomputed, error) {
 	return c.out, nil
 }
 
+// ModelWords are the parameters of the model with the halves of their 95 %
+// intervals, "" where every model is refused.
+func (r Recomputed) ModelWords() string {
+	if r.Model == nil {
+		return ""
+	}
+	return fmt.Sprintf("%s, %s: %s", r.Model.Model.Kind, r.Model.Verdict, paramWords(*r.Model))
+}
+
 type recomputing struct {
 	r   *sheet.Reader
 	out Recomputed

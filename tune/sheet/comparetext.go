@@ -38,6 +38,32 @@ func CompareText(rows []Row) string {
 	return b.String()
 }
 
+// FleetText returns the table of many sheets for a terminal of 80 columns.
+func FleetText(rows []FleetRow) string {
+	var b strings.Builder
+	line := func(cells ...string) {
+		widths := []int{19, 13, 8, 12, 12, 0}
+		text := ""
+		for i, c := range cells {
+			text += pad(plain.Visible(c, max(widths[i]-1, 16)), widths[i])
+		}
+		b.WriteString(strings.TrimRight(text, " ") + "\n")
+	}
+	line("quantity", "unit", "sheets", "median", "spread", "drift a year")
+	b.WriteString(strings.Repeat("-", cardColumns) + "\n")
+	for _, r := range rows {
+		line(r.Quantity, r.Unit, fmt.Sprint(r.Count), four(r.Median), four(r.Spread), four(r.Drift))
+		for _, o := range r.Outliers {
+			b.WriteString(Wrap(fmt.Sprintf("stands apart: %s with %s", o.Record, significant(o.Value, 4)), "  "))
+		}
+	}
+	return b.String()
+}
+
+// Wrap breaks text at blanks into lines of at most 80 columns, each after indent,
+// and makes it fit to show.
+func Wrap(text, indent string) string { return wrap(text, cardColumns, indent) }
+
 // grouped collects the quantities that share a remark, in the order of the
 // remarks' first use.
 type grouped struct {
