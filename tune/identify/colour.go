@@ -92,15 +92,16 @@ func (gm *spanGram) project(local [][]float64, col []float64) {
 // (JᵀJ)⁻¹·JᵀΓJ·(JᵀJ)⁻¹ with Γ from an autoregression fitted to the residuals.
 // It only ever widens: a colour that would narrow an interval is not trusted.
 func (e *estimate) correct() {
+	defer e.addRounding()
 	n := len(e.residual)
 	if n < 40 || !(ljungBox(e.residual, 0) < colourLevel) {
 		return
 	}
-	ar := fitAutoregression(e.residual, min(colourOrder, n/10))
+	cols, begins := e.jacobian()
+	ar := fitColour(e.residual, orthonormal(cols), min(colourOrder, n/10))
 	if len(ar.coef) == 0 {
 		return
 	}
-	cols, begins := e.jacobian()
 	dim := e.dim()
 	variance := e.cost / float64(max(e.dof, 1))
 	for _, col := range cols {
@@ -155,6 +156,27 @@ func sandwich(a, m []float64, n int, scale float64) []float64 {
 			for k := 0; k < n; k++ {
 				out[i*n+j] += scale * am[i*n+k] * a[k*n+j]
 			}
+		}
+	}
+	return out
+}
+
+// orthonormal returns an orthonormal basis of the columns by modified
+// Gram–Schmidt, each column cleaned twice against rounding. Columns that the
+// others span are left out.
+func orthonormal(cols [][]float64) [][]float64 {
+	var out [][]float64
+	for _, col := range cols {
+		c := append([]float64(nil), col...)
+		size := floats.Norm(c, 2)
+		for range 2 {
+			for _, q := range out {
+				floats.AddScaled(c, -floats.Dot(q, c), q)
+			}
+		}
+		if n := floats.Norm(c, 2); n > 1e-9*size && n > 0 {
+			floats.Scale(1/n, c)
+			out = append(out, c)
 		}
 	}
 	return out

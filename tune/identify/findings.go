@@ -55,7 +55,7 @@ func (e *estimate) examine() []Finding {
 	x := &examiner{e: e, residual: e.residual, gain: e.linear[0]}
 	raw, begins := e.jacobian()
 	x.begins = begins
-	x.basis(raw)
+	x.jac = orthonormal(raw)
 	sim := e.simulated()
 	x.spread = deviation(sim) / math.Sqrt(float64(len(sim)))
 	if !(x.spread > 0) {
@@ -113,21 +113,6 @@ func (x *examiner) response(change func(float64) float64) []float64 {
 		}
 	}()
 	return x.column(func(_ *stretch, cols [][]float64, _ span, i int) float64 { return cols[0][i] })
-}
-
-// basis makes an orthonormal basis of the Jacobian's columns by modified
-// Gram–Schmidt, twice for safety against rounding.
-func (x *examiner) basis(raw [][]float64) {
-	for _, col := range raw {
-		c := append([]float64(nil), col...)
-		size := floats.Norm(c, 2)
-		x.clean(c)
-		x.clean(c)
-		if n := floats.Norm(c, 2); n > 1e-9*size && n > 0 {
-			floats.Scale(1/n, c)
-			x.jac = append(x.jac, c)
-		}
-	}
 }
 
 // clean takes out of col what the model can explain.

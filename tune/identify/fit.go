@@ -40,9 +40,10 @@ type estimate struct {
 	dead     *[2]float64 // 95 % interval of the dead time, where its profile was computed
 	set      Settings
 	findings []Finding
-	noise    float64 // rad/s, what the residual's own past does not foretell
-	inputP   float64 // see Fit.InputP
-	inflated float64 // largest ratio of corrected to white standard deviation
+	measured []*trace.Trace // the traces, where counts were fitted
+	noise    float64        // rad/s, what the residual's own past does not foretell
+	inputP   float64        // see Fit.InputP
+	inflated float64        // largest ratio of corrected to white standard deviation
 }
 
 // names of the numbers in the order of cov.

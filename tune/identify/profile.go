@@ -18,7 +18,7 @@ func (e *estimate) profileDeadTime(set Settings, widening float64) (ci [2]float6
 	if !(variance > 0) {
 		return ci, false
 	}
-	goal := quantile95(e.dof)
+	goal := quantile95(e.effectiveDOF())
 	base, ok := e.costAt(best, set)
 	if !ok {
 		return ci, false

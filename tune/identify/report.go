@@ -43,6 +43,9 @@ func (e *estimate) report() Fit {
 		f.Drift = e.linear[at]
 	}
 	e.quality(&f)
+	if e.measured != nil {
+		e.speedQuality(&f)
+	}
 	return f
 }
 
@@ -132,7 +135,7 @@ func (e *estimate) linearModel() model.Linear {
 // intervals returns the 95 % intervals. Times are positive, so theirs are taken
 // on the logarithm; a dead time may reach down to zero.
 func (e *estimate) intervals(params []Param) map[string][2]float64 {
-	t := quantile95(e.dof)
+	t := quantile95(e.effectiveDOF())
 	out := map[string][2]float64{}
 	for _, p := range params {
 		half := t * p.SD

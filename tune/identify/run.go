@@ -72,6 +72,9 @@ type run struct {
 	held   []*trace.Trace // traces kept whole for judging
 	split  int            // single trace: first sample kept for judging
 	masked map[string]int
+
+	decided bool // whether to fit counts, once for all structures
+	counts  bool
 }
 
 func (r *run) divide() {
@@ -152,11 +155,12 @@ func (r *run) estimate(kind string, seed *estimate) (*estimate, error) {
 	if pb.steady && kind != model.KindIntegrating {
 		est = pb.tryFree(est)
 	}
-	if better := pb.tryCounts(est); better != nil {
-		est = better
+	est.findings = est.examine()
+	if counted := r.tryCounts(pb, est); counted != nil {
+		counted.findings, counted.noise, counted.inputP = est.findings, est.noise, est.inputP
+		est = counted
 	}
 	est.sharpen()
-	est.findings = est.examine()
 	return est, nil
 }
 
@@ -204,6 +208,3 @@ func (pb problem) follow(start []float64) (*estimate, error) {
 	e.finish(set)
 	return e, nil
 }
-
-// tryCounts returns nil for now where the counts were not recorded.
-func (pb problem) tryCounts(*estimate) *estimate { return nil }

@@ -106,7 +106,8 @@ const (
 // still under more than half of the largest voltage.
 func (tr *Trace) MarkDrive() {
 	if tr.Bus != nil {
-		full := quantile(tr.Bus, 0.9)
+		// A record that sags nearly all the time still began at rest.
+		full := math.Max(quantile(tr.Bus, 0.9), quantile(tr.Bus[:min(10, len(tr.Bus))], 0.5))
 		for i := range tr.Time {
 			if full > 0 && tr.Bus[i] < sagShare*full {
 				tr.mark(i, Sag)
