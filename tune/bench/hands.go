@@ -187,30 +187,44 @@ func (h *hands) Watch(d time.Duration) ([]protocol.Sample, error) {
 }
 
 func (h *hands) PowerCycle(q job.Question) error {
-	before := 0
+	before, boots := 0, uint16(0)
 	h.do(func(s *session) {
-		before = s.boots
+		s.cycling = true
+		before, boots = s.boots, s.core.Identity().Boots
 		s.askID++
 		q.ID = s.askID
 		s.asking, s.answer = &q, nil
 	})
+	h.Stream(false) // silence is what is asked for
 	h.cycle()
-	// A start is told by the board itself, or shows as silence: its first line may
-	// be lost with the half line that the power cut off.
-	err := h.until(0, func(s *session) bool { return s.answer != nil || s.boots > before || s.core.Link().Lost })
-	for err == nil {
-		if _, e := h.Request(protocol.VerbLimit, "crc"); e == nil || errors.Is(e, job.ErrOver) {
-			err = e
-			break
-		}
+	err := h.restart(before, boots)
+	h.do(func(s *session) { s.asking, s.answer, s.cycling = nil, nil, false })
+	return err
+}
+
+// restart waits for a board to start anew. It says so itself, but its first line
+// may be lost with the half line that the power cut off, so it is asked as well.
+func (h *hands) restart(before int, boots uint16) error {
+	for {
 		declined := false
-		h.do(func(s *session) { declined = s.answer != nil && s.answer.ID < 0 })
-		if declined {
-			err = job.ErrDeclined
+		err := h.until(1500*time.Millisecond, func(s *session) bool {
+			declined = s.answer != nil && s.answer.ID < 0
+			return declined || s.boots > before
+		})
+		switch {
+		case declined:
+			return job.ErrDeclined
+		case !errors.Is(err, errLimit):
+			return err
+		}
+		a, err := h.Request(protocol.VerbID, "")
+		if errors.Is(err, job.ErrOver) {
+			return err
+		}
+		if id, err := protocol.ParseIdentity(a.Lines); err == nil && id.Boots != boots {
+			return nil
 		}
 	}
-	h.do(func(s *session) { s.asking, s.answer = nil, nil })
-	return err
 }
 
 // Run shows a plan, waits for its arm, its start and its end, and fetches what

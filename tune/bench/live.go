@@ -114,6 +114,7 @@ func NewLive(opt Options) *Live {
 	l.s.core.Simulated = opt.Simulated
 	l.s.view = job.View{Program: opt.Program, Simulated: opt.Simulated, Rig: opt.Job.Rig.Name, Hand: opt.Hand != nil}
 	l.s.view.Link.State = job.NoPort
+	l.s.onRestart = func() { l.step(func(j *job.Job) { _ = j.Again() }) }
 	l.s.tapeNote = func(text string) { l.tape.Remark(l.now(), text) }
 	l.tape = tape.NewWriter(l.late, tape.Config{Start: l.start, OnPanic: l.panicked, OnError: func(err error) {
 		l.post(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
@@ -248,13 +249,8 @@ func (s *session) notLate(at time.Duration) time.Duration {
 
 func (l *Live) wall() time.Time { return l.start.Round(0).Add(l.now()) }
 
-func (l *Live) cycle() bool {
-	if l.opt.Cycle == nil {
-		return false
-	}
-	l.opt.Cycle()
-	return true
-}
+// cycle leaves it to the person to switch the board's power.
+func (l *Live) cycle() bool { return false }
 
 // supervise is the goroutine that owns the drive.
 func (l *Live) supervise() {

@@ -130,7 +130,7 @@ func (s *session) endLive(e safety.RunEnded) {
 		return
 	}
 	l := *s.view.Live
-	l.Running = false
+	l.Running, l.Elapsed = false, e.Lasted
 	l.Ended = e.Reason.String()
 	if e.Cause.Words != "" {
 		l.Ended += ": " + e.Cause.Words
@@ -157,6 +157,9 @@ func (s *session) BoardStop(_ time.Duration, l supervisor.LogEntry) {
 // Restarted takes note of a board that started anew.
 func (s *session) Restarted(_ time.Duration, boots int, why string) {
 	s.boots++
+	if s.onRestart != nil && !s.cycling {
+		s.onRestart()
+	}
 	s.say(fmt.Sprintf("the board restarted (start %d, %s): running gains and limits are those it starts with; disarmed", boots, why))
 }
 

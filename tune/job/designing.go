@@ -142,8 +142,9 @@ func (j *Job) showDesign() {
 		}
 	}
 	if w := j.Worst; w != nil && !j.NoChange {
-		d.Worst = []Fact{{Name: "Ms, 95 % of " + fmt.Sprint(w.Draws), Value: fmt.Sprintf("%.2f", float64(w.Ms)), Why: "motors drawn from the ± of the fit, gain by direction, winding 0 to 60 K warmer"},
-			{Name: "PM, 95 %", Value: fmt.Sprintf("%.0f°", float64(w.PhaseMargin))}, {Name: "overshoot, 95 %", Value: fmt.Sprintf("%.0f %%", float64(w.Overshoot))}}
+		why := fmt.Sprintf("kept by 95 %% of %d motors drawn from the ± of the fit, gain by direction, winding 0 to 60 K warmer", w.Draws)
+		d.Worst = []Fact{{Name: "Ms", Value: fmt.Sprintf("%.2f", float64(w.Ms)), Why: why}, {Name: "phase margin", Value: fmt.Sprintf("%.0f°", float64(w.PhaseMargin)), Why: why},
+			{Name: "overshoot", Value: fmt.Sprintf("%.0f %%", float64(w.Overshoot)), Why: why + "; setpoint weight 1 over the first swings"}}
 	}
 	t := j.Rig.Targets
 	d.Targets = []Fact{{Name: "overshoot", Value: fmt.Sprintf("<= %.3g %%", t.Overshoot)}}

@@ -181,12 +181,18 @@ func (j *Job) Skip(id StepID, reason string) {
 // Again is called when the line to the board came back. Nothing is resumed: the
 // identity is asked for anew, and what the limiter forgot has to be seen again.
 func (j *Job) Again() error {
+	j.forgetChecks("the line was lost or the board restarted: to be seen again this session")
+	return j.Do(StepIdentity)
+}
+
+// forgetChecks sets the checks back to be made, as the limiter has done.
+func (j *Job) forgetChecks(why string) {
 	for _, id := range []StepID{StepCount, StepSign, StepStop, StepSilence, StepLimits} {
 		if s := j.steps[id]; s.Status == Done {
-			s.Status, s.Reason = ToDo, "the line was lost: to be seen again this session"
+			s.Status, s.Reason = ToDo, why
 		}
 	}
-	return j.Do(StepIdentity)
+	j.publish()
 }
 
 // Remark keeps a remark.
@@ -197,12 +203,21 @@ func (j *Job) Remark(text string) {
 	}
 }
 
-// Next is the first step of the path that is still to do and can be done.
+// Next is the first step behind the last one done that can be done, or else the
+// first of the path.
 func (j *Job) Next() StepID {
+	last := -1
 	for i := range Path {
-		id := Path[i].ID
-		if st := j.steps[id].Status; (st == ToDo || st == Refused) && j.missing(id) == "" {
-			return id
+		if j.steps[Path[i].ID].Status == Done {
+			last = i
+		}
+	}
+	for _, part := range [][]Info{Path[last+1:], Path} {
+		for i := range part {
+			id := part[i].ID
+			if st := j.steps[id].Status; (st == ToDo || st == Refused) && j.missing(id) == "" {
+				return id
+			}
 		}
 	}
 	return StepCard

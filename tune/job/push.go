@@ -152,6 +152,7 @@ func (j *Job) doStore() (result, error) {
 		return "", err
 	}
 	j.StoredOK = true
+	j.forgetChecks("the board was restarted: to be seen again before the next run")
 	j.h.Show(func(v *View) {
 		if v.Push != nil {
 			p := *v.Push
@@ -182,6 +183,10 @@ func (j *Job) reread(want GainSet) error {
 // doAsLeft keeps what the board holds now.
 func (j *Job) doAsLeft() (result, error) {
 	if err := j.readGains(); err != nil {
+		return "", err
+	}
+	// A start brought the board's own limits back: leave it with the rig file's.
+	if err := j.holdLimits(j.limitValues(), safety.LimitWrite{}); err != nil {
 		return "", err
 	}
 	left, err := j.snapshot()

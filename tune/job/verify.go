@@ -277,6 +277,10 @@ func (j *Job) showVerify(rec *sheet.VerifyRecord) {
 	}
 	c := rec.Curve
 	for i := range c.TimeS {
+		if i > 0 && c.TimeS[i]-c.TimeS[i-1] > 0.1 { // between two steps that were measured
+			gap := Point{(c.TimeS[i] + c.TimeS[i-1]) / 2, math.NaN()}
+			v.Measured, v.Forecast, v.Setpoint = append(v.Measured, gap), append(v.Forecast, gap), append(v.Setpoint, gap)
+		}
 		v.Measured = append(v.Measured, Point{c.TimeS[i], c.MeasuredRadS[i]})
 		v.Forecast = append(v.Forecast, Point{c.TimeS[i], c.ForecastRadS[i]})
 		v.Setpoint = append(v.Setpoint, Point{c.TimeS[i], c.SetpointRadS[i]})
