@@ -22,17 +22,19 @@ type session struct {
 	now  time.Duration
 	view job.View
 
-	opened   bool     // a port is open
-	run      *running // the run that is shown, armed or under way
-	lastStop *supervisor.StopTimes
-	stops    int // answered stops so far
-	asking   *job.Question
-	askID    int
-	answer   *job.Answer
-	watching *watch
-	boots    int // restarts of the board seen
-	tapeNote func(string)
-	written  func(at time.Duration) // a hook for the stop's time on the wire
+	opened    bool     // a port is open
+	run       *running // the run that is shown, armed or under way
+	lastStop  *supervisor.StopTimes
+	stops     int // answered stops so far
+	asking    *job.Question
+	askID     int
+	answer    *job.Answer
+	watching  *watch
+	cycling   bool   // a restart is asked for and expected
+	onRestart func() // told of a restart that nobody asked for
+	boots     int    // restarts of the board seen
+	tapeNote  func(string)
+	written   func(at time.Duration) // a hook for the stop's time on the wire
 }
 
 // running is a run from the moment it is shown.
