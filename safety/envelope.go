@@ -86,6 +86,7 @@ type Envelope struct {
 // Times that are the same for every rig.
 const (
 	ClearWait     = 2 * time.Second        // the clear-area question takes no answer before
+	AckWait       = 300 * time.Millisecond // a trip cannot have been read before
 	HoldOff       = 500 * time.Millisecond // no arm for this long after a stop
 	RampAnswer    = 50 * time.Millisecond  // for the board to say that it ramps
 	RampCheck     = 200 * time.Millisecond // the speed must fall from one look to the next

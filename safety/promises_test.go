@@ -496,6 +496,10 @@ func TestATripKeepsItsFirstCause(t *testing.T) {
 	if d.s.Phase != safety.Tripped {
 		t.Error("reset without acknowledgement")
 	}
+	if d.do(safety.Acknowledge{At: d.now}); d.s.Trip.Acked {
+		t.Error("acknowledged before anybody can have read it")
+	}
+	d.now += safety.AckWait
 	before := d.s.Phase
 	for _, x := range d.do(safety.Acknowledge{At: d.now}) {
 		if _, log := x.(safety.Log); !log {
@@ -515,6 +519,7 @@ func TestNoResetBeforeTheBoardSaysOff(t *testing.T) {
 	d := newDrill(t).ready().get(safety.Running, stepPlan(t))
 	d.mute = true
 	d.do(safety.Wake{At: d.now})
+	d.now += safety.AckWait
 	d.do(safety.Acknowledge{At: d.now})
 	if d.do(safety.Reset{At: d.now}); d.s.Phase != safety.Tripped {
 		t.Errorf("%v", d.s.Phase)

@@ -44,7 +44,7 @@ func (m *machine) clock(when time.Duration) {
 		m.Now = when
 		m.forget()
 		m.leased = false
-		m.stoppedAt, m.stoppingAt, m.resetAt, m.disarmedAt = when, when, when, when
+		m.stoppedAt, m.stoppingAt, m.resetAt, m.disarmedAt, m.Trip.At = when, when, when, when, when
 		m.trip(CodeClock, "")
 	case when > m.Now+TickMax && m.Phase.ArmHeld():
 		gap := when - m.Now
@@ -149,7 +149,11 @@ func (m *machine) person(e Event) {
 			m.stopping(EndDisarmed, cause(CodeDisarmed, ""))
 		}
 	case Acknowledge:
-		if m.Phase == Tripped && !m.Trip.Acked {
+		switch {
+		case m.Phase != Tripped || m.Trip.Acked:
+		case m.Now-m.Trip.At < AckWait:
+			m.log("not acknowledged: too soon to have read it")
+		default:
 			m.Trip.Acked = true
 			m.log("acknowledged: %s", m.Trip.Cause)
 		}

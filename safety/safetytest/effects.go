@@ -9,16 +9,21 @@ import (
 )
 
 // done is what one call of Step put out, as far as it matters here.
-type done struct{ stop, ramp, ended bool }
+type done struct{ stop, ramp, ended, other, latched bool }
 
 // effects judges what goes out.
 func (r *Referee) effects(e safety.Event, out []safety.Effect) (did done) {
 	stopped := false
 	for _, x := range out {
+		if _, log := x.(safety.Log); !log {
+			did.other = true
+		}
 		switch x := x.(type) {
 		case safety.SendStop:
 			did.stop, stopped = true, true
-			r.ramping = false
+			if r.ramping {
+				r.ramping, r.endedAt = false, r.world // until then the ramp had the power
+			}
 		case safety.SendRampStop:
 			did.ramp, stopped = true, true
 		case safety.SendDrive:
@@ -42,21 +47,18 @@ func (r *Referee) effects(e safety.Event, out []safety.Effect) (did done) {
 		case safety.WriteAllowed:
 			r.write(e, x)
 		case safety.TripLatched:
-			r.tripped, r.acked = true, false
+			did.latched = true
+			r.tripped, r.acked, r.trippedAt = true, false, r.now
 		case safety.RunEnded:
 			did.ended = true
 		case safety.CheckJudged:
-			if x.Passed != r.checks[x.Check] {
+			if _, word := e.(safety.OutputOff); x.Passed && !word || word && x.Passed != r.checks[x.Check] {
 				r.blame("S7", "the silence check was judged %v", x.Passed)
 			}
-			r.lookOnly = r.lookOnly || !x.Passed
-		}
-	}
-	if _, ack := e.(safety.Acknowledge); ack && r.stage == idle && !r.stopDue {
-		for _, x := range out {
-			if _, log := x.(safety.Log); !log {
-				r.blame("S10", "an acknowledgement put out %T", x)
+			if !x.Passed {
+				delete(r.checks, x.Check)
 			}
+			r.lookOnly = r.lookOnly || !x.Passed
 		}
 	}
 	return did

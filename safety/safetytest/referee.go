@@ -49,7 +49,8 @@ type Referee struct {
 	driveAt time.Duration
 	counts0 int64
 	counted bool
-	endedAt time.Duration
+	endedAt time.Duration // on the world's clock
+	world   time.Duration // of the last look at the shaft
 
 	stopDue bool
 	stopAt  time.Duration
@@ -63,6 +64,7 @@ type Referee struct {
 	lastStop   time.Duration // of a Stop event
 	stopSeen   bool
 	tripped    bool
+	trippedAt  time.Duration
 	acked      bool
 	connected  bool
 	lookOnly   bool
@@ -115,6 +117,9 @@ func (r *Referee) Saw(e safety.Event, out []safety.Effect) {
 		}
 	}
 	did := r.effects(e, out)
+	if _, ack := e.(safety.Acknowledge); ack && stageWas == idle && !must && did.other && !did.latched {
+		r.blame("S10", "an acknowledgement put out more than a line for the record")
+	}
 	if must && !did.stop && !(did.ramp && r.mayRamp(e)) {
 		r.blame(promise, "%T was not followed by a stop", e)
 	}
@@ -130,7 +135,7 @@ func (r *Referee) Saw(e safety.Event, out []safety.Effect) {
 // end puts the permission to drive away.
 func (r *Referee) end(ramp bool) {
 	if r.stage > idle {
-		r.endedAt = r.now
+		r.endedAt = r.world
 		r.stopDue, r.stopAt = true, r.now
 		r.ramping, r.rampAt = ramp, r.now
 		r.silentRun = r.drives && r.plan.Check == safety.CheckSilence
@@ -144,14 +149,16 @@ func (r *Referee) mayRamp(e safety.Event) bool {
 		r.plan.Check == safety.CheckNone && r.plan.Segments[0].Mode == safety.ModeSpeed
 }
 
-func (r *Referee) mayStillRamp() bool { return r.ramping && r.now-r.rampAt <= safety.RampMax }
+func (r *Referee) mayStillRamp() bool {
+	return r.ramping && r.now-r.rampAt <= safety.RampMax && r.world-r.endedAt <= safety.RampMax+shaftSlack
+}
 
 // event notes what happened and says whether it calls for a stop at once, and by
 // which promise.
 func (r *Referee) event(e safety.Event) (must bool, promise string) {
 	if at := e.When(); at < r.now-safety.LateEvent {
 		r.now, r.heard, r.leased = at, false, false
-		r.lastStop, r.stopAt, r.endedAt, r.rampAt = at, at, at, at
+		r.lastStop, r.stopAt, r.rampAt, r.trippedAt = at, at, at, at
 		must, promise = true, "S8"
 	} else {
 		r.now = max(r.now, at)
@@ -172,7 +179,7 @@ func (r *Referee) event(e safety.Event) (must bool, promise string) {
 	case safety.ArmRequest:
 		return must || r.stage == going, "S2"
 	case safety.Acknowledge:
-		r.acked = r.acked || r.tripped
+		r.acked = r.acked || r.tripped && r.now-r.trippedAt >= 300*time.Millisecond
 		return must || r.stage == going, "S2"
 	case safety.Reset:
 		if r.acked {
@@ -303,8 +310,10 @@ func clearMap(m map[safety.Check]bool) {
 
 // Shaft judges the simulated rig itself. powered is whether the board puts volts
 // on the motor; obeys says that the board keeps its timeout, truthful that its
-// encoder tells what the shaft does.
+// encoder tells what the shaft does. at is on the world's own clock, which no
+// jump of the laptop's clock moves.
 func (r *Referee) Shaft(at time.Duration, speed float64, powered, obeys, truthful bool) {
+	r.world = at
 	late := at - r.endedAt - r.env.BoardTimeout - shaftSlack
 	if obeys && powered && r.stage != going && late > 0 && !r.mayStillRamp() {
 		r.list = append(r.list, Violation{"S1", at, fmt.Sprintf("the motor is under power %v after the permission ended", at-r.endedAt)})

@@ -149,7 +149,8 @@ func (w *World) asks(e safety.Event) {
 	w.at(w.now+time.Duration(1+w.rng.IntN(30))*ms, item{kind: itIntent, event: e, taken: w.now})
 }
 
-// pickFault chooses what goes wrong next and in which phase.
+// pickFault chooses a pair of a phase and a fault. A phase that is rare waits for
+// its turn, so that all pairs come about equally often.
 func (w *World) pickFault() {
 	w.next = 1 + Fault(w.rng.IntN(int(FaultEnd)-1))
 	w.target = safety.Phase(w.rng.IntN(int(safety.Tripped) + 1))
@@ -169,9 +170,9 @@ func (w *World) faults() {
 		}
 		return
 	}
-	if w.s.Phase != w.target || w.now < w.faultEnds+w.quiet() || w.rng.IntN(40) != 0 && w.s.Phase != safety.Stopping && w.s.Phase != safety.Arming {
-		if w.now > w.faultEnds+40*time.Second {
-			w.faultEnds = w.now - 30*time.Second
+	if w.s.Phase != w.target || w.now < w.faultEnds+quiet || w.rng.IntN(40) != 0 && w.s.Phase != safety.Stopping && w.s.Phase != safety.Arming {
+		if w.now > w.faultEnds+patience {
+			w.faultEnds = w.now - patience/2
 			w.pickFault() // that phase does not come
 		}
 		return
@@ -180,8 +181,10 @@ func (w *World) faults() {
 	w.beginFault(w.next)
 }
 
-// quiet is how long nothing is made to go wrong, so that runs get somewhere.
-func (w *World) quiet() time.Duration { return time.Second }
+const (
+	quiet    = 300 * ms         // nothing is made to go wrong for so long
+	patience = 60 * time.Second // for a phase to come, then the next pair's turn
+)
 
 func (w *World) beginFault(f Fault) {
 	w.fault, w.faultFrom = f, w.now

@@ -129,7 +129,7 @@ func (w *World) happens(it item) {
 	switch it.kind {
 	case itBoard:
 		w.b.advance(w.now, w.fault)
-		w.ref.Shaft(w.clock(), w.b.speed, w.b.powered(), w.fault.obeys(), w.calm(w.fault.truthful()))
+		w.ref.Shaft(w.now, w.b.speed, w.b.powered(), w.fault.obeys(), w.calm(w.fault.truthful()))
 		w.at(w.now+boardStep, item{kind: itBoard})
 		w.faults()
 	case itTick:
