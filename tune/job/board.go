@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"strings"
+	"time"
 
 	"gainwright/protocol"
 	"gainwright/safety"
@@ -299,11 +300,36 @@ func (j *Job) snapshot() (*sheet.Snapshot, error) {
 		v := float64(math.Float32frombits(bits))
 		s.Limits = append(s.Limits, sheet.Quantity{Name: name, Value: &v, Unit: limitUnits[name]})
 	}
+	if s.BusV, err = j.busNow(); err != nil {
+		return nil, err
+	}
 	s.Flags = []string{"reset cause " + id.ResetCause}
 	if !j.Running.Equal(j.Stored) {
 		s.Flags = append(s.Flags, "running and stored gains differ")
 	}
 	return s, nil
+}
+
+// busNow is the bus voltage at rest, nil where the board does not measure it or
+// sends no telemetry.
+func (j *Job) busNow() (*float64, error) {
+	if !j.ID.BusMeasured {
+		return nil, nil
+	}
+	samples, err := j.h.Watch(100 * time.Millisecond)
+	if err != nil {
+		return nil, err
+	}
+	var v []float64
+	for _, x := range samples {
+		if x.Has&protocol.HasBus != 0 {
+			v = append(v, float64(x.Bus))
+		}
+	}
+	if len(v) == 0 {
+		return nil, nil
+	}
+	return sheet.Known(mean(v)), nil
 }
 
 // showFound puts the as-found state on the screens.

@@ -52,7 +52,7 @@ func (j *Job) doCount() (result, error) {
 	seen, err := j.h.StopKey(Question{Kind: AskStopKey, Text: "Press the stop key now: space",
 		Detail: []string{"Nothing moves. The time from the key to the wire to the board's answer is kept."}})
 	ok := err == nil && seen.Cuts > 0
-	j.check("stop key", "board", ok, fmt.Sprintf("key to wire %v, wire to the board's answer %v", seen.KeyToWire, seen.WireToBoard), stopQuantities(seen)...)
+	j.check("stop key", "board", ok, stopFinding(seen), stopQuantities(seen)...)
 	if err != nil {
 		return "", err
 	}
@@ -130,7 +130,7 @@ func (j *Job) doSign() (result, error) {
 	if bad != nil {
 		finding = bad.Error()
 	}
-	j.check("sign", "board", bad == nil, finding)
+	j.check("sign", "board", bad == nil, finding, startQuantities(vf, vr, okF, okR)...)
 	j.h.Check(safety.CheckSign, bad == nil)
 	if bad != nil {
 		return "", bad
@@ -200,7 +200,7 @@ func (j *Job) doStop() (result, error) {
 	finding := ""
 	switch {
 	case ok:
-		finding = fmt.Sprintf("at creep: key to wire %v, wire to the board's answer %v", r.Stop.KeyToWire.Round(time.Microsecond), r.Stop.WireToBoard.Round(time.Microsecond))
+		finding = "at creep: " + stopFinding(*r.Stop)
 	case r.Reason == safety.EndDone:
 		bad = refuse(715, "stop check", "the run ended by itself, no stop key was pressed", "do it again and press space while the shaft creeps")
 	case r.Reason == safety.EndStopped:
@@ -222,6 +222,22 @@ func (j *Job) doStop() (result, error) {
 	}
 	j.roughModel(r)
 	return result(finding), nil
+}
+
+func stopFinding(s StopSeen) string {
+	return fmt.Sprintf("key to wire %.2f ms, wire to the board's answer %.2f ms", s.KeyToWire.Seconds()*1000, s.WireToBoard.Seconds()*1000)
+}
+
+// startQuantities is the drive at which the shaft first moved, each way that was
+// seen.
+func startQuantities(forward, reverse float64, okF, okR bool) (q []sheet.Quantity) {
+	if okF {
+		q = append(q, sheet.Quantity{Name: "starts forward at", Value: &forward, Unit: "V"})
+	}
+	if okR {
+		q = append(q, sheet.Quantity{Name: "starts reverse at", Value: &reverse, Unit: "V"})
+	}
+	return q
 }
 
 func stopQuantities(s StopSeen) []sheet.Quantity {

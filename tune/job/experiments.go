@@ -51,6 +51,10 @@ func (j *Job) doBreakaway() (result, error) {
 		rec.Params = append(rec.Params, breakQuantity("breakaway reverse", rev, r.File))
 		words += fmt.Sprintf(", %.3g ± %.2g V reverse", mean(rev), 2*spread(rev))
 	}
+	if j.electric = standstill(r.Samples); j.electric != nil {
+		rec.Params = append(rec.Params, j.electric.resistance(r.File))
+		words += fmt.Sprintf("; R %.3g ± %.2g Ω", j.electric.R, 1.96*j.electric.RSD)
+	}
 	return result(words), j.h.Keep("fit", "breakaway", rec)
 }
 
@@ -136,16 +140,19 @@ func (j *Job) doStaircase() (result, error) {
 			return "", refuse(723, "staircase", err.Error(), "look at the trace in the record; a larger top may be needed")
 		}
 		j.Static = &static
+		if j.electric != nil {
+			j.electric.running(j.Levels)
+		}
 		return j.keepStairs(static, r)
 	}
 }
 
 func (j *Job) keepStairs(static identify.Static, r Result) (result, error) {
-	rec := sheet.StaircaseRecord{TraceFile: r.File, Params: staticQuantities(static, r.File)}
+	rec := sheet.StaircaseRecord{TraceFile: r.File, Params: append(staticQuantities(static, r.File), j.electric.quantities(r.File)...)}
 	var pts []Point
 	for i, l := range j.Levels {
 		rec.Levels = append(rec.Levels, sheet.Level{VoltageV: l.Volts, SpeedRadS: l.Speed, Rising: j.rising[i], SpeedSDRadS: ptr(l.SpeedSD), Samples: l.N,
-			Settled: l.Settled, FromS: ptr(l.From), ToS: ptr(l.To)})
+			Settled: l.Settled, FromS: ptr(l.From), ToS: ptr(l.To), CurrentA: j.measuredCurrent(l)})
 		pts = append(pts, Point{l.Volts, l.Speed})
 	}
 	j.h.Show(func(v *View) {
@@ -175,6 +182,14 @@ func staticQuantities(s identify.Static, file string) []sheet.Quantity {
 		q("sliding friction reverse", "V", s.CoulombReverse, s.CoulombReverseSD), q("hysteresis", "1", s.Hysteresis, 0)}
 }
 
+// measuredCurrent is a level's current, nil where the board does not measure it.
+func (j *Job) measuredCurrent(l identify.Level) *float64 {
+	if j.ID.Scales.CurrentLSB == 0 {
+		return nil
+	}
+	return ptr(l.Current)
+}
+
 // levelsOf turns recorded levels back into what a staircase is fitted on; nil
 // where a level lacks its spread.
 func levelsOf(rec sheet.StaircaseRecord) []identify.Level {
@@ -195,16 +210,16 @@ func levels(r Result, stairs []excite.Stair) (out []identify.Level, rising []boo
 		if len(s) < 5 {
 			continue
 		}
-		v, w := make([]float64, len(s)), make([]float64, len(s))
+		v, w, c := make([]float64, len(s)), make([]float64, len(s)), make([]float64, len(s))
 		for i := range s {
-			v[i], w[i] = float64(s[i].Volts), float64(s[i].Speed)
+			v[i], w[i], c[i] = float64(s[i].Volts), float64(s[i].Speed), float64(s[i].Current)
 		}
 		// Settled: the two halves of the averaged part agree within their noise or
 		// one percent.
 		half := len(w) / 2
 		drift := math.Abs(mean(w[half:]) - mean(w[:half]))
 		settled := drift <= math.Max(3*spread(w)/math.Sqrt(float64(half)), 0.01*math.Abs(mean(w)))
-		out = append(out, identify.Level{Volts: mean(v), Speed: mean(w), SpeedSD: spread(w), N: len(s), Settled: settled,
+		out = append(out, identify.Level{Volts: mean(v), Speed: mean(w), SpeedSD: spread(w), N: len(s), Current: mean(c), Settled: settled,
 			From: st.From.Seconds(), To: st.To.Seconds()})
 		rising = append(rising, st.Up)
 	}

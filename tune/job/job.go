@@ -49,7 +49,8 @@ type Known struct {
 	Levels                     []identify.Level
 	rising                     []bool // of Levels: reached from below
 	Static                     *identify.Static
-	Bias, Amplitude            float64 // V, of the step test
+	electric                   *electrical // nil where the current is not measured
+	Bias, Amplitude            float64     // V, of the step test
 
 	StepTrace, SecondTrace *trace.Trace
 	StepFile, SecondFile   string

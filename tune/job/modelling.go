@@ -166,16 +166,22 @@ func (j *Job) keepMotor() error {
 	if len(j.BreakReverse) > 0 {
 		m.BreakawayReverseV = ptr(mean(j.BreakReverse))
 	}
+	gain, tau := 0.0, 0.0
 	if f := j.Fit.Best(); f != nil {
-		gain, _, _ := f.Value("gain")
-		m.GainRadSPerV = &gain
-		if tau, _, ok := f.Value("tau"); ok {
+		gain, _, _ = f.Value("gain")
+		tau, _, _ = f.Value("tau")
+		m.GainRadSPerV = sheet.Known(gain)
+		if tau > 0 {
 			m.TauS = &tau
 		}
 		m.DeadTimeS = ptr(f.Model.DeadTime)
 	}
 	if j.Margins != nil {
 		m.PhaseMarginDeg = sheet.Known(float64(j.Margins.PhaseMargin))
+	}
+	j.electric.motor(&m, gain, tau)
+	if v := j.Verified; v != nil && v.Step != nil {
+		m.OvershootPercent, m.OvershootTarget = v.Step.OvershootPercent, sheet.Known(j.Rig.Targets.Overshoot)
 	}
 	return j.h.Keep("fit", sheet.NameMotor, m)
 }

@@ -142,6 +142,9 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration) (resul
 	if err := j.h.Keep("verify", "steps", rec); err != nil {
 		return "", err
 	}
+	if err := j.keepMotor(); err != nil {
+		return "", err
+	}
 	j.showVerify(rec)
 	if !*rec.Passed {
 		return "", refuse(753, "verify failed", rec.Finding, "one key pushes the as-found gains back; or choose a smaller Ms bound and push again")

@@ -145,6 +145,7 @@ type Level struct {
 	Settled     bool     `json:"settled,omitempty"`
 	FromS       *float64 `json:"from_s,omitempty"` // of the averaged part, after the first drive value
 	ToS         *float64 `json:"to_s,omitempty"`
+	CurrentA    *float64 `json:"current_A,omitempty"` // nil: not measured
 }
 
 // StaircaseRecord is what a staircase showed. Kind fit, NameStaircase.
