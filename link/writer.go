@@ -79,12 +79,13 @@ type Writer struct {
 	writing  int           // bytes of the Write that is going on; 0 = none
 	began    time.Time     // start of that Write
 	deadline time.Time     // when that Write counts as stalled; written by loop
+	watching bool          // watch is running
 	over     bool
 	stallErr *StallError
 	stalled  chan struct{}
 
 	cur   [LineMax]byte // the line that is being written; owned by loop
-	watch *time.Timer   // calls checkStall; owned by loop
+	watch *time.Timer   // calls checkStall
 }
 
 // NewWriter returns a Writer for port. Nothing is written before Run.

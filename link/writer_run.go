@@ -80,13 +80,19 @@ func (w *Writer) take(leaving bool) (n int, wait time.Duration) {
 	// is still in flight ahead of a stop is granted too.
 	ahead := max(0, w.free-w.cfg.Clock())
 	w.deadline = w.began.Add(StallGrace + ahead + LineTime(n, w.cfg.Baud))
+	// Setting a timer may wake another thread, which a stop would wait for. So a
+	// timer that is running is left alone: it fires no later than this Write's
+	// deadline and then sets itself to what remains.
+	if !w.watching {
+		w.watching = true
+		w.watch.Reset(StallGrace)
+	}
 	return n, 0
 }
 
 // write hands b to the port, all of it: a port may take less than it was given
 // and say nothing.
 func (w *Writer) write(b []byte) error {
-	w.watch.Reset(time.Until(w.deadline))
 	var err error
 	for rest := b; len(rest) > 0 && err == nil; {
 		var n int
@@ -96,7 +102,6 @@ func (w *Writer) write(b []byte) error {
 		}
 		rest = rest[n:]
 	}
-	w.watch.Stop()
 	now := w.cfg.Clock()
 
 	w.mu.Lock()
@@ -119,12 +124,15 @@ func (w *Writer) write(b []byte) error {
 	return nil
 }
 
-// checkStall is called by the watch timer. The deadline is compared again: the
-// timer may have fired for a Write that ended in that very moment.
+// checkStall is called by the watch timer, which may have been set for a Write
+// that has ended since.
 func (w *Writer) checkStall() {
 	w.mu.Lock()
 	now := time.Now()
 	if w.over || w.writing == 0 || now.Before(w.deadline) {
+		if w.watching = !w.over && w.writing > 0; w.watching {
+			w.watch.Reset(w.deadline.Sub(now))
+		}
 		w.mu.Unlock()
 		return
 	}
