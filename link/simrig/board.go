@@ -71,6 +71,7 @@ func (r *Rig) wake() {
 	b.window.restart(b.counts, r.cfg.Board.Window)
 	b.restCount, b.movedAt = b.counts, r.now
 	b.pins.last = r.now
+	b.tx.put(r.now, []byte{'\n'}) // ends what the last run may have left half sent
 	r.event("ev boot " + strconv.Itoa(int(r.boots)) + " " + b.rx.bootCause)
 }
 

@@ -33,6 +33,11 @@ func newPlant(c *Config) plant {
 		},
 		limits: c.Nameplate.bounds(),
 	}
+	if k := c.Load.Coupling / (g * g); k > 0 {
+		p.joint = coupling{spring: k, damp: c.Load.Damping / (g * g), gap: c.Load.LostMotion * g, j: m.j - c.Motor.Inertia}
+		p.motor.j = c.Motor.Inertia
+		p.shaft.free = true
+	}
 	if c.Driver.Quadrants == 4 {
 		p.driver.least = -1
 	}
@@ -59,5 +64,5 @@ func newEncoder(c *Config, rng *rand.Rand) encoder {
 	if c.Encoder.Side == "load" {
 		per /= c.Load.Gear
 	}
-	return encoder{perRad: per, edge: c.Encoder.Edge, phase: rng.Float64()}
+	return encoder{perRad: per, onLoad: c.Encoder.Side == "load", edge: c.Encoder.Edge, phase: rng.Float64()}
 }

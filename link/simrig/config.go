@@ -63,10 +63,13 @@ type SideSpec struct {
 
 // LoadSpec is what hangs on the shaft.
 type LoadSpec struct {
-	Inertia float64 `toml:"inertia_kg_m2" unit:"kg·m²" range:"0..100" default:"0" doc:"at the output shaft"`
-	Gear    float64 `toml:"gear_ratio" unit:"1" range:"0.1..1000" default:"1" doc:"motor turns per output turn"`
-	Torque  float64 `toml:"torque_Nm" unit:"N·m" range:"-100..100" default:"0" doc:"at the output shaft, active, pulling towards negative angles"`
-	Gravity float64 `toml:"gravity_Nm" unit:"N·m" range:"0..100" default:"0" doc:"amplitude at the output shaft, zero at the angle of the start"`
+	Inertia    float64 `toml:"inertia_kg_m2" unit:"kg·m²" range:"0..100" default:"0" doc:"at the output shaft"`
+	Gear       float64 `toml:"gear_ratio" unit:"1" range:"0.1..1000" default:"1" doc:"motor turns per output turn"`
+	Torque     float64 `toml:"torque_Nm" unit:"N·m" range:"-100..100" default:"0" doc:"at the output shaft, active, pulling towards negative angles"`
+	Gravity    float64 `toml:"gravity_Nm" unit:"N·m" range:"0..100" default:"0" doc:"amplitude at the output shaft, zero at the angle of the start"`
+	Coupling   float64 `toml:"coupling_Nm_rad" unit:"N·m/rad" range:"0..1e6" default:"0" doc:"spring between rotor and load, at the output shaft; 0: rigid"`
+	Damping    float64 `toml:"coupling_damping_Nms" unit:"N·m·s/rad" range:"0..1e3" default:"0" doc:"of that spring"`
+	LostMotion float64 `toml:"lost_motion_rad" unit:"rad" range:"0..1" default:"0" doc:"free play of the coupling from stop to stop, at the output shaft"`
 }
 
 // DriverSpec is the power stage.

@@ -10,6 +10,7 @@ type encoder struct {
 	perRad   float64 // counts per rad of the motor shaft
 	edge     float64 // counts RMS of placement error of an edge, white
 	phase    float64 // counts; where in a count the shaft stood at power-on
+	onLoad   bool    // it sits beyond the coupling
 	dead     bool
 	reversed bool
 	base     int64   // where the counter goes on after its channels were swapped

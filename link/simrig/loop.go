@@ -74,7 +74,7 @@ func (r *Rig) onTick() {
 	b := &r.board
 	now := r.now
 	if !b.booted {
-		r.enc.look(r.plant.shaft.th)
+		r.enc.look(r.plant.sensed(r.enc.onLoad))
 		r.wake()
 		return
 	}
@@ -99,7 +99,7 @@ func (r *Rig) onTick() {
 // latch takes counts and measured values.
 func (r *Rig) latch() {
 	b := &r.board
-	r.enc.look(r.plant.shaft.th)
+	r.enc.look(r.plant.sensed(r.enc.onLoad))
 	b.counts = r.enc.count(r.noise)
 	travelled := b.window.push(b.counts)
 	b.speed = float32(travelled) * float32(r.speedStep)

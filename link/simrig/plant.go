@@ -16,6 +16,7 @@ type plant struct {
 	supply  supply
 	winding winding
 	hand    hand
+	joint   coupling
 	seen    Extremes
 	limits  bounds
 
@@ -53,7 +54,7 @@ func (p *plant) run(end int64) {
 	}
 	// With the output on at zero volts the winding is shorted: no rest unless
 	// the current has died down as well, which still sees.
-	quiet := !p.driver.now.on && p.supply.settle() && p.shaft.still(p.duty(), open) && p.hand.until <= p.now
+	quiet := !p.driver.now.on && p.supply.settle() && p.joint.slack(p.shaft.th) && p.shaft.still(p.duty(), open) && p.hand.until <= p.now
 	if quiet {
 		p.now = end
 		p.warm(0, float64(length)*1e-9)
@@ -100,6 +101,8 @@ func (p *plant) step(pr *pair, end int64, open bool) float64 {
 		p.turn(pr.h, end, v, open)
 	case p.driver.blocks && p.driver.now.on && !open:
 		p.oneWay(pr, v)
+	case p.joint.spring > 0:
+		p.joined(pr, v, open)
 	default:
 		s.step(pr, v, open)
 	}
@@ -139,6 +142,7 @@ func (p *plant) turn(h float64, end int64, v float64, open bool) {
 	s.w = p.hand.by * math.Pi / 2 * math.Sin(x) / (span * 1e-9)
 	s.dir = 0
 	s.i = 0
+	p.joint.th, p.joint.w, p.joint.torque, s.twist = s.th, 0, 0, 0 // held along
 	if !open {
 		s.i = (v - p.motor.k*s.w) / p.motor.r
 	}
@@ -155,6 +159,14 @@ func (p *plant) warm(watts, h float64) {
 		p.motor.r = r
 		p.forget()
 	}
+}
+
+// sensed is the angle in rad that the encoder sits on, at the motor shaft.
+func (p *plant) sensed(onLoad bool) float64 {
+	if onLoad && p.joint.spring > 0 {
+		return p.joint.th
+	}
+	return p.shaft.th
 }
 
 // forget drops the propagators after a change of the motor's constants.

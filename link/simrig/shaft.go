@@ -9,7 +9,9 @@ type shaft struct {
 	i, w   float64 // A, rad/s
 	th     float64 // rad since power-on
 	dir    int
-	locked bool // a jammed shaft: nothing turns it
+	locked bool    // a jammed shaft: nothing turns it
+	twist  float64 // N·m that an elastic coupling takes off the rotor
+	free   bool    // load and gravity act beyond that coupling
 }
 
 // pair holds the propagators of both directions for one step length, and the
@@ -49,7 +51,15 @@ func (s *shaft) step(p *pair, v float64, open bool) {
 func (s *shaft) torque(w, th float64) float64 {
 	d := float64(s.dir)
 	f := s.m.side(s.dir)
-	return -d*(f.coulomb+f.excess(math.Abs(w))) - s.m.pull(th)
+	return -d*(f.coulomb+f.excess(math.Abs(w))) - s.pull(th)
+}
+
+// pull is the active torque against the rotor, in N·m.
+func (s *shaft) pull(th float64) float64 {
+	if s.free {
+		return s.twist
+	}
+	return s.m.pull(th)
 }
 
 // glide returns current and speed after pr.h seconds of uninterrupted rotation:
@@ -135,7 +145,7 @@ func (s *shaft) crossing(h, v float64, open bool) float64 {
 // release says in which direction the shaft at rest is driven away, 0 if static
 // friction holds it.
 func (s *shaft) release() int {
-	net := s.m.k*s.i - s.m.pull(s.th)
+	net := s.m.k*s.i - s.pull(s.th)
 	switch {
 	case s.locked:
 		return 0
@@ -169,9 +179,9 @@ func (s *shaft) stick(h, v float64, open bool) float64 {
 	if dir == 0 {
 		return h
 	}
-	edge := (s.m.fwd.static + s.m.pull(s.th)) / s.m.k
+	edge := (s.m.fwd.static + s.pull(s.th)) / s.m.k
 	if dir < 0 {
-		edge = (-s.m.rev.static + s.m.pull(s.th)) / s.m.k
+		edge = (-s.m.rev.static + s.pull(s.th)) / s.m.k
 	}
 	s.dir, s.i = dir, edge
 	t := -s.m.l / s.m.r * math.Log((edge-rest)/(from-rest))

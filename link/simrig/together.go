@@ -2,6 +2,7 @@ package simrig
 
 import (
 	"fmt"
+	"math"
 	"strings"
 )
 
@@ -41,8 +42,23 @@ func (r *reader) together(c *Config) {
 	check(b.ID != "" && !strings.Contains(b.ID, " "), "board.id", "%q is not one word", b.ID)
 	check(len(b.Inputs) <= 16, "board.inputs", "%d names for 16 bits", len(b.Inputs))
 	check(b.Disc != "incremental" || b.Windup != "back-calculation", "board.anti_windup", "an incremental law has no integral to work back")
+	l := &c.Load
+	check(l.Coupling > 0 || l.LostMotion == 0, "load.lost_motion_rad", "a rigid coupling has none; give coupling_Nm_rad")
+	check(l.Coupling == 0 || l.Inertia > 0, "load.inertia_kg_m2", "a coupling needs something behind it")
+	check(l.Coupling == 0 || resonance(c) < 6000, "load.coupling_Nm_rad", "resonance at %.0f rad/s; the steps follow up to 6000", resonance(c))
+	check(l.Coupling == 0 || c.Driver.Quadrants != 1, "driver.quadrants", "one quadrant is not simulated with an elastic coupling")
 	for i, f := range c.Faults {
 		_, known := faultKinds[f.Kind]
 		check(known, fmt.Sprintf("fault[%d].kind", i), "%q is not a fault; known are %s", f.Kind, strings.Join(FaultKinds(), ", "))
 	}
+}
+
+// resonance is the natural frequency of rotor against load in rad/s, 0 for a
+// rigid coupling.
+func resonance(c *Config) float64 {
+	g := c.Load.Gear * c.Load.Gear
+	if c.Load.Coupling == 0 || c.Load.Inertia == 0 {
+		return 0
+	}
+	return math.Sqrt(c.Load.Coupling / g * (1/c.Motor.Inertia + g/c.Load.Inertia))
 }

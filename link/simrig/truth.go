@@ -26,8 +26,15 @@ type Truth struct {
 	ComputeDelay float64
 
 	Speed        float64 // rad/s at which the friction was linearised
-	Gain         float64 // rad/s per V at rest frequency
+	Gain         float64 // rad/s per V at frequency zero
 	TimeConstant float64 // s, of the slowest pole
+	// FirstOrderDead is the dead time in s that a first-order model with Gain and
+	// TimeConstant needs: DeadTime and the time constant of the fast pole. With
+	// complex poles no first-order model fits and it is DeadTime alone.
+	FirstOrderDead float64
+	// Resonance is the natural frequency of rotor against load in rad/s, 0 for a
+	// rigid coupling. Num and Den are always those of the rigid rig.
+	Resonance float64
 	// OffsetVolts is the part of the drive at Speed that the linear model does
 	// not explain: friction, load and dead band, in V.
 	OffsetVolts float64
@@ -42,6 +49,7 @@ type Truth struct {
 // forward and the friction that of a crawl.
 func (r *Rig) Truth(speed float64) Truth {
 	m, d := &r.plant.motor, &r.plant.driver
+	j := m.j + r.plant.joint.j
 	dir := 1
 	if speed < 0 {
 		dir = -1
@@ -55,7 +63,7 @@ func (r *Rig) Truth(speed float64) Truth {
 	}
 	t := Truth{
 		Num:          []float64{m.k * scale},
-		Den:          []float64{m.j * m.l, m.j*m.r + b*m.l, b*m.r + m.k*m.k},
+		Den:          []float64{j * m.l, j*m.r + b*m.l, b*m.r + m.k*m.k},
 		DeadTime:     float64(d.delay) * 1e-9,
 		Window:       float64(r.cfg.Board.Window) * float64(r.loop) * 1e-9,
 		ComputeDelay: float64(r.cfg.Board.DelayUS) * 1e-6,
@@ -63,6 +71,10 @@ func (r *Rig) Truth(speed float64) Truth {
 	}
 	t.Gain = t.Num[0] / t.Den[2]
 	t.TimeConstant = slowest(t.Den)
+	t.FirstOrderDead, t.Resonance = t.DeadTime, resonance(&r.cfg)
+	if t.Den[1]*t.Den[1] > 4*t.Den[0]*t.Den[2] {
+		t.FirstOrderDead += t.Den[0] / t.Den[2] / t.TimeConstant
+	}
 	torque := float64(dir)*(f.coulomb+f.excess(w)+f.viscous*w) + m.load
 	drive := torque*m.r/m.k + m.k*speed
 	t.OffsetVolts = (drive+math.Copysign(d.deadBand, drive))/math.Abs(scale) - speed/math.Abs(t.Gain)
