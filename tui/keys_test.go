@@ -1,6 +1,7 @@
 package tui
 
 import (
+	"fmt"
 	"strings"
 	"testing"
 	"time"
@@ -41,6 +42,8 @@ func TestKeysMean(t *testing.T) {
 	give := func(yes bool, text string) []job.Intent {
 		return []job.Intent{job.GiveAnswer{Answer: job.Answer{ID: 5, Yes: yes, Text: text}}}
 	}
+	ports := stages()[0].view
+	meant := map[string]bool{}
 	one := func(in job.Intent) []job.Intent { return []job.Intent{in} }
 	for _, tt := range []struct {
 		name, why string
@@ -85,13 +88,28 @@ func TestKeysMean(t *testing.T) {
 		{"reset", "", view(func(v *job.View) { v.Drive.Phase, v.Drive.Acked = tripped, true }), "e z", one(job.ResetTrip{})},
 		{"turning by hand", "the shaft turns because the person was asked to", view(func(v *job.View) { ask(job.AskHandTurn)(v); v.Drive.Moving = true }), "enter", give(true, "")},
 		{"coasting", "a shaft that turns otherwise makes every key a stop", view(func(v *job.View) { ask(job.AskEnter)(v); v.Drive.Moving = true }), "enter", nil},
+		{"revert", "", view(func(v *job.View) { v.Doing = false; v.Push = pushView("pushed") }), "9 v", one(job.Revert{})},
+		{"ports", "the one that is selected", ports, "j enter l", []job.Intent{job.PickPort{Path: "/dev/ttyUSB0"}, job.LookAgain{}}},
+		{"simulated hand", "", view(func(v *job.View) { simulate(v); ask(job.AskHandTurn)(v) }), "t", one(job.TurnHand{})},
+		{"simulated switch", "", view(func(v *job.View) { simulate(v); ask(job.AskPower)(v) }), "o", one(job.CyclePower{})},
+		{"no simulated switch", "a real board is switched by hand", view(ask(job.AskPower)), "o t", nil},
 	} {
+		for _, in := range tt.want {
+			meant[fmt.Sprintf("%T", in)] = true
+		}
 		t.Run(tt.name, func(t *testing.T) {
 			_, got := press(New(Look{}), tt.view, strings.Fields(tt.keys)...)
 			if d := cmp.Diff(tt.want, got); d != "" {
 				t.Errorf("%s; keys %s (-want +got):\n%s", tt.why, tt.keys, d)
 			}
 		})
+	}
+	for _, in := range []job.Intent{job.Arm{}, job.Go{}, job.SayClear{}, job.Disarm{}, job.DoStep{}, job.SkipStep{}, job.GiveAnswer{}, job.Decline{},
+		job.Acknowledge{}, job.ResetTrip{}, job.SetMark{}, job.AddRemark{}, job.Nudge{}, job.PickPort{}, job.LookAgain{}, job.TurnHand{},
+		job.CyclePower{}, job.Revert{}, job.Quit{}} {
+		if !meant[fmt.Sprintf("%T", in)] {
+			t.Errorf("no key is tried that means %T", in)
+		}
 	}
 }
 
