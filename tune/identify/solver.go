@@ -359,3 +359,19 @@ func (pt *Point) Covariance() []float64 {
 	}
 	return cov
 }
+
+// dependent reports whether, within rounding, a column is a combination of those
+// before it.
+func (pt *Point) dependent() bool {
+	p := len(pt.Qtr)
+	for j := 0; j < p; j++ {
+		size := 0.0
+		for i := 0; i <= j; i++ {
+			size = math.Hypot(size, pt.R[i*p+j])
+		}
+		if math.Abs(pt.R[j*p+j]) <= 1e-10*size {
+			return true
+		}
+	}
+	return false
+}

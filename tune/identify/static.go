@@ -164,7 +164,7 @@ func levelRegression(use []Level, fast float64, cols []func(Level) float64) (b, 
 	pt := NewPoint(p)
 	Compress(a, p, rhs, pt)
 	b = make([]float64, p)
-	if !backSubstitute(pt.R, p, p, pt.Qtr, b) {
+	if pt.dependent() || !backSubstitute(pt.R, p, p, pt.Qtr, b) {
 		return nil, nil, 0, fmt.Errorf("%w: the levels do not differ enough in voltage", ErrData)
 	}
 	cov = pt.Covariance()
@@ -321,7 +321,7 @@ func FitFriction(speed, torque []float64) (Friction, error) {
 	pt := NewPoint(2)
 	Compress(a, 2, rhs, pt)
 	w = make([]float64, 2)
-	if !backSubstitute(pt.R, 2, 2, pt.Qtr, w) {
+	if pt.dependent() || !backSubstitute(pt.R, 2, 2, pt.Qtr, w) {
 		return Friction{}, fmt.Errorf("%w: all speeds are alike", ErrData)
 	}
 	rss := math.Max(pt.Cost-pt.Qtr[0]*pt.Qtr[0]-pt.Qtr[1]*pt.Qtr[1], 0)
