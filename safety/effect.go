@@ -95,3 +95,7 @@ func (CheckJudged) rank() int   { return 7 }
 func (TripLatched) rank() int   { return 7 }
 func (RunEnded) rank() int      { return 8 }
 func (Log) rank() int           { return 9 }
+
+// Before reports whether a comes before b in the order in which Step puts effects
+// out; equal kinds keep the order in which they were decided.
+func Before(a, b Effect) bool { return a.rank() < b.rank() }

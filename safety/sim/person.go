@@ -188,7 +188,7 @@ const (
 
 func (w *World) beginFault(f Fault) {
 	w.fault, w.faultFrom = f, w.now
-	w.faultEnds = w.now + time.Duration(50+w.rng.IntN(1000))*ms
+	w.faultEnds = w.now + time.Duration(50+w.rng.IntN(700))*ms
 	switch f {
 	case Unplug:
 		w.plugged = false
