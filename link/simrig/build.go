@@ -34,7 +34,7 @@ func newPlant(c *Config) plant {
 		limits: c.Nameplate.bounds(),
 	}
 	if k := c.Load.Coupling / (g * g); k > 0 {
-		p.joint = coupling{spring: k, damp: c.Load.Damping / (g * g), gap: c.Load.LostMotion * g, j: m.j - c.Motor.Inertia}
+		p.joint = coupling{spring: k, damp: c.Load.Damping / (g * g), gap: c.Load.LostMotion * g, j: m.j - c.Motor.Inertia, rub: c.Load.Rub / g}
 		p.motor.j = c.Motor.Inertia
 		p.shaft.free = true
 	}

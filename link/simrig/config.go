@@ -70,6 +70,7 @@ type LoadSpec struct {
 	Coupling   float64 `toml:"coupling_Nm_rad" unit:"N·m/rad" range:"0..1e6" default:"0" doc:"spring between rotor and load, at the output shaft; 0: rigid"`
 	Damping    float64 `toml:"coupling_damping_Nms" unit:"N·m·s/rad" range:"0..1e3" default:"0" doc:"of that spring"`
 	LostMotion float64 `toml:"lost_motion_rad" unit:"rad" range:"0..1" default:"0" doc:"free play of the coupling from stop to stop, at the output shaft"`
+	Rub        float64 `toml:"friction_Nm" unit:"N·m" range:"0..100" default:"0" doc:"Coulomb friction of a load behind a coupling, at the output shaft"`
 }
 
 // DriverSpec is the power stage.

@@ -10,6 +10,7 @@ type coupling struct {
 	damp   float64 // N·m·s/rad, acting while engaged
 	gap    float64 // rad of free play, from stop to stop
 	j      float64 // kg·m² of the load
+	rub    float64 // N·m of Coulomb friction on the load
 
 	th, w  float64 // rad, rad/s of the load
 	torque float64 // N·m on the load now
@@ -46,19 +47,27 @@ func (p *plant) joined(pr *pair, v float64, open bool) {
 	s.twist = c.torque
 	s.step(pr, v, open)
 	c.w += pr.h / c.j * (c.torque - p.motor.pull(c.th))
+	if rub := pr.h / c.j * c.rub; math.Abs(c.w) <= rub {
+		c.w = 0
+	} else {
+		c.w -= math.Copysign(rub, c.w)
+	}
 	c.th += pr.h / 2 * c.w
 }
 
-// slack reports whether the load rests and the joint carries nothing to speak
-// of, and makes it so: what is left is far below one count of any encoder.
-func (c *coupling) slack(th float64) bool {
+// slack reports whether load and joint rest: the friction of the load holds
+// what the joint and the pull leave, or there is nothing to speak of, far below
+// one count of any encoder.
+func (p *plant) slack() bool {
+	c := &p.joint
 	if c.spring == 0 {
 		return true
 	}
-	c.at(th, 0)
-	if math.Abs(c.w) > 1e-5 || math.Abs(c.torque) > 1e-6*c.spring {
+	c.at(p.shaft.th, 0)
+	p.shaft.twist = c.torque
+	if math.Abs(c.w) > 1e-5 || math.Abs(c.torque-p.motor.pull(c.th)) > c.rub+1e-6*c.spring {
 		return false
 	}
-	c.w, c.torque = 0, 0
+	c.w = 0
 	return true
 }

@@ -4,7 +4,7 @@ import "math"
 
 // longestStep bounds the integration step in ns. The step matters only for the
 // coupling to the bus and for the curvature of Stribeck friction.
-const longestStep = 50_000
+const longestStep = 100_000
 
 // plant is everything beyond the board's pins: driver, supply, motor, load and
 // the hand of whoever turns the shaft.
@@ -54,7 +54,7 @@ func (p *plant) run(end int64) {
 	}
 	// With the output on at zero volts the winding is shorted: no rest unless
 	// the current has died down as well, which still sees.
-	quiet := !p.driver.now.on && p.supply.settle() && p.joint.slack(p.shaft.th) && p.shaft.still(p.duty(), open) && p.hand.until <= p.now
+	quiet := !p.driver.now.on && p.supply.settle() && p.slack() && p.shaft.still(p.duty(), open) && p.hand.until <= p.now
 	if quiet {
 		p.now = end
 		p.warm(0, float64(length)*1e-9)

@@ -97,7 +97,7 @@ func (r *Rig) skip(until int64) {
 	p := &r.plant
 	if b.state.Moving() || b.state == protocol.Armed || b.tel.every > 0 || b.cap.busy() || !b.booted ||
 		p.hand.until > r.now || len(p.driver.queue) > 0 || !b.window.settled() ||
-		!p.shaft.still(p.duty(), !p.driver.now.on && !p.driver.shorts) || !p.supply.settle() || !p.joint.slack(p.shaft.th) {
+		!p.shaft.still(p.duty(), !p.driver.now.on && !p.driver.shorts) || !p.supply.settle() || !p.slack() {
 		return
 	}
 	n := (until - b.tick) / r.loop

@@ -44,8 +44,9 @@ func (r *reader) together(c *Config) {
 	check(b.Disc != "incremental" || b.Windup != "back-calculation", "board.anti_windup", "an incremental law has no integral to work back")
 	l := &c.Load
 	check(l.Coupling > 0 || l.LostMotion == 0, "load.lost_motion_rad", "a rigid coupling has none; give coupling_Nm_rad")
+	check(l.Coupling > 0 || l.Rub == 0, "load.friction_Nm", "a rigid load has its friction in [friction]; give coupling_Nm_rad")
 	check(l.Coupling == 0 || l.Inertia > 0, "load.inertia_kg_m2", "a coupling needs something behind it")
-	check(l.Coupling == 0 || resonance(c) < 6000, "load.coupling_Nm_rad", "resonance at %.0f rad/s; the steps follow up to 6000", resonance(c))
+	check(l.Coupling == 0 || resonance(c) < 2500, "load.coupling_Nm_rad", "resonance at %.0f rad/s; the steps follow up to 2500", resonance(c))
 	check(l.Coupling == 0 || c.Driver.Quadrants != 1, "driver.quadrants", "one quadrant is not simulated with an elastic coupling")
 	for i, f := range c.Faults {
 		_, known := faultKinds[f.Kind]

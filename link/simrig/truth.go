@@ -75,7 +75,7 @@ func (r *Rig) Truth(speed float64) Truth {
 	if t.Den[1]*t.Den[1] > 4*t.Den[0]*t.Den[2] {
 		t.FirstOrderDead += t.Den[0] / t.Den[2] / t.TimeConstant
 	}
-	torque := float64(dir)*(f.coulomb+f.excess(w)+f.viscous*w) + m.load
+	torque := float64(dir)*(f.coulomb+r.plant.joint.rub+f.excess(w)+f.viscous*w) + m.load
 	drive := torque*m.r/m.k + m.k*speed
 	t.OffsetVolts = (drive+math.Copysign(d.deadBand, drive))/math.Abs(scale) - speed/math.Abs(t.Gain)
 	t.BreakawayForward = (math.Max(0, m.fwd.static+m.load)*m.r/m.k + d.deadBand) / math.Abs(scale)
