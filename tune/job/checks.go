@@ -155,25 +155,27 @@ func (j *Job) firstGuess() {
 // the first of those counts.
 func firstMotion(s []Sample, dir float64, n int64) (moved float64, volts float64, ok bool) {
 	base, armed := int64(0), false
-	firstV, begun := 0.0, false
+	started := 0.0
 	for i := range s {
 		v := float64(s[i].Volts) * dir
 		if v <= 0 {
 			if armed && ok {
 				return moved, volts, true
 			}
-			base, armed, begun = s[i].Counts, true, false
+			base, armed = s[i].Counts, true
 			continue
 		}
 		if !armed {
 			base, armed = s[i].Counts, true
 		}
 		d := s[i].Counts - base
-		if d != 0 && !begun {
-			begun, firstV = true, v
+		// A count to and fro is the noise of an edge; the start is where the shaft
+		// last stood within it.
+		if abs64(d) <= 1 {
+			started = v
 		}
 		if abs64(d) >= n && !ok {
-			volts, ok = firstV, true
+			volts, ok = started, true
 		}
 		if ok {
 			moved = float64(d)

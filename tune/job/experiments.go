@@ -79,20 +79,21 @@ func (j *Job) starts(s []Sample) (fwd, rev []float64) {
 			k++
 		}
 		base := s[max(i-1, 0)].Counts
+		started := 0.0
 		for n := i; n < k; n++ {
-			if d := float64(s[n].Counts-base) * dir; d >= 2 {
-				// The drive when the first of those counts came.
-				m := n
-				for m > i && s[m-1].Counts != base {
-					m--
-				}
-				if v := float64(s[m].Volts) * dir; dir > 0 {
-					fwd = append(fwd, v)
-				} else {
-					rev = append(rev, v)
-				}
-				break
+			d := float64(s[n].Counts-base) * dir
+			if math.Abs(d) <= 1 { // the noise of an edge
+				started = float64(s[n].Volts) * dir
 			}
+			if d < 4 {
+				continue
+			}
+			if dir > 0 {
+				fwd = append(fwd, started)
+			} else {
+				rev = append(rev, started)
+			}
+			break
 		}
 		i = k
 	}

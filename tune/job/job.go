@@ -100,6 +100,7 @@ func New(h Hands, opt Options) *Job {
 			Gives: p.Gives, Status: ToDo}
 	}
 	j.publish()
+	h.Show(func(v *View) { v.Current = StepPort })
 	return j
 }
 
