@@ -2,6 +2,8 @@ package sheet
 
 import (
 	"fmt"
+	"math"
+	"strconv"
 	"strings"
 
 	"gainwright/tune/sheet/plain"
@@ -44,6 +46,10 @@ type CardData struct {
 	PhaseMarginDeg  *float64
 	GainMarginDB    *float64
 	SensitivityPeak *float64
+	WorstPhaseDeg   *float64 // kept by 95 % of the motors drawn
+	WorstPeak       *float64
+	Motor           MotorRecord
+	PowerOnLimits   []Quantity // as left, where they are not those of the session
 }
 
 // CardColumn is the state of the loop, found or left.
@@ -59,7 +65,8 @@ type CardColumn struct {
 type CardModel struct {
 	Gain, GainPM     *float64 // rad/s per V
 	Tau, TauPM       *float64 // s
-	DeadTime         *float64 // s
+	Tau2, Tau2PM     *float64 // s; nil for one time constant
+	DeadTime, DeadPM *float64 // s
 	BreakawayForward *float64 // V
 	BreakawayReverse *float64 // V
 	Verdict          string
@@ -100,7 +107,10 @@ func (c *card) add(format string, args ...any) {
 func (c *card) rule() { c.add("%s", strings.Repeat("-", cardColumns)) }
 
 func (c *card) head(d CardData) {
-	c.add("SPEED LOOP CARD   %s", text(outcomeWords(d.Outcome, d.Reason), 60))
+	c.add("SPEED LOOP CARD   %s", text(outcomeWords(d.Outcome), 60))
+	if d.Reason != "" && d.Outcome != "accepted" && d.Outcome != "no-adjustment" {
+		c.add("reason %s", plain.Visible(d.Reason, cardColumns-7))
+	}
 	if d.Simulated {
 		c.add("SIMULATED RIG: nothing on this card was measured on a motor")
 	}
@@ -149,16 +159,20 @@ func formPeriod(c CardColumn) string {
 
 func (c *card) findings(d CardData) {
 	m := d.Model
-	c.add("model    K %s  tau %s  delay %s  (%s)",
-		plusMinus(m.Gain, m.GainPM, "rad/s per V"), plusMinus(scaled(m.Tau, 1e3), scaled(m.TauPM, 1e3), "ms"),
-		with(scaled(m.DeadTime, 1e3), "ms"), text(m.Verdict, 9))
-	c.add("         breakaway forward %s  reverse %s", with(m.BreakawayForward, "V"), with(m.BreakawayReverse, "V"))
-	c.add("margins  phase %s  gain %s  Ms %s", with(d.PhaseMarginDeg, "deg"), with(d.GainMarginDB, "dB"), digits(d.SensitivityPeak))
-	limits := make([]string, 0, len(d.Limits))
-	for _, q := range d.Limits {
-		limits = append(limits, fmt.Sprintf("%s %s", plain.Visible(q.Name, 20), shown(q)))
+	second := ""
+	if m.Tau2 != nil {
+		second = ", " + plusMinus(scaled(m.Tau2, 1e3), scaled(m.Tau2PM, 1e3), "ms")
 	}
-	c.list("limits held by the board", limits, 3)
+	c.add("model    K %s  tau %s%s", plusMinus(m.Gain, m.GainPM, "rad/s per V"), plusMinus(scaled(m.Tau, 1e3), scaled(m.TauPM, 1e3), "ms"), second)
+	c.add("         delay %s (%s)  breakaway %s, reverse %s", plusMinus(scaled(m.DeadTime, 1e3), scaled(m.DeadPM, 1e3), "ms"), text(m.Verdict, 9),
+		with(m.BreakawayForward, "V"), with(m.BreakawayReverse, "V"))
+	c.add("motor    R %s at %s  Ke %s  J %s", with(d.Motor.ROhm, "ohm"), with(d.Motor.RDegC, "C"), with(d.Motor.KeVsPerRad, "V s/rad"), with(d.Motor.JKgM2, "kg m²"))
+	c.add("margins  phase %s  gain %s  Ms %s   worst case %s  Ms %s", with(d.PhaseMarginDeg, "deg"), with(d.GainMarginDB, "dB"), digits(d.SensitivityPeak),
+		with(d.WorstPhaseDeg, "deg"), digits(d.WorstPeak))
+	c.list("limits held by the board this session", limitWords(d.Limits), 5)
+	if len(d.PowerOnLimits) > 0 {
+		c.list("after power-on it holds its own", limitWords(d.PowerOnLimits), 3)
+	}
 	var seen []string
 	for _, k := range d.Checks {
 		words := box(k.Seen) + " " + plain.Visible(k.Name, 20)
@@ -244,10 +258,52 @@ func plusMinus(x, pm *float64, unit string) string {
 	if x == nil {
 		return with(nil, unit)
 	}
-	if pm == nil {
+	if pm == nil || !(*pm > 0) {
 		return with(x, unit)
 	}
-	return digits(x) + "+-" + significant(*pm, 2) + " " + unit
+	return asKnown(*x, *pm) + "+-" + significant(*pm, 2) + " " + unit
+}
+
+// asKnown is x with as many decimals as two digits of its ± have, and at most six
+// significant ones.
+func asKnown(x, pm float64) string {
+	decimals := 1 - int(math.Floor(math.Log10(pm)))
+	if x != 0 {
+		decimals = min(decimals, 5-int(math.Floor(math.Log10(math.Abs(x)))))
+	}
+	return strconv.FormatFloat(x, 'f', max(0, decimals), 64)
+}
+
+// limitNames are the names of P7.1 of the protocol as people read them.
+var limitNames = map[string]string{"vmax": "volts", "wmax": "speed", "imax": "current", "bmax": "bus high", "bmin": "bus low", "amax": "acceleration",
+	"turns": "turns", "stall": "stalled for", "wrong": "wrong way for", "nocnt": "no counts for", "vbreak": "must turn at", "heat": "heat",
+	"run": "run time", "beat": "timeout", "slew": "slew"}
+
+// notJudged are the limits for which 0 means that the board does not judge them.
+var notJudged = map[string]bool{"imax": true, "bmax": true, "bmin": true, "amax": true, "turns": true, "heat": true, "slew": true, "vbreak": true}
+
+// limitWords are limits for people; those that are not judged come last, by name.
+func limitWords(list []Quantity) []string {
+	var words, off []string
+	for _, q := range list {
+		name := limitNames[q.Name]
+		if name == "" {
+			name = plain.Visible(q.Name, 20)
+		}
+		if notJudged[q.Name] && q.Value != nil && *q.Value == 0 {
+			off = append(off, name)
+			continue
+		}
+		if q.Unit == q.Name { // turns
+			q.Unit = ""
+		}
+		words = append(words, name+" "+shown(q))
+	}
+	if len(off) > 0 {
+		words = append(words, "not judged: "+off[0])
+		words = append(words, off[1:]...)
+	}
+	return words
 }
 
 // shown is a quantity for people: speeds in rpm, the rest as it is.
@@ -258,7 +314,7 @@ func shown(q Quantity) string {
 	return plusMinus(q.Value, q.PlusMinus, plain.Visible(q.Unit, 16))
 }
 
-func outcomeWords(outcome, reason string) string {
+func outcomeWords(outcome string) string {
 	words := map[string]string{
 		"accepted": "GAINS LEFT AND VERIFIED", "no-adjustment": "NO ADJUSTMENT MADE", "refused": "REFUSED",
 		"tripped": "TRIPPED, NOT FINISHED", "failed": "FAILED", "": "",
@@ -266,9 +322,6 @@ func outcomeWords(outcome, reason string) string {
 	w, ok := words[outcome]
 	if !ok {
 		w = outcome
-	}
-	if reason != "" && w != "" {
-		w += ": " + reason
 	}
 	return w
 }

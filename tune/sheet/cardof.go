@@ -23,8 +23,15 @@ func CardOf(r *Reader) CardData {
 	}
 	if c, err := r.Closing(); err == nil {
 		d.Outcome, d.Reason = c.Outcome, c.Reason
+	} else {
+		d.Outcome = outcomeSoFar(r)
 	}
 	_ = r.LastJSON(KindRig, NameNameplate, &d.Nameplate)
+	for _, l := range r.Find(KindRig, "") {
+		if strings.HasSuffix(l.File, ".toml") && !strings.HasSuffix(d.Nameplate.RigFile, ".toml") {
+			d.Nameplate.RigFile = l.File // where the file as used stands in the record
+		}
+	}
 	var found, left Snapshot
 	if l, ok := r.First(KindAsFound); ok {
 		_ = r.JSON(l, &found)
@@ -34,9 +41,7 @@ func CardOf(r *Reader) CardData {
 	d.NoAsFoundTraces = found.BoardID != "" && len(found.TraceFiles) == 0
 	d.Firmware, d.LoadState = found.Firmware, left.LoadState
 	d.AmbientDegC, d.BusV = found.AmbientDegC, left.BusV
-	if d.Limits = left.Limits; len(d.Limits) == 0 {
-		d.Limits = found.Limits
-	}
+	d.limits(r, found, left)
 	if d.LoadState == "" {
 		d.LoadState = found.LoadState
 	}
@@ -55,22 +60,62 @@ func CardOf(r *Reader) CardData {
 	return d
 }
 
+// limits takes those that the session had the board hold, and sets those that it
+// holds after power-on beside them where they differ.
+func (d *CardData) limits(r *Reader, found, left Snapshot) {
+	var held EventRecord
+	_ = r.LastJSON(KindEvent, NameLimitsHeld, &held)
+	d.Limits = held.Limits
+	if len(d.Limits) == 0 {
+		if d.Limits = left.Limits; len(d.Limits) == 0 {
+			d.Limits = found.Limits
+		}
+		return
+	}
+	same := named(d.Limits)
+	for _, q := range left.Limits {
+		if v, ok := named([]Quantity{q})[q.Name]; ok && v != same[q.Name] {
+			d.PowerOnLimits = append(d.PowerOnLimits, q)
+		}
+	}
+}
+
+// outcomeSoFar is what a record that is not closed yet shows for certain.
+func outcomeSoFar(r *Reader) string {
+	var v VerifyRecord
+	var s StoreRecord
+	if r.LastJSON(KindVerify, "", &v) == nil && r.LastJSON(KindStore, "", &s) == nil && isTrue(v.Passed) && isTrue(s.PowerCycled) && isTrue(s.Identical) {
+		return "accepted"
+	}
+	_, pushed := r.First(KindPush)
+	if _, none := r.Last(KindEvent, NameNoAdjustment); none && !pushed {
+		return "no-adjustment"
+	}
+	return ""
+}
+
+func isTrue(b *bool) bool { return b != nil && *b }
+
 // results fills in what was computed: model, margins, verify, store.
 func (d *CardData) results(r *Reader) {
 	var p ProposalRecord
 	var fit FitRecord
 	if p = chosen(r); p.Rule != "" {
 		d.margins(p.Margins)
+		d.worst(p.Worst)
 	}
 	if fit = fitBehind(r, p); fit.Kind != "" {
 		gain, tau, dead := param(fit, "gain"), param(fit, "tau"), param(fit, "dead_time")
 		d.Model = CardModel{
 			Gain: gain.Value, GainPM: gain.PlusMinus, Tau: tau.Value, TauPM: tau.PlusMinus,
-			DeadTime: dead.Value, Verdict: fit.Verdict,
+			DeadTime: dead.Value, DeadPM: dead.PlusMinus, Verdict: fit.Verdict,
 		}
+		second := param(fit, "tau2")
+		d.Model.Tau2, d.Model.Tau2PM = second.Value, second.PlusMinus
 	}
 	var m MotorRecord
 	if r.LastJSON(KindFit, NameMotor, &m) == nil {
+		d.Motor = m
 		d.Model.BreakawayForward, d.Model.BreakawayReverse = m.BreakawayForwardV, m.BreakawayReverseV
 	}
 	var v VerifyRecord
@@ -78,6 +123,7 @@ func (d *CardData) results(r *Reader) {
 		if d.Left.Step == nil {
 			d.Left.Step = v.Step
 		}
+		d.OvershootTarget, d.SettlingTarget = "none", "none"
 		for _, t := range v.Targets {
 			switch t.Name {
 			case "overshoot":
@@ -101,6 +147,16 @@ func (d *CardData) margins(raw json.RawMessage) {
 	}
 	if json.Unmarshal(raw, &m) == nil {
 		d.GainMarginDB, d.PhaseMarginDeg, d.SensitivityPeak = m.GainMarginDB, m.PhaseMarginDeg, m.Ms
+	}
+}
+
+func (d *CardData) worst(raw json.RawMessage) {
+	var w struct {
+		PhaseMarginDeg *float64 `json:"phase_margin_deg"`
+		Ms             *float64 `json:"ms"`
+	}
+	if json.Unmarshal(raw, &w) == nil {
+		d.WorstPhaseDeg, d.WorstPeak = w.PhaseMarginDeg, w.Ms
 	}
 }
 
@@ -183,11 +239,16 @@ func param(f FitRecord, name string) Quantity {
 
 func cardCheck(c CheckRecord) CardCheck {
 	out := CardCheck{Name: c.Check, Seen: c.Passed}
-	for _, q := range c.Measured {
-		if q.Value != nil {
-			out.Note = shown(q)
-			break
+	var notes []string
+	for i, q := range c.Measured {
+		if q.Value == nil {
+			continue
 		}
+		if i+1 < len(c.Measured) && c.Measured[i+1].Unit == q.Unit {
+			q.Unit = "" // the last one of the same unit names it
+		}
+		notes = append(notes, shown(q))
 	}
+	out.Note = strings.Join(notes, " / ")
 	return out
 }

@@ -58,6 +58,9 @@ func scaled(x *float64, k float64) *float64 {
 
 // with puts a unit behind a known value; an unknown one stays a blank.
 func with(x *float64, unit string) string {
+	if unit == "1" || unit == "" {
+		return digits(x)
+	}
 	return digits(x) + " " + unit
 }
 
