@@ -589,3 +589,33 @@ func TestBrakingIsNotTheWrongWay(t *testing.T) {
 		t.Errorf("%g rad/s, %q", c.r.Speed(), c.events)
 	}
 }
+
+// TestViolationsAreTheRigsOwnAccount passes the nameplate's speed twice with a
+// board that allows it.
+func TestViolationsAreTheRigsOwnAccount(t *testing.T) {
+	cfg := benchConfig()
+	cfg.Nameplate.SpeedMax, cfg.Nameplate.VoltsMax = 100, 7.9
+	c := newConsole(t, cfg)
+	c.hold(nil)
+	c.arm()
+	for range 2 {
+		c.volts(500*time.Millisecond, 7)
+		c.volts(500*time.Millisecond, 3)
+	}
+	e := c.r.Extremes()
+	if len(e.Violations) != 2 {
+		t.Fatalf("%+v", e.Violations)
+	}
+	for _, v := range e.Violations {
+		if v.What != "speed" || v.Limit != 100 || math.Abs(v.Worst-e.Speed) > 1 || v.At == 0 {
+			t.Errorf("%+v, extremes %+v", v, e)
+		}
+	}
+	c.volts(20*time.Millisecond, 8.3)
+	if e := c.r.Extremes(); len(e.Violations) != 3 || e.Violations[2].What != "volts" {
+		t.Errorf("%+v", e.Violations)
+	}
+	if turns := c.r.Angle() / (2 * math.Pi); math.Abs(c.r.Extremes().Turns-turns) > 1e-9 {
+		t.Errorf("%g turns, angle %g", c.r.Extremes().Turns, turns)
+	}
+}

@@ -15,6 +15,8 @@ type Extremes struct {
 	Accel float64 // highest |acceleration| over a millisecond or more, rad/s²
 	Turns float64 // farthest from the angle at power-on, turns of the motor shaft
 
+	angle float64 // Turns in rad
+
 	PoweredS float64 // seconds with the output on
 
 	Violations []Violation // excursions out of the nameplate's envelope
@@ -28,13 +30,13 @@ type Violation struct {
 	Limit float64
 }
 
-// violationsMax bounds the list; what comes after only raises the last one's
-// count of the same kind, which is of no use to anybody.
+// violationsMax bounds the list: later excursions are not kept.
 const violationsMax = 1000
 
 // bounds judges the nameplate's envelope.
 type bounds struct {
 	rows [4]bound
+	out  bool // one of them is passed now
 	// acceleration is judged over a span, since at one step it says little
 	fromT int64
 	fromW float64
@@ -62,15 +64,17 @@ const slack = 1e-9
 // note takes the present instant into the extremes.
 func (p *plant) note(v float64) {
 	s, e := &p.shaft, &p.seen
+	b := &p.limits
 	now := [4]float64{math.Abs(v), math.Abs(s.w), math.Abs(s.i), p.supply.bus}
-	e.Volts, e.Speed = max(e.Volts, now[0]), max(e.Speed, now[1])
-	e.Amps, e.Bus = max(e.Amps, now[2]), max(e.Bus, now[3])
-	e.Turns = max(e.Turns, math.Abs(s.th)/(2*math.Pi))
-	for k := range p.limits.rows {
-		r := &p.limits.rows[k]
-		if now[k] <= r.limit && r.out == 0 {
-			continue
-		}
+	e.Volts, e.Speed = larger(e.Volts, now[0]), larger(e.Speed, now[1])
+	e.Amps, e.Bus = larger(e.Amps, now[2]), larger(e.Bus, now[3])
+	e.angle = larger(e.angle, math.Abs(s.th))
+	if !b.out && now[0] <= b.rows[0].limit && now[1] <= b.rows[1].limit && now[2] <= b.rows[2].limit && now[3] <= b.rows[3].limit {
+		return
+	}
+	b.out = false
+	for k := range b.rows {
+		r := &b.rows[k]
 		switch {
 		case now[k] <= r.limit*(1+slack):
 			r.out = 0
@@ -81,7 +85,16 @@ func (p *plant) note(v float64) {
 			e.Violations = append(e.Violations, Violation{What: r.what, At: time.Duration(p.now), Worst: now[k], Limit: r.limit})
 			r.out = len(e.Violations)
 		}
+		b.out = b.out || r.out > 0
 	}
+}
+
+// larger is max without its care for not-a-numbers, which nothing here makes.
+func larger(a, b float64) float64 {
+	if b > a {
+		return b
+	}
+	return a
 }
 
 // noteSpan takes the acceleration since the last call into the extremes; the

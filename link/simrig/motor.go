@@ -15,10 +15,10 @@ type side struct {
 // (Ts - Tc)·exp(-(w/ws)²), the Gaussian form of the Stribeck curve
 // (B. Armstrong-Hélouvry, Control of Machines with Friction, 1991; from memory).
 func (f *side) excess(w float64) float64 {
-	x := w / f.stribeck
-	if x > 7 {
+	if w > 7*f.stribeck {
 		return 0 // exp(-49) is below the rounding of any torque here
 	}
+	x := w / f.stribeck
 	return (f.static - f.coulomb) * math.Exp(-x*x)
 }
 

@@ -77,6 +77,9 @@ func (s *shaft) glide(pr *propagator, v float64, open bool) (i, w float64) {
 	if w*float64(s.dir) < 0 {
 		return i, w // the caller splits the step anyway
 	}
+	if reach := 7 * s.m.side(s.dir).stribeck; s.m.gravity == 0 && math.Abs(w) > reach && math.Abs(s.w) > reach {
+		return i, w // the torque is the same at both ends
+	}
 	dg := s.torque(w, s.th+pr.h/2*(s.w+w))/s.m.j - g0
 	if dg == 0 {
 		return i, w

@@ -111,6 +111,7 @@ func (r *Rig) nominal() float64 { return r.cfg.Supply.Volts }
 func (r *Rig) Extremes() Extremes {
 	r.sync()
 	e := r.plant.seen
+	e.Turns = e.angle / (2 * math.Pi)
 	e.Violations = append([]Violation(nil), e.Violations...)
 	return e
 }
