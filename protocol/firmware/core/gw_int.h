@@ -154,6 +154,7 @@ void gw_put_i(int32_t v);
 void gw_ok(uint16_t n);
 void gw_no(uint16_t n, uint8_t code);
 void gw_again(void);
+void gw_blank(void);
 
 /* A word of up to six small letters as a number, as gw_word reads it. */
 #define W3(a, b, c) (((uint32_t)((a) & 31) << 10) | ((uint32_t)((b) & 31) << 5) | (uint32_t)((c) & 31))

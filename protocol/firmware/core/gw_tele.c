@@ -186,6 +186,8 @@ static const char ev_off[] GW_FLASH = " off";
 
 static void send_event(uint8_t due, uint8_t cause, uint32_t us)
 {
+	if (due & 2u)
+		gw_blank();
 	put_event('e', 'v');
 	if (due & 2u) {
 		gw_puts(ev_boot);

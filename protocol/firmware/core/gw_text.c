@@ -184,6 +184,13 @@ void gw_end(void)
 	gw_end_hex();
 }
 
+/* gw_blank sends an LF, which ends what was left half sent before a restart. */
+void gw_blank(void)
+{
+	keep = 0;
+	emit('\n');
+}
+
 /* gw_again sends the answer that was kept. */
 void gw_again(void)
 {
