@@ -25,6 +25,16 @@ func TestBoardUnitsByHand(t *testing.T) {
 	if *b.KpInt != int64(math.Round(kp*(1<<24))) || *b.KiInt != int64(math.Round(ki*(1<<24))) {
 		t.Errorf("got integers %d %d", *b.KpInt, *b.KiInt)
 	}
+	// A derivative is divided by the sample time.
+	d := g
+	d.Kd, d.DerivativeFilter = 0.0004, 0.002
+	bd, err := ToBoard(d, Board{SpeedUnit: 1, DriveUnit: 2, PerSample: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if math.Abs(bd.Kd-0.0004/0.001/2) > 1e-15 || math.Abs(bd.Held.Kd/0.0004-1) > 1e-7 {
+		t.Errorf("kd per sample: got %.12g, held %.12g", bd.Kd, bd.Held.Kd)
+	}
 	// 2²⁴ over 146 rounds up to 114 913 rpm: such an integral never moves.
 	if want := math.Ceil((1<<24)/float64(*b.KiInt)) * RPMUnit; math.Abs(float64(b.SmallestError)-want) > 1e-9 {
 		t.Errorf("smallest error %.6g rad/s, want %.6g", b.SmallestError, want)

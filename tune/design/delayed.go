@@ -49,11 +49,11 @@ func delayedResponses(m model.Linear, g Gains) (Step, LoadStep, error) {
 	}
 	step := Step{Unknown, Unknown, Unknown, Unknown}
 	if sys := newDelayedLoop(m, g, grid, 1, 0); kick == 0 || sys.directSlope() == 0 {
-		sys.run(y, dead, 0, kick)
+		sys.run(y, dead, kick)
 		step = y.step()
 	}
 	z := newMeter(0)
-	newDelayedLoop(m, g, grid, 0, 1).run(z, dead, m.DeadTime, 0)
+	newDelayedLoop(m, g, grid, 0, 1).run(z, dead, 0)
 	return step, z.load(), nil
 }
 
@@ -97,28 +97,19 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 	if fastest > 0 {
 		smallest = math.Min(largest, 0.05/fastest)
 	}
-	// A load step arrives after the dead time of the model alone; a grid point
-	// belongs there too.
-	grid := grade(nil, m.DeadTime, smallest, largest)
-	grid = grade(grid, dead-m.DeadTime, smallest, largest)
-	if len(grid) > 20000 {
-		return nil, fmt.Errorf("design: the dead time of %g s is too long against the fastest time constant to be simulated", dead)
-	}
-	return grid, nil
-}
-
-// grade appends steps that fill span, small at first and growing with the time
-// since its start.
-func grade(grid []float64, span, smallest, largest float64) []float64 {
-	for t := 0.0; t < span*(1-1e-12); {
+	var grid []float64
+	for t := 0.0; t < dead*(1-1e-12); {
 		h := math.Min(largest, math.Max(smallest, 0.04*t))
-		if rest := span - t; rest < 1.5*h {
+		if rest := dead - t; rest < 1.5*h {
 			h = rest
 		}
 		grid = append(grid, h)
 		t += h
 	}
-	return grid
+	if len(grid) > 20000 {
+		return nil, fmt.Errorf("design: the dead time of %g s is too long against the fastest time constant to be simulated", dead)
+	}
+	return grid, nil
 }
 
 func newDelayedLoop(m model.Linear, g Gains, grid []float64, r, load float64) *delayedLoop {
@@ -247,10 +238,10 @@ func (s *delayedLoop) outputs(z, scratch []float64, v, v1, v2 float64) (y, yd, u
 }
 
 // run simulates until the response has come to rest and feeds it to the meter.
-// The load reaches the motor loadAt seconds after the start, with loadAt = dead
-// unless there is a compute delay; kick is the area of an impulse in the drive
-// at the start.
-func (s *delayedLoop) run(out *meter, dead, loadAt, kick float64) {
+// A load acts on the motor from the start: when it arrives shifts the answer but
+// changes neither its peak nor its area. kick is the area of an impulse in the
+// drive at the start.
+func (s *delayedLoop) run(out *meter, dead, kick float64) {
 	const stepsMax = 20_000_000
 	z, next, scratch := make([]float64, s.n), make([]float64, s.n), make([]float64, s.n)
 	check, taken := 16*dead, 0
@@ -264,10 +255,8 @@ func (s *delayedLoop) run(out *meter, dead, loadAt, kick float64) {
 		for i := range s.steps {
 			st := &s.steps[i]
 			in := s.history[i]
-			if s.load != 0 && now+st.h/2 >= loadAt {
-				in.v0 += s.load
-				in.v1 += s.load
-			}
+			in.v0 += s.load
+			in.v1 += s.load
 			c := segment{h: st.h, y0: in.v0, y1: in.v1, d0: in.d0, d1: in.d1}.cubic()
 			h2 := st.h * st.h
 			y0, yd0, u0, ud0 := s.outputs(z, scratch, c[0], c[1]/st.h, 2*c[2]/h2)

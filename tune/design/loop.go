@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/cmplx"
+	"sort"
 
 	"gainwright/tune/model"
 )
@@ -18,6 +19,7 @@ type loop struct {
 	deadTime   float64 // s, all of it: bounds the turn of the phase per rad/s
 	right      int     // open-loop poles that are unstable
 	zero       int     // open-loop poles at the origin (z = 1)
+	resonances []float64
 }
 
 func (l *loop) at(w float64) complex128 { return l.plant(w) * l.controller(w) }
@@ -47,7 +49,13 @@ func newLoop(m model.Linear, g Gains) (*loop, error) {
 		p.DeadTime = l.deadTime
 		l.plant = p.At
 	}
-	l.right, l.zero = model.RightHalfPlane(m.Poles())
+	poles := m.Poles()
+	l.right, l.zero = model.RightHalfPlane(poles)
+	for _, p := range poles {
+		if imag(p) > 0 {
+			l.resonances = append(l.resonances, cmplx.Abs(p))
+		}
+	}
 	if g.Ki != 0 {
 		l.zero++
 	}
@@ -56,9 +64,13 @@ func newLoop(m model.Linear, g Gains) (*loop, error) {
 }
 
 func (l *loop) corners(m model.Linear, g Gains) {
+	m.DeadTime = 0 // the whole of it counts, below
 	l.lowest, l.highest = m.Corners()
+	// A corner a million times above the motor's own matters to no margin: a
+	// loop that could reach it would have a gain margin as large.
+	ceiling := 1e6 * l.highest
 	add := func(w float64) {
-		if w > 0 && !math.IsInf(w, 0) {
+		if w = math.Min(w, ceiling); w > 0 {
 			l.lowest, l.highest = math.Min(l.lowest, w), math.Max(l.highest, w)
 		}
 	}
@@ -146,7 +158,7 @@ func (l *loop) scan() ([]point, error) {
 	w := l.start()
 	pts := make([]point, 0, 1024)
 	pts = append(pts, point{w, l.at(w)})
-	crossedHigh := false
+	tail := l.tail()
 	for len(pts) < scanPoints {
 		prev := pts[len(pts)-1]
 		if prev.w >= l.end {
@@ -161,25 +173,63 @@ func (l *loop) scan() ([]point, error) {
 		}
 		n := len(pts)
 		pts = l.refine(pts, prev, point{next, l.at(next)}, scanDepth)
-		for i := n; i < len(pts); i++ {
-			if pts[i].w > 3*l.highest && crossesNegative(pts[i-1].l, pts[i].l) && cmplx.Abs(pts[i].l) < 1 {
-				crossedHigh = true
-			}
-		}
-		if math.IsInf(l.end, 1) && l.finished(pts[len(pts)-1], crossedHigh) {
+		if tail != nil && tail.over(pts, n) {
 			return pts, nil
 		}
 	}
 	return nil, fmt.Errorf("design: the loop turns too fast to be judged: more than %d frequencies are needed", scanPoints)
 }
 
-// finished tells whether a continuous loop only shrinks from p on.
-func (l *loop) finished(p point, crossedHigh bool) bool {
-	a := cmplx.Abs(p.l)
-	if l.deadTime > 0 && crossedHigh && a < 0.9 {
+// tail knows how large a continuous loop can still become.
+type tail struct {
+	w, top  []float64 // top[i] is the largest |L| from w[i] on
+	deadEnd bool      // the loop has dead time and crosses the real axis for ever
+	at      int
+	crossed float64 // largest |L| below 1 at which the scan crossed the negative axis
+	nearest float64 // least |1 + L| so far
+}
+
+// tail returns nil for a sampled loop, which ends at π/h.
+func (l *loop) tail() *tail {
+	if !math.IsInf(l.end, 1) {
+		return nil
+	}
+	t := &tail{deadEnd: l.deadTime > 0, nearest: math.Inf(1)}
+	for w := l.lowest * 0.1; w < 2e4*l.highest; w *= 1.15 {
+		t.w = append(t.w, w)
+	}
+	t.w = append(t.w, l.resonances...)
+	sort.Float64s(t.w)
+	t.top = make([]float64, len(t.w))
+	top := 0.0
+	for i := len(t.w) - 1; i >= 0; i-- {
+		top = math.Max(top, cmplx.Abs(l.at(t.w[i])))
+		t.top[i] = top
+	}
+	return t
+}
+
+// over takes in the points from n on and tells whether nothing that follows can
+// change a margin: the rest of |L| is below 1, below what set the gain margin, and
+// too small to come closer to −1. Without dead time the phase has settled at the
+// end of the tail.
+func (t *tail) over(pts []point, n int) bool {
+	for i := n; i < len(pts); i++ {
+		p := pts[i]
+		t.nearest = math.Min(t.nearest, cmplx.Abs(1+p.l))
+		if a := cmplx.Abs(p.l); a < 1 && crossesNegative(pts[i-1].l, p.l) {
+			t.crossed = math.Max(t.crossed, a)
+		}
+	}
+	w := pts[len(pts)-1].w
+	for t.at < len(t.w) && t.w[t.at] <= w {
+		t.at++
+	}
+	if t.at == len(t.w) {
 		return true
 	}
-	return p.w > 1e4*l.highest
+	rest := t.top[max(0, t.at-1)]
+	return t.deadEnd && rest < 0.95*t.crossed && rest < math.Max(0.98*(1-t.nearest), 1e-9)
 }
 
 // refine appends the points after a up to b, halving until each turn is small.
@@ -230,6 +280,9 @@ func (l *loop) stable(pts []point) bool {
 	var total float64
 	for i := 1; i < len(pts); i++ {
 		total += cmplx.Phase((1 + pts[i].l) * cmplx.Conj(1+pts[i-1].l))
+	}
+	if math.IsInf(l.end, 1) {
+		total -= cmplx.Phase(1 + last) // |L| stays below 1, so this is all that is left to L = 0
 	}
 	want := math.Pi*float64(l.right) + math.Pi/2*float64(l.zero)
 	return math.Abs(total-want) < math.Pi/4

@@ -129,23 +129,18 @@ func (m Linear) Ultimate(extraDelay float64) (ku, pu float64, ok bool) {
 	m.DeadTime += extraDelay
 	lo, hi := m.Corners()
 	at := func(w float64) complex128 { return -m.At(w) }
-	// Between two points of the scan the phase moves by well under a right angle.
+	// Up to the first crossing the dead time turns the phase by π at most, so
+	// that steps of 2 % keep each turn far below a right angle.
 	w := lo * 1e-4
 	prev := at(w)
 	for w < hi*1e5 {
 		next := w * 1.02
-		if m.DeadTime > 0 {
-			next = math.Min(next, w+0.2/m.DeadTime)
-		}
 		g := at(next)
 		if real(prev) > 0 && real(g) > 0 && imag(prev) > 0 != (imag(g) > 0) {
 			w = bisect(func(w float64) float64 { return imag(at(w)) }, w, next)
 			return 1 / cmplx.Abs(at(w)), 2 * math.Pi / w, true
 		}
 		w, prev = next, g
-		if m.DeadTime > 0 && w > hi*10 && w*m.DeadTime > 20 {
-			break
-		}
 	}
 	return 0, 0, false
 }
