@@ -152,7 +152,7 @@ func (pb problem) settings(proj *projection) Settings {
 		dead = deadShare * long
 	}
 	lowest, highest := math.Log(h/50), math.Log(50*long)
-	set := Settings{StepMax: 60, CostTol: 1e-9, ParamTol: 1e-8}
+	set := Settings{StepMax: 60, CostTol: 1e-9, ParamTol: 1e-7}
 	switch proj.kern.shapes() {
 	case 1:
 		set.Lower, set.Upper = []float64{lowest, 0}, []float64{highest, dead}

@@ -7,8 +7,8 @@ import "math"
 type secondOrder struct {
 	a1, a2 float64
 	before float64
-	even   transition
 	knots  []state2
+	done   bool // the knots are those of the last preparation
 }
 
 // state2 is the deviation-free state (value and slope) and its derivatives by
@@ -78,6 +78,15 @@ func (tr *transition) advance(s *state2, u float64) state2 {
 func (k *secondOrder) prepare(d *drive, shape []float64, _ bool) {
 	k.a1, k.a2 = math.Exp(shape[0]), math.Exp(shape[1])
 	k.before = d.before
+	k.done = false
+}
+
+// simulate fills the states at the knots, once for each preparation.
+func (k *secondOrder) simulate(d *drive) {
+	if k.done {
+		return
+	}
+	k.done = true
 	if len(k.knots) != len(d.t) {
 		k.knots = make([]state2, len(d.t))
 	}
@@ -95,7 +104,68 @@ func (k *secondOrder) prepare(d *drive, shape []float64, _ bool) {
 	}
 }
 
+// fast is response on even sampling, values with derivatives: simulation and
+// queries in one pass, the state in registers.
+func (k *secondOrder) fast(d *drive, q *queries, value, by1, by2, byTime []float64) {
+	step, ask := k.over(d.h), k.over(q.off)
+	f, fa, fb := step.f, step.a, step.b
+	g, ga, gb := ask.f, ask.a, ask.b
+	n := len(value)
+	lead := min(max(q.shift, 0), n)
+	for i := 0; i < lead; i++ {
+		value[i], by1[i], by2[i], byTime[i] = k.before, 0, 0, 0
+	}
+	u := d.u[lead-q.shift:][:n-lead]
+	value, by1, by2, byTime = value[lead:][:len(u)], by1[lead:][:len(u)], by2[lead:][:len(u)], byTime[lead:][:len(u)]
+	s := state2{x: k.before}
+	for j := 0; j < lead-q.shift; j++ { // a negative shift skips knots
+		s = step.advance(&s, d.u[j])
+	}
+	x, v, xa, va, xb, vb := s.x, s.v, s.xa, s.va, s.xb, s.vb
+	for i, in := range u {
+		e := x - in
+		value[i] = in + g[0]*e + g[1]*v
+		byTime[i] = g[2]*e + g[3]*v
+		by1[i] = g[0]*xa + g[1]*va + ga[0]*e + ga[1]*v
+		by2[i] = g[0]*xb + g[1]*vb + gb[0]*e + gb[1]*v
+		xa, va = f[0]*xa+f[1]*va+fa[0]*e+fa[1]*v, f[2]*xa+f[3]*va+fa[2]*e+fa[3]*v
+		xb, vb = f[0]*xb+f[1]*vb+fb[0]*e+fb[1]*v, f[2]*xb+f[3]*vb+fb[2]*e+fb[3]*v
+		x, v = in+f[0]*e+f[1]*v, f[2]*e+f[3]*v
+	}
+}
+
+// plain is fast without derivatives.
+func (k *secondOrder) plain(d *drive, q *queries, value []float64) {
+	f, g := k.over(d.h).f, k.over(q.off).f
+	n := len(value)
+	lead := min(max(q.shift, 0), n)
+	for i := 0; i < lead; i++ {
+		value[i] = k.before
+	}
+	x, v := k.before, 0.0
+	for j := 0; j < lead-q.shift; j++ {
+		e := x - d.u[j]
+		x, v = d.u[j]+f[0]*e+f[1]*v, f[2]*e+f[3]*v
+	}
+	u := d.u[lead-q.shift:][:n-lead]
+	value = value[lead:][:len(u)]
+	for i, in := range u {
+		e := x - in
+		value[i] = in + g[0]*e + g[1]*v
+		x, v = in+f[0]*e+f[1]*v, f[2]*e+f[3]*v
+	}
+}
+
 func (k *secondOrder) response(d *drive, q *queries, integral bool, value []float64, byShape [][]float64, byTime []float64) {
+	if d.even && !integral && byShape == nil && byTime == nil {
+		k.plain(d, q, value)
+		return
+	}
+	if d.even && !integral && byShape != nil && byTime != nil {
+		k.fast(d, q, value, byShape[0], byShape[1], byTime)
+		return
+	}
+	k.simulate(d)
 	var tr transition
 	last := math.NaN()
 	if d.even {

@@ -110,7 +110,7 @@ func Solve(prob Problem, start []float64, set Settings) (Solution, error) {
 			}
 			continue
 		}
-		if ok && (small || predicted <= 1e-15*cur.Cost) {
+		if ok && (small || predicted <= set.CostTol*cur.Cost) {
 			sol.Converged = true
 			break
 		}
