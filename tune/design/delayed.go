@@ -67,7 +67,7 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
-	largest := 0.08 * dead
+	largest := 0.16 * dead
 	limit := func(w, part float64) {
 		if w > 0 && !math.IsInf(w, 0) {
 			largest = math.Min(largest, part/w)
