@@ -67,7 +67,7 @@ func (r *Rig) start(cause string) {
 func (r *Rig) wake() {
 	b := &r.board
 	b.booted = true
-	b.counts = r.enc.count(r.noise)
+	b.counts = r.enc.count()
 	b.window.restart(b.counts, r.cfg.Board.Window)
 	b.restCount, b.movedAt = b.counts, r.now
 	b.pins.last = r.now

@@ -64,5 +64,6 @@ func newEncoder(c *Config, rng *rand.Rand) encoder {
 	if c.Encoder.Side == "load" {
 		per /= c.Load.Gear
 	}
-	return encoder{perRad: per, onLoad: c.Encoder.Side == "load", edge: c.Encoder.Edge, phase: rng.Float64()}
+	return encoder{perRad: per, onLoad: c.Encoder.Side == "load", phase: rng.Float64(),
+		edges: misplaced(c.Encoder.Edge, c.Encoder.PerTurn, rng)}
 }

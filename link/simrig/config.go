@@ -97,7 +97,7 @@ type SupplySpec struct {
 type EncoderSpec struct {
 	PerTurn int     `toml:"counts_per_turn" unit:"counts" range:"4..1000000" doc:"per turn of the shaft it sits on, all edges counted"`
 	Side    string  `toml:"side" one:"motor load" default:"motor" doc:"which side of the gear it sits on"`
-	Edge    float64 `toml:"edge_noise_counts" unit:"counts" range:"0..10" default:"0" doc:"RMS error of an edge's place, white"`
+	Edge    float64 `toml:"edge_noise_counts" unit:"counts" range:"0..0.3" default:"0" doc:"RMS error of the place of an edge on the disc, another for each edge and for good: a shaft at rest reads still, a turning one repeats its error every turn"`
 }
 
 // SensorSpec is what the converter measures. A step of 0 is a converter without

@@ -7,10 +7,10 @@ import (
 
 // encoder turns the angle of the shaft into whole counts.
 type encoder struct {
-	perRad   float64 // counts per rad of the motor shaft
-	edge     float64 // counts RMS of placement error of an edge, white
-	phase    float64 // counts; where in a count the shaft stood at power-on
-	onLoad   bool    // it sits beyond the coupling
+	perRad   float64   // counts per rad of the motor shaft
+	edges    []float64 // counts by which each edge of the disc is out of place, nil for none
+	phase    float64   // counts; where in a count the shaft stood at power-on
+	onLoad   bool      // it sits beyond the coupling
 	dead     bool
 	reversed bool
 	base     int64   // where the counter goes on after its channels were swapped
@@ -28,16 +28,51 @@ func (e *encoder) look(th float64) {
 	e.last = th
 }
 
+// misplaced draws where the edges of a disc lie: RMS counts off, each for good, so
+// that a shaft at rest reads still and a turning one repeats its error every
+// turn. No edge passes its neighbour.
+func misplaced(rms float64, perTurn int, rng *rand.Rand) []float64 {
+	if rms == 0 {
+		return nil
+	}
+	e := make([]float64, min(perTurn, 1<<12))
+	for i := range e {
+		e[i] = min(max(rms*rng.NormFloat64(), -0.45), 0.45)
+	}
+	return e
+}
+
+// place is the error of edge n.
+func (e *encoder) place(n int64) float64 {
+	k := n % int64(len(e.edges))
+	if k < 0 {
+		k += int64(len(e.edges))
+	}
+	return e.edges[k]
+}
+
+// index is the number of edges passed at the present angle.
+func (e *encoder) index() int64 {
+	c := (e.last-e.lost)*e.perRad + e.phase
+	n := int64(math.Floor(c))
+	if e.edges == nil {
+		return n
+	}
+	switch off := c - float64(n); {
+	case off < e.place(n):
+		return n - 1
+	case off >= 1+e.place(n+1):
+		return n + 1
+	}
+	return n
+}
+
 // count latches the counter.
-func (e *encoder) count(rng *rand.Rand) int64 {
+func (e *encoder) count() int64 {
 	if e.dead {
 		return e.froze
 	}
-	c := (e.last-e.lost)*e.perRad + e.phase
-	if e.edge > 0 {
-		c += e.edge * rng.NormFloat64()
-	}
-	n := int64(math.Floor(c))
+	n := e.index()
 	if e.reversed {
 		n = -n
 	}
@@ -47,7 +82,7 @@ func (e *encoder) count(rng *rand.Rand) int64 {
 
 // reverse swaps the encoder's channels; the counter goes on from where it is.
 func (e *encoder) reverse() {
-	n := int64(math.Floor((e.last-e.lost)*e.perRad + e.phase))
+	n := e.index()
 	if e.reversed {
 		n = -n
 	}

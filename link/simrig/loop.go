@@ -100,7 +100,7 @@ func (r *Rig) onTick() {
 func (r *Rig) latch() {
 	b := &r.board
 	r.enc.look(r.plant.sensed(r.enc.onLoad))
-	b.counts = r.enc.count(r.noise)
+	b.counts = r.enc.count()
 	travelled := b.window.push(b.counts)
 	b.speed = float32(travelled) * float32(r.speedStep)
 	if d := b.counts - b.restCount; d >= 2 || d <= -2 {
