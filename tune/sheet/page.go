@@ -99,7 +99,9 @@ func reported(q Quantity) string {
 	if q.PlusMinus != nil {
 		out += " ± " + significant(*q.PlusMinus, 2)
 	}
-	out += " " + q.Unit
+	if q.Unit != "1" {
+		out += " " + q.Unit
+	}
 	if q.Unit == "rad/s" {
 		out += " (" + significant(*rpm(q.Value), 4) + " rpm)"
 	}

@@ -4,10 +4,12 @@ import (
 	"encoding/json"
 	"fmt"
 	"maps"
+	"reflect"
 	"slices"
 	"strings"
 
 	"gainwright/protocol/si"
+	"gainwright/safety"
 	"gainwright/tune/sheet/plain"
 	"gainwright/tune/trace"
 )
@@ -39,6 +41,8 @@ func Report(dir string) string {
 type reportPage struct {
 	page
 	r *Reader
+
+	limits, boardLimits []Quantity // those that were shown last
 }
 
 // each reads every entry of a kind; one that cannot be read is named.
@@ -91,10 +95,11 @@ func (p *reportPage) snapshots() {
 	for _, s := range states {
 		p.sub(s.title)
 		p.table([]string{"", ""}, [][]string{
-			{"firmware, protocol", s.Firmware + ", " + s.Protocol}, {"running gains", string(s.Running)}, {"stored gains", string(s.Stored)},
+			{"firmware, protocol", s.Firmware + ", " + s.Protocol},
 			{"flags", strings.Join(s.Flags, ", ")}, {"bus", with(s.BusV, "V")}, {"ambient", with(s.AmbientDegC, "degC")}, {"load", s.LoadState},
 		})
-		p.quantities("limit held by the board", s.Limits)
+		p.sideBySide([]string{s.title + ": gain", "running", "stored"}, s.Running, s.Stored)
+		p.quantities("limit held by the board", readable(s.Limits))
 	}
 	for i, s := range states {
 		for k, file := range s.TraceFiles {
@@ -190,20 +195,67 @@ func (p *reportPage) runs() {
 		state := "complete"
 		if !run.Complete {
 			state = "NOT COMPLETE, not used for a fit"
+			if endsEarly[run.Step] {
+				state = "this check ends its run before the plan does; not used for a fit"
+			}
 		}
 		p.sub(fmt.Sprintf("%s: %s", l.Time.Format("15:04:05"), run.Name))
 		p.table([]string{"", ""}, [][]string{
-			{"purpose", run.Purpose}, {"ended", orNone(run.Reason) + "; " + state}, {"operator", run.Operator}, {"load", run.LoadState},
-			{"ambient", with(run.AmbientDegC, "degC")}, {"seed", fmt.Sprint(run.Seed)}, {"versions", pairs(run.Versions)}, {"plan", string(run.Plan)},
+			{"purpose", run.Purpose}, {"ended", orNone(run.Reason) + "; " + state}, {"operator", orNone(run.Operator)}, {"load", run.LoadState},
+			{"ambient", with(run.AmbientDegC, "degC")}, {"seed", fmt.Sprint(run.Seed)}, {"versions", pairs(run.Versions)},
 		})
+		p.plan(run.Plan, l.File)
 		p.quantities("forecast", run.Forecast)
-		p.quantities("limit of this run", run.Limits)
-		p.quantities("limit held by the board", run.BoardLimits)
+		p.limits = p.changed("limit of this run", p.limits, run.Limits)
+		p.boardLimits = p.changed("limit held by the board", p.boardLimits, readable(run.BoardLimits))
 		p.quantities("reached", run.Extremes)
 		if run.TraceFile != "" {
 			p.runPlot(run)
 		}
 	})
+}
+
+// endsEarly are the steps whose runs are meant to be cut short.
+var endsEarly = map[string]bool{"stop": true, "silence": true, "limits": true}
+
+// changed shows limits that are not those shown last, and says where they are.
+func (p *reportPage) changed(title string, last, now []Quantity) []Quantity {
+	if len(now) > 0 && reflect.DeepEqual(last, now) {
+		p.para(title + ": each as in the run before")
+		return now
+	}
+	p.quantities(title, now)
+	return now
+}
+
+// planShown bounds the segments of a plan that the page lists; the entry has all.
+const planShown = 16
+
+// plan shows the segments of a plan.
+func (p *reportPage) plan(raw json.RawMessage, file string) {
+	var plan safety.Plan
+	if json.Unmarshal(raw, &plan) != nil || len(plan.Segments) == 0 {
+		if len(raw) > 0 && string(raw) != "null" {
+			p.table([]string{"plan"}, [][]string{{string(raw)}})
+		}
+		return
+	}
+	var rows [][]string
+	at := 0.0
+	for i, s := range plan.Segments {
+		unit := "V"
+		if s.Mode == safety.ModeSpeed {
+			unit = "rad/s"
+		}
+		if i < planShown {
+			rows = append(rows, []string{fmt.Sprintf("%.3f", at), fmt.Sprintf("%.3f", s.Duration.Seconds()), fmt.Sprintf("%.4g to %.4g %s", s.From, s.To, unit), s.Note})
+		}
+		at += s.Duration.Seconds()
+	}
+	if more := len(plan.Segments) - planShown; more > 0 {
+		rows = append(rows, []string{"", "", fmt.Sprintf("and %d more, until %.3f s", more, at), "all of them stand in " + file})
+	}
+	p.table([]string{"plan: at, s", "for at most, s", "drive", ""}, rows)
 }
 
 func (p *reportPage) runPlot(run RunRecord) {
@@ -261,6 +313,9 @@ func (p *reportPage) words() {
 			if err := p.r.JSON(l, &e); err != nil {
 				e.What = "cannot be read: " + err.Error()
 			}
+			if len(e.Limits) > 0 {
+				e.Detail += ": " + strings.Join(limitWords(e.Limits), ", ")
+			}
 			rows = append(rows, []string{l.Time.Format("15:04:05"), e.What, e.Detail})
 		}
 	}
@@ -274,6 +329,59 @@ func (p *reportPage) entries() {
 		rows = append(rows, []string{fmt.Sprint(l.Number), l.Time.Format(timeLayout), l.File, fmt.Sprint(l.Bytes), l.SHA256, l.Chain})
 	}
 	p.table([]string{"number", "time", "file", "bytes", "sha256", "chain"}, rows)
+}
+
+// readable gives the limits of a board the names that people use, the board's own
+// behind them.
+func readable(limits []Quantity) []Quantity {
+	out := slices.Clone(limits)
+	for i, q := range out {
+		if name, ok := limitNames[q.Name]; ok && name != q.Name {
+			out[i].Name = fmt.Sprintf("%s (%s)", name, q.Name)
+		}
+		if notJudged[q.Name] && q.Value != nil && *q.Value == 0 {
+			out[i].Why = "0: not judged"
+		}
+	}
+	return out
+}
+
+// gainUnits are the units of the keys of gains and margins.
+var gainUnits = map[string]string{"kp": "V/(rad/s)", "ki": "V/rad", "kd": "V·s²/rad", "kc": "V/(rad/s)", "ti": "s", "td": "s", "derivative_filter": "s",
+	"sample_time": "s", "compute_delay": "s", "tracking_time": "s", "u_min": "V", "u_max": "V", "setpoint_weight": "1", "ms": "1", "mt": "1", "gain_margin": "1"}
+
+// sideBySide shows sets of gains key by key, with the board's words below.
+func (p *reportPage) sideBySide(head []string, sets ...json.RawMessage) {
+	values := make([]map[string]string, len(sets))
+	keys := map[string]bool{}
+	for i, raw := range sets {
+		values[i] = map[string]string{}
+		for _, row := range flat(raw) {
+			if row[0] == "words" {
+				for _, w := range flat(json.RawMessage(row[1])) {
+					values[i]["word "+w[0]] = strings.Trim(w[1], `"`)
+				}
+				continue
+			}
+			values[i][row[0]] = strings.Trim(row[1], `"`)
+		}
+		for k := range values[i] {
+			keys[k] = true
+		}
+	}
+	var rows [][]string
+	for _, k := range slices.Sorted(maps.Keys(keys)) {
+		row := []string{k}
+		for _, m := range values {
+			v := m[k]
+			if u := gainUnits[k]; u != "" && u != "1" && v != "" {
+				v += " " + u
+			}
+			row = append(row, v)
+		}
+		rows = append(rows, row)
+	}
+	p.table(head, rows)
 }
 
 // known fields of gains, margins and models as a table of names and values, in

@@ -8,6 +8,7 @@ import (
 
 func (p *reportPage) fits() {
 	p.section("What the motor is")
+	newest, _ := p.r.Last(KindFit, NameMotor) // the earlier ones hold no more than it
 	for _, l := range p.r.Find(KindFit, "") {
 		var err error
 		switch l.Name() {
@@ -16,7 +17,9 @@ func (p *reportPage) fits() {
 		case NameBreakaway:
 			err = show(p, l, p.breakaway)
 		case NameMotor:
-			err = show(p, l, p.motor)
+			if l.Number == newest.Number {
+				err = show(p, l, p.motor)
+			}
 		default:
 			err = show(p, l, p.fit)
 		}
@@ -45,7 +48,7 @@ func (p *reportPage) fit(l Line, f FitRecord) {
 	p.table([]string{"judged by", "value", "why"}, [][]string{
 		{"NRMSE", digits(f.NRMSE) + " (1)", "‖y − ŷ‖ / ‖y − mean y‖ of the simulated output over " + files(f.InputFiles)},
 		{"NRMSE, hold-out", digits(f.HoldoutNRMSE) + " (1)", "the same on data not used in the fit: " + files(f.HoldoutFiles)},
-		{"VAF", digits(f.VAF) + " %", "1 − var(y − ŷ)/var y"},
+		{"VAF", four(f.VAF) + " %", "1 − var(y − ŷ)/var y"},
 		{"whiteness", digits(f.WhitenessP) + " (1)", "probability of such residuals if they were white"},
 		{"samples used", fmt.Sprint(f.Used), "masked: " + counts(f.Masked)},
 	})
@@ -95,12 +98,26 @@ func (p *reportPage) breakaway(l Line, b BreakawayRecord) {
 	}}.svg())
 }
 
+// motorWhy says where each quantity of the motor comes from.
+var motorWhy = map[string]string{
+	"counts per turn": "rig file; seen by the count check", "sign": "seen by the sign check", "gear ratio": "rig file",
+	"R at 25 °C": "slope of current over volts before the first motion, brought to 25 °C with copper's coefficient; with leads and driver",
+	"Ke":         "V − R·I over speed on the levels of the staircase", "J": "tau·Ke/(K·R), inductance left out",
+	"Coulomb friction": "Ke·I of the levels, drawn down to speed 0", "no-load current": "fastest forward level of the staircase",
+	"breakaway forward": "mean of the ramps", "breakaway reverse": "mean of the ramps", "gain K": "the chosen model", "time constant": "the chosen model",
+	"dead time": "the chosen model", "phase margin": "the proposal on the chosen model", "overshoot": "the worst step of verify",
+}
+
 func (p *reportPage) motor(l Line, m MotorRecord) {
 	p.sub("Motor, as this job knows it")
 	var rows [][]string
 	for _, q := range quantities {
 		if v := q.of(m); v != nil {
-			rows = append(rows, []string{q.name, significant(*v, 4) + " " + q.unit, "from the fits and runs above; kept for comparison"})
+			value := significant(*v, 4)
+			if q.unit != "1" {
+				value += " " + q.unit
+			}
+			rows = append(rows, []string{q.name, value, motorWhy[q.name]})
 		}
 	}
 	p.table([]string{"quantity", "value", "why"}, rows)
@@ -132,7 +149,13 @@ func (p *reportPage) proposals() {
 
 // contract shows one of the fixed JSON forms, whose keys name their units.
 func (p *reportPage) contract(title string, raw json.RawMessage) {
-	p.table([]string{title + " (SI; units as the key names)", "value"}, flat(raw))
+	rows := flat(raw)
+	for i, r := range rows {
+		if u := gainUnits[r[0]]; u != "" && u != "1" && r[1] != "null" {
+			rows[i][1] += " " + u
+		}
+	}
+	p.table([]string{title + " (SI; units as the key names)", "value"}, rows)
 }
 
 // bode draws the open loop with its two margins where they are read off.
@@ -163,12 +186,14 @@ func (p *reportPage) pushes() {
 	each(p, KindPush, func(l Line, r PushRecord) {
 		p.sub(fmt.Sprintf("%s: to RAM, read back identical: %s", l.Time.Format("15:04:05"), yesNo(r.Identical)))
 		p.para(r.Finding)
-		p.table([]string{"", ""}, [][]string{{"old", string(r.Old)}, {"new", string(r.New)}, {"read back", string(r.ReadBack)}, {"board's words", pairs(r.Words)}, {"confirmed by typing", r.Confirmed}})
+		p.sideBySide([]string{"gain", "old", "new", "read back"}, r.Old, r.New, r.ReadBack)
+		p.para("confirmed by typing " + orNone(r.Confirmed))
 	})
 	each(p, KindStore, func(l Line, r StoreRecord) {
 		p.sub(l.Time.Format("15:04:05") + ": stored")
 		p.para(r.Finding)
-		p.table([]string{"", ""}, [][]string{{"stored", yesNo(r.Stored)}, {"power-cycled", yesNo(r.PowerCycled)}, {"re-read identical", yesNo(r.Identical)}, {"re-read", string(r.ReRead)}})
+		p.table([]string{"", ""}, [][]string{{"stored", yesNo(r.Stored)}, {"power-cycled", yesNo(r.PowerCycled)}, {"re-read identical", yesNo(r.Identical)}})
+		p.sideBySide([]string{"gain", "re-read"}, r.ReRead)
 	})
 }
 
