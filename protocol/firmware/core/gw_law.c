@@ -6,6 +6,7 @@
 #if !GW_FIXED
 
 static float kp, ki_t, b, kv, ks; /* ki times the period */
+static float lsb;                 /* rad/s */
 static float integral;
 #if GW_PID
 static float d_keep, d_new, d, y_was; /* D = d_keep·D − d_new·(y − y_was) */
@@ -22,7 +23,10 @@ static float value(uint8_t slot)
 void gw_law_use(void)
 {
 	const float t = (float)GW_LOOP_US * 1e-6f;
+	uint32_t bits = gw_float_bits(gw_speed_lsb_mrad);
 
+	gw_copy(&lsb, &bits, 4);
+	lsb *= 1e-3f;
 	kp = value(G_KP);
 	ki_t = value(G_KI) * t;
 	b = value(G_B);
@@ -40,13 +44,13 @@ void gw_law_reset(void)
 	integral = 0;
 #if GW_PID
 	d = 0;
-	y_was = (float)g.mrad * 1e-3f;
+	y_was = (float)g.raw * lsb;
 #endif
 }
 
 int32_t gw_law_step(int32_t set_mrad, int32_t lo_mv, int32_t hi_mv, uint8_t *sat)
 {
-	const float r = (float)set_mrad * 1e-3f, y = (float)g.mrad * 1e-3f;
+	const float r = (float)set_mrad * 1e-3f, y = (float)g.raw * lsb;
 	const float hi = (float)hi_mv * 1e-3f, lo = (float)lo_mv * 1e-3f;
 	float next = integral + ki_t * (r - y);
 	float u = kp * (b * r - y) + kv * r + next;
@@ -115,7 +119,7 @@ static struct gw_scale raised(struct gw_scale k, uint8_t bits)
 {
 	if (k.s > bits) {
 		k.s = (uint8_t)(k.s - bits);
-	} else {
+	} else if (k.m != 0) {
 		k.m = k.m < 0 ? -0xFFFFFF : 0xFFFFFF;
 		k.s = 1;
 	}
