@@ -1,24 +1,19 @@
 package simrig
 
-import (
-	"strconv"
-
-	"gainwright/protocol"
-)
+import "gainwright/protocol"
 
 // arming is the one-time number, the token and the heartbeats of an arm.
 type arming struct {
-	number    uint32
-	numberAt  int64
-	fresh     bool
-	given     []uint32 // every number given out; only the faulty board looks
-	token     uint16
-	armed     bool
-	counted   bool // a heartbeat number has been seen in this arm
-	k         uint16
-	beatAt    int64 // ns of the last heartbeat accepted
-	driveAt   int64 // ns of the last drive line accepted, or of the arm
-	limitsOff bool
+	number   uint32
+	numberAt int64
+	fresh    bool
+	given    []uint32 // every number given out; only the faulty board looks
+	token    uint16
+	armed    bool
+	counted  bool // a heartbeat number has been seen in this arm
+	k        uint16
+	beatAt   int64 // ns of the last heartbeat accepted
+	driveAt  int64 // ns of the last drive line accepted, or of the arm
 }
 
 // numberLife is how long a one-time number is good; lapse how long an arm holds
@@ -201,43 +196,18 @@ func (r *Rig) follow(closed bool, value float32) {
 		return
 	}
 	if b.state == protocol.Armed {
-		b.run = run{going: true, from: r.now, counts: b.counts}
+		b.run = run{from: r.now, counts: b.counts}
 		b.run.judge.counts = b.counts
 		b.law = b.gains.law(&r.cfg)
 		b.state = protocol.Driving
 		if closed {
 			b.state = protocol.Looping
 		}
-		b.cap.trigger(r.now)
+		b.cap.trigger()
 	}
 	if closed {
 		b.run.setpoint = value
 	} else {
 		b.run.target = value
 	}
-}
-
-// doRate: rate <Hz> d|x t|tu → <Hz that it will be>.
-func (r *Rig) doRate(args []string, a *answer) {
-	hz, ok := protocol.ParseUint([]byte(argument(args, 0)), 100_000)
-	form, what := argument(args, 1), argument(args, 2)
-	if !ok || len(args) != 3 || form != "d" && form != "x" || what != "t" && what != "tu" {
-		a.no(protocol.RefArgument)
-		return
-	}
-	t := &r.board.tel
-	if hz == 0 {
-		t.every = 0
-		a.ok("0")
-		return
-	}
-	loopHz := 1e9 / float64(r.loop)
-	every := max(1, int((loopHz+float64(hz)-1e-6)/float64(hz)))
-	got := loopHz / float64(every)
-	if t.bytesPerSecond(got, form == "x", what == "tu") > 0.7*float64(r.cfg.Board.Baud)/10 {
-		a.no(protocol.RefLineFull)
-		return
-	}
-	t.begin(every, form == "x", what == "tu", r)
-	a.ok(strconv.Itoa(int(got + 0.5)))
 }

@@ -16,9 +16,7 @@ type capture struct {
 	count  int
 	ring   []capSample // while waiting: the newest `before` samples
 	data   []capSample
-	first  int64 // ns of data[0]
 	mean   mean
-	clock  int64 // start of the board clock that first is counted by
 }
 
 type capPhase int
@@ -49,7 +47,7 @@ func (c *capture) stop() {
 }
 
 // trigger begins the capture that waits for the first drive line.
-func (c *capture) trigger(int64) {
+func (c *capture) trigger() {
 	if c.phase != capWait {
 		return
 	}

@@ -57,7 +57,6 @@ func (m *mean) since(p *pins) float64 {
 
 // run is what has happened since the first drive line of a run.
 type run struct {
-	going    bool
 	from     int64 // ns of the first drive line
 	counts   int64 // at the first drive line
 	target   float32

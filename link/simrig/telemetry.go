@@ -2,6 +2,7 @@ package simrig
 
 import (
 	"math"
+	"strconv"
 
 	"gainwright/protocol"
 )
@@ -147,4 +148,29 @@ func toLSB(v, lsb float64) int16 {
 		return 0
 	}
 	return int16(max(-32767, min(32767, math.Round(v/lsb))))
+}
+
+// doRate: rate <Hz> d|x t|tu → <Hz that it will be>.
+func (r *Rig) doRate(args []string, a *answer) {
+	hz, ok := protocol.ParseUint([]byte(argument(args, 0)), 100_000)
+	form, what := argument(args, 1), argument(args, 2)
+	if !ok || len(args) != 3 || form != "d" && form != "x" || what != "t" && what != "tu" {
+		a.no(protocol.RefArgument)
+		return
+	}
+	t := &r.board.tel
+	if hz == 0 {
+		t.every = 0
+		a.ok("0")
+		return
+	}
+	loopHz := 1e9 / float64(r.loop)
+	every := max(1, int((loopHz+float64(hz)-1e-6)/float64(hz)))
+	got := loopHz / float64(every)
+	if t.bytesPerSecond(got, form == "x", what == "tu") > 0.7*float64(r.cfg.Board.Baud)/10 {
+		a.no(protocol.RefLineFull)
+		return
+	}
+	t.begin(every, form == "x", what == "tu", r)
+	a.ok(strconv.Itoa(int(got + 0.5)))
 }
