@@ -41,7 +41,7 @@ func compareCommand() *cobra.Command {
 				return compareMany(c, folder, sheet.Filter{Rig: rigName, BoardID: board}, html, asJSON)
 			}
 			if len(args) != 2 {
-				return usage(fmt.Errorf("%d records named: compare OLD NEW takes two, --folder DIR all of a folder", len(args)))
+				return usage(errors.New("compare OLD NEW takes two records, compare --folder DIR all of a folder"))
 			}
 			rep, err := compareTwo(args[0], args[1])
 			if err != nil {
@@ -78,7 +78,7 @@ func compareTwo(oldDir, newDir string) (compareReport, error) {
 			rep.Notes = append(rep.Notes, dir+": SIMULATED RIG, nothing in it was measured on a motor")
 		}
 		if motors[i], err = r.Motor(); errors.Is(err, sheet.ErrNoEntry) {
-			return rep, &exitError{exitRefused, fmt.Errorf("%s: %w", dir, err)}
+			return rep, &exitError{exitRefused, fmt.Errorf("%s: the job did not come as far as a fit of its motor: there is nothing to compare; take a record of a finished job", dir)}
 		} else if err != nil {
 			return rep, &exitError{exitFailed, fmt.Errorf("%s: %w", dir, err)}
 		}

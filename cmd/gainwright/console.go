@@ -141,9 +141,21 @@ func (f consoleFlags) newSheet(o *bench.Options) func(board string, r rig.Rig) (
 const restoreWait = 500 * time.Millisecond
 
 // session is a live bench as the screens see it.
-type session struct{ *bench.Live }
+type session struct {
+	*bench.Live
+	leave context.CancelFunc
+}
 
-func (s session) Stop(source string) { s.Live.Stop(safety.ByStopKey) }
+// Stop comes from a fault of the screens; the stop key is taken ahead of them.
+func (s session) Stop(string) { s.Live.Stop(safety.ByPanic) }
+
+// Post passes on what the person wants; leaving ends the screens.
+func (s session) Post(i job.Intent) {
+	s.Live.Post(i)
+	if _, quit := i.(job.Quit); quit {
+		s.leave()
+	}
+}
 
 // console runs the screens over a live bench until the person leaves or the
 // terminal goes away.
@@ -151,6 +163,11 @@ func console(f consoleFlags, o bench.Options) error {
 	in := int(os.Stdin.Fd())
 	if !term.IsTerminal(in) {
 		return usage(errors.New("standard input is not a terminal: the console is worked by a person with keys; no script arms a board. For a simulated rig without a person use dryrun"))
+	}
+	if f.out != "" {
+		if found, err := os.ReadDir(f.out); err == nil && len(found) > 0 {
+			return usage(fmt.Errorf("%s is not empty: a record never shares or overwrites a folder; name a new one with --out", f.out))
+		}
 	}
 	o.Program = "gainwright " + versionWords()
 	o.Job.Version, o.Job.Operator = o.Program, f.operator
@@ -181,7 +198,7 @@ func console(f consoleFlags, o bench.Options) error {
 	if f.port != "" {
 		live.Connect(f.port)
 	}
-	uiErr := tui.Run(ctx, tui.Options{Session: session{live}, Input: keys, Output: os.Stdout, Getenv: os.Getenv})
+	uiErr := tui.Run(ctx, tui.Options{Session: session{live, leave}, Input: keys, Output: os.Stdout, Getenv: os.Getenv})
 	dir, recErr := live.Close()
 	terminal.Restore(restoreWait)
 	if dir != "" {

@@ -194,7 +194,11 @@ func (f convertFlags) board(c *cobra.Command, g design.Gains, r rig.Rig) error {
 	row("kd", held.Kd, held.KdInt)
 	fmt.Fprintf(out, "largest rounding error %.3g %%\n", held.Rounding*100)
 	if held.SmallestError.Known() {
-		fmt.Fprintf(out, "smallest error that moves the integral %.4g rad/s\n", float64(held.SmallestError))
+		note := ""
+		if top := float64(e.SpeedMax); float64(held.SmallestError) > 0.01*top {
+			note = fmt.Sprintf(": COARSE, that is %.0f %% of top speed; use a larger shift, or --whole-product", 100*float64(held.SmallestError)/top)
+		}
+		fmt.Fprintf(out, "smallest error that moves the integral %.4g rad/s%s\n", float64(held.SmallestError), note)
 	}
 	fmt.Fprintln(out, "what the board then runs, in SI:")
 	printGains(c, held.Held)

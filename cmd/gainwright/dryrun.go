@@ -82,7 +82,7 @@ func simCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use: "sim BOARD.toml", Short: "serve a simulated board on a pseudo-terminal", Args: cobra.ExactArgs(1),
 		Long: "sim serves a simulated board in real time on a pseudo-terminal and prints its path on the first line.\n" +
-			"Typed on its standard input: turn (the shaft, by hand, one turn), power (off and on), quit.",
+			"Typed on its standard input: turn (the shaft, by hand, one turn), power (off and on), state, quit.",
 		RunE: func(c *cobra.Command, args []string) error {
 			cfg, err := simrig.Load(args[0])
 			if err != nil {
@@ -100,7 +100,7 @@ func simCommand() *cobra.Command {
 				defer os.Remove(link)
 			}
 			fmt.Fprintln(c.OutOrStdout(), sim.Path)
-			return serveUntil(sim, c.InOrStdin())
+			return serveUntil(sim, c.InOrStdin(), c.OutOrStdout())
 		},
 	}
 	c.Flags().StringVar(&link, "pty-link", "", "make a symbolic link of this name to the pseudo-terminal")

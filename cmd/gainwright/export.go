@@ -46,7 +46,7 @@ func exportCommand() *cobra.Command {
 				format = formats[0]
 			}
 			if !slices.Contains(formats, format) {
-				return usage(fmt.Errorf("--format %q: %s come as %s", format, what, strings.Join(formats, " or ")))
+				return usage(fmt.Errorf("--format %q: for --what %s it is %s", format, what, strings.Join(formats, " or ")))
 			}
 			r, _, err := openSheet(args[0])
 			if err != nil {
@@ -162,7 +162,9 @@ func cHeader(g design.Gains, title, from string) (string, error) {
 		return "", refusedConversion(err)
 	}
 	body := held.CHeader("speed_gains")
-	return fmt.Sprintf("/* %s; %s */\n#ifndef SPEED_GAINS_H\n#define SPEED_GAINS_H\n\n%s\n#endif\n", comment(title), comment(from), body), nil
+	p := held.Held
+	return fmt.Sprintf("/* %s; %s */\n#ifndef SPEED_GAINS_H\n#define SPEED_GAINS_H\n\n%s#define GAIN_SETPOINT_WEIGHT %.8ef\n#define GAIN_DERIVATIVE_FILTER_S %.8ef\n#define GAIN_SAMPLE_TIME_S %.8ef\n\n#endif\n",
+		comment(title), comment(from), body, float32(p.SetpointWeight), float32(p.DerivativeFilter), float32(p.SampleTime)), nil
 }
 
 // exportTraces writes all traces into a folder, or one to standard output.

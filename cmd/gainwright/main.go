@@ -3,6 +3,7 @@
 package main
 
 import (
+	"bytes"
 	"encoding/json"
 	"errors"
 	"fmt"
@@ -10,6 +11,8 @@ import (
 	"os"
 
 	"github.com/spf13/cobra"
+
+	"gainwright/tune/sheet/plain"
 )
 
 // Exit codes, fixed for scripts.
@@ -94,12 +97,18 @@ func newRoot() *cobra.Command {
 	return root
 }
 
-// printJSON prints exactly one object.
+// printJSON prints exactly one object, in which text from outside cannot move a
+// terminal's cursor.
 func printJSON(w io.Writer, v any) error {
-	e := json.NewEncoder(w)
+	var b bytes.Buffer
+	e := json.NewEncoder(&b)
 	e.SetEscapeHTML(false)
 	e.SetIndent("", "  ")
-	return e.Encode(v)
+	if err := e.Encode(v); err != nil {
+		return err
+	}
+	_, err := w.Write(plain.JSON(b.Bytes()))
+	return err
 }
 
 // readJSON reads a file that holds one object into v, with the place of a

@@ -108,19 +108,19 @@ func printCheck(c *cobra.Command, problems []sheet.Problem, sum sheet.Summary) {
 	if outcome == "" {
 		outcome = "not finished"
 	}
-	fmt.Fprintln(out, shown("rig %s, board %s, begun %s by %s: %s", orWord(h.Rig), orWord(h.BoardID), orWord(h.Start), orWord(h.Operator), outcome))
+	fmt.Fprint(out, sheet.Wrap(fmt.Sprintf("rig %s, board %s, begun %s by %s: %s", orWord(h.Rig), orWord(h.BoardID), orWord(h.Start), orWord(h.Operator), outcome), ""))
 	if h.Simulated {
 		fmt.Fprintln(out, "SIMULATED RIG: nothing in it was measured on a motor")
 	}
 	for _, p := range problems {
-		fmt.Fprintln(out, shown("PROBLEM %s", p))
+		fmt.Fprint(out, sheet.Wrap("PROBLEM "+p.String(), ""))
 	}
 	if len(problems) == 0 {
-		fmt.Fprintf(out, "%d entries, all as they were entered; chain %s\n", sum.Entries, sum.Chain)
+		fmt.Fprintf(out, "%d entries, all as they were entered\nchain %s\n", sum.Entries, sum.Chain)
 	} else {
 		fmt.Fprintf(out, "%d entries, %d problems\n", sum.Entries, len(problems))
 	}
-	fmt.Fprintln(out, sum.Says)
+	fmt.Fprint(out, sheet.Wrap(sum.Says, ""))
 }
 
 func orWord(s string) string {
