@@ -223,3 +223,27 @@ func TestDerivativeHasToEarnItsNoise(t *testing.T) {
 	}
 	t.Logf("one lag: kd %g, two lags: kd %g", plain.Gains.Kd, two.Gains.Kd)
 }
+
+// With a bound on the noise that the derivative keeps, the bound counts alone.
+func TestDerivativeUnderANoiseBound(t *testing.T) {
+	m := model.SecondOrder(46.5, 0.05, 0.05, 0.005)
+	pi := mustChoose(t, m, Options{SampleTime: 0.001, Law: LawPI})
+	o := Options{SampleTime: 0.001, Law: LawPID, Noise: 8 * float64(pi.NoiseGain)}
+	pid := mustChoose(t, m, o)
+	if pid.Gains.Kd == 0 || pid.Gains.Ki < earnGain*pi.Gains.Ki || float64(pid.NoiseGain) > o.Noise {
+		t.Errorf("kd %g, ki %g against %g, noise gain %g within %g", pid.Gains.Kd, pid.Gains.Ki, pi.Gains.Ki, pid.NoiseGain, o.Noise)
+	}
+}
+
+func TestLargestKiKeepsFourDerivativeTimes(t *testing.T) {
+	m := model.SecondOrder(46.5, 0.05, 0.05, 0.005)
+	for _, td := range []float64{0.005, 0.02, 0.05} {
+		g, err := LargestKi(m, PI(0, 0, 0.001, 0), 1.6, td)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if g.Kp/g.Ki < 4*td*(1-1e-6) {
+			t.Errorf("td %g s: ti is %g s, under four of it", td, g.Kp/g.Ki)
+		}
+	}
+}

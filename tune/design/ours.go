@@ -8,7 +8,8 @@ import (
 )
 
 // What a PID has to bring before it is proposed instead of a PI. *Our choice*:
-// a quarter more integral gain, at no more than three times the noise.
+// a quarter more integral gain, at no more than three times the noise unless a
+// bound on the noise was given, which then counts alone.
 const (
 	earnGain  = 1.25
 	earnNoise = 3
@@ -126,7 +127,7 @@ func (o Options) pidIfEarned(m model.Linear, f facts, pi Gains) (Gains, string, 
 		return Gains{}, "", err
 	}
 	gain, price := best.Ki/pi.Ki, noise/noisePI
-	if gain < earnGain || price > earnNoise {
+	if gain < earnGain || o.Noise == 0 && price > earnNoise {
 		return pi, fmt.Sprintf("no derivative: it would bring %.2g times the integral gain for %.2g times the noise", gain, price), nil
 	}
 	return best, fmt.Sprintf("the derivative brings %.2g times the integral gain for %.2g times the noise", gain, price), nil
