@@ -22,7 +22,7 @@ func (e *estimate) jacobian() (cols [][]float64, begins []int) {
 	at := 0
 	p.each(e.params, true, func(gm *spanGram, s *stretch, sp span, c [][]float64) {
 		begins = append(begins, len(cols[0]))
-		gram(c, gm.g, gm.lay.total)
+		gm.fill(c)
 		gm.local = append(gm.local[:0], e.locals[at]...)
 		at++
 		local, deriv := gm.split(c, e.linear, p.Dim())

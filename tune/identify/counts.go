@@ -30,7 +30,7 @@ func (r *run) tryCounts(pb problem, speed *estimate) *estimate {
 		if c == nil {
 			return nil
 		}
-		counted[i] = thinHeld(c)
+		counted[i] = c
 	}
 	pb.traces, pb.counts, pb.steady = counted, true, speed.steady()
 	e, err := pb.follow(speed.params)
@@ -64,20 +64,6 @@ func withCounts(tr *trace.Trace) *trace.Trace {
 	}
 	out := *tr
 	out.Counts = counts
-	return &out
-}
-
-// thinHeld leaves out the inner samples of every run of equal counts: while the
-// count stands, its rounding is the same error again and again, not a new one.
-func thinHeld(tr *trace.Trace) *trace.Trace {
-	out := *tr
-	out.Mask = make([]trace.Mask, tr.Len())
-	copy(out.Mask, tr.Mask)
-	for i := 1; i+1 < tr.Len(); i++ {
-		if tr.Counts[i] == tr.Counts[i-1] && tr.Counts[i] == tr.Counts[i+1] && out.Mask[i] == trace.Used {
-			out.Mask[i] = trace.Manual
-		}
-	}
 	return &out
 }
 

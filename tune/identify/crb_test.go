@@ -136,7 +136,7 @@ func white(sigma float64) func(*rand.Rand, []float64) []float64 {
 // often as they say. Bounds: testdata/crb.json. With few runs the allowance for
 // chance is three standard errors; GAINWRIGHT_LONG=1 makes 2 000 runs without.
 func TestCramerRao(t *testing.T) {
-	runs := longRuns(150)
+	runs := longRuns(60)
 	slack := 0.0
 	if runs < 2000 {
 		slack = 3

@@ -27,16 +27,17 @@ type firstOrder struct {
 	tau    float64
 	before float64
 	x, s   []float64 // state and its derivative by ln T at the knots
-	done   bool      // the knots are those of the last preparation
+	of     *drive
+	done   bool // the knots are those of the last preparation
 }
 
 func (k *firstOrder) shapes() int { return 1 }
 func (k *firstOrder) frees() int  { return 1 }
 
 func (k *firstOrder) prepare(d *drive, shape []float64, _ bool) {
-	k.tau = math.Exp(shape[0])
-	k.before = d.before
-	k.done = false
+	tau := math.Exp(shape[0])
+	k.done = k.done && k.of == d && k.tau == tau // another dead time needs no new simulation
+	k.tau, k.of, k.before = tau, d, d.before
 }
 
 // simulate fills state and derivative at the knots, once for each preparation.

@@ -1,6 +1,9 @@
 package identify
 
 import (
+	"math"
+	"sort"
+
 	"gainwright/tune/trace"
 )
 
@@ -33,6 +36,47 @@ type stretch struct {
 	spans  []span
 	obs    observation
 	window float64
+	held   []heldRun // position only: where the rounding of the counts stands still
+}
+
+// heldRun is a run of samples of a stretch in which the counts advance by the same
+// number every time, none included: their rounding error is then one and the same.
+type heldRun struct{ from, to int }
+
+// heldLeast is the shortest run that counts as held; heldMost how many of the
+// longest are given an offset of their own.
+const (
+	heldLeast = 8
+	heldMost  = 6
+)
+
+// findHeld lists the held runs of a position record, the longest heldMost of them
+// in the order of time.
+func (s *stretch) findHeld(quantum float64) {
+	for from := 0; from+1 < len(s.y); {
+		to := from + 2
+		for to < len(s.y) && math.Abs(s.y[to]-2*s.y[to-1]+s.y[to-2]) < 1e-6*quantum {
+			to++
+		}
+		if to-from >= heldLeast {
+			s.held = append(s.held, heldRun{from, to})
+		}
+		from = max(to-1, from+1)
+	}
+	sort.SliceStable(s.held, func(i, j int) bool { return s.held[i].to-s.held[i].from > s.held[j].to-s.held[j].from })
+	s.held = s.held[:min(len(s.held), heldMost)]
+	sort.Slice(s.held, func(i, j int) bool { return s.held[i].from < s.held[j].from })
+}
+
+// heldIn lists the held runs that begin in a span.
+func (s *stretch) heldIn(sp span) []heldRun {
+	var out []heldRun
+	for _, h := range s.held {
+		if h.from >= sp.from && h.from < sp.to {
+			out = append(out, h)
+		}
+	}
+	return out
 }
 
 // stretches cuts a trace at its gaps and, inside each piece, at the masks behind
@@ -80,6 +124,9 @@ func newStretch(tr *trace.Trace, number, from, to int, obs observation, steadySt
 		}
 	}
 	s.drive = newDrive(t, u, tr.Voltage[from])
+	if obs == position {
+		s.findHeld(tr.RadPerCount)
+	}
 	s.cut(tr, steadyStart)
 	return s
 }

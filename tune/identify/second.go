@@ -8,6 +8,7 @@ type secondOrder struct {
 	a1, a2 float64
 	before float64
 	knots  []state2
+	of     *drive
 	done   bool // the knots are those of the last preparation
 }
 
@@ -76,9 +77,9 @@ func (tr *transition) advance(s *state2, u float64) state2 {
 }
 
 func (k *secondOrder) prepare(d *drive, shape []float64, _ bool) {
-	k.a1, k.a2 = math.Exp(shape[0]), math.Exp(shape[1])
-	k.before = d.before
-	k.done = false
+	a1, a2 := math.Exp(shape[0]), math.Exp(shape[1])
+	k.done = k.done && k.of == d && k.a1 == a1 && k.a2 == a2 // another dead time needs no new simulation
+	k.a1, k.a2, k.of, k.before = a1, a2, d, d.before
 }
 
 // simulate fills the states at the knots, once for each preparation.

@@ -48,6 +48,7 @@ type layout struct {
 	decay   int // derivatives of the free states by shape: frees × shapes
 	frees   int
 	freeAt  int // first free-state column among the locals
+	held    int // offsets of runs in which the rounding of counts stands still, the last locals
 	y       int
 	total   int
 }
@@ -109,6 +110,8 @@ func (p *projection) layout(s *stretch, sp span) layout {
 		l.frees = p.kern.frees()
 		l.locals += l.frees
 	}
+	l.held = len(s.heldIn(sp))
+	l.locals += l.held
 	l.decay = l.frees * p.kern.shapes()
 	l.y = l.globals + l.locals + l.shapes + l.decay
 	l.total = l.y + 1
@@ -134,7 +137,7 @@ func (p *projection) Cost(params []float64) float64 {
 // inner fills the Gram matrix of every span.
 func (p *projection) inner(params []float64, derivatives bool) {
 	p.each(params, derivatives, func(gm *spanGram, _ *stretch, _ span, cols [][]float64) {
-		gram(cols, gm.g, gm.lay.total)
+		gm.fill(cols)
 	})
 }
 
@@ -243,6 +246,14 @@ func (p *projection) spanColumns(s *stretch, sp span, l layout, main [][]float64
 		}
 		p.decays(s, sp, k, value, by)
 	}
+	for k, h := range s.heldIn(sp) {
+		c := fresh()
+		clear(c)
+		for i := max(h.from, sp.from); i < min(h.to, sp.to); i++ {
+			c[i-sp.from] = 1
+		}
+		cols[l.globals+l.locals-l.held+k] = c
+	}
 	cols[l.y] = s.y[sp.from:sp.to]
 	if len(sp.skip) > 0 {
 		cols[l.y] = fresh()
@@ -303,6 +314,17 @@ func (p *projection) decays(s *stretch, sp span, k int, value []float64, by [][]
 	for m := range by {
 		floats.Sub(by[m], oldBy[m])
 		floats.Scale(1/s.window, by[m])
+	}
+}
+
+// fill computes the span's Gram matrix. An offset of a held run is no more than
+// rounding: it is held back by a variance equal to that of the single rounding
+// errors, which adds one to its diagonal entry.
+func (gm *spanGram) fill(cols [][]float64) {
+	l := gm.lay
+	gram(cols, gm.g, l.total)
+	for k := l.globals + l.locals - l.held; k < l.globals+l.locals; k++ {
+		gm.g[k*l.total+k]++
 	}
 }
 

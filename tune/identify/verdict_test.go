@@ -37,7 +37,7 @@ func best(res Result) Fit {
 // right cause; of healthy ones nearly all are believed. The rigs are our own
 // simulation, seeded; GAINWRIGHT_LONG=1 makes 200 of each, as the target asks.
 func TestVerdicts(t *testing.T) {
-	each, healthy := 3, 30
+	each, healthy := 2, 16
 	if os.Getenv("GAINWRIGHT_LONG") != "" {
 		each, healthy = 20, 200
 	}
