@@ -123,3 +123,32 @@ func TestBreakaway(t *testing.T) {
 		t.Errorf("%+v", s)
 	}
 }
+
+func TestElectrical(t *testing.T) {
+	tr := &trace.Trace{}
+	rng := rand.New(rand.NewPCG(9, 9))
+	w := 0.0
+	for i := range 400 {
+		v := 6.0
+		if i/50%2 == 1 {
+			v = 10
+		}
+		// R 1.12 ohm, Ke = Kt 0.0385, J·R/(Kt·Ke) 30 ms, friction 0.3 A.
+		current := (v - 0.0385*w) / 1.12
+		w += 0.002 / 0.030 * ((v-0.3*1.12)/0.0385 - w)
+		tr.Time = append(tr.Time, 0.002*float64(i))
+		tr.Voltage = append(tr.Voltage, v)
+		tr.Current = append(tr.Current, current+0.02*rng.NormFloat64())
+		tr.Speed = append(tr.Speed, (v-1.12*current)/0.0385+0.2*rng.NormFloat64())
+	}
+	e, err := FitElectrical(tr)
+	if err != nil {
+		t.Fatal(err)
+	}
+	within(t, "resistance", e.Resistance, 1.12, 0.02)
+	within(t, "Ke", e.Ke, 0.0385, 0.02)
+	tr.Current = nil
+	if _, err := FitElectrical(tr); !errors.Is(err, ErrData) {
+		t.Errorf("without current: %v", err)
+	}
+}

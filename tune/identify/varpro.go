@@ -247,26 +247,35 @@ func (p *projection) spanColumns(s *stretch, sp span, l layout, main [][]float64
 		p.decays(s, sp, k, value, by)
 	}
 	for k, h := range s.heldIn(sp) {
-		c := fresh()
-		clear(c)
-		for i := max(h.from, sp.from); i < min(h.to, sp.to); i++ {
-			c[i-sp.from] = 1
-		}
-		cols[l.globals+l.locals-l.held+k] = c
+		cols[l.globals+l.locals-l.held+k] = h.column(sp, fresh())
 	}
 	cols[l.y] = s.y[sp.from:sp.to]
 	if len(sp.skip) > 0 {
 		cols[l.y] = fresh()
 		copy(cols[l.y], s.y[sp.from:sp.to])
-		for _, c := range cols {
-			for _, i := range sp.skip {
-				if c != nil {
-					c[i-sp.from] = 0
-				}
+		sp.blank(cols)
+	}
+	return cols
+}
+
+// blank sets the samples that are not used to zero in every column.
+func (sp span) blank(cols [][]float64) {
+	for _, c := range cols {
+		for _, i := range sp.skip {
+			if c != nil {
+				c[i-sp.from] = 0
 			}
 		}
 	}
-	return cols
+}
+
+// column fills the indicator of the run within a span.
+func (h heldRun) column(sp span, col []float64) []float64 {
+	clear(col)
+	for i := h.from; i < min(h.to, sp.to); i++ {
+		col[i-sp.from] = 1
+	}
+	return col
 }
 
 // constant fills the column of a constant speed (power 0) or of one that grows
