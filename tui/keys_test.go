@@ -230,6 +230,21 @@ func TestChosenPageHoldsUntilTheJobMovesOn(t *testing.T) {
 	}
 }
 
+// TestATripIsSeenFirst: until it is acknowledged, a trip keeps its page, also
+// from a person who chose another one over the alarms before.
+func TestATripIsSeenFirst(t *testing.T) {
+	v := view(func(v *job.View) { v.Drive.Phase, v.Drive.Acked = tripped, true })
+	s := New(Look{})
+	s.picked, s.over = PagePath, PageAlarms
+	if got := s.page(v); got != PagePath {
+		t.Fatalf("acknowledged: page %s, want the chosen one", got)
+	}
+	v.Drive.Acked = false
+	if got := s.page(v); got != PageAlarms {
+		t.Errorf("not acknowledged: page %s, want the alarms", got)
+	}
+}
+
 func TestLookFrom(t *testing.T) {
 	for _, tt := range []struct {
 		env  map[string]string

@@ -208,7 +208,11 @@ func TestStalledTerminal(t *testing.T) {
 		done <- Run(ctx, Options{Session: s, Input: in, Output: term})
 	}()
 	for s.alive.Load() < 2 {
-		<-term.wrote
+		select {
+		case <-term.wrote:
+		case <-time.After(20 * time.Second):
+			t.Fatal("no second sign of life from a terminal that reads")
+		}
 	}
 	close(term.stick)
 	<-term.entered
@@ -222,6 +226,33 @@ func TestStalledTerminal(t *testing.T) {
 	}
 	close(term.release)
 }
+
+// TestOnlyFramesAreSignsOfLife: the sequences that set a terminal up are no
+// frames, and neither is a write that failed.
+func TestOnlyFramesAreSignsOfLife(t *testing.T) {
+	for _, tt := range []struct {
+		name string
+		to   io.Writer
+		text string
+		want int
+	}{
+		{"frame", io.Discard, "\x1b[HDISARMED", 1},
+		{"hide cursor", io.Discard, "\x1b[?25l", 0},
+		{"home alone", io.Discard, "\x1b[H", 0},
+		{"failed", failing{}, "\x1b[HDISARMED", 0},
+	} {
+		n := 0
+		o := &output{w: tt.to, alive: func() { n++ }, now: time.Now}
+		_, _ = io.WriteString(o, tt.text)
+		if n != tt.want {
+			t.Errorf("%s: %d signs of life, want %d", tt.name, n, tt.want)
+		}
+	}
+}
+
+type failing struct{}
+
+func (failing) Write([]byte) (int, error) { return 0, errors.New("gone") }
 
 // moving changes the view n times a second, as a run does.
 func moving(s *fakeSession, d time.Duration) {
