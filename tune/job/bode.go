@@ -12,24 +12,22 @@ import (
 // bodePoints is how many frequencies a Bode plot of the record has.
 const bodePoints = 160
 
-// bode is the open loop of the proposal, and of its worst draw.
-func (j *Job) bode() *sheet.Bode {
-	f := j.Fit.Best()
-	if f == nil || j.Gains == nil || !j.Margins.Crossover.Known() {
+// bode is the open loop of gains, and of their worst draw.
+func bode(loop model.Linear, g design.Gains, m design.Margins, worst *design.Worst) *sheet.Bode {
+	if !m.Crossover.Known() {
 		return nil
 	}
-	g := *j.Gains
-	g.UMin, g.UMax = nil, nil
+	g = linear(g)
 	top := 0.999 * math.Pi / g.SampleTime
-	low := float64(j.Margins.Crossover) / 100
-	b := &sheet.Bode{CrossoverRadS: sheet.Known(float64(j.Margins.Crossover)), PhaseMarginDeg: sheet.Known(float64(j.Margins.PhaseMargin)),
-		PhaseCrossRadS: sheet.Known(float64(j.Margins.PhaseCrossover)), GainMarginDB: sheet.Known(float64(j.Margins.GainMarginDB))}
+	low := float64(m.Crossover) / 100
+	b := &sheet.Bode{CrossoverRadS: sheet.Known(float64(m.Crossover)), PhaseMarginDeg: sheet.Known(float64(m.PhaseMargin)),
+		PhaseCrossRadS: sheet.Known(float64(m.PhaseCrossover)), GainMarginDB: sheet.Known(float64(m.GainMarginDB))}
 	for i := range bodePoints {
 		b.FrequencyRadS = append(b.FrequencyRadS, low*math.Pow(top/low, float64(i)/(bodePoints-1)))
 	}
-	b.MagnitudeDB, b.PhaseDeg = response(j.loopModel(f), g, b.FrequencyRadS)
-	if j.Worst != nil {
-		b.WorstMagnitudeDB, b.WorstPhaseDeg = response(j.Worst.Model, g, b.FrequencyRadS)
+	b.MagnitudeDB, b.PhaseDeg = response(loop, g, b.FrequencyRadS)
+	if worst != nil {
+		b.WorstMagnitudeDB, b.WorstPhaseDeg = response(worst.Model, g, b.FrequencyRadS)
 	}
 	return b
 }

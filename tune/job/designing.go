@@ -86,24 +86,38 @@ func (j *Job) doDesign() (result, error) {
 // keepProposals keeps every rule's answer with its settings, and what the board
 // will hold of the one that was chosen.
 func (j *Job) keepProposals(set DesignSettings, usable bool) error {
-	settings, err := rawJSON(set)
-	if err != nil {
-		return err
+	d := Designed{Found: j.FoundMargins, Proposals: j.Proposals, Chosen: j.Chosen, NoChange: j.NoChange, Gains: j.Gains, Margins: j.Margins, Worst: j.Worst}
+	if !usable {
+		d.Gains = nil
 	}
 	for i, p := range j.Proposals {
-		rec := sheet.ProposalRecord{Rule: p.Rule, Chosen: usable && i == j.Chosen && !j.NoChange, Settings: settings, InputFiles: []string{j.FitFile}, Notes: p.Notes, Refused: p.Refused}
-		if p.Refused == "" {
-			rec.Gains, rec.Margins = sheet.Raw(p.Gains), sheet.Raw(p.Margins)
-		}
-		if rec.Chosen {
-			rec.Gains, rec.Margins, rec.Worst = sheet.Raw(j.Gains), sheet.Raw(j.Margins), sheet.Raw(j.Worst)
-			rec.Bode, rec.Figures = j.bode(), figures(*j.Margins, j.Worst)
+		rec, err := proposalRecord(d, i, set, j.loopModel(j.Fit.Best()), j.FitFile)
+		if err != nil {
+			return err
 		}
 		if err := j.h.Keep("proposal", p.Rule, rec); err != nil {
 			return err
 		}
 	}
 	return j.keepMotor()
+}
+
+// proposalRecord is a rule's answer for the record. One is chosen where something
+// is to be changed and came out usable.
+func proposalRecord(d Designed, i int, set DesignSettings, loop model.Linear, fitFile string) (rec sheet.ProposalRecord, err error) {
+	p := d.Proposals[i]
+	rec = sheet.ProposalRecord{Rule: p.Rule, Chosen: i == d.Chosen && d.Gains != nil && !d.NoChange, InputFiles: []string{fitFile}, Notes: p.Notes, Refused: p.Refused}
+	if rec.Settings, err = rawJSON(set); err != nil {
+		return rec, err
+	}
+	if p.Refused == "" {
+		rec.Gains, rec.Margins = sheet.Raw(p.Gains), sheet.Raw(p.Margins)
+	}
+	if rec.Chosen {
+		rec.Gains, rec.Margins, rec.Worst = sheet.Raw(d.Gains), sheet.Raw(d.Margins), sheet.Raw(d.Worst)
+		rec.Bode, rec.Figures = bode(loop, *d.Gains, *d.Margins, d.Worst), figures(*d.Margins, d.Worst)
+	}
+	return rec, nil
 }
 
 // figures are margins and worst case for people, each with its unit and its why.

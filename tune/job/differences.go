@@ -6,6 +6,7 @@ import (
 	"math"
 	"slices"
 	"strconv"
+	"strings"
 
 	"gainwright/tune/sheet"
 )
@@ -57,7 +58,7 @@ func (c *recomputing) walk(what string, a, b any) {
 				keys[k] = true
 			}
 			for _, k := range sorted(keys) {
-				c.walk(what+"."+k, a[k], b[k])
+				c.walk(strings.Replace(what+"."+k, " .", " ", 1), a[k], b[k])
 			}
 			return
 		}

@@ -134,27 +134,41 @@ var words = map[string]string{"gain": "gain", "tau": "time constant", "tau2": "s
 	"natural_frequency": "natural frequency", "damping": "damping", "slope": "slope", "offset": "offset", "drift": "drift"}
 
 func (j *Job) keepFit(f *identify.Fit, set FitSettings, chosen bool) (file string, err error) {
-	rec := sheet.FitRecord{Kind: f.Model.Kind, InputFiles: []string{j.StepFile}, Used: f.Used, Masked: f.Masked,
+	var curve *trace.Trace
+	if chosen {
+		curve = j.StepTrace
+	}
+	rec, err := fitRecord(f, set, j.StepFile, j.SecondFile, curve)
+	if err != nil {
+		return "", err
+	}
+	return j.h.KeepFile("fit", f.Model.Kind, rec)
+}
+
+// fitRecord is a fit for the record. The chosen one has its curve over the step
+// record; for the others step is nil.
+func fitRecord(f *identify.Fit, set FitSettings, stepFile, secondFile string, step *trace.Trace) (rec sheet.FitRecord, err error) {
+	rec = sheet.FitRecord{Kind: f.Model.Kind, InputFiles: []string{stepFile}, Used: f.Used, Masked: f.Masked,
 		NRMSE: sheet.Known(f.NRMSE), HoldoutNRMSE: sheet.Known(f.HoldoutNRMSE), VAF: sheet.Known(f.VAF * 100), WhitenessP: sheet.Known(f.WhitenessP),
 		Verdict: string(f.Verdict), Reasons: f.Reasons, Helps: f.Helps}
-	if j.SecondFile != "" {
-		rec.HoldoutFiles = []string{j.SecondFile}
+	if secondFile != "" {
+		rec.HoldoutFiles = []string{secondFile}
 	}
 	if rec.Model, err = rawJSON(f); err != nil {
-		return "", err
+		return rec, err
 	}
 	if rec.Settings, err = rawJSON(set); err != nil {
-		return "", err
+		return rec, err
 	}
 	for _, p := range f.Params {
 		rec.Params = append(rec.Params, sheet.Quantity{Name: p.Name, Value: ptr(p.Value), Unit: p.Unit, PlusMinus: ptr(1.96 * p.SD),
-			Why: fmt.Sprintf("output-error least squares, %s, %d samples of %s", f.Model.Kind, f.Used, j.StepFile)})
+			Why: fmt.Sprintf("output-error least squares, %s, %d samples of %s", f.Model.Kind, f.Used, stepFile)})
 	}
-	if chosen {
-		t, y, yh := simulated(about(j.StepTrace), f.Model)
+	if step != nil {
+		t, y, yh := simulated(about(step), f.Model)
 		rec.Curve = &sheet.FitCurve{TimeS: t, MeasuredRadS: y, FittedRadS: yh}
 	}
-	return j.h.KeepFile("fit", f.Model.Kind, rec)
+	return rec, nil
 }
 
 // keepMotor keeps the row of values that a later job is compared with.

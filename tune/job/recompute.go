@@ -11,6 +11,7 @@ import (
 	"gainwright/protocol"
 	"gainwright/tune/design"
 	"gainwright/tune/identify"
+	"gainwright/tune/model"
 	"gainwright/tune/sheet"
 	"gainwright/tune/trace"
 )
@@ -154,7 +155,9 @@ func (c *recomputing) identify(fits []kept[sheet.FitRecord]) (identify.Result, e
 		return identify.Result{}, nil
 	}
 	for _, k := range fits {
-		c.model(k, res)
+		if err := c.model(k, res, step); err != nil {
+			return res, err
+		}
 	}
 	for i := range res.Models {
 		if !c.r.Closed() {
@@ -167,20 +170,45 @@ func (c *recomputing) identify(fits []kept[sheet.FitRecord]) (identify.Result, e
 	return res, nil
 }
 
-// model compares one recorded model with its like.
-func (c *recomputing) model(k kept[sheet.FitRecord], res identify.Result) {
-	for i := range res.Models {
-		if res.Models[i].Model.Kind == k.rec.Kind {
-			c.compare(k.line.File+" model", k.rec.Model, &res.Models[i])
-			return
-		}
+// model compares one recorded fit with its like, in all that it says.
+func (c *recomputing) model(k kept[sheet.FitRecord], res identify.Result, step *trace.Trace) error {
+	i := slices.IndexFunc(res.Models, func(f identify.Fit) bool { return f.Model.Kind == k.rec.Kind })
+	if i < 0 {
+		c.differ(k.line.File, "model "+k.rec.Kind, "not fitted")
+		return nil
 	}
-	c.differ(k.line.File, "model "+k.rec.Kind, "not fitted")
+	f := &res.Models[i]
+	if f != res.Best() {
+		step = nil
+	}
+	second := ""
+	if len(k.rec.HoldoutFiles) > 0 {
+		second = k.rec.HoldoutFiles[0]
+	}
+	var set FitSettings
+	if err := json.Unmarshal(k.rec.Settings, &set); err != nil {
+		return fmt.Errorf("%s: settings: %w", k.line.File, err)
+	}
+	rec, err := fitRecord(f, set, k.rec.InputFiles[0], second, step)
+	if err != nil {
+		return err
+	}
+	return c.entry(k.line, rec)
+}
+
+// entry compares a whole entry with what it should hold.
+func (c *recomputing) entry(l sheet.Line, rec any) error {
+	raw, err := c.r.Read(l)
+	if err != nil {
+		return err
+	}
+	c.compare(l.File+" ", raw, rec)
+	return nil
 }
 
 // design does the newest proposal again and compares every rule's answer.
 func (c *recomputing) design(f identify.Fit, fits []kept[sheet.FitRecord]) error {
-	list, err := newest(c.r, sheet.KindProposal, func(sheet.ProposalRecord) bool { return true },
+	list, err := newest(c.r, sheet.KindProposal, func(p sheet.ProposalRecord) bool { return len(p.InputFiles) == 1 },
 		func(a, b sheet.ProposalRecord) bool {
 			return string(a.Settings) == string(b.Settings) && slices.Equal(a.InputFiles, b.InputFiles)
 		})
@@ -210,8 +238,13 @@ func (c *recomputing) design(f identify.Fit, fits []kept[sheet.FitRecord]) error
 	if len(list) != len(d.Proposals) && c.r.Closed() {
 		c.differ("proposals", strconv.Itoa(len(list)), strconv.Itoa(len(d.Proposals)))
 	}
+	if err != nil {
+		d.Gains = nil
+	}
 	for _, k := range list {
-		c.proposal(k, d, err == nil && !d.NoChange)
+		if err := c.proposal(k, d, set, LoopModel(f.Model, set.Window)); err != nil {
+			return err
+		}
 	}
 	return c.pushed(list[0].line, d)
 }
@@ -234,33 +267,17 @@ func (c *recomputing) pushed(after sheet.Line, d Designed) error {
 	return err
 }
 
-func (c *recomputing) proposal(k kept[sheet.ProposalRecord], d Designed, usable bool) {
+func (c *recomputing) proposal(k kept[sheet.ProposalRecord], d Designed, set DesignSettings, loop model.Linear) error {
 	i := slices.IndexFunc(d.Proposals, func(p design.Proposal) bool { return p.Rule == k.rec.Rule })
 	if i < 0 {
 		c.differ(k.line.File, "rule "+k.rec.Rule, "not tried")
-		return
+		return nil
 	}
-	p := d.Proposals[i]
-	chosen := usable && i == d.Chosen
-	if chosen != k.rec.Chosen {
-		c.differ(k.line.File+" chosen", strconv.FormatBool(k.rec.Chosen), strconv.FormatBool(chosen))
-		return
+	rec, err := proposalRecord(d, i, set, loop, k.rec.InputFiles[0])
+	if err != nil {
+		return err
 	}
-	if p.Refused != k.rec.Refused {
-		c.differ(k.line.File+" refused", k.rec.Refused, p.Refused)
-		return
-	}
-	switch {
-	case p.Refused != "":
-		c.out.Compared++
-	case chosen:
-		c.compare(k.line.File+" gains", k.rec.Gains, d.Gains)
-		c.compare(k.line.File+" margins", k.rec.Margins, d.Margins)
-		c.compare(k.line.File+" worst", k.rec.Worst, d.Worst)
-	default:
-		c.compare(k.line.File+" gains", k.rec.Gains, p.Gains)
-		c.compare(k.line.File+" margins", k.rec.Margins, p.Margins)
-	}
+	return c.entry(k.line, rec)
 }
 
 // settings holds what the proposal was told against where it came from: the
@@ -280,7 +297,7 @@ func (c *recomputing) settings(file string, set DesignSettings) error {
 		if err != nil {
 			return err
 		}
-		c.compare(file+" settings (against the board's identity)", raw, LawOf(id))
+		c.compare(file+" settings (against the board's identity) ", raw, LawOf(id))
 	} else if !errors.Is(err, sheet.ErrNoEntry) {
 		return err
 	}
