@@ -1,6 +1,8 @@
 package tui
 
 import (
+	"fmt"
+
 	"gainwright/tui/palette"
 	"gainwright/tune/job"
 )
@@ -53,6 +55,34 @@ func verdictRole(v string) palette.Role {
 	return palette.Caution
 }
 
+// widths gives each column of a list of facts the room that its longest text
+// needs; where that is too much for w columns, the widest ones give way.
+func (p *painter) widths(w int, lists ...[]job.Fact) []int {
+	var need [4]int
+	for _, list := range lists {
+		for _, f := range list {
+			for i, text := range [4]string{f.Name, f.Value, f.Limit, f.Verdict} {
+				if n := p.width(text); n > 0 {
+					need[i] = max(need[i], n+2)
+				}
+			}
+		}
+	}
+	for need[0]+need[1]+need[2]+need[3] > w-1 {
+		widest := 0
+		for i := range need {
+			if need[i] > need[widest] {
+				widest = i
+			}
+		}
+		if need[widest] <= 6 {
+			break
+		}
+		need[widest]--
+	}
+	return need[:]
+}
+
 // rows draws facts from row y on, one a row: name, value, limit, verdict. It
 // returns the next free row. Where there is no room for all, the last row says
 // how many are left out.
@@ -63,7 +93,7 @@ func (p *painter) rows(a area, y int, widths []int, list []job.Fact) int {
 			return y
 		}
 		if y == a.h-1 && i < len(list)-1 {
-			a.put(1, y, palette.Plain, "and "+number(float64(len(list)-i), 0)+" more in a larger window")
+			a.put(1, y, palette.Plain, fmt.Sprintf("and %d more in a larger window", len(list)-i))
 			p.fact += len(list) - i
 			return y + 1
 		}
@@ -76,15 +106,11 @@ func (p *painter) rows(a area, y int, widths []int, list []job.Fact) int {
 // oneRow draws one fact; columns without a width are left out.
 func (p *painter) oneRow(a area, y int, widths []int, f job.Fact) {
 	role := p.mark(palette.Plain)
-	texts := [4]string{f.Name, f.Value, f.Limit, f.Verdict}
 	x := 1
-	for i, text := range texts {
-		if i >= len(widths) {
-			break
-		}
+	for i, text := range [4]string{f.Name, f.Value, f.Limit, f.Verdict} {
 		w := min(a.w-x, widths[i])
 		if w <= 1 {
-			break
+			continue
 		}
 		r := role
 		if r == palette.Plain {

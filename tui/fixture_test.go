@@ -48,7 +48,7 @@ func at(id job.StepID, doing bool) *job.View {
 		Now: 61250 * time.Millisecond, Program: "gainwright 0.1", Rig: "PUMP-3", Board: "7A31-22", Port: "/dev/ttyACM0",
 		Sheet: "sheets/pump-3-0192",
 		Link:  job.LinkView{State: job.Fresh, Age: 12 * time.Millisecond, Frames: 12345, Rate: 200},
-		Drive: job.DriveView{Phase: disarmed, Space: "cut, output off", SpeedMax: si.FromRPM(3200), VoltsMax: 24, HeatShare: 0.12,
+		Drive: job.DriveView{Phase: disarmed, Space: "sends a stop", SpeedMax: si.FromRPM(3200), VoltsMax: 24, HeatShare: 0.12,
 			Bus: ptr(si.Volts(24.1)), Current: ptr(si.Amps(0)), Counts: ptr(int64(0))},
 		Current: id, Doing: doing,
 	}
@@ -316,7 +316,7 @@ func stages() []stage {
 	v = at(job.StepStep, true)
 	v.Plan, v.Live = stepPlan(), runningLive(2.4)
 	add("running", withDrive(v, func(d *job.DriveView) {
-		d.Phase, d.Moving, d.Speed, d.Volts, d.Space = running, true, si.FromRPM(2003), 9.8, "cut, output off"
+		d.Phase, d.Moving, d.Speed, d.Volts, d.Space = running, true, si.FromRPM(2003), 9.8, "CUT, the motor coasts"
 		*d.Current = 0.42
 	}), "")
 
@@ -359,7 +359,7 @@ func stages() []stage {
 	v.Live = &job.LiveView{Name: "verify, step up", Running: true, Length: 4 * time.Second, Elapsed: 800 * time.Millisecond, Segment: "1 of 6: setpoint 955 rpm",
 		Speed: y, Volts: u, Setpoint: set, Expect: y, SpeedMax: float64(si.FromRPM(3200)), VoltsMax: 24}
 	add("closed-loop", withDrive(v, func(d *job.DriveView) {
-		d.Phase, d.Moving, d.Speed, d.Volts, d.Space = running, true, si.FromRPM(955), 4.7, "ramp and cut"
+		d.Phase, d.Moving, d.Speed, d.Volts, d.Space = running, true, si.FromRPM(955), 4.7, "RAMP AND CUT, again: CUT"
 	}), "")
 	v = at(job.StepStore, false)
 	v.Verify = verifyView()

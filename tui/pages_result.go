@@ -66,8 +66,14 @@ func (p *painter) model(a area) {
 }
 
 func (p *painter) modelText(a area, m *job.ModelView) {
-	y := p.rows(a, 0, []int{15, 25}, m.Params)
-	y = p.rows(a, y, []int{15, 25}, m.Friction)
+	var params []job.Fact
+	for _, list := range [][]job.Fact{m.Params, m.Friction} {
+		for _, f := range list {
+			f.Limit, f.Verdict = "", "" // the reasons of the verdict say more
+			params = append(params, f)
+		}
+	}
+	y := p.rows(a, 0, p.widths(a.w, params), params)
 	if len(m.Candidates) > 0 && y < a.h {
 		a.table(y, palette.Strong, []int{14, 7, 9, 0}, " candidate", "NRMSE", "hold-out", "")
 		y++
@@ -82,7 +88,12 @@ func (p *painter) modelText(a area, m *job.ModelView) {
 	}
 	if len(m.Plausible) > 0 && y < a.h-1 {
 		y = p.heading(a, y, " plausible?")
-		p.rows(a, y, []int{15, 13, 1, 10}, m.Plausible)
+		list := make([]job.Fact, len(m.Plausible))
+		for i, f := range m.Plausible {
+			f.Limit = "" // w shows it with its reason
+			list[i] = f
+		}
+		p.rows(a, y, p.widths(a.w, list), list)
 	}
 }
 
@@ -145,7 +156,7 @@ func (p *painter) designHead(a area, d *job.DesignView) int {
 // marginTable joins the margins of the proposal with the worst case, what was
 // found and the targets, by their names.
 func (p *painter) marginTable(a area, d *job.DesignView) {
-	y := p.rows(a, 0, []int{14, 32}, d.Gains)
+	y := p.rows(a, 0, p.widths(a.w, d.Gains), d.Gains)
 	wide := a.w > 50
 	widths := []int{15, 10, 10, 10}
 	heads := []string{"", "new", "worst", "found"}
@@ -285,6 +296,7 @@ func (p *painter) verify(a area) {
 		title: "speed, rpm   dotted: forecast, shaded: its band   dashed: setpoint", unit: "s", scale: rpmPerRad, low: e.BandLow, high: e.BandHigh,
 	}, curve{strip.Setpoint, e.Setpoint}, curve{strip.Forecast, e.Forecast}, curve{strip.Data, e.Measured})
 	foot := a.sub(0, a.h-rows, a.w, rows)
-	foot.table(0, palette.Strong, []int{25, 18, 18, 12}, " target", "measured", "limit", "verdict")
-	p.rows(foot, 1, []int{24, 18, 18, 12}, e.Rows)
+	w := p.widths(foot.w, e.Rows, []job.Fact{{Name: "target", Value: "measured", Limit: "limit", Verdict: "verdict"}})
+	foot.sub(1, 0, foot.w-1, 1).table(0, palette.Strong, w, "target", "measured", "limit", "verdict")
+	p.rows(foot, 1, w, e.Rows)
 }

@@ -32,7 +32,14 @@ func (p *painter) plan(a area) {
 		kind += ", size " + number(pl.Size*100, 0) + " % (j k)"
 	}
 	facts.put(1, y, palette.Plain, kind)
-	p.rows(facts, y+1, []int{15, 14, 11}, pl.Facts)
+	widths := p.widths(facts.w, pl.Facts)
+	if widths[2] > 0 {
+		head := facts.sub(1, y+1, facts.w-1, 1)
+		head.put(widths[0], 0, palette.Strong, "forecast")
+		head.put(widths[0]+widths[1], 0, palette.Strong, "limit")
+		y++
+	}
+	p.rows(facts, y+1, widths, pl.Facts)
 
 	x := left + 1
 	if p.v.Drive.Phase == countDown {

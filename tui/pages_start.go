@@ -117,12 +117,13 @@ func (p *painter) found(a area) {
 	}
 	half := a.w / 2
 	left := a.sub(0, y, half-1, a.h-y)
-	p.rows(left, p.heading(left, 0, " Board"), []int{15, 30}, f.Lines)
+	p.rows(left, p.heading(left, 0, " Board"), p.widths(left.w, f.Lines), f.Lines)
 	right := a.sub(half, y, a.w-half, a.h-y)
-	ry := p.heading(right, 0, "Gains running")
-	ry = p.rows(right, ry, []int{14, 30}, f.Running) + 1
-	ry = p.heading(right, ry, "Gains stored")
-	ry = p.rows(right, ry, []int{14, 30}, f.Stored) + 1
+	gains := p.widths(right.w, f.Running, f.Stored)
+	ry := p.heading(right, 0, " Gains running")
+	ry = p.rows(right, ry, gains, f.Running) + 1
+	ry = p.heading(right, ry, " Gains stored")
+	ry = p.rows(right, ry, gains, f.Stored) + 1
 	if f.Same {
 		right.put(1, ry, palette.Plain, "running = stored")
 	} else {

@@ -168,5 +168,12 @@ func (p *painter) reason() []line {
 	if why == "" {
 		why = "No more is known about it than what stands here."
 	}
-	return []line{{palette.Strong, f.Name + "  " + f.Value}, {palette.Plain, why}, {palette.Key, "j next number    k number before    w close"}}
+	head := f.Name + "  " + f.Value
+	if f.Limit != "" {
+		head += "   limit: " + f.Limit
+	}
+	if f.Verdict != "" {
+		head += "   " + f.Verdict
+	}
+	return []line{{palette.Strong, head}, {palette.Plain, why}, {palette.Key, "j next number    k number before    w close"}}
 }

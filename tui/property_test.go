@@ -221,7 +221,7 @@ func TestTopRowsEverywhere(t *testing.T) {
 			} else if d.Moving {
 				shaft = "TURNS"
 			}
-			for _, want := range []string{d.Phase, shaft, string(st.view.Link.State), "space: " + d.Space[:3]} {
+			for _, want := range []string{d.Phase, shaft, string(st.view.Link.State), "space " + d.Space[:3]} {
 				if !strings.Contains(top, want) {
 					t.Errorf("%s at %v: the top rows do not say %q:\n%s", st.name, size, want, top)
 				}

@@ -21,14 +21,16 @@ func (p *painter) top(a area) {
 	text, role := p.phase()
 	shaft, shaftRole := p.shaft()
 	link, linkRole := p.link()
-	cols := [4]int{17, 15, 22, a.w - 54}
+	cols := [4]int{15, 14, 20, a.w - 49}
 	x := 0
 	for i, c := range []struct {
 		text string
 		role palette.Role
-	}{{text, role}, {"shaft " + shaft, shaftRole}, {link, linkRole}, {"space: " + p.space(), palette.Strong}} {
-		cellArea := a.sub(x, 0, cols[i], 1)
-		cellArea.put(0, 0, c.role, " "+c.text+" ")
+	}{{text, role}, {"shaft " + shaft, shaftRole}, {link, linkRole}, {"space " + p.space(), palette.Strong}} {
+		end := a.sub(x, 0, cols[i], 1).put(0, 0, c.role, " "+c.text)
+		if end < cols[i] {
+			a.put(x+end, 0, c.role, " ")
+		}
 		x += cols[i]
 	}
 	p.margins(a)
@@ -43,7 +45,7 @@ func (p *painter) topNarrow(a area) {
 	x := a.put(0, 0, role, text)
 	x = a.put(x+1, 0, shaftRole, shaft)
 	a.put(x+1, 0, linkRole, link)
-	x = a.put(0, 1, palette.Strong, "space: "+p.space())
+	x = a.put(0, 1, palette.Strong, "space "+p.space())
 	d := p.v.Drive
 	short := rpm(d.Speed) + "/" + rpm(d.SpeedMax) + " rpm"
 	if x+len(short)+1 <= a.w {
@@ -70,7 +72,7 @@ func (p *painter) phase() (string, palette.Role) {
 	case "", disarmed:
 		return disarmed, palette.Strong
 	case armed:
-		return armed + " " + whole(d.ArmLeft) + " left", palette.Caution
+		return armed + " " + whole(d.ArmLeft), palette.Caution
 	case arming:
 		return arming, palette.Caution
 	case countDown:
