@@ -191,3 +191,134 @@ func TestRecordsWithoutAFit(t *testing.T) {
 		t.Error("a hold-out of 1.5 was accepted")
 	}
 }
+
+// A second time constant is offered only where the data show it, and then it is
+// the rig's.
+func TestSecondTimeConstantIsEarned(t *testing.T) {
+	r := zooRig{gain: 20, tau: 0.05, dead: 0.004, noise: 0.4}
+	u := stepSet(8, 1.5, 150, 4)
+	res, err := Run(zooRecord(t, r, 0.002, u, 1), Options{Holdout: 0.5})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if b := res.Best(); b == nil || b.Model.Kind != model.KindFirstOrder || b.Verdict != Believed {
+		t.Errorf("first-order rig: chosen %+v", b)
+	}
+	if f := find(res.Models, model.KindSecondOrder); f.Verdict != Refused {
+		t.Errorf("first-order rig: second order %s %v", f.Verdict, f.Reasons)
+	}
+	r.tau2 = 0.012
+	res, err = Run(zooRecord(t, r, 0.002, u, 1), Options{Holdout: 0.5})
+	if err != nil {
+		t.Fatal(err)
+	}
+	b := res.Best()
+	if b == nil || b.Model.Kind != model.KindSecondOrder || b.Verdict != Believed {
+		t.Fatalf("second-order rig: chosen %+v", b)
+	}
+	for name, want := range map[string]float64{"tau": r.tau, "tau2": r.tau2} {
+		if v, sd, _ := b.Value(name); math.Abs(v-want) > 4*sd+1e-4 {
+			t.Errorf("%s %g ± %g, the rig has %g", name, v, sd, want)
+		}
+	}
+}
+
+// A steady drift of the speed (a load that grows) is fitted where it is asked for.
+func TestDrift(t *testing.T) {
+	r := zooRig{gain: 20, tau: 0.05, dead: 0.004, noise: 0.2}
+	tr := zooRecord(t, r, 0.002, stepSet(8, 1.5, 150, 3), 1)
+	for i := range tr.Speed {
+		tr.Speed[i] -= 3.5 * tr.Time[i]
+	}
+	for _, window := range []float64{0, 0.002} {
+		tr.Window = window
+		res, err := Run(tr, Options{Kind: model.KindFirstOrder, Drift: true})
+		if err != nil {
+			t.Fatal(err)
+		}
+		f := res.Models[0]
+		within(t, "drift", f.Drift, -3.5, 0.02)
+		within(t, "gain", f.Model.DCGain(), r.gain, 0.01)
+		within(t, "time constant", f.Model.Den[0], r.tau, 0.03)
+	}
+}
+
+// An integrating motor: the slope is that of the record, by definition.
+func TestIntegrating(t *testing.T) {
+	tr := &trace.Trace{}
+	rng := rand.New(rand.NewPCG(6, 6))
+	w, u := 0.0, 0.0
+	for i := range 400 {
+		if i%40 == 0 {
+			u = 2 * float64(1-i/40%2*2)
+		}
+		w += 35 * u * 0.005 // slope 35 rad/s² per V, no dead time, hold since
+		tr.Time = append(tr.Time, 0.005*float64(i))
+		tr.Voltage = append(tr.Voltage, u)
+		tr.Speed = append(tr.Speed, w+0.05*rng.NormFloat64())
+	}
+	res, err := Run(tr, Options{Kind: model.KindIntegrating, Holdout: 0.5, RawMask: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	f := res.Models[0]
+	within(t, "slope", f.Model.Num[0], 35, 0.005)
+	if v, sd, _ := f.Value("offset"); math.Abs(v) > 4*sd {
+		t.Errorf("offset %g ± %g rad/s², want 0", v, sd)
+	}
+	if f.Model.DeadTime > 0.001 || f.Model.Kind != model.KindIntegrating || f.HoldoutNRMSE > 0.1 {
+		t.Errorf("%+v", f)
+	}
+}
+
+// boundedLine is a linear problem of three strongly tied parameters.
+type boundedLine struct{ a, b []float64 }
+
+func (boundedLine) Dim() int { return 3 }
+
+func (l boundedLine) Evaluate(p []float64, pt *Point) bool {
+	jac := append([]float64(nil), l.a...)
+	res := make([]float64, len(l.b))
+	for i := range res {
+		for j := range p {
+			res[i] += l.a[i*3+j] * p[j]
+		}
+		res[i] -= l.b[i]
+	}
+	Compress(jac, 3, res, pt)
+	return true
+}
+
+// With a bound in the way the solver ends at the constrained optimum: the gradient
+// vanishes along the free parameters and points out of the bound (conditions of
+// Karush, Kuhn and Tucker), in few steps since the problem is linear.
+func TestSolverKeepsBounds(t *testing.T) {
+	l := boundedLine{
+		a: []float64{4, 3, 1, 3, 4, 2, 1, 2, 5, 2, 2, 2, 1, 0, 1},
+		b: []float64{1, 9, -2, 4, 0},
+	}
+	sol, err := Solve(l, []float64{1, 1, 1}, Settings{Lower: []float64{0, -100, 0}, Upper: []float64{100, 100, 100}, CostTol: 1e-14, ParamTol: 1e-12})
+	if err != nil {
+		t.Fatal(err)
+	}
+	atBound := 0
+	for j := range 3 {
+		g := 0.0
+		for i := 0; i <= j; i++ {
+			g += sol.Point.R[i*3+j] * sol.Point.Qtr[i]
+		}
+		bound := j != 1 && sol.Params[j] == 0
+		if bound {
+			atBound++
+		}
+		if bound && g < 0 || !bound && math.Abs(g) > 1e-6 {
+			t.Errorf("parameter %d = %g: gradient %g", j, sol.Params[j], g)
+		}
+	}
+	if atBound == 0 {
+		t.Error("no bound was active: the test shows nothing")
+	}
+	if sol.Evaluations > 8 {
+		t.Errorf("%d evaluations for a linear problem", sol.Evaluations)
+	}
+}

@@ -42,7 +42,7 @@ func (e *estimate) speeds(tr *trace.Trace, steady bool, split int, ownOffset boo
 	} else if off == offsetOwn {
 		linear = e.linear[:1]
 	}
-	drift := e.proj.drift && !ownOffset
+	drift := e.proj.drift && !ownOffset // only kept with the fitted offset
 	if split <= 0 || split > tr.Len() {
 		split = tr.Len()
 	}

@@ -61,6 +61,7 @@ type spanGram struct {
 }
 
 func newProjection(kern kernel, pieces []*stretch, off offsets, drift bool) *projection {
+	drift = drift && kern.shapes() > 0 // an integrator's offset is its drift
 	p := &projection{kern: kern, pieces: pieces, offset: off, drift: drift}
 	longest := 0
 	for _, s := range pieces {
@@ -206,9 +207,13 @@ func (p *projection) spanColumns(s *stretch, sp span, l layout, main [][]float64
 	cols := make([][]float64, l.total)
 	cols[0] = main[0][sp.from:sp.to]
 	at := 1
+	level := 0
+	if shapes == 0 {
+		level = 1 // a constant voltage is a constant acceleration to an integrator
+	}
 	if p.offset == offsetShared {
 		cols[at] = fresh()
-		s.constant(sp, cols[at], 0)
+		s.constant(sp, cols[at], level)
 		at++
 	}
 	if p.drift {
@@ -219,7 +224,7 @@ func (p *projection) spanColumns(s *stretch, sp span, l layout, main [][]float64
 	at = l.globals
 	if p.offset == offsetOwn {
 		cols[at] = fresh()
-		s.constant(sp, cols[at], 0)
+		s.constant(sp, cols[at], level)
 		at++
 	}
 	if s.obs == position {
