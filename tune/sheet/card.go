@@ -339,6 +339,10 @@ func Sticker(d CardData) string {
 	if date == "" {
 		date = "____-__-__"
 	}
-	rest := fmt.Sprintf(" %s %s rec %s", verb, date, plain.Visible(shorten(d.Record, 8), 8))
+	record := plain.Visible(shorten(d.Record, 8), 8)
+	rest := fmt.Sprintf(" %s %s rec %s", verb, date, record)
+	if short := fmt.Sprintf(" %s %s %s", verb, date, record); plain.Width(d.Rig+rest) > 40 && plain.Width(d.Rig+short) <= 40 {
+		rest = short // the rig's name matters more than the word
+	}
 	return text(d.Rig, 40-plain.Width(rest)) + rest
 }

@@ -144,6 +144,7 @@ func TestSticker(t *testing.T) {
 		{"left alone", CardData{Rig: "PUMP-3", Start: "2025-11-04T10:12:00+01:00", Record: "k3f9q2xx", Outcome: "no-adjustment"}, "PUMP-3 checked 2025-11-04 rec k3f9q2xx"},
 		{"refused", CardData{Rig: "PUMP-3", Start: "2025-11-04", Record: "k3f9q2xx", Outcome: "refused"}, "PUMP-3 not tuned 2025-11-04 rec k3f9q2xx"},
 		{"simulated", CardData{Rig: "PUMP-3", Start: "2025-11-04", Record: "k3f9q2xx", Outcome: "accepted", Simulated: true}, "PUMP-3 simulated 2025-11-04 rec k3f9q2xx"},
+		{"name that fits without a word", CardData{Rig: "benchtop", Start: "2025-11-04", Record: "k3f9q2xx", Outcome: "refused"}, "benchtop not tuned 2025-11-04 k3f9q2xx"},
 		{"long name", CardData{Rig: strings.Repeat("PUMP", 20), Start: "2025-11-04", Record: "0192", Outcome: "accepted"}, "PUMPPUMPPUMP.. tuned 2025-11-04 rec 0192"},
 	}
 	for _, tt := range tests {
