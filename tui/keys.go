@@ -111,7 +111,9 @@ var bindings = []binding{
 	{"n", "n", "no", groupAsk, "No.", asking(job.AskYesNo), answer(false)},
 	{"enter", "enter", "seen, go on", groupAsk, "Seen, done, or: take what was typed.", asking(job.AskEnter, job.AskHandTurn, job.AskPower), answer(true)},
 	{"enter", "enter", "to the field", groupAsk, "Go back to a field that was left with esc.", asking(job.AskText, job.AskWord, job.AskNumber), backToField},
-	{"t", "t", "turn the shaft", groupAsk, "Simulated rig only: turn the shaft one turn by hand.", func(s Screen, v *job.View) bool { return free(s, v) && v.Hand }, say(job.TurnHand{})},
+	{"t", "t", "turn the shaft", groupAsk, "Simulated rig only: turn the shaft one turn by hand.", func(s Screen, v *job.View) bool {
+		return v.Hand && asking(job.AskHandTurn)(s, v)
+	}, say(job.TurnHand{})},
 	{"o", "o", "power off and on", groupAsk, "Simulated rig only: switch the board off and on.", func(s Screen, v *job.View) bool {
 		return v.Simulated && asking(job.AskPower)(s, v)
 	}, say(job.CyclePower{})},

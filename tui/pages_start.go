@@ -115,7 +115,12 @@ func (p *painter) found(a area) {
 		a.put(x+2, y, palette.Plain, f.File)
 		y += 2
 	}
-	half := a.w / 2
+	half := a.w / 2 // the gains take what they need, the rest is the board's
+	need := 3
+	for _, w := range p.widths(half, f.Running, f.Stored) {
+		need += w
+	}
+	half = max(half, a.w-max(need, 28))
 	left := a.sub(0, y, half-1, a.h-y)
 	p.rows(left, p.heading(left, 0, " Board"), p.widths(left.w, f.Lines), f.Lines)
 	right := a.sub(half, y, a.w-half, a.h-y)

@@ -61,7 +61,7 @@ func (c *Chart) title() string {
 // across writes the labels of the horizontal axis into the last row.
 func (c *Chart) across() {
 	row := c.h - 1
-	step := niceStep(c.ax.X1-c.ax.X0, max(1, c.pw/12))
+	step := niceStep(c.ax.X1-c.ax.X0, max(1, c.pw/10))
 	kx := float64(c.pw*c.dx-1) / (c.ax.X1 - c.ax.X0)
 	unit := utf8.RuneCountInString(c.ax.XUnit)
 	room := c.w - unit - 1 // the unit stands at the right end
