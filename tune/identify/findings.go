@@ -62,7 +62,11 @@ func (e *estimate) examine() []Finding {
 	}
 	var out []Finding
 	for _, f := range []func() []Finding{x.drift, x.breaks, x.level, x.direction, x.reversal, x.dynamics, x.spectrum} {
-		out = append(out, f()...)
+		for _, found := range f() {
+			if finite(found.Effect) && finite(found.SD) && found.SD > 0 {
+				out = append(out, found)
+			}
+		}
 	}
 	return out
 }

@@ -13,14 +13,6 @@ import (
 // ErrData is wrapped by every refusal to fit because of the record itself.
 var ErrData = errors.New("identify: not enough to fit")
 
-// Param is one fitted number with its standard deviation.
-type Param struct {
-	Name  string  `json:"name"`
-	Unit  string  `json:"unit"`
-	Value float64 `json:"value"`
-	SD    float64 `json:"sd"`
-}
-
 // estimate is a fit of one structure: parameters, their covariance and what is
 // left over.
 type estimate struct {

@@ -169,6 +169,20 @@ func TestFitJSON(t *testing.T) {
 	}
 }
 
+// A number that is not known is null, and does not keep the rest from being
+// written.
+func TestUnknownNumbersInJSON(t *testing.T) {
+	f := Fit{Model: model.FirstOrder(2, 0.1, 0), Params: []Param{{"tau", "s", 0.1, math.NaN()}}, Cov: [][]float64{{math.Inf(1)}}, AICc: math.Inf(-1)}
+	b, err := json.Marshal(f)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var back Fit
+	if err := json.Unmarshal(b, &back); err != nil || !math.IsNaN(back.Params[0].SD) || !math.IsNaN(back.AICc) || back.Cov != nil {
+		t.Errorf("%v %+v from %s", err, back, b)
+	}
+}
+
 // Records without anything to fit are refused with a reason, never with a panic.
 func TestRecordsWithoutAFit(t *testing.T) {
 	flat := zooRecord(t, zooRig{gain: 20, tau: 0.05, noise: 1}, 0.002, make([]float64, 200), 1)

@@ -129,6 +129,8 @@ func judgeWidths(f *Fit, v *verdicts) {
 		}
 		half := 1.96 * p.SD / math.Abs(p.Value)
 		switch {
+		case !finite(half):
+			v.add(Refused, "more repeats, a larger step, or a longer record", "%s is not shown by the record", p.Name)
 		case half > refused:
 			v.add(Refused, "more repeats, a larger step, or a longer record", "%s is known to ±%.0f %% only", p.Name, 100*half)
 		case half > care:

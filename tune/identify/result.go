@@ -16,6 +16,37 @@ const (
 	Refused  Verdict = "refused"
 )
 
+// Param is one fitted number with its standard deviation, NaN (null in JSON)
+// where the data do not show it.
+type Param struct {
+	Name  string
+	Unit  string
+	Value float64
+	SD    float64
+}
+
+type paramJSON struct {
+	Name  string   `json:"name"`
+	Unit  string   `json:"unit"`
+	Value *float64 `json:"value"`
+	SD    *float64 `json:"sd"`
+}
+
+// MarshalJSON writes name, unit, value and sd.
+func (p Param) MarshalJSON() ([]byte, error) {
+	return json.Marshal(paramJSON{p.Name, p.Unit, known(p.Value), known(p.SD)})
+}
+
+// UnmarshalJSON reads what MarshalJSON wrote.
+func (p *Param) UnmarshalJSON(b []byte) error {
+	var w paramJSON
+	if err := json.Unmarshal(b, &w); err != nil {
+		return err
+	}
+	*p = Param{w.Name, w.Unit, orNaN(w.Value), orNaN(w.SD)}
+	return nil
+}
+
 // Fit is one model with how well it is known and whether it is believed.
 // Numbers that are not known are NaN and become null in JSON.
 type Fit struct {
@@ -95,6 +126,18 @@ func orNaN(p *float64) float64 {
 	return *p
 }
 
+// knownMatrix returns m, nil where an entry is not known.
+func knownMatrix(m [][]float64) [][]float64 {
+	for _, row := range m {
+		for _, v := range row {
+			if !finite(v) {
+				return nil
+			}
+		}
+	}
+	return m
+}
+
 // MarshalJSON writes the keys of the model and of the judgement in one object.
 func (f Fit) MarshalJSON() ([]byte, error) {
 	m := f.Model
@@ -112,7 +155,7 @@ func (f Fit) MarshalJSON() ([]byte, error) {
 		RMSE: known(f.RMSE), NRMSE: known(f.NRMSE), HoldoutNRMSE: known(f.HoldoutNRMSE), HoldoutRMSE: known(f.HoldoutRMSE),
 		VAF: known(f.VAF), AICc: known(f.AICc), WhitenessP: known(f.WhitenessP), InputP: known(f.InputP),
 		Noise: known(f.Noise), Inflation: known(f.Inflation), Offset: known(f.Offset), Drift: f.Drift,
-		Verdict: f.Verdict, Reasons: reasons, Helps: f.Helps, Params: f.Params, Cov: f.Cov,
+		Verdict: f.Verdict, Reasons: reasons, Helps: f.Helps, Params: f.Params, Cov: knownMatrix(f.Cov),
 		Used: f.Used, Masked: masked, Findings: f.Findings, FittedCounts: f.FittedCounts, AtBound: f.DeadTimeBound,
 	})
 }
