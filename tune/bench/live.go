@@ -2,8 +2,6 @@ package bench
 
 import (
 	"context"
-	"errors"
-	"fmt"
 	"sync"
 	"sync/atomic"
 	"time"
@@ -348,94 +346,6 @@ func (l *Live) tick() {
 	}
 }
 
-// lost ends a line whose port is gone.
-func (l *Live) lost(why string) {
-	l.s.core.LinkLost(l.s.now, why)
-	l.giveUp()
-}
-
-func (l *Live) giveUp() {
-	if line := l.line.Swap(nil); line != nil {
-		line.cancel()
-		go line.port.Close() // a Close may hang with its device
-	}
-	s := l.s
-	s.opened = false
-	s.view.Refusal = &job.RefusalView{Number: int(safety.CodeLinkLost), What: "LINK LOST", Cause: s.core.Link().LostWhy,
-		Remedy: "watch the shaft; use the E-stop if it turns. The port is looked for; then do the step \"Identity\" again"}
-}
-
-// reopenEvery is how often a port that was lost is looked for.
-const reopenEvery = 500 * time.Millisecond
-
-// reopen looks for a port that was lost until it is there again. What was going
-// on is not resumed: the identity is asked for anew, disarmed.
-func (l *Live) reopen() {
-	l.opening.Store(true)
-	path := l.path
-	l.goes(func() {
-		defer l.opening.Store(false)
-		for {
-			select {
-			case <-l.over:
-				return
-			case <-time.After(reopenEvery):
-			}
-			o, err := l.opt.Open(path)
-			if err != nil {
-				continue
-			}
-			l.connect(o, path)
-			l.step(func(j *job.Job) { _ = j.Again() })
-			return
-		}
-	})
-}
-
-// connect puts a line behind the session.
-func (l *Live) connect(o Opened, path string) {
-	ctx, cancel := context.WithCancel(context.Background())
-	line := &liveLine{port: o.Port, cancel: cancel}
-	line.writer = link.NewWriter(o.Port, link.Config{Baud: o.Baud, Clock: l.now, OnPanic: l.panicked,
-		OnWrote: func(t time.Duration, b []byte) {
-			if b[0] == protocol.Cut {
-				l.cutWrote.CompareAndSwap(0, int64(t))
-			}
-			l.tape.Record(t, tape.ToBoard, b)
-		},
-		OnStall: func(err *link.StallError) {
-			l.post(func(s *session) { s.core.Do(safety.PortStalled{At: s.now}); l.lost(err.Error()) })
-		}})
-	reader := link.NewReader(o.Port, link.ReaderConfig{Clock: l.now, OnPanic: l.panicked, OnBytes: func(t time.Duration, b []byte) {
-		l.tape.Record(t, tape.FromBoard, b)
-		select {
-		case l.rx <- chunk{at: t, data: append([]byte(nil), b...), line: line}:
-		default:
-			l.rxLost.Add(1)
-		}
-	}})
-	l.do(func(s *session) {
-		l.line.Store(line)
-		l.path = path
-		s.view.Port = path
-		s.opened = true
-		s.core.Opened(s.now)
-		s.say("opened " + path + "; " + o.Note)
-	})
-	l.goes(func() { l.ended(line, line.writer.Run(ctx)) })
-	l.goes(func() { l.ended(line, reader.Run(ctx)) })
-}
-
-func (l *Live) ended(line *liveLine, err error) {
-	if err == nil || errors.Is(err, context.Canceled) {
-		return
-	}
-	select {
-	case l.rx <- chunk{line: line, err: err}:
-	case <-l.over:
-	}
-}
-
 // work is the goroutine of the job: one step after another.
 func (l *Live) work() {
 	for {
@@ -457,78 +367,6 @@ func (l *Live) step(f func(*job.Job)) {
 	}
 }
 
-// Post does what a person asks for. It never blocks.
-func (l *Live) Post(i job.Intent) {
-	switch i := i.(type) {
-	case job.PickPort:
-		l.step(func(j *job.Job) { l.pick(i.Path) })
-	case job.LookAgain:
-		if l.opt.Ports != nil {
-			l.step(func(*job.Job) { ports := l.opt.Ports(); l.do(func(s *session) { s.view.Ports = ports }) })
-		}
-	case job.DoStep:
-		l.step(func(j *job.Job) { l.doStep(j, i.Step) })
-	case job.SkipStep:
-		l.step(func(j *job.Job) { j.Skip(i.Step, i.Reason) })
-	case job.Revert:
-		l.step(func(j *job.Job) { _ = j.Revert() })
-	case job.AddRemark:
-		l.step(func(j *job.Job) { j.Remark(i.Text) })
-	case job.Nudge:
-		l.step(func(j *job.Job) { j.Nudge(i.By) })
-	case job.TurnHand:
-		if l.opt.Hand != nil {
-			l.opt.Hand()
-		}
-	case job.CyclePower:
-		if l.opt.Cycle != nil {
-			l.opt.Cycle()
-		}
-	case job.Quit:
-		l.Stop(safety.ByQuit)
-	default:
-		l.post(func(s *session) { s.intent(i) })
-	}
-}
-
-// doStep begins a step. The step "port" is a port's opening: with one port there
-// is nothing to choose.
-func (l *Live) doStep(j *job.Job, id job.StepID) {
-	if id != job.StepPort || l.line.Load() != nil {
-		_ = j.Do(id)
-		return
-	}
-	ports := l.View().Ports
-	if len(ports) == 1 && ports[0].Path != "" {
-		l.pick(ports[0].Path)
-		return
-	}
-	l.do(func(s *session) { s.say("choose a port on the ports page") })
-}
-
-// pick opens a port and asks the board what it is.
-func (l *Live) pick(path string) {
-	if l.line.Load() != nil {
-		l.do(func(s *session) { s.say("a port is open already: " + l.path) })
-		return
-	}
-	o, err := l.opt.Open(path)
-	if err != nil {
-		l.do(func(s *session) {
-			s.say(err.Error())
-			s.view.Refusal = &job.RefusalView{Number: 750, What: "port not opened", Cause: err.Error(), Remedy: "mend that, or choose another port"}
-		})
-		return
-	}
-	l.connect(o, path)
-	if l.job.Do(job.StepPort) == nil {
-		_ = l.job.Do(job.StepIdentity)
-	}
-}
-
-// Connect opens a port from the command line, as a person's pick would.
-func (l *Live) Connect(path string) { l.step(func(*job.Job) { l.pick(path) }) }
-
 // closeWait is how long leaving waits for the board's word that its output is
 // off, and for the disk.
 const closeWait = time.Second
@@ -549,30 +387,4 @@ func (l *Live) Close() (dir string, err error) {
 	defer cancel()
 	err = l.tape.Close(ctx)
 	return l.h.closeRecord(err)
-}
-
-// liveWire is the line that is open now.
-type liveWire struct{ l *Live }
-
-func (w liveWire) Stop(b []byte) uint64 {
-	if line := w.l.line.Load(); line != nil {
-		return line.writer.Stop(b)
-	}
-	return 0
-}
-
-var errNoLine = fmt.Errorf("bench: no port is open")
-
-func (w liveWire) Motion(b []byte) error {
-	if line := w.l.line.Load(); line != nil {
-		return line.writer.Motion(b)
-	}
-	return errNoLine
-}
-
-func (w liveWire) Request(b []byte) error {
-	if line := w.l.line.Load(); line != nil {
-		return line.writer.Request(b)
-	}
-	return errNoLine
 }
