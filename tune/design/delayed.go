@@ -38,7 +38,7 @@ type gridStep struct {
 
 func delayedResponses(m model.Linear, g Gains) (Step, LoadStep, error) {
 	dead := m.DeadTime + g.ComputeDelay
-	grid, err := delayGrid(m, g, dead)
+	grid, leap, err := delayGrid(m, g, dead)
 	if err != nil {
 		return Step{}, LoadStep{}, err
 	}
@@ -49,23 +49,25 @@ func delayedResponses(m model.Linear, g Gains) (Step, LoadStep, error) {
 	}
 	step := Step{Unknown, Unknown, Unknown, Unknown}
 	if sys := newDelayedLoop(m, g, grid, 1, 0); kick == 0 || sys.directSlope() == 0 {
-		sys.run(y, dead, kick)
+		sys.run(y, dead, leap, kick)
 		step = y.step()
 	}
 	z := newMeter(0)
-	newDelayedLoop(m, g, grid, 0, 1).run(z, dead, 0)
+	newDelayedLoop(m, g, grid, 0, 1).run(z, dead, leap, 0)
 	return step, z.load(), nil
 }
 
-// delayGrid chooses the step sizes within one dead time.
-func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
+// delayGrid chooses the step sizes within one dead time, and the length of the
+// leaps that may follow once the start is over; 0 where no leap would be longer
+// than the dead time.
+func delayGrid(m model.Linear, g Gains, dead float64) (grid []float64, leap float64, err error) {
 	l, err := newLoop(m, g)
 	if err != nil {
-		return nil, err
+		return nil, 0, err
 	}
 	margins, err := l.margins()
 	if err != nil {
-		return nil, err
+		return nil, 0, err
 	}
 	largest := 0.16 * dead
 	limit := func(w, part float64) {
@@ -74,11 +76,18 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 		}
 	}
 	slow := math.Inf(1) // if all is slow against the dead time, one step a dead time is enough
-	for _, w := range append(margins.Crossovers, float64(margins.MsAt)) {
+	busy := margins.Crossovers
+	if margins.Ms > 1.05 {
+		busy = append(busy, float64(margins.MsAt))
+	}
+	for _, w := range busy {
 		slow = math.Min(slow, 0.05/w)
 	}
 	if slow > dead {
 		largest = dead
+	}
+	if slow > 20*dead {
+		leap = slow
 	}
 	for _, w := range margins.Crossovers {
 		limit(w, 0.08)
@@ -87,6 +96,7 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 	for _, p := range m.Poles() {
 		if imag(p) != 0 {
 			limit(cmplx.Abs(p), 0.1)
+			leap = math.Min(leap, 0.05/cmplx.Abs(p))
 		}
 		fastest = math.Max(fastest, cmplx.Abs(p))
 	}
@@ -97,7 +107,6 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 	if fastest > 0 {
 		smallest = math.Min(largest, 0.05/fastest)
 	}
-	var grid []float64
 	for t := 0.0; t < dead*(1-1e-12); {
 		h := math.Min(largest, math.Max(smallest, 0.04*t))
 		if rest := dead - t; rest < 1.5*h {
@@ -107,9 +116,9 @@ func delayGrid(m model.Linear, g Gains, dead float64) ([]float64, error) {
 		t += h
 	}
 	if len(grid) > 20000 {
-		return nil, fmt.Errorf("design: the dead time of %g s is too long against the fastest time constant to be simulated", dead)
+		return nil, 0, fmt.Errorf("design: the dead time of %g s is too long against the fastest time constant to be simulated", dead)
 	}
-	return grid, nil
+	return grid, leap, nil
 }
 
 func newDelayedLoop(m model.Linear, g Gains, grid []float64, r, load float64) *delayedLoop {
@@ -240,9 +249,9 @@ func (s *delayedLoop) outputs(z, scratch []float64, v, v1, v2 float64) (y, yd, u
 // run simulates until the response has come to rest and feeds it to the meter.
 // A load acts on the motor from the start: when it arrives shifts the answer but
 // changes neither its peak nor its area. kick is the area of an impulse in the
-// drive at the start.
-func (s *delayedLoop) run(out *meter, dead, kick float64) {
-	const stepsMax = 20_000_000
+// drive at the start. It tells whether the end was done in leaps.
+func (s *delayedLoop) run(out *meter, dead, leap, kick float64) (leapt bool) {
+	const stepsMax = 5_000_000
 	z, next, scratch := make([]float64, s.n), make([]float64, s.n), make([]float64, s.n)
 	check, taken := 16*dead, 0
 	for period := 0; taken < stepsMax; period++ {
@@ -276,14 +285,19 @@ func (s *delayedLoop) run(out *meter, dead, kick float64) {
 			now += st.h
 		}
 		taken += len(s.steps)
+		if leap > 2*dead && now > 64*dead && s.leaps(out, z, now, dead, leap) {
+			return true
+		}
 		if now >= check {
 			if out.recent < tailContinuous*out.size || s.standsStill(out, z, next) {
-				return
+				return false
 			}
 			check *= 2
 			out.recent = 0
 		}
 	}
+	out.recent = math.Inf(1) // not settled, as far as is known
+	return false
 }
 
 // standsStill recognises a response that has come to rest away from its target,

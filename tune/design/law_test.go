@@ -247,3 +247,33 @@ func TestLargestKiKeepsFourDerivativeTimes(t *testing.T) {
 		}
 	}
 }
+
+// A plant that answers at once, (0.02·s + 1)/(0.17·s + 1) with ki alone: the
+// closed loop is (ki·(0.02·s + 1))/(0.17·s² + (1 + 0.02·ki)·s + ki), and its IAE
+// without overshoot is 1/ki.
+func TestPlantThatAnswersAtOnce(t *testing.T) {
+	m := model.Linear{Num: []float64{0.02, 1}, Den: []float64{0.17, 1}}
+	got, err := Judge(m, PI(0, 0.5, 0, 0))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if !got.Stable || got.Step.Overshoot != 0 || math.Abs(float64(got.Step.IAE)-2) > 1e-4 {
+		t.Errorf("got %+v, want an IAE of 2 without overshoot", got.Step)
+	}
+}
+
+func TestJudgeEndsOnHopelessLoops(t *testing.T) {
+	// Swings for a million periods: stable, but no settling time is found.
+	m := model.Linear{Num: []float64{2479}, Den: []float64{1, 0}}
+	g := Gains{Ki: 7.7e-6, Kd: 6.6e-5, DerivativeFilter: 4.5e-6, SetpointWeight: 1}
+	got, err := Judge(m, g)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got.Step.SettlingTime.Known() || got.Step.Overshoot.Known() {
+		t.Errorf("settling %g s and overshoot %g %% of a loop that was given up", got.Step.SettlingTime, got.Step.Overshoot)
+	}
+	if _, err := Judge(m, PI(0, 0, 0, 0)); err == nil {
+		t.Error("a loop without gains was judged")
+	}
+}

@@ -36,6 +36,9 @@ func newLoop(m model.Linear, g Gains) (*loop, error) {
 		return nil, fmt.Errorf("%w: num ends in 0: the speed does not follow a steady drive, so no speed loop can hold it", model.ErrModel)
 	}
 	g = g.Parallel()
+	if g.Kp == 0 && g.Ki == 0 && g.Kd == 0 {
+		return nil, badGains("kp, ki and kd are all 0: there is no loop to judge")
+	}
 	l := &loop{controller: g.response(), end: math.Inf(1), deadTime: m.DeadTime + g.ComputeDelay}
 	if g.SampleTime > 0 {
 		d, err := m.Sample(g.SampleTime, g.ComputeDelay)

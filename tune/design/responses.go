@@ -146,6 +146,9 @@ func cross(c [4]float64, x0, x1, y float64) float64 {
 
 func (m *meter) step() Step {
 	s := Step{RiseTime: Value(m.t90 - m.t10), Overshoot: Value(100 * math.Max(0, m.top/m.target-1)), SettlingTime: Value(m.lastOutside), IAE: Value(m.iae)}
+	if math.IsInf(m.recent, 1) {
+		s.Overshoot = Unknown // given up before the end
+	}
 	if m.recent > settlingBand {
 		s.SettlingTime, s.IAE = Unknown, Unknown // it does not come to the setpoint
 	}
@@ -189,10 +192,15 @@ func rationalResponses(m model.Linear, g Gains) (Step, LoadStep, error) {
 
 // runRational feeds the unit step response of t to the meter.
 func runRational(t model.Linear, out *meter) {
+	for t.Den[0] == 0 { // a derivative of 0 leaves a leading zero
+		t.Den = t.Den[1:]
+	}
 	const (
-		decayed = 25.0 // a mode is over after so many of its time constants
-		fine    = 0.15 // step times the magnitude of the fastest living mode
+		decayed  = 25.0 // a mode is over after so many of its time constants
+		fine     = 0.15 // step times the magnitude of the fastest living mode
+		stepsMax = 2e6  // a loop that swings longer than that has no settling time worth the name
 	)
+	taken := 0.0
 	poles := t.Poles()
 	ss := t.StateSpace()
 	n := ss.N
@@ -224,6 +232,10 @@ func runRational(t model.Linear, out *meter) {
 			return
 		}
 		steps := math.Max(1, math.Ceil((next-now)*fastest/fine))
+		if taken += steps; taken > stepsMax {
+			out.recent = math.Inf(1) // not settled, as far as is known
+			return
+		}
 		h := (next - now) / steps
 		e, gain := ss.Hold(h)
 		out.recent = 0

@@ -78,7 +78,7 @@ func Expm1(x []float64, n int) []float64 {
 		norm = math.Max(norm, row)
 	}
 	k := 0
-	for norm > 0.125 {
+	for norm > 0.125 && k < 1100 { // beyond any finite norm
 		norm /= 2
 		k++
 	}
