@@ -285,8 +285,11 @@ func (s *delayedLoop) run(out *meter, dead, leap, kick float64) (leapt bool) {
 			now += st.h
 		}
 		taken += len(s.steps)
-		if leap > 2*dead && now > 64*dead && s.leaps(out, z, now, dead, leap) {
-			return true
+		if leap > 2*dead && now > 64*dead {
+			if s.leaps(out, z, now, dead, leap) {
+				return true
+			}
+			leap = 0 // it does not converge: small steps to the end
 		}
 		if now >= check {
 			if out.recent < tailContinuous*out.size || s.standsStill(out, z, next) {

@@ -49,11 +49,10 @@ func (s *delayedLoop) leaps(out *meter, z []float64, now, dead, h float64) bool 
 			}
 		}
 		if !converged {
-			if first {
-				return false
+			if !first {
+				out.recent = math.Inf(1) // not settled, as far as is known
 			}
-			out.recent = math.Inf(1) // not settled, as far as is known
-			return true
+			return !first
 		}
 		first = false
 		out.add(segment{now, h, y0, y1, yd0, yd1})

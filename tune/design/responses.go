@@ -2,6 +2,7 @@ package design
 
 import (
 	"math"
+	"math/cmplx"
 
 	"gainwright/tune/model"
 )
@@ -220,14 +221,7 @@ func runRational(t model.Linear, out *meter) {
 	now := 0.0
 	y0, d0 := value()
 	for {
-		fastest, next := 0.0, math.Inf(1)
-		for _, p := range poles {
-			life := decayed / -real(p)
-			if life > now*(1+1e-12) {
-				fastest = math.Max(fastest, math.Hypot(real(p), imag(p)))
-				next = math.Min(next, life)
-			}
-		}
+		fastest, next := alive(poles, now, decayed)
 		if fastest == 0 {
 			return
 		}
@@ -258,6 +252,19 @@ func runRational(t model.Linear, out *meter) {
 		now = next
 		out.recent = math.Abs(y0 - out.target)
 	}
+}
+
+// alive returns the magnitude of the fastest mode that has not decayed at the
+// time now, and when the next of them has, after so many of its time constants.
+func alive(poles []complex128, now, decayed float64) (fastest, next float64) {
+	next = math.Inf(1)
+	for _, p := range poles {
+		if life := decayed / -real(p); life > now*(1+1e-12) {
+			fastest = math.Max(fastest, cmplx.Abs(p))
+			next = math.Min(next, life)
+		}
+	}
+	return fastest, next
 }
 
 func polyMul(a, b []float64) []float64 {

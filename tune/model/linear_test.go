@@ -69,3 +69,10 @@ func TestDCGain(t *testing.T) {
 		t.Errorf("integrating with a negative slope: got %g, want -Inf", g)
 	}
 }
+
+func TestTextKeepsEveryDigit(t *testing.T) {
+	got := SecondOrder(20.1, 0.25, 0.5, 0.1).Text()
+	if want := "num = [20.100000000000001]; den = [0.125, 0.75, 1]; delay = 0.10000000000000001;"; got != want {
+		t.Errorf("got %s, want %s", got, want)
+	}
+}
