@@ -113,7 +113,7 @@ func (p *painter) design(a area) {
 	if a.h >= 30 {
 		rules = len(d.Rules) + 1
 	}
-	left := 46
+	left := 55
 	if a.w > 100 {
 		left = 62
 	}
@@ -123,7 +123,7 @@ func (p *painter) design(a area) {
 	top := pics.h * 3 / 5
 	title := "step, rpm"
 	if len(d.FoundStep) > 0 {
-		title += "  dotted: as found"
+		title = "rpm   dotted: as found"
 	}
 	p.curves(pics.sub(0, 0, pics.w, top), plot{title: title, unit: "s", scale: rpmPerRad, zero: true},
 		curve{strip.Forecast, d.FoundStep}, curve{strip.Data, d.Step})
@@ -157,11 +157,9 @@ func (p *painter) designHead(a area, d *job.DesignView) int {
 // found and the targets, by their names.
 func (p *painter) marginTable(a area, d *job.DesignView) {
 	y := p.rows(a, 0, p.widths(a.w, d.Gains), d.Gains)
-	wide := a.w > 50
-	widths := []int{15, 10, 10, 10}
-	heads := []string{"", "new", "worst", "found"}
-	if wide {
-		widths, heads = []int{17, 11, 11, 11, 11}, []string{"", "new", "worst", "found", "target"}
+	widths, heads := []int{14, 11, 9, 9, 10}, []string{"", "new", "worst", "found", "target"}
+	if a.w > 58 {
+		widths = []int{17, 11, 11, 11, 11}
 	}
 	in := a.sub(1, 0, a.w-1, a.h)
 	in.table(y, palette.Strong, widths, heads...)
@@ -195,9 +193,7 @@ func (p *painter) marginTable(a area, d *job.DesignView) {
 		put(1, n, ni, 0)
 		put(2, w, wi, len(d.Margins))
 		put(3, f, fi, len(d.Margins)+len(d.Worst)+len(d.Targets))
-		if wide {
-			put(4, t, ti, len(d.Margins)+len(d.Worst))
-		}
+		put(4, t, ti, len(d.Margins)+len(d.Worst))
 		y++
 	}
 }
@@ -230,7 +226,7 @@ func (p *painter) rules(a area, d *job.DesignView) {
 	if a.h <= 0 {
 		return
 	}
-	widths := []int{15, 9, 9, 6, 7, 8, 7, 8, 0}
+	widths := []int{18, 8, 8, 6, 6, 8, 6, 8, 0}
 	a.table(0, palette.Strong, widths, " rule", "Kp", "Ki", "Ms", "PM", "GM", "over", "settle", "")
 	for i, r := range d.Rules {
 		role, hand := palette.Plain, " "

@@ -99,6 +99,12 @@ func (p *painter) lost() []line {
 func (p *painter) trip() []line {
 	d := p.v.Drive
 	rows := []line{{palette.Strong, "First cause: " + d.Trip}}
+	if q := p.v.Ask; q != nil { // the job says that it expected this trip
+		rows = append(rows, line{palette.Plain, q.Text})
+		for _, t := range q.Detail {
+			rows = append(rows, line{palette.Plain, t})
+		}
+	}
 	if d.Remedy != "" {
 		rows = append(rows, line{palette.Plain, "Do: " + d.Remedy})
 	}
