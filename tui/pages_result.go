@@ -123,7 +123,7 @@ func (p *painter) design(a area) {
 	top := pics.h * 3 / 5
 	title := "step, rpm"
 	if len(d.FoundStep) > 0 {
-		title = "rpm   dotted: as found"
+		title = "rpm   dotted: found"
 	}
 	p.curves(pics.sub(0, 0, pics.w, top), plot{title: title, unit: "s", scale: rpmPerRad, zero: true},
 		curve{strip.Forecast, d.FoundStep}, curve{strip.Data, d.Step})
