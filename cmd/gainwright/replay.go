@@ -115,6 +115,7 @@ type replay struct {
 	run                  sampleRun
 	records, badRecords  int
 	lines, requests      int
+	motion               int
 	bad, cuts, losses    int
 	remarks              int
 	firstSample, endTime time.Duration
@@ -123,7 +124,7 @@ type replay struct {
 
 // sampleRun is samples that follow one another.
 type sampleRun struct {
-	n              int
+	n, motion      int // samples; lines of the motion lane between them
 	begin          time.Duration
 	state          protocol.State
 	slow, fast     float64 // rad/s
@@ -237,7 +238,7 @@ func (p *replay) extend(s protocol.Sample) {
 	}
 	w, v := s.Speed.RPM(), float64(s.Volts)
 	if r := &p.run; r.n == 0 {
-		*r = sampleRun{begin: p.now, state: s.State, slow: w, fast: w, voltLo: v, voltHi: v}
+		*r = sampleRun{motion: r.motion, begin: p.now, state: s.State, slow: w, fast: w, voltLo: v, voltHi: v}
 	}
 	r := &p.run
 	r.n++
@@ -246,7 +247,11 @@ func (p *replay) extend(s protocol.Sample) {
 
 func (p *replay) endRun() {
 	if r := p.run; r.n > 0 {
-		fmt.Fprintf(p.out, "%12.6f < %d samples, %s, %.1f to %.1f rpm, %.3f to %.3f V\n", r.begin.Seconds(), r.n, r.state, r.slow, r.fast, r.voltLo, r.voltHi)
+		fmt.Fprintf(p.out, "%12.6f < %d samples, %s, %.1f to %.1f rpm, %.3f to %.3f V", r.begin.Seconds(), r.n, r.state, r.slow, r.fast, r.voltLo, r.voltHi)
+		if r.motion > 0 {
+			fmt.Fprintf(p.out, "; %d heartbeats or drive values to the board", r.motion)
+		}
+		fmt.Fprintln(p.out)
 	}
 	p.run = sampleRun{}
 }
@@ -256,7 +261,15 @@ func (p *replay) Line(body []byte) {
 	dir := "<"
 	if p.toBoard {
 		dir = ">"
-		p.requests++
+		if isMotion(body) {
+			p.motion++
+			if p.brief {
+				p.run.motion++
+				return
+			}
+		} else {
+			p.requests++
+		}
 	} else {
 		p.lines++
 		if rest, ok := bytes.CutPrefix(body, []byte("id ")); ok && len(p.ids) < 1000 {
@@ -265,6 +278,17 @@ func (p *replay) Line(body []byte) {
 		}
 	}
 	p.say(dir, "%s", body)
+}
+
+// isMotion reports whether a line to the board is a heartbeat or a drive value,
+// of which a run has hundreds.
+func isMotion(body []byte) bool {
+	verb, _, _ := bytes.Cut(body, []byte(" "))
+	switch string(verb) {
+	case protocol.VerbBeat, protocol.VerbVolts, protocol.VerbSpeed:
+		return true
+	}
+	return false
 }
 
 // identify reads the identity as far as it came. A board that tells it again
@@ -301,15 +325,15 @@ func (p *replay) summary() map[string]any {
 		start = p.start.Format(time.RFC3339Nano)
 	}
 	return map[string]any{"tape": p.path, "start": start, "seconds": p.endTime.Seconds(), "records": p.records, "bad_records": p.badRecords,
-		"samples": st.Samples, "lines": p.lines, "requests": p.requests, "bad_lines": p.bad, "samples_lost": st.Lost, "samples_stale": st.Stale,
+		"samples": st.Samples, "lines": p.lines, "requests": p.requests, "motion_lines": p.motion, "bad_lines": p.bad, "samples_lost": st.Lost, "samples_stale": st.Stale,
 		"noise_bytes": st.Noise, "time_jumps": st.TimeJumps, "cuts": p.cuts, "losses": p.losses, "remarks": p.remarks, "cut_short": p.cut,
 		"board": p.identity.Board, "firmware": p.identity.Firmware}
 }
 
 func (p *replay) printSummary() {
 	st := p.board.Stats
-	fmt.Fprintln(p.out, shown("%.3f s, %d records: board %s, %d samples (%d lost, %d stale), %d lines, %d to the board, %d cuts, %d bad lines, %d noise bytes, %d losses on the tape",
-		p.endTime.Seconds(), p.records, orWord(p.identity.Board), st.Samples, st.Lost, st.Stale, p.lines, p.requests, p.cuts, p.bad, st.Noise, p.losses))
+	fmt.Fprint(p.out, sheet.Wrap(fmt.Sprintf("%.3f s, %d records: board %s, %d samples (%d lost, %d stale), %d lines, %d requests, %d heartbeats or drive values, %d cuts, %d bad lines, %d noise bytes, %d losses on the tape",
+		p.endTime.Seconds(), p.records, orWord(p.identity.Board), st.Samples, st.Lost, st.Stale, p.lines, p.requests, p.motion, p.cuts, p.bad, st.Noise, p.losses), ""))
 	if p.identity.Scales.SpeedLSB == 0 && st.Samples > 0 {
 		fmt.Fprintln(p.out, "the tape holds no identity: speeds and volts above are in the wire's own units")
 	}

@@ -63,8 +63,11 @@ func (c *recomputing) walk(what string, a, b any) {
 			return
 		}
 	case []any:
-		if b, ok := b.([]any); ok && len(a) == len(b) {
-			for i := range a {
+		if b, ok := b.([]any); ok {
+			if len(a) != len(b) {
+				c.differ(what, fmt.Sprintf("%d items", len(a)), fmt.Sprintf("%d items", len(b)))
+			}
+			for i := range min(len(a), len(b)) {
 				c.walk(fmt.Sprintf("%s[%d]", what, i), a[i], b[i])
 			}
 			return
@@ -98,14 +101,17 @@ func sorted(set map[string]bool) []string {
 	return out
 }
 
+// briefMax is longer than any text of a record's analysis.
+const briefMax = 1000
+
 // brief is a JSON value in a few characters.
 func brief(v any) string {
 	b, err := rawJSON(v)
 	if err != nil {
 		return err.Error()
 	}
-	if len(b) > 120 {
-		return string(b[:117]) + "..."
+	if len(b) > briefMax {
+		return string(b[:briefMax]) + "..."
 	}
 	return string(b)
 }
