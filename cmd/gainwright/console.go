@@ -65,7 +65,7 @@ func demoCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use: "demo", Short: "open the console on a built-in simulated rig", Args: cobra.NoArgs,
 		Long: "demo opens the console on a built-in simulated rig: a board in software behind a pseudo-terminal that is opened\n" +
-			"like any port. Nothing real moves. On screen, t turns its shaft by hand and p switches its power.",
+			"like any port. Nothing real moves. On screen, t turns its shaft by hand and o switches its power.",
 		RunE: func(c *cobra.Command, _ []string) error {
 			cfg, err := demoConfig(simFile)
 			if err != nil {

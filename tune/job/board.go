@@ -52,11 +52,24 @@ func (j *Job) takeRig() error {
 	if b := j.Rig.Board; b != "" && b != j.ID.Board {
 		return refuse(718, "another board", fmt.Sprintf("the rig file is for board %q, this is %q", b, j.ID.Board), "use the rig file of this board, or correct it")
 	}
+	if len(j.RigText) == 0 {
+		if err := j.askNameplate(); err != nil {
+			return err
+		}
+	}
 	j.Env = j.Rig.Envelope()
 	j.h.Rig(j.Env)
 	j.h.Connected(j.ID, "")
 	if j.FoundRec != nil {
 		return nil
+	}
+	ids := map[string]string{}
+	for _, l := range j.IDLines {
+		k, v, _ := strings.Cut(l, " ")
+		ids[k] = strings.TrimSpace(ids[k] + " " + v)
+	}
+	if err := j.h.Keep("identity", "board", ids); err != nil {
+		return err
 	}
 	if err := j.h.KeepText("rig", j.Rig.Name, string(j.RigText)); err != nil {
 		return err
@@ -80,16 +93,6 @@ func (j *Job) readIdentity() error {
 	}
 	j.ID, j.IDLines = id, a.Lines
 	j.h.Connected(id, "")
-	if j.FoundRec == nil {
-		ids := map[string]string{}
-		for _, l := range a.Lines {
-			k, v, _ := strings.Cut(l, " ")
-			ids[k] = strings.TrimSpace(ids[k] + " " + v)
-		}
-		if err := j.h.Keep("identity", "board", ids); err != nil {
-			return err
-		}
-	}
 	return j.startTelemetry()
 }
 
