@@ -41,7 +41,7 @@ func TestReadmeHasTheCommands(t *testing.T) {
 			t.Errorf("the README says nothing of %q", n)
 		}
 	}
-	for _, m := range regexp.MustCompile("(?m)^\\| (.*?) \\|").FindAllStringSubmatch(table, -1) {
+	for _, m := range regexp.MustCompile(`(?m)^\| (.*?) \|`).FindAllStringSubmatch(table, -1) {
 		for _, c := range regexp.MustCompile("`([a-z]+)").FindAllStringSubmatch(m[1], -1) {
 			if !strings.Contains(" "+strings.Join(names, " ")+" completion ", " "+c[1]+" ") {
 				t.Errorf("the README names a command %q that does not exist", c[1])

@@ -168,7 +168,7 @@ func FuzzAnything(f *testing.F) {
 	}
 	f.Fuzz(func(t *testing.T, seed uint64, w, h int16) {
 		rng := rand.New(rand.NewPCG(seed, 7))
-		odd := []float64{math.NaN(), math.Inf(1), math.Inf(-1), 0, -0.0, 1e308, -1e308, 5e-324, 1, 24}
+		odd := []float64{math.NaN(), math.Inf(1), math.Inf(-1), 0, math.Copysign(0, -1), 1e308, -1e308, 5e-324, 1, 24}
 		pick := func() float64 {
 			if rng.IntN(2) == 0 {
 				return odd[rng.IntN(len(odd))]

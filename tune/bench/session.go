@@ -33,15 +33,14 @@ type session struct {
 	cycling   bool   // a restart is asked for and expected
 	onRestart func() // told of a restart that nobody asked for
 	boots     int    // restarts of the board seen
+	expected  int    // of them asked for
 	tapeNote  func(string)
-	written   func(at time.Duration) // a hook for the stop's time on the wire
 }
 
 // running is a run from the moment it is shown.
 type running struct {
 	spec     job.Run
 	admitted safety.Admitted
-	stops    uint // stops so far when it was shown; a later one voids it
 	asked    bool // the arm was asked for
 	declined bool
 	refused  *safety.Cause // of the newest arm that was refused

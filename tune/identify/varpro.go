@@ -219,7 +219,6 @@ func (p *projection) spanColumns(s *stretch, sp span, l layout, main [][]float64
 	if p.drift {
 		cols[at] = fresh()
 		s.constant(sp, cols[at], 1)
-		at++
 	}
 	at = l.globals
 	if p.offset == offsetOwn {

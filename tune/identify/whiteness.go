@@ -193,22 +193,6 @@ func stable(ar autoregression) bool {
 	return math.Abs(imp[len(imp)-1]) < 1e-3
 }
 
-// whiten returns w for the run e of residuals, the first values taken as they
-// are.
-func (ar autoregression) whiten(e []float64) []float64 {
-	out := make([]float64, len(e))
-	for i := range e {
-		v := e[i]
-		for k, c := range ar.coef {
-			if i-1-k >= 0 {
-				v -= c * e[i-1-k]
-			}
-		}
-		out[i] = v
-	}
-	return out
-}
-
 // backColour runs col backwards in time through 1/A, in place: the inner products
 // of two such columns times the variance are those of the columns with the
 // noise's covariance matrix between them.

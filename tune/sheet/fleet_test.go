@@ -63,8 +63,7 @@ func TestFleetReport(t *testing.T) {
 		j.header.Start = fmt.Sprintf("20%02d-06-01T00:00:00Z", 20+i)
 		j.write(t, filepath.Join(root, fmt.Sprintf("a-%d", i)))
 	}
-	list, err := List(root, Filter{})
-	if err != nil {
+	if _, err := List(root, Filter{}); err != nil {
 		t.Fatal(err)
 	}
 	broken, err := Create(filepath.Join(root, "b-9"), testHeader, testClock())
@@ -72,7 +71,10 @@ func TestFleetReport(t *testing.T) {
 		t.Fatal(err)
 	}
 	_ = broken.Close("refused", "")
-	list, _ = List(root, Filter{})
+	list, err := List(root, Filter{})
+	if err != nil {
+		t.Fatal(err)
+	}
 	members, leftOut := Members(list)
 	if len(members) != 6 || leftOut != 1 {
 		t.Fatalf("%d members, %d left out", len(members), leftOut)
