@@ -22,6 +22,8 @@ type compareReport struct {
 	OldGains    *design.Margins    `json:"old_gains_on_new_motor"`
 	Differences []sheet.Difference `json:"left_to_found"` // the board as the old job left it, and as the new one found it
 	Notes       []string           `json:"notes"`
+
+	oldMargin float64 // deg, of the old gains on the old motor; NaN where not known
 }
 
 // compareCommand sets two records, or many, side by side.
@@ -87,6 +89,10 @@ func compareTwo(oldDir, newDir string) (compareReport, error) {
 	if a, b := readers[0].Header().Rig, readers[1].Header().Rig; a != b {
 		rep.Notes = append(rep.Notes, fmt.Sprintf("these are records of two rigs: %q and %q", a, b))
 	}
+	rep.oldMargin = math.NaN()
+	if pm := motors[0].PhaseMarginDeg; pm != nil {
+		rep.oldMargin = *pm
+	}
 	rep.Rows = sheet.Compare(motors[0], motors[1])
 	if m, err := job.OldGains(readers[0], readers[1]); err == nil {
 		rep.OldGains = &m
@@ -99,11 +105,17 @@ func compareTwo(oldDir, newDir string) (compareReport, error) {
 	return rep, nil
 }
 
+// marginLost is the loss of phase margin in degrees from which it is one of the
+// reasons for a retune (our choice).
+const marginLost = 3
+
 // reasons are those for a retune: from the table, and from the old gains on the
 // new motor.
 func (rep compareReport) reasons() []string {
 	var judged sheet.MotorRecord
-	if m := rep.OldGains; m != nil && m.Stable {
+	// Gains may have been left with less than 45 degrees on purpose: only what was
+	// lost since counts.
+	if m := rep.OldGains; m != nil && m.Stable && !(float64(m.PhaseMargin) > rep.oldMargin-marginLost) {
 		judged.PhaseMarginDeg = sheet.Known(float64(m.PhaseMargin))
 	}
 	why := sheet.Retune(rep.Rows, judged)

@@ -192,6 +192,10 @@ func TestCompareCommand(t *testing.T) {
 	if len(m["retune"].([]any)) != 0 || m["old_gains_on_new_motor"] == nil {
 		t.Errorf("retune %v, old gains %v", m["retune"], m["old_gains_on_new_motor"])
 	}
+	// Gains that were left with little margin, and still have it, ask for nothing.
+	if m := object(t, exitDone, "compare", wholeJob(t), wholeJob(t), "--json"); len(m["retune"].([]any)) != 0 {
+		t.Errorf("a job against itself: retune %v", m["retune"])
+	}
 	// Another rig: its motor turns a disc, so the time constant is far off.
 	m = object(t, exitDone, "compare", dirs[0], wholeJob(t), "--json")
 	why := fmt.Sprint(m["retune"])

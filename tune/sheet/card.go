@@ -93,6 +93,10 @@ func Card(d CardData) string {
 	return strings.Join(c.lines, "\n") + "\n"
 }
 
+// reasonLines bounds the words on why a job did not come to its end; the record
+// has all of them.
+const reasonLines = 4
+
 type card struct{ lines []string }
 
 // add puts a line on the card; none is longer than the page is wide.
@@ -109,7 +113,14 @@ func (c *card) rule() { c.add("%s", strings.Repeat("-", cardColumns)) }
 func (c *card) head(d CardData) {
 	c.add("SPEED LOOP CARD   %s", text(outcomeWords(d.Outcome), 60))
 	if d.Reason != "" && d.Outcome != "accepted" && d.Outcome != "no-adjustment" {
-		c.add("reason %s", plain.Visible(d.Reason, cardColumns-7))
+		for i, l := range strings.Split(strings.TrimSuffix(wrap(d.Reason, cardColumns, "       "), "\n"), "\n") {
+			if i == 0 {
+				l = "reason " + strings.TrimSpace(l)
+			}
+			if i < reasonLines {
+				c.add("%s", l)
+			}
+		}
 	}
 	if d.Simulated {
 		c.add("SIMULATED RIG: nothing on this card was measured on a motor")

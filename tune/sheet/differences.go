@@ -21,8 +21,9 @@ const absent = "not there"
 // Differences returns what sets the board as found now apart from how it was
 // left last time: identity, gains, limits, flags, load. Numbers are compared bit
 // for bit, for the board holds what was read back from it. Bus voltage, ambient
-// temperature and boot count differ each day and are left out. Nothing returned
-// means that nobody touched it, as far as the board can tell.
+// temperature and boot count differ each day and are left out; so are the limits
+// of a board that was started since, for those of a session end with it. Nothing
+// returned means that nobody touched it, as far as the board can tell.
 func Differences(left, found Snapshot) []Difference {
 	var out []Difference
 	add := func(what, old, new string) {
@@ -45,9 +46,11 @@ func Differences(left, found Snapshot) []Difference {
 	}
 	each("running", keyed(left.Running), keyed(found.Running))
 	each("stored", keyed(left.Stored), keyed(found.Stored))
-	each("limit", named(left.Limits), named(found.Limits))
+	if left.BootCount == nil || found.BootCount == nil || *left.BootCount == *found.BootCount {
+		each("limit", named(left.Limits), named(found.Limits))
+	}
 	add("flags", strings.Join(left.Flags, ", "), strings.Join(found.Flags, ", "))
-	each("identity", left.Identity, found.Identity)
+	each("identity", withoutBoot(left.Identity), withoutBoot(found.Identity))
 	add("load", left.LoadState, found.LoadState)
 	return out
 }
@@ -59,10 +62,29 @@ func orAbsent(s string) string {
 	return s
 }
 
-// keyed reads gains as names and values; null is not there.
+// withoutBoot is an identity without its boot count.
+func withoutBoot(id map[string]string) map[string]string {
+	out := maps.Clone(id)
+	delete(out, "boot")
+	return out
+}
+
+// keyed reads gains as names and values; null is not there. The board's words are
+// read one by one, and only where they are all there is: else the values beside
+// them say the same.
 func keyed(raw json.RawMessage) map[string]string {
 	out := map[string]string{}
-	for _, row := range flat(raw) {
+	rows := flat(raw)
+	lawKnown := slices.ContainsFunc(rows, func(r []string) bool { return r[0] == "form" })
+	for _, row := range rows {
+		if row[0] == "words" {
+			for _, w := range flat(json.RawMessage(row[1])) {
+				if !lawKnown {
+					out["word "+w[0]] = strings.Trim(w[1], `"`)
+				}
+			}
+			continue
+		}
 		if row[1] != "null" {
 			out[row[0]] = strings.Trim(row[1], `"`)
 		}

@@ -65,3 +65,27 @@ func TestLastLeft(t *testing.T) {
 		t.Errorf("another rig: %v", err)
 	}
 }
+
+// The limits of a session end with a restart of the board: they are compared only
+// where it kept running. The boot count itself is no difference.
+func TestDifferencesAfterARestart(t *testing.T) {
+	left := Snapshot{BootCount: ptr(42), Identity: map[string]string{"boot": "42 power"}, Limits: []Quantity{{Name: "wmax", Value: ptr(335.0), Unit: "rad/s"}}}
+	found := left
+	found.Limits = []Quantity{{Name: "wmax", Value: ptr(502.5), Unit: "rad/s"}}
+	if d := Differences(left, found); len(d) != 1 || d[0].What != "limit wmax" {
+		t.Errorf("without a restart: %v", d)
+	}
+	found.BootCount, found.Identity = ptr(43), map[string]string{"boot": "43 power"}
+	if d := Differences(left, found); len(d) != 0 {
+		t.Errorf("after a restart: %v", d)
+	}
+}
+
+// A board's words count where the law beside them is not known.
+func TestDifferencesOfWords(t *testing.T) {
+	left := Snapshot{Running: []byte(`{"note":"integer gains","words":{"kp":"00000010","ki":"00000020"}}`)}
+	found := Snapshot{Running: []byte(`{"note":"integer gains","words":{"kp":"00000011","ki":"00000020"}}`)}
+	if d := Differences(left, found); len(d) != 1 || d[0].What != "running word kp" || d[0].New != "00000011" {
+		t.Errorf("%v", d)
+	}
+}
