@@ -23,6 +23,7 @@ type compareReport struct {
 	Differences []sheet.Difference `json:"left_to_found"` // the board as the old job left it, and as the new one found it
 	Notes       []string           `json:"notes"`
 
+	readers   [2]*sheet.Reader
 	oldMargin float64 // deg, of the old gains on the old motor; NaN where not known
 }
 
@@ -34,7 +35,8 @@ func compareCommand() *cobra.Command {
 		Use: "compare OLD NEW", Short: "set two records side by side: old, new, change, allowed, verdict", Args: cobra.MaximumNArgs(2),
 		Long: "compare sets the motor of a later record against that of an earlier one, says whether a retune is due and what\n" +
 			"the old gains would do on the new motor, and what changed on the board between the two jobs. Change is new over\n" +
-			"old less one. With --folder it compares all records of a folder in one table: median, spread, drift, outliers.",
+			"old less one. With --html the later verify is drawn over the earlier one. With --folder it compares all records\n" +
+			"of a folder in one table: median, spread, drift, outliers.",
 		RunE: func(c *cobra.Command, args []string) error {
 			if folder != "" {
 				if len(args) > 0 {
@@ -49,6 +51,14 @@ func compareCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
+			if html != "" {
+				if html == "-" && asJSON {
+					return usage(errors.New("--html - and --json both want standard output"))
+				}
+				if err := writeNew(c, html, rep.page()); err != nil || html == "-" {
+					return err
+				}
+			}
 			if asJSON {
 				return printJSON(c.OutOrStdout(), rep)
 			}
@@ -59,14 +69,14 @@ func compareCommand() *cobra.Command {
 	c.Flags().StringVar(&folder, "folder", "", "compare all records in this folder")
 	c.Flags().StringVar(&rigName, "rig", "", "with --folder: only records of this rig")
 	c.Flags().StringVar(&board, "board", "", "with --folder: only records of this board")
-	c.Flags().StringVar(&html, "html", "", "with --folder: write table and plots into this new file; - for standard output")
+	c.Flags().StringVar(&html, "html", "", "write table and plots into this new file; - for standard output")
 	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object")
 	return c
 }
 
 func compareTwo(oldDir, newDir string) (compareReport, error) {
 	rep := compareReport{Old: oldDir, New: newDir, Retune: []string{}, Offers: []string{}, Notes: []string{}, Differences: []sheet.Difference{}}
-	var readers [2]*sheet.Reader
+	readers := &rep.readers
 	var motors [2]sheet.MotorRecord
 	for i, dir := range []string{oldDir, newDir} {
 		r, problems, err := openSheet(dir)
@@ -166,6 +176,16 @@ func leftToFound(old, new *sheet.Reader) []sheet.Difference {
 		return nil
 	}
 	return sheet.Differences(left, found)
+}
+
+// page is the comparison as one HTML page.
+func (rep compareReport) page() string {
+	var words []string
+	for _, w := range rep.Retune {
+		words = append(words, "retune is due: "+w)
+	}
+	words = append(append(words, rep.Offers...), rep.Notes...)
+	return sheet.CompareReport(rep.readers[0], rep.readers[1], rep.Rows, words)
 }
 
 func (rep compareReport) print(c *cobra.Command) {

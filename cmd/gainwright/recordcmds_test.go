@@ -211,6 +211,14 @@ func TestCompareCommand(t *testing.T) {
 			t.Errorf("over 80 columns: %q", l)
 		}
 	}
+	code, page, _ := command("compare", wholeJob(t), wholeJob(t), "--html", "-")
+	if code != exitDone || !strings.Contains(page, "verify: old and new") || !strings.Contains(page, "R at 25") || strings.Contains(page, "<script") {
+		t.Errorf("exit %d, page of %d bytes", code, len(page))
+	}
+	code, page, _ = command("compare", dirs[0], wholeJob(t), "--html", "-")
+	if code != exitDone || !strings.Contains(page, "rec00001 holds no verify to draw") {
+		t.Errorf("exit %d: a record without a verify", code)
+	}
 	code, out, _ = command("compare", "--folder", sheetsDir)
 	if code != exitDone || !strings.Contains(out, "2 records compared") || width(out) > 80 {
 		t.Errorf("exit %d\n%s", code, out)
