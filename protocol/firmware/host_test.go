@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"net"
 	"os"
 	"os/exec"
 	"path/filepath"
@@ -115,7 +116,8 @@ type board struct {
 	n       uint16
 	token   uint16
 	k       uint16
-	limits  uint16 // CRC of the limits in use
+	limits  uint16   // CRC of the limits in use
+	live    net.Conn // an emulator that runs in real time; nil: host/host.c
 }
 
 func (b *board) Sample(s protocol.Sample)           { b.samples = append(b.samples, s) }
@@ -176,13 +178,26 @@ func (b *board) order(op byte, arg uint32, payload []byte) []byte {
 // run lets so many ms pass.
 func (b *board) run(ms float64) {
 	b.t.Helper()
+	if b.live != nil {
+		b.runLive(ms)
+		return
+	}
 	out := b.order('R', uint32(ms*1000), nil)
 	b.raw = append(b.raw, out...)
 	b.framer.Feed(out, b)
 }
 
 // send puts bytes on the line, at the line's rate.
-func (b *board) send(p []byte) { b.t.Helper(); b.order('B', uint32(len(p)), p) }
+func (b *board) send(p []byte) {
+	b.t.Helper()
+	if b.live == nil {
+		b.order('B', uint32(len(p)), p)
+		return
+	}
+	if _, err := b.live.Write(p); err != nil {
+		b.t.Fatal(err)
+	}
+}
 
 // now hands bytes to the receive interrupt at once, with nothing between.
 func (b *board) now(p []byte) { b.t.Helper(); b.order('D', uint32(len(p)), p) }

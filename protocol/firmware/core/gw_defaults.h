@@ -11,7 +11,7 @@
 #define GW_FIXED 0 /* 1: the law is computed in integers */
 #endif
 #ifndef GW_DELAY_US
-#define GW_DELAY_US 0L
+#define GW_DELAY_US 0
 #endif
 #ifndef GW_ENC_SIDE
 #define GW_ENC_SIDE "motor"
@@ -96,6 +96,10 @@
 #ifndef GW_FLASH /* constants stay in flash where that is another memory */
 #define GW_FLASH
 #define GW_FLASH_BYTE(p) (*(const uint8_t *)(p))
+#endif
+
+#if GW_TX_SIZE < 144
+#error "GW_TX_SIZE: a whole line of 128 bytes must fit"
 #endif
 
 #define GW_HAS_CURRENT (GW_CURRENT_LSB_MA > 0)

@@ -105,7 +105,7 @@ void gw_id_poll(void)
 	static uint8_t value;
 	char c;
 
-	if (!gw_room(GW_ANSWER_SIZE))
+	if (!gw_room(127)) /* the longest line there may be */
 		return;
 	if (g.job_step == 0) {
 		g.job_at = text;

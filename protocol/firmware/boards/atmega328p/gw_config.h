@@ -11,8 +11,10 @@
 #define GW_LOOP_US 2000
 #define GW_WIN 4
 #define GW_CPT 2000.0f
+#if BOARD_SIM /* without the simulated motor neither is measured */
 #define GW_CURRENT_LSB_MA 1
 #define GW_BUS_LSB_MV 2
+#endif
 #define GW_BUS_NOMINAL 24.0f
 #define GW_VMAX 24.0f
 #define GW_WMAX 600.0f

@@ -223,8 +223,8 @@ int main(void)
 	TCCR1B = _BV(WGM12) | _BV(CS11); /* 2 MHz, clear on compare */
 	OCR1A = (uint16_t)(GW_LOOP_US * 2 - 1);
 	gw_init();
-	UBRR0 = 16; /* 115200 baud, 2.1 % fast */
-	UCSR0A = _BV(U2X0);
+	UCSR0A = _BV(U2X0); /* first: an emulator looks at it when the rate is set */
+	UBRR0 = 16;         /* 115200 baud, 2.1 % fast */
 	UCSR0C = _BV(UCSZ01) | _BV(UCSZ00);
 	UCSR0B = _BV(RXEN0) | _BV(TXEN0) | _BV(RXCIE0);
 	TIMSK1 = _BV(OCIE1A);
