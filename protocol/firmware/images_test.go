@@ -10,11 +10,14 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
+	"sync"
 	"testing"
 	"time"
 
 	"gainwright/protocol"
 )
+
+var building sync.Mutex
 
 // needImage builds everything that can be built here and returns the path of one
 // part, or skips with a word.
@@ -23,6 +26,8 @@ func needImage(t *testing.T, programs []string, name string) string {
 	for _, p := range programs {
 		need(t, p)
 	}
+	building.Lock()
+	defer building.Unlock()
 	dir := filepath.Join(buildDir, "images")
 	path := filepath.Join(dir, name)
 	if _, err := os.Stat(path); err != nil {
@@ -125,6 +130,7 @@ func (b *board) closedLoop(names []string) {
 // TestATmega328P runs the 8-bit image under libsimavr, in the emulator's own
 // time, and looks at how deep the stack went.
 func TestATmega328P(t *testing.T) {
+	t.Parallel()
 	programs := []string{"gcc", "avr-gcc"}
 	for _, image := range []string{"m328-sim.elf", "m328-sim-fixed.elf"} {
 		t.Run(image, func(t *testing.T) {
@@ -161,6 +167,7 @@ func TestATmega328P(t *testing.T) {
 
 // TestCortexM3 runs the 32-bit image under QEMU, in real time, over a socket.
 func TestCortexM3(t *testing.T) {
+	t.Parallel() // it waits most of the time
 	image := needImage(t, []string{"arm-none-eabi-gcc", "qemu-system-arm"}, "an385.elf")
 	path := filepath.Join(buildDir, "uart")
 	cmd := exec.Command("qemu-system-arm", "-M", "mps2-an385", "-kernel", image, "-display", "none", "-monitor", "none", "-nodefaults",

@@ -11,6 +11,7 @@ small="-Os -ffunction-sections -fdata-sections -Wl,--gc-sections"
 
 if command -v gcc >/dev/null; then
 	gcc -std=c99 -O2 -pedantic $warn -Icore -Ihost core/*.c host/*.c -lm -o "$out/gwhost"
+	gcc -std=gnu99 -O2 $warn boards/bridge.c -o "$out/bridge"
 	gcc -std=c99 -O2 -pedantic $warn -DGW_FIXED=1 -Icore -Ihost core/*.c host/*.c -lm -o "$out/gwhost-fixed"
 else
 	echo "gcc is missing: no host program"

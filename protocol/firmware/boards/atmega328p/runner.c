@@ -26,7 +26,7 @@
 
 static avr_t *avr;
 static avr_irq_t *to_uart;
-static FILE *say; /* our standard output: the library writes to the other */
+static FILE *say; /* our standard output: the library chats on stdout */
 static int open_in = 1; /* the UART's input has room */
 static uint8_t in[1 << 16], out[1 << 20];
 static size_t in_n, in_at, out_n;
@@ -212,8 +212,7 @@ int main(int argc, char **argv)
 		return 2;
 	}
 	say = fdopen(dup(1), "w");
-	dup2(2, 1);
-	if (say == NULL)
+	if (say == NULL || freopen("/dev/null", "w", stdout) == NULL)
 		return 1;
 	if (elf_read_firmware(argv[1], &f) != 0 || (avr = avr_make_mcu_by_name("atmega328p")) == NULL) {
 		fprintf(stderr, "avrrun: cannot load %s\n", argv[1]);

@@ -115,9 +115,9 @@ int gw_port_store_write(uint16_t at, const uint8_t *from, uint8_t n)
 
 static void uart_rx(void)
 {
+	UART_CLEAR = 2u; /* first: a byte that comes after the last look asks again */
 	while (UART_STATE & 2u)
 		gw_rx_byte((uint8_t)UART_DATA);
-	UART_CLEAR = 2u;
 }
 
 static void tick(void)
