@@ -83,7 +83,7 @@ func TestNoTripWithoutCause(t *testing.T) {
 
 // Braking turns against the drive for a while, and that is no wrong way.
 func TestReversalIsNotTheWrongWay(t *testing.T) {
-	b := ready(t, map[string]float64{"wrong": 0.05})
+	b := ready(t, map[string]float64{"wrong": 0.01})
 	for i := range 40 {
 		v := 5.0
 		if i/10%2 == 1 {
