@@ -57,6 +57,14 @@ func (f *Framer) Reset() {
 	*f = Framer{Scales: f.Scales, Stats: f.Stats, fields: f.fields}
 }
 
+// Restarted forgets the sequence and what belongs to it, as after a start of the
+// board: its numbers, time and counts begin anew. The line in hand stays. A
+// Handler may call it.
+func (f *Framer) Restarted() {
+	f.started, f.hasExtra, f.counting = false, false, false
+	f.slowNow = Slow{}
+}
+
 // Pending returns the number of bytes of the line in hand.
 func (f *Framer) Pending() int { return f.n }
 

@@ -146,6 +146,9 @@ func (c *Core) Connected(now time.Duration, id protocol.Identity, why string) {
 	c.id = id
 	c.framer.Scales = id.Scales
 	c.connected, c.lost = true, false
+	if c.boots >= 0 && c.boots != int(id.Boots) {
+		c.framer.Restarted()
+	}
 	c.boots = int(id.Boots)
 	c.lookOnly = id.LookOnly()
 	if c.lookOnly == "" {

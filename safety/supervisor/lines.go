@@ -73,6 +73,7 @@ func (c *Core) cut(w []string) {
 
 func (c *Core) restarted(boots int, why string) {
 	c.boots = boots
+	c.framer.Restarted()
 	c.void()
 	c.connected = false
 	c.Do(safety.BoardRestarted{At: c.now})

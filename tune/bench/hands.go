@@ -136,23 +136,40 @@ func (h *hands) Wrote(ok bool) {
 	h.do(func(s *session) { s.core.Do(safety.WriteDone{At: s.now, OK: ok}) })
 }
 
+func (h *hands) Line() (l job.LineState) {
+	h.do(func(s *session) { l = job.LineState{Stats: s.core.Link().Stats, Restarts: s.boots - s.expected} })
+	return l
+}
+
+// cutAnswer is how long a board may take to answer a cut; SPEC asks for
+// milliseconds, and a slow line adds a few.
+const cutAnswer = 2 * time.Second
+
 func (h *hands) StopKey(q job.Question) (job.StopSeen, error) {
-	before := 0
+	before, asked, since := 0, uint(0), time.Duration(0)
 	h.do(func(s *session) {
 		s.askID++
 		q.ID = s.askID
 		s.asking, s.answer = &q, nil
-		before = s.stops
+		before, asked = s.stops, s.core.State().Stops
 	})
+	mute := false
 	err := h.until(0, func(s *session) bool {
-		return s.answer != nil || s.stops > before && s.lastStop.Source == safety.ByStopKey
+		if since == 0 && s.core.State().Stops > asked {
+			since = s.now
+		}
+		mute = since > 0 && s.now-since > cutAnswer && s.stops == before
+		return mute || s.answer != nil || s.stops > before && s.lastStop.Source == safety.ByStopKey
 	})
+	if mute && err == nil {
+		err = job.ErrNoCut
+	}
 	var seen job.StopSeen
 	h.do(func(s *session) {
 		s.asking = nil
 		if s.answer != nil {
 			err = errors.Join(err, job.ErrDeclined)
-		} else if s.lastStop != nil {
+		} else if s.lastStop != nil && err == nil {
 			seen = stopSeen(s)
 		}
 		s.answer = nil
@@ -169,11 +186,18 @@ func stopSeen(s *session) job.StopSeen {
 func (h *hands) ClearTrip(q job.Question) error {
 	h.do(func(s *session) { s.askID++; q.ID = s.askID; s.asking, s.answer = &q, nil })
 	// Both the console's trip and the board's have to be gone.
+	declined := false
 	err := h.until(0, func(s *session) bool {
 		st := s.core.State()
+		if declined = s.answer != nil && s.answer.ID < 0; declined {
+			return true
+		}
 		return st.Phase == safety.Disarmed && st.Heard && st.Last.State == protocol.Off && !st.Last.TripHeld
 	})
 	h.do(func(s *session) { s.asking, s.answer = nil, nil })
+	if declined && err == nil {
+		err = job.ErrDeclined
+	}
 	return err
 }
 
@@ -198,7 +222,7 @@ func (h *hands) PowerCycle(q job.Question) error {
 	h.Stream(false) // silence is what is asked for
 	h.cycle()
 	err := h.restart(before, boots)
-	h.do(func(s *session) { s.asking, s.answer, s.cycling = nil, nil, false })
+	h.do(func(s *session) { s.expected += s.boots - before; s.asking, s.answer, s.cycling = nil, nil, false })
 	return err
 }
 
@@ -264,6 +288,10 @@ func (h *hands) Run(spec job.Run) (job.Result, error) {
 	h.put(r)
 	if err != nil {
 		return job.Result{}, err
+	}
+	if n := h.Line().Restarts; n > 0 && r.declined && r.refused != nil {
+		return job.Result{}, &job.RefusedError{Number: 727, What: spec.Plan.Name, Cause: fmt.Sprintf("the board restarted by itself, %d times in this session", n),
+			Remedy: "look for dips of its supply and for a watchdog; then start again at the identity"}
 	}
 	if r.declined && r.refused != nil {
 		return job.Result{}, &job.RefusedError{Number: int(r.refused.Code), What: "arm refused", Cause: r.refused.Words, Remedy: r.refused.Do}

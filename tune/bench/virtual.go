@@ -34,7 +34,7 @@ type Virtual struct {
 
 // budgetMax bounds a virtual job: a step that never ends is a fault of ours, and
 // has to show.
-const budgetMax = 2 * time.Hour
+const budgetMax = time.Hour
 
 // NewVirtual puts a rig on the bench. start is the time of day that the record
 // shows.
@@ -61,7 +61,7 @@ func (v *Virtual) do(f func(*session)) { f(v.s) }
 func (v *Virtual) wall() time.Time { return v.start.Add(v.s.now) }
 
 // errBudget is a job that does not come to an end.
-var errBudget = errors.New("bench: the job does not come to an end in two hours of virtual time")
+var errBudget = errors.New("bench: the job does not come to an end in an hour of virtual time")
 
 func (v *Virtual) until(limit time.Duration, cond func(*session) bool) error {
 	end := v.s.now + limit
@@ -180,6 +180,7 @@ const (
 	turningTime = 2600 * time.Millisecond
 	stopAfter   = 1500 * time.Millisecond
 	patience    = 20 * time.Second
+	givesUp     = time.Minute
 )
 
 func (o *operator) act(v *Virtual) {
@@ -199,6 +200,10 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 	}
 	waited := s.now - o.askAt
 	if waited < readingTime {
+		return
+	}
+	if waited > givesUp {
+		s.intent(job.Decline{})
 		return
 	}
 	switch st := s.core.State(); {

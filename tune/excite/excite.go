@@ -266,9 +266,12 @@ func PRBS(k Known, bias, amplitude float64, clock time.Duration, bits int, seed 
 	return safety.Plan{Name: "prbs", Purpose: "a record that the model has not seen", Segments: b.segs}
 }
 
-// Setpoint is a closed-loop profile: levels in rad/s, each held for hold.
-func Setpoint(k Known, name, purpose string, levels []float64, hold time.Duration) safety.Plan {
+// Setpoint is a closed-loop profile: levels in rad/s, each held for hold, the
+// way to it included. slope is how fast the setpoint moves, in rad/s²; the
+// envelope may make it slower.
+func Setpoint(k Known, name, purpose string, levels []float64, hold time.Duration, slope float64) safety.Plan {
 	b := speeds(k.Env)
+	b.slope = math.Min(b.slope, slope)
 	for _, v := range levels {
 		b.hold(v, hold, fmt.Sprintf("%.0f rpm", v*60/(2*math.Pi)))
 	}

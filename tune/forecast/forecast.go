@@ -57,7 +57,7 @@ type Forecast struct {
 	PeakCurrent      model.Value   `json:"peak_current_A"`
 	Energy           model.Value   `json:"energy_J"`   // from the supply
 	Heat             model.Value   `json:"heat_J"`     // in the winding
-	BusRise          model.Value   `json:"bus_rise_V"` // if all of ½·J·ω² goes into the bus capacitance
+	BusRise          model.Value   `json:"bus_rise_V"` // of what braking returns, or of all ½·J·ω² where that is not known
 	Turns            model.Value   `json:"turns"`      // largest distance from the start, either way
 	CoastTurns       model.Value   `json:"coast_turns"`
 	Duration         time.Duration `json:"duration_ns"`
@@ -104,7 +104,7 @@ func Of(p safety.Plan, k Known) (Forecast, error) {
 	if k.Resistance > 0 {
 		f.PeakCurrent, f.Energy, f.Heat = model.Value(loaded.peak), model.Value(loaded.energy), model.Value(loaded.heat)
 	}
-	f.BusRise = s.busRise(f.TopSpeedUnloaded)
+	f.BusRise = s.busRise(f.TopSpeedUnloaded, math.Max(free.back, loaded.back))
 	f.CoastTurns = s.coast(loaded.last)
 	return f, nil
 }
@@ -199,18 +199,25 @@ func slowest(m model.Linear) (tau float64) {
 	return tau
 }
 
-// busRise puts the whole kinetic energy of the top speed into the capacitance of
-// the bus: an upper bound, since winding and friction take their part.
-func (s *system) busRise(top model.Value) model.Value {
+// busRise is what the capacitance of the bus makes of the energy that comes back.
+// Where resistance and time constant are known that is what braking returns in
+// the course of the plan: output off lets the motor coast, which returns none.
+// Else the whole kinetic energy of the top speed is the bound.
+func (s *system) busRise(top model.Value, back float64) model.Value {
 	k := s.k
 	switch {
 	case !k.CanBrake || k.SupplyCanSink:
 		return 0
-	case s.inertia <= 0 || k.BusCapacitance <= 0 || k.BusNominal <= 0:
+	case k.BusCapacitance <= 0 || k.BusNominal <= 0:
 		return model.Unknown
+	case k.Resistance <= 0 || !s.tauKnown:
+		if s.inertia <= 0 {
+			return model.Unknown
+		}
+		w := float64(top)
+		back = s.inertia * w * w / 2
 	}
-	w := float64(top)
-	return model.Value(math.Sqrt(k.BusNominal*k.BusNominal+s.inertia*w*w/k.BusCapacitance) - k.BusNominal)
+	return model.Value(math.Sqrt(k.BusNominal*k.BusNominal+2*back/k.BusCapacitance) - k.BusNominal)
 }
 
 // coast returns the turns from a speed to rest with the output off, by dry

@@ -42,8 +42,9 @@ func TestAgainstClosedFormsOfTheMotor(t *testing.T) {
 	near(t, "heat", f.Heat, v*v*tau/(2*r), 0.03) // steps of 1 ms against 36 ms
 	near(t, "energy", f.Energy, v*v*tau/r, 0.03)
 	near(t, "turns", f.Turns, v/ke*(1-tau)/(2*math.Pi), 1e-3)
-	energy := j * (v / ke) * (v / ke) / 2
-	near(t, "bus rise", f.BusRise, math.Sqrt(144+2*energy/1e-3)-12, 1e-9)
+	if f.BusRise != 0 { // nothing brakes, and off is a coast
+		t.Errorf("bus rise %g V of a motor that only speeds up", f.BusRise)
+	}
 	if f.Duration != time.Second || f.Band != bandNameplate {
 		t.Errorf("duration %v, band %g", f.Duration, f.Band)
 	}
@@ -66,6 +67,29 @@ func TestAgainstClosedFormsOfTheMotor(t *testing.T) {
 	if math.Abs(g.Band-0.1) > 1e-12 {
 		t.Errorf("band %g, want the ±10 %% of the fit", g.Band)
 	}
+}
+
+// From the speed Ω at the drive Ke·Ω a drop to half of that drive gives back the
+// most: ω(t) = Ω/2·(1 + e^(−t/τ)), i = −Ke·Ω/(2R)·e^(−t/τ), and ∫ u·|i| dt =
+// Ke²Ω²τ/(4R) = ½·(½JΩ²). Down to no drive the winding is shorted and gives back
+// nothing.
+func TestBrakingGivesBackHalfAtMost(t *testing.T) {
+	const r, ke, j, v, farads = 2.3, 0.0213, 7.1e-6, 12.0, 1e-3
+	k := Known{Resistance: r, Ke: ke, Inertia: j, BusNominal: 12, BusCapacitance: farads, CanBrake: true}
+	f, err := Of(plan(volts(v, v, time.Second), volts(v/2, v/2, time.Second)), k)
+	if err != nil {
+		t.Fatal(err)
+	}
+	energy := j * (v / ke) * (v / ke) / 4
+	near(t, "bus rise", f.BusRise, math.Sqrt(144+2*energy/farads)-12, 0.03) // steps of 1 ms against 36 ms
+	if f, err = Of(plan(volts(v, v, time.Second), volts(0, 0, time.Second)), k); err != nil || f.BusRise > 1e-9 {
+		t.Errorf("to no drive: bus rise %g V, %v", f.BusRise, err)
+	}
+	k.Resistance = 0 // then all of ½JΩ² is the bound
+	if f, err = Of(plan(volts(v, v, time.Second)), k); err != nil {
+		t.Fatal(err)
+	}
+	near(t, "bound of the bus rise", f.BusRise, math.Sqrt(144+4*energy/farads)-12, 1e-9)
 }
 
 func TestFrictionLowersTheTopSpeedOnly(t *testing.T) {

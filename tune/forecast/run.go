@@ -18,6 +18,7 @@ const (
 type course struct {
 	top, far           float64 // rad/s, rad
 	peak, energy, heat float64 // A, J, J; for the resistance known
+	back               float64 // J, the most that the bus holds of what braking gave back
 	last               float64 // rad/s at the end
 	line               Line
 }
@@ -34,6 +35,7 @@ type runner struct {
 	speed  float64
 	keep   float64 // s between points of the line
 	rested float64 // s at rest so far
+	bank   float64 // J given back and not drawn again
 }
 
 // run simulates the plan. free leaves out friction and early ends.
@@ -85,6 +87,8 @@ func (r *runner) power(drive, before, h float64) {
 	r.c.peak = math.Max(r.c.peak, math.Abs(current))
 	r.c.heat += current * current * ohm * h
 	r.c.energy += math.Max(0, drive*current) * h
+	r.bank = math.Max(0, r.bank-drive*current*h)
+	r.c.back = math.Max(r.c.back, r.bank)
 }
 
 func (r *runner) openLoop(seg safety.Segment, n int, h float64) {

@@ -82,6 +82,10 @@ func (j *Job) takeRig() error {
 func (j *Job) readIdentity() error {
 	a, err := j.h.Request(protocol.VerbID, "")
 	if err != nil {
+		if l := j.h.Line(); errors.Is(err, protocol.ErrNoAnswer) && l.BadLines > 0 && l.Samples+l.Lines == 0 {
+			return refuse(761, "no identity", fmt.Sprintf("%d lines came, every one with a wrong check code or malformed", l.BadLines),
+				"look at the baud rate first; if it is right, the firmware works out its CRC in another way (SPEC P1)")
+		}
 		if errors.Is(err, protocol.ErrNoAnswer) {
 			return refuse(702, "no identity", "the board does not answer id, or answers nonsense", "look at cable, power and baud rate; the board must speak protocol 1.x")
 		}
@@ -106,13 +110,36 @@ func (j *Job) startTelemetry() error {
 			last = err
 			continue
 		}
-		if err == nil {
-			j.Hz = hz
-			j.h.Stream(true)
+		if err != nil {
+			return err
 		}
-		return err
+		j.Hz = hz
+		j.h.Stream(true)
+		if j.FoundRec != nil { // seen before; just after a restart old numbers are still about
+			return nil
+		}
+		return j.numbered()
 	}
 	return last
+}
+
+// staleShare is the share of doubled samples above which their numbers say
+// nothing; a few come where a line is retried.
+const staleShare = 0.03
+
+// numbered sees that telemetry counts its samples: freshness is judged by that.
+func (j *Job) numbered() error {
+	before := j.h.Line()
+	if _, err := j.h.Watch(300 * time.Millisecond); err != nil {
+		return err
+	}
+	now := j.h.Line()
+	stale, good := now.Stale-before.Stale, now.Samples-before.Samples
+	if float64(stale) > staleShare*float64(stale+good) && stale > 1 {
+		return refuse(726, "telemetry", fmt.Sprintf("%d of %d samples repeat a number or come out of order", stale, stale+good),
+			"the firmware has to number its samples one by one (SPEC P5); until then the board is look-only")
+	}
+	return nil
 }
 
 // fits refuses a board that is not the one the rig file describes.

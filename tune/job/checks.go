@@ -52,7 +52,12 @@ func (j *Job) doCount() (result, error) {
 	seen, err := j.h.StopKey(Question{Kind: AskStopKey, Text: "Press the stop key now: space",
 		Detail: []string{"Nothing moves. The time from the key to the wire to the board's answer is kept."}})
 	ok := err == nil && seen.Cuts > 0
-	j.check("stop key", "board", ok, stopFinding(seen), stopQuantities(seen)...)
+	finding = stopFinding(seen)
+	if errors.Is(err, ErrNoCut) {
+		finding = err.Error()
+		err = refuse(762, "stop key", finding, "a board that does not answer a cut is look-only: use the E-stop, mend the firmware")
+	}
+	j.check("stop key", "board", ok, finding, stopQuantities(seen)...)
 	if err != nil {
 		return "", err
 	}
@@ -84,7 +89,7 @@ func judgeCount(got, want float64) (string, error) {
 	case math.Abs(ratio-1) <= countSlack:
 		return fmt.Sprintf("%.0f counts for one turn by hand, %.0f expected", got, want), nil
 	case got == 0:
-		return "", refuse(710, "count check", "one turn counted nothing", "look at the encoder's plug and supply")
+		return "", refuse(760, "count check", "one turn counted nothing", "look at the encoder's plug and supply")
 	}
 	for _, f := range []float64{0.25, 0.5, 2, 4} {
 		if math.Abs(ratio/f-1) <= countSlack {
@@ -93,7 +98,7 @@ func judgeCount(got, want float64) (string, error) {
 		}
 	}
 	return "", refuse(710, "count check", fmt.Sprintf("one turn counted %.0f, expected were %.0f", got, want),
-		"turn exactly one turn and try again; if it stays, correct counts per turn or gear ratio")
+		"turn exactly one turn and try again; if it changes from turn to turn the encoder or its coupling slips; if it stays, correct counts per turn or gear ratio")
 }
 
 func speedNoise(s []protocol.Sample) float64 {
@@ -247,8 +252,39 @@ func stopQuantities(s StopSeen) []sheet.Quantity {
 	return []sheet.Quantity{{Name: "key to wire", Value: &a, Unit: "ms"}, {Name: "wire to the board's answer", Value: &b, Unit: "ms"}}
 }
 
+// numberLife is how long a one-time number is good, by the protocol, and a little.
+const numberLife = 2200 * time.Millisecond
+
+// oldNumber sees that the board refuses to arm on a one-time number that has
+// lapsed: one that takes it would take a line that was delayed or repeated.
+func (j *Job) oldNumber() error {
+	a, err := j.h.Request(protocol.VerbNonce, "")
+	if err != nil {
+		return err
+	}
+	if _, err := j.h.Watch(numberLife); err != nil {
+		return err
+	}
+	_, err = j.h.Request(protocol.VerbArm, fmt.Sprintf("%s %04X", a.Field(0), j.LimitsCRC))
+	var no *protocol.RefusedError
+	switch {
+	case errors.As(err, &no):
+		j.check("old number", "board", true, "an arm on a one-time number that had lapsed was refused: "+no.Error())
+		return nil
+	case err != nil:
+		return err
+	}
+	_, off := j.h.Request(protocol.VerbDisarm, "")
+	finding := "the board armed on a one-time number that had lapsed"
+	j.check("old number", "board", false, finding)
+	return errors.Join(refuse(719, "silence check", finding, "such a board may arm on a delayed line: it is look-only until its firmware is mended"), off)
+}
+
 // doSilence goes silent at creep speed; the board must stop by itself.
 func (j *Job) doSilence() (result, error) {
+	if err := j.oldNumber(); err != nil {
+		return "", err
+	}
 	plan := excite.Creep(j.sizing(), safety.CheckSilence, 4*time.Second)
 	r, err := j.run(StepSilence, plan, nil)
 	if err != nil {
@@ -299,7 +335,10 @@ func (j *Job) doLimits() (result, error) {
 	}
 	l := r.BoardStop
 	if l == nil || l.Cause != protocol.CauseSpeed {
-		finding := "the board did not trip at its speed ceiling: " + r.Cause.Words
+		finding := "the board did not trip at its speed ceiling"
+		if r.Cause.Words != "" {
+			finding += ": " + r.Cause.Words
+		}
 		j.check("limit", "board", false, finding)
 		return "", refuse(717, "limit check", finding, "a board that does not keep its limits is look-only")
 	}

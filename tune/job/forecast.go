@@ -20,6 +20,14 @@ func (j *Job) known() forecast.Known {
 	if j.Margins != nil && j.Margins.Crossover.Known() && j.Pushed {
 		k.LoopTau, k.LoopOvershoot = 1/float64(j.Margins.Crossover), orZero(float64(j.Margins.Step.Overshoot))/100
 	}
+	if j.electric != nil && j.Tau > 0 {
+		// Before the time constant is known, a resistance alone would forecast the
+		// current of a stalled shaft.
+		k.Resistance = j.electric.R
+		if j.electric.Ke > 0 {
+			k.Ke = j.electric.Ke
+		}
+	}
 	f := j.friction()
 	k.CoulombForward, k.CoulombReverse, k.BreakawayForward, k.BreakawayReverse = f.CoulombForward, f.CoulombReverse, f.BreakawayForward, f.BreakawayReverse
 	if k.BreakawayForward == 0 {
@@ -47,8 +55,16 @@ func (j *Job) forecast(p safety.Plan) (PlanView, []sheet.Quantity, error) {
 			Fact{Name: "forecast", Value: "none", Why: err.Error()})
 		return v, nil, nil
 	}
+	if r, over, top, ok := j.loopCourse(p); ok {
+		// The sampled loop with its gains says more than a lag.
+		f.TopSpeed, f.Basis = model.Value(top), f.Basis+", closed loop simulated"
+		f.Line.Time, f.Line.Speed = r.Time, r.Speed
+		if ohms := j.ohms(); ohms > 0 {
+			f.PeakCurrent = model.Value(over / ohms)
+		}
+	}
 	v.Band = f.Band
-	v.Expect = points(f.Line.Time, f.Line.Speed)
+	v.Expect = thin(f.Line.Time, f.Line.Speed)
 	var q []sheet.Quantity
 	add := func(name, unit string, value model.Value, shown, limit string, over bool) {
 		x := float64(value)

@@ -13,6 +13,8 @@ import (
 var (
 	// ErrDeclined says that the person put the plan or the question aside.
 	ErrDeclined = errors.New("put aside")
+	// ErrNoCut says that the stop key was pressed and the board did not answer.
+	ErrNoCut = errors.New("the board does not answer the cut byte")
 	// ErrOver says that the session ends.
 	ErrOver = errors.New("the session ends")
 )
@@ -42,6 +44,8 @@ type Hands interface {
 	LimitsHeld(crc uint16)
 	// Check says whether a check was seen working.
 	Check(c safety.Check, passed bool)
+	// Line says how the line and the board have done since the session began.
+	Line() LineState
 	// Permit asks the limiter whether a write may be done now.
 	Permit(safety.Event) error
 	// Wrote ends a write that was permitted.
@@ -51,7 +55,7 @@ type Hands interface {
 	// measured. It returns ErrDeclined if the person puts it aside, and a Result
 	// with its reason in every other case.
 	Run(Run) (Result, error)
-	// StopKey waits for a stop by key at rest and returns its times.
+	// StopKey waits for a stop by key at rest and returns its times, or ErrNoCut.
 	StopKey(q Question) (StopSeen, error)
 	// ClearTrip waits until a latched trip was acknowledged and reset.
 	ClearTrip(q Question) error
@@ -76,6 +80,12 @@ type Hands interface {
 	Show(func(*View))
 	// Say puts one line into the log of the session.
 	Say(format string, args ...any)
+}
+
+// LineState counts what came from the board.
+type LineState struct {
+	protocol.Stats
+	Restarts int // of the board, that nobody asked for
 }
 
 // Run is a plan with what the person sees before it runs.

@@ -2,6 +2,7 @@ package job
 
 import (
 	"math"
+	"slices"
 	"time"
 
 	"gainwright/tune/design"
@@ -29,12 +30,28 @@ func orZero(v float64) float64 {
 	return v
 }
 
-// simulateLoop forecasts a step of the setpoint between two speeds, from steady
-// running at the first.
-func (j *Job) simulateLoop(g design.Gains, from, to, hold float64) (design.Run, error) {
-	change := math.Max(g.SampleTime, math.Abs(to-from)/(0.8*j.Env.AccelMax))
-	sc := design.Scenario{StartSpeed: from, Friction: j.friction(), RadPerCount: j.ID.RadPerCount(), Window: j.ID.Window().Seconds(),
-		Parts: []design.Part{{From: from, To: to, Duration: change}, {From: to, To: to, Duration: math.Max(hold-change, 10*g.SampleTime)}}}
+// renewS is how often the console sends a setpoint that moves, in s: between two
+// of them it stands, so that a ramp reaches the board as stairs.
+const renewS = 0.010
+
+// setpointStep is a change of the setpoint at slope rad/s².
+type setpointStep struct{ from, to, slope float64 }
+
+// parts are the stairs of a step, and the rest of hold.
+func (s setpointStep) parts(hold float64) []design.Part {
+	n := max(1, int(math.Ceil(math.Abs(s.to-s.from)/(s.slope*renewS)-1e-9)))
+	var p []design.Part
+	for i := 1; i < n; i++ {
+		w := s.from + (s.to-s.from)*float64(i)/float64(n)
+		p = append(p, design.Part{From: w, To: w, Duration: renewS})
+	}
+	return append(p, design.Part{From: s.to, To: s.to, Duration: math.Max(hold-float64(n-1)*renewS, renewS)})
+}
+
+// simulateLoop forecasts the closed loop over parts of a setpoint, from steady
+// running at start.
+func (j *Job) simulateLoop(g design.Gains, start float64, parts []design.Part) (design.Run, error) {
+	sc := design.Scenario{StartSpeed: start, Friction: j.friction(), RadPerCount: j.ID.RadPerCount(), Window: j.ID.Window().Seconds(), Parts: parts}
 	return design.SimulateLoop(j.loopModel(j.Fit.Best()), g, sc)
 }
 
@@ -45,7 +62,8 @@ func (j *Job) forecastStep(g design.Gains, middle float64) (speed, drive []Point
 	if j.Margins != nil && j.Margins.Step.SettlingTime.Known() {
 		hold = math.Min(math.Max(3*float64(j.Margins.Step.SettlingTime), 0.1), 30)
 	}
-	r, err := j.simulateLoop(g, 0.8*middle, 1.2*middle, hold)
+	step := setpointStep{0.8 * middle, 1.2 * middle, 0.8 * j.Env.AccelMax}
+	r, err := j.simulateLoop(g, step.from, step.parts(hold))
 	if err != nil {
 		return nil, nil, err
 	}
@@ -64,21 +82,57 @@ func thin(t, v []float64) []Point {
 	return p
 }
 
+// phasesMost is how many places of the shaft between two counts a forecast is
+// made for where one count shows.
+const phasesMost = 8
+
 // forecastMetrics is the forecast of one verify step with the same measures as
-// the measured one.
-func (j *Job) forecastMetrics(from, to float64, hold time.Duration, band float64) (StepMetrics, []Point, error) {
-	r, err := j.simulateLoop(*j.Gains, from, to, hold.Seconds())
-	if err != nil {
-		return StepMetrics{}, nil, err
+// the measured one: at the telemetry's rate, and of the speed in whole counts.
+// Where a count shows, the middle of several places between two counts is taken.
+func (j *Job) forecastMetrics(step setpointStep, hold time.Duration, band float64) (StepMetrics, []Point, error) {
+	g := *j.Gains
+	phases, quiet := 1, 5*g.SampleTime
+	if j.sizing().SpeedStep > 0.002*math.Abs(step.to-step.from) {
+		phases, quiet = phasesMost, math.Max(0.25*hold.Seconds(), 20*g.SampleTime)
 	}
-	s := r.Measure(0, 0, from, to, band)
-	m := StepMetrics{From: from, To: to, Overshoot: orZero(float64(s.Overshoot)), Settling: hold.Seconds()}
-	if s.SettlingTime.Known() {
-		m.Settling = float64(s.SettlingTime)
+	each := 1
+	if j.Hz > 0 {
+		each = max(1, int(math.Round(1/(float64(j.Hz)*g.SampleTime))))
 	}
-	p := make([]Point, len(r.Time))
-	for i := range p {
-		p[i] = Point{r.Time[i], r.Speed[i]}
+	var all []StepMetrics
+	var line []Point
+	for p := range phases {
+		// The time until the step decides where between two counts it begins.
+		lead := quiet + float64(p)*1.618*g.SampleTime
+		parts := append([]design.Part{{From: step.from, To: step.from, Duration: lead}}, step.parts(hold.Seconds())...)
+		r, err := j.simulateLoop(g, step.from, parts)
+		if err != nil {
+			return StepMetrics{}, nil, err
+		}
+		var t, y []float64
+		for i := int(math.Ceil(lead/g.SampleTime - 1e-9)); i < len(r.Time); i++ {
+			at := r.Time[i] - lead
+			if p == 0 {
+				line = append(line, Point{at, r.Speed[i]})
+			}
+			if i%each == 0 {
+				t, y = append(t, at), append(y, r.Measured[i])
+			}
+		}
+		all = append(all, metricsOf(t, y, step.from, step.to, band))
 	}
-	return m, p, nil
+	m := StepMetrics{From: step.from, To: step.to}
+	m.Overshoot = median(all, func(m StepMetrics) float64 { return m.Overshoot })
+	m.Settling = median(all, func(m StepMetrics) float64 { return m.Settling })
+	m.Ripple = median(all, func(m StepMetrics) float64 { return m.Ripple })
+	return m, line, nil
+}
+
+func median(all []StepMetrics, of func(StepMetrics) float64) float64 {
+	v := make([]float64, len(all))
+	for i := range all {
+		v[i] = of(all[i])
+	}
+	slices.Sort(v)
+	return (v[(len(v)-1)/2] + v[len(v)/2]) / 2
 }

@@ -79,6 +79,10 @@ func (j *Job) notDone(r Result) error {
 		words += " (the board: " + r.BoardStop.Cause.String() + ")"
 	}
 	number := int(r.Cause.Code)
+	if r.BoardStop != nil && r.BoardStop.Cause == protocol.CauseBusLow {
+		number = int(safety.CodeBusLow)
+		words, remedy = "the supply folds back: "+words, "raise its current limit, or make the run smaller"
+	}
 	if number == 0 {
 		number = 721
 	}

@@ -38,7 +38,11 @@ const (
 // limits.
 func (j *Job) doFirstLoop() (result, error) {
 	w := math.Min(firstLoopShare*float64(j.Env.SpeedMax), j.VerifySpeed())
-	plan := excite.Setpoint(j.sizing(), "first closed loop", "does the loop hold?", []float64{w}, firstLoopTime)
+	slope, err := j.loopSlope([]float64{w}, firstLoopTime, 2*w)
+	if err != nil {
+		return "", err
+	}
+	plan := excite.Setpoint(j.sizing(), "first closed loop", "does the loop hold?", []float64{w}, firstLoopTime, slope)
 	plan.SpeedMax = 2 * w
 	r, err := j.run(StepFirstLoop, plan, nil)
 	if err != nil {
@@ -86,7 +90,11 @@ func (j *Job) doVerify() (result, error) {
 	if !j.Env.Brake {
 		levels = []float64{lo, hi}
 	}
-	plan := excite.Setpoint(j.sizing(), "verify", "measured against forecast and targets", levels, hold)
+	slope, err := j.loopSlope(levels, hold, float64(j.Env.SpeedMax))
+	if err != nil {
+		return "", err
+	}
+	plan := excite.Setpoint(j.sizing(), "verify", "measured against forecast and targets", levels, hold, slope)
 	r, err := j.run(StepVerify, plan, nil)
 	if err != nil {
 		return "", err
@@ -94,7 +102,7 @@ func (j *Job) doVerify() (result, error) {
 	if r.Reason != safety.EndDone {
 		return "", j.notDone(r)
 	}
-	return j.judgeVerify(r, levels, hold)
+	return j.judgeVerify(r, levels, hold, slope)
 }
 
 func settlingOr(j *Job, other float64) float64 {
@@ -107,7 +115,7 @@ func settlingOr(j *Job, other float64) float64 {
 // judgeVerify measures the steps between two turning levels of the same
 // direction, takes the worst, and holds it against the same measures of the
 // forecast.
-func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration) (result, error) {
+func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope float64) (result, error) {
 	ripple := j.steadyRipple(r, hold)
 	var measured, forecast []StepMetrics
 	band := 0.0
@@ -121,9 +129,9 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration) (resul
 		if from*to > 0 { // both turning, the same way
 			band = math.Max(math.Max(0.02*math.Abs(to-from), j.sizing().SpeedStep), 3*ripple)
 			seg := window(r, at, at+hold)
-			m, ok := measureStep(seg, r.Begun+at, from, to, band)
+			m, ok := measureStep(seg, from, to, band)
 			if ok {
-				f, pts, err := j.forecastMetrics(from, to, hold, band)
+				f, pts, err := j.forecastMetrics(setpointStep{from, to, slope}, hold, band)
 				if err != nil {
 					return "", err
 				}
@@ -165,41 +173,46 @@ func (j *Job) steadyRipple(r Result, hold time.Duration) float64 {
 
 // measureStep measures one step from telemetry. Time counts from the first
 // sample whose setpoint has moved.
-func measureStep(s []Sample, begun time.Duration, from, to, band float64) (StepMetrics, bool) {
-	m := StepMetrics{From: from, To: to}
+func measureStep(s []Sample, from, to, band float64) (StepMetrics, bool) {
 	start := -1
 	for i := range s {
-		if s[i].Has&protocol.HasSetpoint != 0 && math.Abs(float64(s[i].Setpoint)-from) > 0.02*math.Abs(to-from) {
+		// Setpoints travel as whole mrad/s.
+		if s[i].Has&protocol.HasSetpoint != 0 && math.Abs(float64(s[i].Setpoint)-from) > 0.002 {
 			start = i
 			break
 		}
 	}
 	if start < 0 || len(s)-start < 20 {
-		return m, false
+		return StepMetrics{}, false
 	}
-	t0 := float64(s[start].BoardUS) * 1e-6
-	if start > 0 {
-		t0 = float64(s[start-1].BoardUS) * 1e-6
-	}
-	var tail []float64
-	dir := math.Copysign(1, to-from)
-	peak := 0.0
+	t0 := float64(s[max(start-1, 0)].BoardUS) * 1e-6
+	var t, y []float64
 	for i := start; i < len(s); i++ {
-		e := float64(s[i].Speed) - to
+		t, y = append(t, float64(s[i].BoardUS)*1e-6-t0), append(y, float64(s[i].Speed))
+	}
+	return metricsOf(t, y, from, to, band), true
+}
+
+// metricsOf measures a step from samples of the speed as the board reports it, t
+// from the change of the setpoint. Measured and forecast steps go through it. A
+// single reading outside the band, with its neighbours inside, is noise.
+func metricsOf(t, y []float64, from, to, band float64) StepMetrics {
+	m := StepMetrics{From: from, To: to}
+	dir, peak, last := math.Copysign(1, to-from), 0.0, -1
+	for i := range y {
+		e := y[i] - to
 		peak = math.Max(peak, e*dir)
 		if math.Abs(e) > band {
-			m.Settling = float64(s[i].BoardUS)*1e-6 - t0
-		}
-		if i > start+(len(s)-start)/2 {
-			tail = append(tail, float64(s[i].Speed))
+			if last == i-1 {
+				m.Settling = t[i]
+			}
+			last = i
 		}
 	}
-	m.Ripple = spread(tail)
+	m.Ripple = spread(y[len(y)/2:])
 	// What noise alone would show over the target is no overshoot.
-	peak = math.Max(0, peak-2*m.Ripple)
-	m.Overshoot = 100 * peak / math.Abs(to-from)
-	_ = begun
-	return m, true
+	m.Overshoot = 100 * math.Max(0, peak-2*m.Ripple) / math.Abs(to-from)
+	return m
 }
 
 func worst(steps []StepMetrics) StepMetrics {
