@@ -1,6 +1,7 @@
 package job
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"time"
@@ -44,7 +45,7 @@ func (j *Job) doBreakaway() (result, error) {
 	if len(fwd) < 2 || j.Env.Reverse && len(rev) < 2 {
 		return "", refuse(722, "breakaway", "the shaft did not start in most ramps", "is it free? Do the sign check again")
 	}
-	j.BreakForward, j.BreakReverse = fwd, rev
+	j.BreakForward, j.BreakReverse, j.breakRun = fwd, rev, r.Samples
 	rec := sheet.BreakawayRecord{ForwardV: fwd, ReverseV: rev, Params: []sheet.Quantity{breakQuantity("breakaway forward", fwd, r.File)}}
 	words := fmt.Sprintf("%.3g ± %.2g V forward", mean(fwd), 2*spread(fwd))
 	if len(rev) > 0 {
@@ -144,7 +145,8 @@ func (j *Job) doStaircase() (result, error) {
 		if j.electric != nil {
 			j.electric.running(j.Levels)
 		}
-		return j.keepStairs(static, r)
+		words, err := j.keepStairs(static, r)
+		return words, errors.Join(err, j.gravity(r, stairs), j.lostMotion())
 	}
 }
 

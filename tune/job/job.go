@@ -46,6 +46,7 @@ type Known struct {
 	Silence                    safety.CheckJudged
 	Gain, Tau                  float64 // first idea: rad/s per V, s
 	BreakForward, BreakReverse []float64
+	breakRun                   []Sample // of the breakaway test
 	Levels                     []identify.Level
 	rising                     []bool // of Levels: reached from below
 	Static                     *identify.Static
