@@ -93,7 +93,7 @@ func newRoot() *cobra.Command {
 	root.RunE = c.RunE
 	root.Flags().AddFlagSet(c.Flags())
 	root.AddCommand(c, demoCommand(), portsCommand(), checkCommand(), dryrunCommand(), simCommand(), fitCommand(), designCommand(),
-		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), versionCommand())
+		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), rehearseCommand(), versionCommand())
 	return root
 }
 

@@ -3,7 +3,6 @@ package bench
 import (
 	"errors"
 
-	"math"
 	"time"
 
 	"gainwright/link/simrig"
@@ -11,7 +10,6 @@ import (
 	"gainwright/safety/rig"
 	"gainwright/tune/design"
 	"gainwright/tune/job"
-	"gainwright/tune/model"
 	"gainwright/tune/sheet"
 )
 
@@ -36,6 +34,7 @@ type DryRun struct {
 	Dir      string // of the record; "" keeps none
 	Program  string
 	Start    time.Time
+	Rules    bool // judge other rules on the rig's own physics as well
 	Progress func(at time.Duration, step job.StepID, words string)
 }
 
@@ -44,6 +43,7 @@ type DryRun struct {
 type Report struct {
 	Outcome    Outcome         `json:"outcome"`
 	Reason     string          `json:"reason"`
+	Cause      string          `json:"cause,omitempty"` // in the word of a simulated rig's fault
 	Model      any             `json:"model"`
 	Friction   FrictionReport  `json:"friction"`
 	Gains      *design.Gains   `json:"gains"`
@@ -79,16 +79,6 @@ type ExtremesReport struct {
 	Bus     float64 `json:"bus"`
 }
 
-// TruthReport is the rig's own physics under the gains as the board holds them.
-type TruthReport struct {
-	Model        *model.Linear `json:"model"`
-	Ms           *float64      `json:"ms"`
-	PhaseMargin  *float64      `json:"phase_margin_deg"`
-	LoadIAERatio *float64      `json:"load_iae_ratio"`
-	BreakForward *float64      `json:"breakaway_forward_V"`
-	BreakReverse *float64      `json:"breakaway_reverse_V"`
-}
-
 // Do runs the job. The error is for what kept it from beginning; everything
 // after that is an outcome.
 func (d DryRun) Do() (Report, error) {
@@ -111,8 +101,9 @@ func (d DryRun) Do() (Report, error) {
 	}
 	h := v.Hands(record)
 	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1)})
-	outcome, reason := d.steps(v, j)
-	rep := report(v, j, outcome, reason)
+	outcome, reason, stepErr := d.steps(v, j)
+	rep := report(v, j, outcome, reason, d.Rules)
+	rep.Cause = causeOf(stepErr)
 	if record != nil {
 		rep.Sheet = d.Dir
 		if err := record.Close(string(outcome), reason); err != nil {
@@ -123,9 +114,9 @@ func (d DryRun) Do() (Report, error) {
 }
 
 // steps goes down the path and says what came of it.
-func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string) {
+func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 	for _, p := range job.Path {
-		if j.NoChange && afterPush[p.ID] {
+		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" {
 			continue
 		}
 		err := j.Do(p.ID)
@@ -138,16 +129,17 @@ func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string) {
 		}
 		if err != nil {
 			_ = j.Do(job.StepAsLeft)
-			return outcomeOf(v, p.ID, err)
+			o, why := outcomeOf(v, p.ID, err)
+			return o, why, err
 		}
 	}
 	switch {
 	case j.NoChange:
-		return NoAdjustment, "the gains as found meet the targets"
+		return NoAdjustment, "the gains as found meet the targets", nil
 	case j.Verified != nil && j.Verified.Passed != nil && !*j.Verified.Passed:
-		return Failed, "verify: " + j.Verified.Finding
+		return Failed, "verify: " + j.Verified.Finding, nil
 	}
-	return Accepted, "verified, stored and read back equal"
+	return Accepted, "verified, stored and read back equal", nil
 }
 
 // afterPush are the steps that have no work when nothing is changed.
@@ -158,13 +150,16 @@ func outcomeOf(v *Virtual, step job.StepID, err error) (Outcome, string) {
 	if v.s.core.State().Phase == safety.Tripped {
 		return Tripped, err.Error()
 	}
-	if errors.As(err, &r) && step != job.StepStore && step != job.StepVerify {
+	// A verify that does not come out as forecast failed; everything else that a
+	// step refuses, a memory that does not keep what it was given included, is a
+	// refusal.
+	if errors.As(err, &r) && step != job.StepVerify {
 		return Refused, err.Error()
 	}
 	return Failed, err.Error()
 }
 
-func report(v *Virtual, j *job.Job, outcome Outcome, reason string) Report {
+func report(v *Virtual, j *job.Job, outcome Outcome, reason string, rules bool) Report {
 	ext := v.rig.Extremes()
 	e := v.s.core.Envelope()
 	rep := Report{Outcome: outcome, Reason: reason, Gains: j.Gains, Margins: j.Margins,
@@ -183,7 +178,7 @@ func report(v *Virtual, j *job.Job, outcome Outcome, reason string) Report {
 	if j.Worst != nil {
 		rep.Worst = WorstReport{sheet.Known(float64(j.Worst.Ms)), sheet.Known(float64(j.Worst.PhaseMargin))}
 	}
-	rep.Truth = truth(v, j)
+	rep.Truth = truth(v, j, rules)
 	return rep
 }
 
@@ -196,45 +191,4 @@ func average(v []float64) *float64 {
 		s += x
 	}
 	return sheet.Known(s / float64(len(v)))
-}
-
-// truth judges the pushed gains on the rig's own physics, linearised at the
-// speed of the verify.
-func truth(v *Virtual, j *job.Job) TruthReport {
-	speed := j.VerifySpeed()
-	if speed == 0 {
-		speed = float64(v.s.core.Envelope().SpeedMax) / 3
-	}
-	t := v.rig.Truth(speed)
-	m := model.Linear{Kind: model.KindSecondOrder, Num: t.Num, Den: t.Den, DeadTime: t.DeadTime, InputUnit: model.InputVolts}
-	rep := TruthReport{Model: &m, BreakForward: sheet.Known(t.BreakawayForward), BreakReverse: sheet.Known(t.BreakawayReverse)}
-	if j.Gains == nil {
-		return rep
-	}
-	// The loop sees the mean over the speed window: half of it is delay.
-	loop := m
-	loop.DeadTime += t.Window / 2
-	judged, err := design.JudgeFrequency(loop, *j.Gains)
-	if err != nil || !judged.Stable {
-		rep.Ms = sheet.Known(math.Inf(1))
-		return rep
-	}
-	rep.Ms, rep.PhaseMargin = sheet.Known(float64(judged.Ms)), sheet.Known(float64(judged.PhaseMargin))
-	rep.LoadIAERatio = loadRatio(loop, *j.Gains, j.MsMax())
-	return rep
-}
-
-// loadRatio is the load-disturbance IAE of the gains over that of the largest
-// integral gain for the true plant under the same bound.
-func loadRatio(m model.Linear, g design.Gains, msMax float64) *float64 {
-	full, err := design.Judge(m, g)
-	if err != nil || !full.LoadStep.IAE.Known() {
-		return nil
-	}
-	best, chosen, err := design.Propose(m, design.Options{Rule: design.RuleLargestKi, MsMax: msMax, SampleTime: g.SampleTime, ComputeDelay: g.ComputeDelay,
-		Discretisation: g.Discretisation})
-	if err != nil || chosen < 0 || !best[chosen].Margins.LoadStep.IAE.Known() {
-		return nil
-	}
-	return sheet.Known(float64(full.LoadStep.IAE) / float64(best[chosen].Margins.LoadStep.IAE))
 }
