@@ -8,6 +8,7 @@ import (
 
 	"gainwright/protocol"
 	"gainwright/safety"
+	"gainwright/safety/supervisor"
 	"gainwright/tune/job"
 	"gainwright/tune/sheet"
 	"gainwright/tune/trace"
@@ -102,11 +103,25 @@ func (h *hands) Check(c safety.Check, passed bool) {
 	})
 }
 
-// Permit asks again for up to five seconds, where only the shaft's coming to rest
-// or the clearing of the board's own trip is in the way.
+// How long a permission is asked for again: where the shaft has to come to rest, as
+// long as one may coast; else for what comes by itself, such as the clearing of
+// the board's own trip.
+const (
+	coastMax  = 90 * time.Second
+	permitMax = 5 * time.Second
+)
+
+// Permit asks again while what is in the way may pass by itself.
 func (h *hands) Permit(e safety.Event) error {
 	var err error
-	wait := h.until(5*time.Second, func(s *session) bool {
+	began := h.Now()
+	wait := h.until(coastMax, func(s *session) bool {
+		if s.now-began > permitMax {
+			if no, ok := errors.AsType[*supervisor.NotNow](err); !ok || no.Cause.Code != safety.CodeMoving {
+				return true
+			}
+			s.view.Busy = "waiting for the shaft to come to rest"
+		}
 		if st := s.core.State(); st.Phase == safety.Disarmed && st.Heard && st.Last.State == protocol.Tripped {
 			err = errBoardTripped
 			return false
@@ -114,6 +129,7 @@ func (h *hands) Permit(e safety.Event) error {
 		err = s.core.Permit(stamp(e, s.now))
 		return err == nil
 	})
+	h.do(func(s *session) { s.view.Busy = "" })
 	if wait != nil && !errors.Is(wait, errLimit) {
 		return wait
 	}

@@ -21,6 +21,8 @@ type Known struct {
 	SpeedStep    float64 // rad/s, smallest step of the reported speed
 	Noise        float64 // rad/s, standard deviation of the speed at rest
 	Loop         float64 // s
+	FallSlope    float64 // V/s at which the drive may fall towards zero, for what braking gives back; 0: at once
+	BrakeVolts   float64 // V of back-EMF up to which the drive may go to zero at once and brake; above it a run ends with the output off
 }
 
 // builder collects segments and keeps every change of drive inside the slope
@@ -28,6 +30,7 @@ type Known struct {
 type builder struct {
 	mode  safety.Mode
 	slope float64 // largest change a second, V/s or rad/s²
+	fall  float64 // the same towards zero; 0: as slope
 	at    float64
 	segs  []safety.Segment
 }
@@ -43,7 +46,11 @@ func speeds(env safety.Envelope) *builder {
 // jumpTime is how long the quickest allowed change to value takes, never less
 // than one tick of the console.
 func (b *builder) jumpTime(value float64) time.Duration {
-	return max(10*time.Millisecond, seconds(math.Abs(value-b.at)/b.slope))
+	slope := b.slope
+	if b.fall > 0 && math.Abs(value) < math.Abs(b.at) {
+		slope = math.Min(slope, b.fall)
+	}
+	return max(10*time.Millisecond, seconds(math.Abs(value-b.at)/slope))
 }
 
 // hold goes to value as quickly as allowed and stays there for d in all.
@@ -80,6 +87,15 @@ const restMax = 4 * time.Second
 func (b *builder) off(note string) {
 	b.at = 0
 	b.segs = append(b.segs, safety.Segment{Mode: b.mode, Duration: restMax, Until: safety.Until{Kind: safety.UntilRest}, Note: note})
+}
+
+// end takes the drive from value to zero and waits for rest where the shaft may be
+// braked like that. Else the plan is over: the output goes off and the motor
+// coasts.
+func (b *builder) end(k Known, value float64) {
+	if k.FallSlope == 0 && math.Abs(value) <= k.BrakeVolts {
+		b.off("rest")
+	}
 }
 
 // motionCounts is how many counts end a ramp as motion seen.
@@ -177,10 +193,11 @@ type Stair struct {
 	Up       bool
 }
 
-// Staircase makes levels of voltage up and down, each way, up to top volts. Each
-// level is held for five time constants, at least 0.4 s, and its second half is
-// what is averaged.
-func Staircase(k Known, levels int, top float64) (safety.Plan, []Stair) {
+// Staircase makes levels of voltage up to top volts, and down again where down is
+// set, in each of the ways (1 forward, -1 reverse). Each level is held for five
+// time constants, at least 0.4 s, and its second half is what is averaged. Where
+// the drive may not fall at once there is no way down, and one way a plan.
+func Staircase(k Known, levels int, top float64, ways []float64, down bool) (safety.Plan, []Stair) {
 	b := volts(k.Env)
 	var stairs []Stair
 	at := time.Duration(0)
@@ -190,42 +207,81 @@ func Staircase(k Known, levels int, top float64) (safety.Plan, []Stair) {
 		stairs = append(stairs, Stair{Volts: v, From: at + dwell/2, To: at + dwell, Up: up})
 		at += dwell
 	}
-	for _, dir := range k.ways() {
+	for n, dir := range ways {
 		start := k.StartForward
 		if dir < 0 {
 			start = k.StartReverse
 		}
 		low := math.Min(1.25*start, 0.6*top)
-		for i := range levels {
-			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), true)
-		}
-		for i := levels - 2; i >= 0; i-- {
-			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), false)
-		}
-		if dir > 0 && len(k.ways()) > 1 {
+		if n > 0 {
 			rest := seconds(math.Max(0.3, 4*k.Tau))
 			b.hold(0, rest, "rest")
 			at += rest
 		}
+		for i := range levels {
+			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), true)
+		}
+		for i := levels - 2; i >= 0 && down; i-- {
+			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), false)
+		}
 	}
-	b.off("rest")
-	return safety.Plan{Name: "staircase", Purpose: "steady speed against voltage, up and down", Segments: b.segs}, stairs
+	if down {
+		b.off("rest")
+	}
+	name := "staircase"
+	if len(ways) == 1 && ways[0] < 0 {
+		name = "staircase reverse"
+	}
+	return safety.Plan{Name: name, Purpose: "steady speed against voltage, up and down", Segments: b.segs}, stairs
+}
+
+// Times of the small-signal tests: the console renews a drive every 10 ms, and a
+// level has to last some of those.
+func leadIn(k Known) (ramp, settle float64) {
+	return math.Max(0.1, 2*k.Tau), math.Max(0.15, 6*k.Tau)
 }
 
 // Step makes n steps up and down about bias, each held for five time constants.
 // amplitude is the size of a step to either side.
 func Step(k Known, bias, amplitude float64, n int) safety.Plan {
 	b := volts(k.Env)
-	hold := seconds(math.Max(0.15, 5*k.Tau))
-	b.ramp(bias, 300*time.Millisecond, safety.Until{}, "to the middle")
-	b.hold(bias, seconds(math.Max(0.4, 6*k.Tau)), "settle")
+	b.fall = k.FallSlope
+	hold := seconds(math.Max(0.06, 5*k.Tau))
+	ramp, settle := leadIn(k)
+	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
+	b.hold(bias, seconds(settle), "settle")
 	for range n {
 		b.hold(bias+amplitude, hold, "up")
-		b.hold(bias-amplitude, hold, "down")
+		b.hold(bias-amplitude, b.jumpTime(bias-amplitude)+hold, "down")
 	}
 	b.hold(bias, hold, "middle")
-	b.off("rest")
+	b.end(k, bias)
 	return safety.Plan{Name: "step test", Purpose: "time constant and dead time about one operating point", Segments: b.segs}
+}
+
+// Heights makes n steps up of different heights about bias, with slow ways down
+// between them: a record of another kind where the drive may not fall at once.
+func Heights(k Known, bias, amplitude float64, n int, seed uint32) safety.Plan {
+	b := volts(k.Env)
+	b.fall = k.FallSlope
+	ramp, settle := leadIn(k)
+	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
+	b.hold(bias, seconds(settle), "settle")
+	bits := PRBSBits(9, seed)
+	share := func(i int) float64 { // 0.3 to 1 from three bits
+		s := 0.0
+		for _, x := range bits[3*i%len(bits):][:3] {
+			s = 2*s + (x+1)/2
+		}
+		return 0.3 + 0.1*s
+	}
+	for i := range n {
+		low := bias - amplitude*share(2*i)
+		b.hold(low, b.jumpTime(low)+seconds(math.Max(0.1, 2.5*k.Tau)), "down")
+		b.hold(bias+amplitude*share(2*i+1), seconds(math.Max(0.1, 3.5*k.Tau)), "up")
+	}
+	b.end(k, bias)
+	return safety.Plan{Name: "heights", Purpose: "a record that the model has not seen", Segments: b.segs}
 }
 
 // prbsTaps are feedback taps of maximum-length shift registers (a standard
@@ -253,8 +309,10 @@ func PRBSBits(n int, seed uint32) []float64 {
 // the length of one bit, bits the length of the register.
 func PRBS(k Known, bias, amplitude float64, clock time.Duration, bits int, seed uint32, longest time.Duration) safety.Plan {
 	b := volts(k.Env)
-	b.ramp(bias, 300*time.Millisecond, safety.Until{}, "to the middle")
-	b.hold(bias, seconds(math.Max(0.4, 6*k.Tau)), "settle")
+	b.fall = k.FallSlope
+	ramp, settle := leadIn(k)
+	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
+	b.hold(bias, seconds(settle), "settle")
 	var total time.Duration
 	for _, s := range PRBSBits(bits, seed) {
 		if total += clock; total > longest {
@@ -262,7 +320,7 @@ func PRBS(k Known, bias, amplitude float64, clock time.Duration, bits int, seed 
 		}
 		b.hold(bias+s*amplitude, clock, "prbs")
 	}
-	b.off("rest")
+	b.end(k, bias)
 	return safety.Plan{Name: "prbs", Purpose: "a record that the model has not seen", Segments: b.segs}
 }
 

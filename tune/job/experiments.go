@@ -114,19 +114,11 @@ func (j *Job) doStaircase() (result, error) {
 		if top < 1.6*start {
 			top = math.Min(1.6*start+0.2*float64(j.Env.VoltsMax), 0.8*float64(j.Env.VoltsMax))
 		}
-		plan, stairs := excite.Staircase(k, 5, top)
-		if d := plan.Duration(); d > j.Env.RunTimeMax {
-			plan, stairs = excite.Staircase(k, 3, top)
-		}
-		r, err := j.run(StepStaircase, plan, nil)
+		runs, err := j.climb(k, top)
 		if err != nil {
 			return "", err
 		}
-		if r.Reason != safety.EndDone {
-			return "", j.notDone(r)
-		}
-		j.Levels, j.rising = levels(r, stairs)
-		tr := j.traceOf("staircase", r.Samples)
+		tr := j.traceOf("staircase", runs[0].Samples)
 		gain, tau, err := firstLook(tr)
 		if err != nil {
 			return "", refuse(723, "staircase", err.Error(), "look at the trace in the record; a larger top or a slower load may be needed")
@@ -145,9 +137,48 @@ func (j *Job) doStaircase() (result, error) {
 		if j.electric != nil {
 			j.electric.running(j.Levels)
 		}
-		words, err := j.keepStairs(static, r)
-		return words, errors.Join(err, j.gravity(r, stairs), j.lostMotion())
+		words, err := j.keepStairs(static, runs[0].Result)
+		return words, errors.Join(err, j.gravity(runs), j.lostMotion())
 	}
+}
+
+// stairRun is a run of a staircase with its levels.
+type stairRun struct {
+	Result
+	stairs []excite.Stair
+}
+
+// climb runs the staircase: both ways, up and down, in one plan; or, where the
+// supply takes nothing back, one way at a time and up only, each run ending in a
+// coast.
+func (j *Job) climb(k excite.Known, top float64) ([]stairRun, error) {
+	ways, down := [][]float64{{1, -1}}, true
+	switch {
+	case !j.Env.Reverse:
+		ways = [][]float64{{1}}
+	case !j.Rig.Drive.SupplySinks:
+		ways = [][]float64{{1}, {-1}}
+	}
+	down = j.Rig.Drive.SupplySinks || !j.Env.Brake
+	var runs []stairRun
+	j.Levels, j.rising = nil, nil
+	for _, w := range ways {
+		plan, stairs := excite.Staircase(k, 5, top, w, down)
+		if d := plan.Duration(); d > j.Env.RunTimeMax {
+			plan, stairs = excite.Staircase(k, 3, top, w, down)
+		}
+		r, err := j.run(StepStaircase, plan, nil)
+		if err != nil {
+			return nil, err
+		}
+		if r.Reason != safety.EndDone {
+			return nil, j.notDone(r)
+		}
+		l, up := levels(r, stairs)
+		j.Levels, j.rising = append(j.Levels, l...), append(j.rising, up...)
+		runs = append(runs, stairRun{r, stairs})
+	}
+	return runs, nil
 }
 
 func (j *Job) keepStairs(static identify.Static, r Result) (result, error) {
@@ -289,7 +320,14 @@ const stepRepeats = 3
 // doStep records small steps about the middle, at loop rate where the board can.
 func (j *Job) doStep() (result, error) {
 	j.Bias, j.Amplitude = j.operating()
-	plan := excite.Step(j.sizing(), j.Bias, j.Amplitude, stepRepeats)
+	k, plan := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, stepRepeats) })
+	if k.FallSlope > 0 {
+		// A slow way down is no longer than it has to be.
+		if most := 4 * j.Tau * k.FallSlope; most < j.Amplitude {
+			j.Amplitude = math.Max(most, math.Min(j.Amplitude, 15*k.SpeedStep/j.Gain))
+			plan = excite.Step(k, j.Bias, j.Amplitude, stepRepeats)
+		}
+	}
 	tr, file, err := j.record(StepStep, plan)
 	if err != nil {
 		return "", err
@@ -302,13 +340,37 @@ func (j *Job) doStep() (result, error) {
 func (j *Job) doSecond() (result, error) {
 	clock := time.Duration(math.Ceil(math.Max(0.02, 0.35*j.Tau)*200)) * 5 * time.Millisecond
 	longest := min(time.Duration(math.Max(4, 45*j.Tau)*float64(time.Second)), j.Env.RunTimeMax-8*time.Second)
-	plan := excite.PRBS(j.sizing(), j.Bias, j.Amplitude, clock, 7, j.opt.Seed, longest)
+	bits := j.prbsBits(clock)
+	k, plan := j.braked(func(k excite.Known) safety.Plan {
+		return excite.PRBS(k, j.Bias, j.Amplitude, clock, bits, j.opt.Seed, longest)
+	})
+	words := fmt.Sprintf("pseudo-random ±%.3g V, one bit %s, seed %#x", j.Amplitude, milliseconds(clock), j.opt.Seed)
+	if k.FallSlope > 0 {
+		_, plan = j.braked(func(k excite.Known) safety.Plan { return excite.Heights(k, j.Bias, j.Amplitude, heights, j.opt.Seed) })
+		words = fmt.Sprintf("steps of different heights up to ±%.3g V, seed %#x", j.Amplitude, j.opt.Seed)
+	}
 	tr, file, err := j.record(StepSecond, plan)
 	if err != nil {
 		return "", err
 	}
 	j.SecondTrace, j.SecondFile = tr, file
-	return result(fmt.Sprintf("%d samples, pseudo-random ±%.3g V, one bit %s, seed %#x", tr.Len(), j.Amplitude, milliseconds(clock), j.opt.Seed)), nil
+	return result(fmt.Sprintf("%d samples, %s", tr.Len(), words)), nil
+}
+
+// heights is how many steps the second test makes where the drive may not fall
+// at once.
+const heights = 5
+
+// prbsBits is the longest register whose sequence the board's memory holds at
+// ten samples a time constant.
+func (j *Job) prbsBits(clock time.Duration) int {
+	for _, n := range []int{7, 6} {
+		seconds := float64(int(1)<<n) * clock.Seconds()
+		if !j.ID.Can("capture") || float64(j.ID.CaptureN)*j.Tau/10 > seconds || float64(j.ID.CaptureN)*j.ID.Loop.Seconds() > seconds {
+			return n
+		}
+	}
+	return 5
 }
 
 // record runs a plan and returns the best trace of it, cut to the part where it

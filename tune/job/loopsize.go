@@ -63,17 +63,20 @@ func (j *Job) overdrive() (volts float64, why string) {
 // loopSlope is the steepest slope of the setpoint, in rad/s², at which the
 // forecast of the closed loop keeps current and speed inside: a step would drive
 // the winding with all that the gains make of it.
-func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) (float64, error) {
+// A slow ramp makes the levels longer: hold is returned as it has to be.
+func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) (slope float64, longer time.Duration, err error) {
 	most, why := j.overdrive()
 	farthest, from := 0.0, 0.0
 	for _, to := range levels {
 		farthest, from = math.Max(farthest, math.Abs(to-from)), to
 	}
-	slope := math.Min(0.8*j.Env.AccelMax, farthest/renewS)
+	slope = math.Min(0.8*j.Env.AccelMax, farthest/renewS)
+	room := j.busRoom()
 	seen := math.Min(hold.Seconds(), 2*settlingOr(j, 0.3)+0.2) // long enough for the peak
 	var peak, top float64
 	for range slopeTries {
-		if farthest/slope > 0.5*hold.Seconds() {
+		ramp := farthest / slope
+		if longer = hold + seconds(ramp).Round(10*time.Millisecond); longer*time.Duration(len(levels)) > j.Env.RunTimeMax-time.Second {
 			break
 		}
 		var parts []design.Part
@@ -85,14 +88,14 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 		}
 		r, err := j.simulateLoop(*j.Gains, 0, parts)
 		if err != nil {
-			return 0, err
+			return 0, 0, err
 		}
-		if peak, top = j.peaks(r); (most == 0 || peak <= most) && top <= speedMax {
-			return slope, nil
+		if peak, top = j.peaks(r); (most == 0 || peak <= most) && top <= speedMax && j.loopBus(r) <= room {
+			return slope, longer, nil
 		}
 		slope *= slopeFactor
 	}
-	return 0, refuse(725, "closed loop refused", fmt.Sprintf("no ramp of the setpoint keeps the forecast inside: at best %.3g V over back-EMF, allowed %.3g V (%s), and %s, allowed %s", peak, most, why, rpm(top), rpm(speedMax)),
+	return 0, 0, refuse(725, "closed loop refused", fmt.Sprintf("no ramp of the setpoint keeps the forecast inside: at best %.3g V over back-EMF, allowed %.3g V (%s), and %s, allowed %s", peak, most, why, rpm(top), rpm(speedMax)),
 		"choose a smaller Ms bound, or look at the current limit of the rig file")
 }
 

@@ -7,7 +7,6 @@ import (
 	"slices"
 
 	"gainwright/protocol"
-	"gainwright/tune/excite"
 )
 
 // What no model here describes, and what the experiments show of it anyway: a
@@ -28,12 +27,17 @@ const (
 // the speed on settled levels that goes with the sine of the angle, taken back
 // through the model K/(1+τs). Levels of both directions and all speeds have to
 // agree on one amplitude and one phase.
-func (j *Job) onceATurn(r Result, stairs []excite.Stair) (amplitude, sd float64) {
+func (j *Job) onceATurn(runs []stairRun) (amplitude, sd float64) {
 	gear, rad := math.Max(1, j.Rig.Encoder.GearRatio), j.ID.RadPerCount()
 	var cc, cs, ss, cy, sy, yy float64
 	n := 0
-	for _, st := range stairs {
-		s := window(r, st.From, st.To)
+	var all [][]Sample
+	for _, r := range runs {
+		for _, st := range r.stairs {
+			all = append(all, window(r.Result, st.From, st.To))
+		}
+	}
+	for _, s := range all {
 		if len(s) < 10 || rad == 0 {
 			continue
 		}
@@ -68,11 +72,11 @@ func (j *Job) onceATurn(r Result, stairs []excite.Stair) (amplitude, sd float64)
 
 // gravity refuses a load that pulls by the angle, where the rig file does not say
 // that it does and that a brake holds it.
-func (j *Job) gravity(r Result, stairs []excite.Stair) error {
+func (j *Job) gravity(runs []stairRun) error {
 	if j.Rig.Load.Gravity && j.Rig.Load.HoldingBrake {
 		return nil
 	}
-	a, sd := j.onceATurn(r, stairs)
+	a, sd := j.onceATurn(runs)
 	if a < turnSigmas*sd || a < math.Max(turnShareRated*j.Rig.Motor.VoltageRated, turnShareSliding*j.slidingVolts()) {
 		return nil
 	}

@@ -38,11 +38,11 @@ const (
 // limits.
 func (j *Job) doFirstLoop() (result, error) {
 	w := math.Min(firstLoopShare*float64(j.Env.SpeedMax), j.VerifySpeed())
-	slope, err := j.loopSlope([]float64{w}, firstLoopTime, 2*w)
+	slope, hold, err := j.loopSlope([]float64{w}, firstLoopTime, 2*w)
 	if err != nil {
 		return "", err
 	}
-	plan := excite.Setpoint(j.sizing(), "first closed loop", "does the loop hold?", []float64{w}, firstLoopTime, slope)
+	plan := excite.Setpoint(j.sizing(), "first closed loop", "does the loop hold?", []float64{w}, hold, slope)
 	plan.SpeedMax = 2 * w
 	r, err := j.run(StepFirstLoop, plan, nil)
 	if err != nil {
@@ -51,7 +51,7 @@ func (j *Job) doFirstLoop() (result, error) {
 	if r.Reason != safety.EndDone {
 		return "", j.notDone(r)
 	}
-	s := window(r, firstLoopTime/2, firstLoopTime)
+	s := window(r, hold-firstLoopTime/2, hold)
 	if len(s) < 10 {
 		return "", refuse(750, "first closed loop", "too few samples to judge", "look at the link")
 	}
@@ -90,7 +90,7 @@ func (j *Job) doVerify() (result, error) {
 	if !j.Env.Brake {
 		levels = []float64{lo, hi}
 	}
-	slope, err := j.loopSlope(levels, hold, float64(j.Env.SpeedMax))
+	slope, hold, err := j.loopSlope(levels, hold, float64(j.Env.SpeedMax))
 	if err != nil {
 		return "", err
 	}

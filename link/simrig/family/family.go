@@ -111,7 +111,7 @@ func (d *draw) rig(i int) Rig {
 		d.line("expect = \"refused\"\ncause = %q", r.Fault)
 	}
 	d.line("seed = %d", 1+d.IntN(1_000_000))
-	d.line("\n[nameplate]\nvoltage_rated_V = %g\nspeed_max_rad_s = %.4g\ncurrent_max_A = %.4g\nbus_max_V = %.4g\nbus_min_V = %.4g", m.volts, m.top*d.between(0.85, 1), m.amps, 1.25*m.volts, 0.75*m.volts)
+	d.line("\n[nameplate]\nvoltage_rated_V = %g\nspeed_max_rad_s = %.4g\ncurrent_max_A = %.4g\nbus_max_V = %.4g\nbus_min_V = %.4g", m.volts, m.top*d.between(0.85, 1), m.amps, math.Min(57, 1.25*m.volts), 0.75*m.volts)
 	d.line("\n[motor]\nresistance_ohm = %.4g\ninductance_H = %.4g\ntorque_constant_Nm_A = %.4g\ninertia_kg_m2 = %.4g", m.ohms, m.tauE*m.ohms, m.k, m.j)
 	if d.chance(0.5) {
 		d.line("ambient_degC = %.3g\nthermal_resistance_K_W = %.3g\nthermal_time_constant_s = %.3g", d.between(5, 35), math.Min(20, 60*4*m.ohms/(m.volts*m.volts)), d.between(30, 120))

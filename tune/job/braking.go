@@ -1,0 +1,80 @@
+package job
+
+import (
+	"math"
+
+	"gainwright/safety"
+	"gainwright/tune/design"
+	"gainwright/tune/excite"
+	"gainwright/tune/forecast"
+)
+
+// Braking gives energy back. A supply that takes none lets the bus rise, and a
+// shorted winding draws what back-EMF over resistance gives.
+
+const (
+	busShare    = 0.6  // of the room between nominal and highest bus that a plan may use
+	guessedOhms = 0.45 // of rated volts over the current limit, where no resistance is known: rather too low (our choice)
+)
+
+// lowOhms is the resistance, or where it is not known one that is rather too low,
+// so that current and energy come out rather too high.
+func (j *Job) lowOhms() float64 {
+	if r := j.ohms(); r > 0 {
+		return r
+	}
+	if j.Env.CurrentMax <= 0 {
+		return 0
+	}
+	return guessedOhms * j.Rig.Motor.VoltageRated / float64(j.Env.CurrentMax)
+}
+
+// busRoom is how many volts the bus may rise in a plan; +Inf where the supply
+// takes energy back or the drive cannot brake.
+func (j *Job) busRoom() float64 {
+	if j.Rig.Drive.SupplySinks || !j.Env.Brake || j.Env.BusMax <= 0 {
+		return math.Inf(1)
+	}
+	return busShare * (float64(j.Env.BusMax) - j.Rig.Drive.BusNominal)
+}
+
+// brakeVolts is the back-EMF up to which a shorted winding keeps the current.
+func (j *Job) brakeVolts() float64 {
+	return currentShare * float64(j.Env.CurrentMax) * j.lowOhms()
+}
+
+// braked makes a plan whose drive falls no faster than the forecast of the bus
+// allows.
+func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Plan) {
+	k := j.sizing()
+	k.BrakeVolts = j.brakeVolts()
+	plan, room := of(k), j.busRoom()
+	if math.IsInf(room, 1) {
+		return k, plan
+	}
+	known := j.known()
+	known.Resistance = j.lowOhms()
+	for slope := float64(j.Env.VoltsMax) / 0.02; ; slope /= 1.6 {
+		f, err := forecast.Of(plan, known)
+		if err != nil || !f.BusRise.Known() || float64(f.BusRise) <= room || slope < 1e-3 {
+			return k, plan
+		}
+		k.FallSlope = slope
+		plan = of(k)
+	}
+}
+
+// loopBus is the rise of the bus in a forecast of the closed loop, in V.
+func (j *Job) loopBus(r design.Run) float64 {
+	ohms, ke, farads := j.lowOhms(), j.backEMF(), j.Rig.Drive.BusCapacitance*1e-6
+	if ohms <= 0 || farads <= 0 {
+		return 0
+	}
+	bank, most := 0.0, 0.0
+	for i, u := range r.Drive {
+		bank = math.Max(0, bank-u*(u-ke*r.Speed[i])/ohms*r.Period)
+		most = math.Max(most, bank)
+	}
+	v := j.Rig.Drive.BusNominal
+	return math.Sqrt(v*v+2*most/farads) - v
+}
