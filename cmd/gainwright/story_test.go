@@ -2,6 +2,7 @@ package main
 
 import (
 	"fmt"
+	"path/filepath"
 	"strings"
 	"testing"
 	"testing/synctest"
@@ -30,6 +31,12 @@ type person struct {
 // newPerson sits down at a rig. It is called inside a bubble.
 func newPerson(t *testing.T, cfg simrig.Config) *person {
 	t.Helper()
+	return sitDown(t, cfg, true)
+}
+
+// sitDown is newPerson with or without a rig file.
+func sitDown(t *testing.T, cfg simrig.Config, withRig bool) *person {
+	t.Helper()
 	r, text, err := bench.RigOf(cfg)
 	if err != nil {
 		t.Fatal(err)
@@ -46,7 +53,9 @@ func newPerson(t *testing.T, cfg simrig.Config) *person {
 		},
 		OnPanic: func(v any, stack []byte) { t.Errorf("panic: %v\n%s", v, stack) },
 	}
-	o.Job.Rig, o.Job.RigText = r, text
+	if withRig {
+		o.Job.Rig, o.Job.RigText = r, text
+	}
 	p.live = bench.NewLive(o)
 	p.wait(500 * time.Millisecond)
 	return p
@@ -361,6 +370,43 @@ func TestOpeningIsReadOnly(t *testing.T) {
 		})
 		if got := p.live.View().Found; got == nil {
 			t.Error("no as-found")
+		}
+	})
+}
+
+// Without a rig file the console asks for the nameplate, offers what the board
+// says of itself, and keeps the answers as a rig file.
+func TestConsoleAsksForTheNameplate(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		p := sitDown(t, demoRig(t), false)
+		defer p.leave()
+		p.press("enter")
+		typed := map[string]string{"rpm": "3000", "A": "8"}
+		for n := 0; ; n++ {
+			p.until("a question or the end of them", func(v *job.View) bool { return v.Ask != nil || v.Found != nil })
+			q := p.live.View().Ask
+			if q == nil {
+				if n != 9 {
+					t.Errorf("%d questions, want 9", n)
+				}
+				break
+			}
+			if q.Default == "" {
+				for _, c := range typed[q.Unit] {
+					p.press(string(c))
+				}
+			}
+			p.press("enter")
+			p.until("the next question", func(v *job.View) bool { return v.Ask == nil || v.Ask.ID != q.ID })
+		}
+		p.done(job.StepIdentity)
+		files, _ := filepath.Glob(filepath.Join(p.live.View().Sheet, "*-rig-*.toml"))
+		if len(files) != 1 {
+			t.Fatalf("rig files in the record: %v", files)
+		}
+		r, _, err := readRig(files[0])
+		if err != nil || r.Motor.SpeedMax != 3000 || r.Motor.CurrentMax != 8 || r.Encoder.CountsPerTurn != 2000 {
+			t.Errorf("%+v, %v", r, err)
 		}
 	})
 }
