@@ -30,6 +30,7 @@ var rooms = map[string]struct{ ours, forbidden []string }{
 	"safety/rig":         {[]string{"safety", "protocol/si"}, []string{"os"}},
 	"safety/safetytest":  {[]string{"safety", "protocol", "protocol/si"}, nil},
 	"safety/sim":         {[]string{"safety", "safety/safetytest", "protocol", "protocol/si"}, nil},
+	"safety/conformance": {[]string{"protocol", "link"}, []string{"os"}},
 	"safety/supervisor":  {[]string{"safety", "protocol", "protocol/si", "link"}, []string{"os"}},
 	"tune/trace":         {[]string{"protocol/si"}, nil},
 	"tune/model":         {[]string{"protocol/si"}, []string{"os"}},

@@ -27,11 +27,11 @@ func (s *session) open() error {
 	for range tries {
 		s.forget()
 		s.idLines, err = s.readIdentity(true)
-		if err == nil || errors.As(err, new(*lineError)) || errors.Is(err, errQuit) {
+		if err == nil || errors.As(err, new(*lineError)) || errors.Is(err, ErrInterrupted) {
 			break
 		}
 	}
-	if errors.As(err, new(*lineError)) || errors.Is(err, errQuit) {
+	if errors.As(err, new(*lineError)) || errors.Is(err, ErrInterrupted) {
 		return err
 	}
 	if err != nil {
@@ -181,7 +181,7 @@ func (s *session) prepare() error {
 	if err == nil {
 		err = s.putLimits(s.testLimits())
 	}
-	if err == nil || errors.Is(err, errQuit) || errors.As(err, new(*lineError)) {
+	if err == nil || errors.Is(err, ErrInterrupted) || errors.As(err, new(*lineError)) {
 		return err
 	}
 	return leftOut(err.Error())

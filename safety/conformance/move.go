@@ -61,7 +61,7 @@ func (s *session) rests() error {
 func moving(f func(*session) error) func(*session) error {
 	return func(s *session) error {
 		err := first(s.rests, func() error { return f(s) })
-		if errors.Is(err, errQuit) {
+		if errors.Is(err, ErrInterrupted) {
 			return err
 		}
 		_, off := s.ask(protocol.VerbDisarm, "")

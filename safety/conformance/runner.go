@@ -22,6 +22,9 @@ type Options struct {
 	// Interrupted ends the checks with a cut byte as soon as it reports true; it
 	// is asked every few ms. nil: never.
 	Interrupted func() bool
+	// Only names paragraphs ("P2", "P6.4", "P6.4a"); others are left out. Empty:
+	// all of them.
+	Only []string
 	// Brief leaves out the one check that takes a minute.
 	Brief bool
 	// Progress is told of each check as it is judged.
@@ -77,8 +80,8 @@ type leftOut string
 
 func (l leftOut) Error() string { return string(l) }
 
-// errQuit ends the whole run.
-var errQuit = errors.New("ended by hand")
+// ErrInterrupted says that Options.Interrupted ended the checks.
+var ErrInterrupted = errors.New("ended by hand; a cut byte was sent")
 
 // deciding are the checks without which nobody may drive a board.
 var deciding = []string{"P1.2a", "P2.1a", "P2.2a", "P4.2a", "P6.2a", "P6.4a", "P7.2e", "P12.1a"}
@@ -138,13 +141,13 @@ func (r *runner) one(c check) error {
 	var err error
 	for range restartsMax + 1 {
 		before := r.s.restarts
-		if err = r.try(c); err == nil || r.s.restarts == before || errors.Is(err, errQuit) || errors.As(err, new(*lineError)) {
+		if err = r.try(c); err == nil || r.s.restarts == before || errors.Is(err, ErrInterrupted) || errors.As(err, new(*lineError)) {
 			break
 		}
 		err = leftOut("the board restarted in the middle of it: " + err.Error())
 	}
 	switch {
-	case errors.Is(err, errQuit) || errors.As(err, new(*lineError)):
+	case errors.Is(err, ErrInterrupted) || errors.As(err, new(*lineError)):
 		return err
 	case isLeftOut(err):
 		r.leave(c, err.Error())
@@ -166,6 +169,9 @@ func isLeftOut(err error) bool { return errors.As(err, new(leftOut)) }
 
 // notNow is why a check is left out before it begins, or "".
 func (r *runner) notNow(c check) string {
+	if len(r.o.Only) > 0 && !slices.ContainsFunc(r.o.Only, func(p string) bool { return within(c.id, p) }) {
+		return "it was not asked for"
+	}
 	if c.needs != "" && !r.verdict[c.needs] {
 		return c.needs + " is not met, on which this one rests"
 	}
@@ -189,6 +195,13 @@ func (r *runner) notNow(c check) string {
 	return ""
 }
 
+// within reports whether a check belongs to a paragraph: P6.4a to P6, P6.4 and
+// P6.4a, but P12.1a not to P1.
+func within(id, paragraph string) bool {
+	rest, ok := strings.CutPrefix(id, paragraph)
+	return ok && (rest == "" || paragraph == "" || rest[0] < '0' || rest[0] > '9')
+}
+
 // try runs a check once and leaves the board off behind it.
 func (r *runner) try(c check) error {
 	s := r.s
@@ -199,11 +212,11 @@ func (r *runner) try(c check) error {
 		}
 	}
 	err := c.run(s)
-	if errors.Is(err, errQuit) {
+	if errors.Is(err, ErrInterrupted) {
 		return err
 	}
 	if c.arms {
-		if after := s.calm(); err == nil && errors.Is(after, errQuit) {
+		if after := s.calm(); err == nil && errors.Is(after, ErrInterrupted) {
 			return after
 		}
 	}

@@ -80,8 +80,8 @@ type session struct {
 	idLines   []string
 	boots     int
 	bootAt    time.Duration // when the last start was heard of
-	started   bool // a restart that was asked for is awaited
-	restarts  int  // restarts that nobody asked for
+	started   bool          // a restart that was asked for is awaited
+	restarts  int           // restarts that nobody asked for
 	wasLimits []uint32
 	wasGains  []uint32
 	wasStored []uint32
@@ -134,7 +134,7 @@ func (s *session) wait(d time.Duration, is func(received) bool) (*received, erro
 		}
 		if s.o.Interrupted != nil && s.o.Interrupted() {
 			_ = s.line.Write([]byte{protocol.Cut})
-			return nil, errQuit
+			return nil, ErrInterrupted
 		}
 		b, err := s.line.Read(min(end, now+slice))
 		if err != nil {
