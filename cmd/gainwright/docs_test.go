@@ -82,18 +82,7 @@ func TestReadmeOpensWithTheJob(t *testing.T) {
 
 // Every promise of SAFETY.md names tests, and every test that it names exists.
 func TestSafetyNamesTestsThatExist(t *testing.T) {
-	var code strings.Builder
-	err := filepath.WalkDir("../..", func(path string, d os.DirEntry, err error) error {
-		if err == nil && strings.HasSuffix(path, "_test.go") {
-			b, e := os.ReadFile(path)
-			code.Write(b)
-			err = e
-		}
-		return err
-	})
-	if err != nil {
-		t.Fatal(err)
-	}
+	code := allTests(t)
 	name := regexp.MustCompile("`(Test[A-Za-z0-9]+)`")
 	promises := regexp.MustCompile(`(?m)^\*\*S(\d+) `).FindAllStringSubmatchIndex(read(t, "SAFETY.md"), -1)
 	text := read(t, "SAFETY.md")
@@ -108,9 +97,37 @@ func TestSafetyNamesTestsThatExist(t *testing.T) {
 			t.Errorf("promise S%d names no test", i+1)
 		}
 		for _, m := range tests {
-			if !strings.Contains(code.String(), "func "+m[1]+"(") {
+			if !strings.Contains(code, "func "+m[1]+"(") {
 				t.Errorf("S%d names %s, which does not exist", i+1, m[1])
 			}
+		}
+	}
+}
+
+// allTests is the text of every test file.
+func allTests(t *testing.T) string {
+	t.Helper()
+	var code strings.Builder
+	err := filepath.WalkDir("../..", func(path string, d os.DirEntry, err error) error {
+		if err == nil && strings.HasSuffix(path, "_test.go") {
+			b, e := os.ReadFile(path)
+			code.Write(b)
+			err = e
+		}
+		return err
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return code.String()
+}
+
+// Every test or benchmark that DEVELOPERS.md names exists.
+func TestDevelopersNamesTestsThatExist(t *testing.T) {
+	code := allTests(t)
+	for _, m := range regexp.MustCompile("`((?:Test|Benchmark)[A-Za-z0-9]+)`").FindAllStringSubmatch(read(t, "DEVELOPERS.md"), -1) {
+		if !strings.Contains(code, "func "+m[1]+"(") {
+			t.Errorf("DEVELOPERS.md names %s, which does not exist", m[1])
 		}
 	}
 }
