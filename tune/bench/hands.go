@@ -117,7 +117,9 @@ func (h *hands) Permit(e safety.Event) error {
 	began := h.Now()
 	wait := h.until(coastMax, func(s *session) bool {
 		if s.now-began > permitMax {
-			if no, ok := errors.AsType[*supervisor.NotNow](err); !ok || no.Cause.Code != safety.CodeMoving {
+			// A trip of the board can only be cleared at rest, too.
+			no, ok := errors.AsType[*supervisor.NotNow](err)
+			if !errors.Is(err, errBoardTripped) && !(ok && no.Cause.Code == safety.CodeMoving) {
 				return true
 			}
 			s.view.Busy = "waiting for the shaft to come to rest"

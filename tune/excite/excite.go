@@ -22,6 +22,7 @@ type Known struct {
 	Noise        float64 // rad/s, standard deviation of the speed at rest
 	Loop         float64 // s
 	FallSlope    float64 // V/s at which the drive may fall towards zero, for what braking gives back; 0: at once
+	Dips         bool    // the drive falls by way of zero, where a shorted winding brakes and gives nothing back
 	BrakeVolts   float64 // V of back-EMF up to which the drive may go to zero at once and brake; above it a run ends with the output off
 }
 
@@ -93,9 +94,21 @@ func (b *builder) off(note string) {
 // braked like that. Else the plan is over: the output goes off and the motor
 // coasts.
 func (b *builder) end(k Known, value float64) {
-	if k.FallSlope == 0 && math.Abs(value) <= k.BrakeVolts {
+	if math.Abs(value) <= k.BrakeVolts {
 		b.off("rest")
 	}
+}
+
+// fallTo brings the speed down to that of a lower drive and holds it for d. Under
+// zero drive the back-EMF decays with the time constant towards minus the sliding
+// friction, so that it needs Tau·ln(from/to).
+func (b *builder) fallTo(k Known, value float64, d time.Duration, note string) {
+	if k.Dips && value > 0 && b.at > value {
+		b.hold(0, max(10*time.Millisecond, seconds(k.Tau*math.Log(b.at/value))), "dip")
+		b.hold(value, d, note)
+		return
+	}
+	b.hold(value, b.jumpTime(value)+d, note)
 }
 
 // motionCounts is how many counts end a ramp as motion seen.
@@ -161,11 +174,26 @@ func Creep(k Known, c safety.Check, d time.Duration) safety.Plan {
 	return p
 }
 
+// Rates of the slow part of a breakaway ramp, as a share of the start a second: a
+// coarse encoder sees the first motion late, and needs a slower one.
+const (
+	rampRate   = 0.35
+	rampSlow   = 0.12
+	coarseTurn = 0.05 // rad a count
+)
+
+// Coarse reports whether the encoder is one that needs slow ramps.
+func (k Known) Coarse() bool { return k.Env.RadPerCount > coarseTurn }
+
 // Breakaway makes n slow ramps each way, each ended by the first motion, with a
 // rest between them.
-func Breakaway(k Known, n int) safety.Plan {
+func Breakaway(k Known, n int, slow bool) safety.Plan {
 	b := volts(k.Env)
 	top := float64(k.Env.VoltsMax)
+	rate, quick := rampRate, 0.5
+	if slow {
+		rate, quick = rampSlow, 0.6
+	}
 	until := safety.Until{Kind: safety.UntilMotion, Counts: motionCounts}
 	for i := range n {
 		for _, dir := range k.ways() {
@@ -173,12 +201,12 @@ func Breakaway(k Known, n int) safety.Plan {
 			if dir < 0 {
 				start = k.StartReverse
 			}
-			// Quick to half of what was seen, then slowly past it: the slow part is
-			// what is measured.
-			half := dir * 0.5 * start
+			// Quick to about half of what was seen, then slowly past it: the slow part
+			// is what is measured.
+			half := dir * quick * start
 			b.ramp(half, 100*time.Millisecond, until, fmt.Sprintf("%s %d", way(dir), i+1))
 			end := math.Min(1.8*start, 0.95*top)
-			b.ramp(dir*end, seconds((end-0.5*start)/math.Max(0.35*start, 0.05)), until, fmt.Sprintf("%s %d", way(dir), i+1))
+			b.ramp(dir*end, seconds((end-quick*start)/math.Max(rate*start, 0.02)), until, fmt.Sprintf("%s %d", way(dir), i+1))
 			b.off("rest")
 		}
 	}
@@ -252,7 +280,7 @@ func Step(k Known, bias, amplitude float64, n int) safety.Plan {
 	b.hold(bias, seconds(settle), "settle")
 	for range n {
 		b.hold(bias+amplitude, hold, "up")
-		b.hold(bias-amplitude, b.jumpTime(bias-amplitude)+hold, "down")
+		b.fallTo(k, bias-amplitude, hold, "down")
 	}
 	b.hold(bias, hold, "middle")
 	b.end(k, bias)
@@ -277,7 +305,7 @@ func Heights(k Known, bias, amplitude float64, n int, seed uint32) safety.Plan {
 	}
 	for i := range n {
 		low := bias - amplitude*share(2*i)
-		b.hold(low, b.jumpTime(low)+seconds(math.Max(0.1, 2.5*k.Tau)), "down")
+		b.fallTo(k, low, seconds(math.Max(0.1, 2.5*k.Tau)), "down")
 		b.hold(bias+amplitude*share(2*i+1), seconds(math.Max(0.1, 3.5*k.Tau)), "up")
 	}
 	b.end(k, bias)

@@ -104,7 +104,7 @@ func Of(p safety.Plan, k Known) (Forecast, error) {
 	if k.Resistance > 0 {
 		f.PeakCurrent, f.Energy, f.Heat = model.Value(loaded.peak), model.Value(loaded.energy), model.Value(loaded.heat)
 	}
-	f.BusRise = s.busRise(f.TopSpeedUnloaded, math.Max(free.back, loaded.back))
+	f.BusRise = s.busRise(f.TopSpeedUnloaded, loaded.back)
 	f.CoastTurns = s.coast(loaded.last)
 	return f, nil
 }

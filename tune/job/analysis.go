@@ -22,6 +22,8 @@ type FitSettings struct {
 	Kind      string  `json:"kind"`
 	Holdout   float64 `json:"holdout"`
 	FreeStart bool    `json:"free_start"`
+	Edges     bool    `json:"edges,omitempty"`         // work out when the drive changed between two samples
+	Bus       float64 `json:"bus_nominal_V,omitempty"` // a bus above it, after braking, is no reference for a sag
 }
 
 // fitDefaults is how a job fits.
@@ -30,11 +32,38 @@ var fitDefaults = FitSettings{Kind: identify.KindAuto, Holdout: 0.5, FreeStart: 
 // Identify fits the models to a step record and judges them on a second one, or
 // on the step record's last part where second is nil.
 func (set FitSettings) Identify(step, second *trace.Trace) (identify.Result, error) {
+	if set.Bus > 0 {
+		step = busAtMost(step, set.Bus)
+		if second != nil {
+			second = busAtMost(second, set.Bus)
+		}
+	}
+	if set.Edges {
+		step = edges(step)
+		if second != nil {
+			second = edges(second)
+		}
+	}
 	traces := []*trace.Trace{about(step)}
 	if second != nil {
 		traces = append(traces, about(second))
 	}
 	return identify.RunJoint(traces, identify.Options{Kind: set.Kind, Holdout: set.Holdout, FreeStart: set.FreeStart})
+}
+
+// busAtMost cuts the bus of a record to the supply's nominal voltage: where the
+// supply takes nothing back a record may begin and end with a bus that braking
+// has raised.
+func busAtMost(tr *trace.Trace, nominal float64) *trace.Trace {
+	if tr.Bus == nil {
+		return tr
+	}
+	out := *tr
+	out.Bus = make([]float64, len(tr.Bus))
+	for i, v := range tr.Bus {
+		out.Bus[i] = math.Min(v, nominal)
+	}
+	return &out
 }
 
 // Law is what a board says of the loop that it closes, as far as gains and
@@ -119,7 +148,7 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 			out.Found = &m
 		}
 	}
-	if out.Proposals, out.Chosen, err = s.propose(loop); err != nil {
+	if out.Proposals, out.Chosen, err = s.propose(s.cautious(loop, f)); err != nil {
 		return out, err
 	}
 	if out.Chosen < 0 {
@@ -141,6 +170,27 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 		out.Worst = &w
 	}
 	return out, err
+}
+
+// Caution with a dead time that is not well known (our choice).
+const (
+	deadSigmas = 1.645 // one-sided 95 %
+	deadUnseen = 0.5   // of a loop period, where the fit ends at no dead time
+)
+
+// cautious is the loop with the dead time that it has at most: that which a rule
+// is given, so that the bound holds where the fit is uncertain. Margins are judged
+// with the dead time that was found.
+func (s DesignSettings) cautious(loop model.Linear, f identify.Fit) model.Linear {
+	dead, sd, ok := f.Value("dead_time")
+	switch {
+	case !ok:
+	case dead == 0:
+		loop.DeadTime += math.Max(deadUnseen*s.SampleTime, deadSigmas*sd)
+	default:
+		loop.DeadTime += deadSigmas * sd
+	}
+	return loop
 }
 
 // linear takes the drive limits off: margins and the unit step are those of the

@@ -14,6 +14,9 @@ import (
 
 const (
 	busShare    = 0.6  // of the room between nominal and highest bus that a plan may use
+	unseenShare = 0.01 // of the nominal bus, where the bus is not measured
+	dipTau      = 0.06 // s
+	dipCurrent  = 0.85 // of the current limit
 	guessedOhms = 0.45 // of rated volts over the current limit, where no resistance is known: rather too low (our choice)
 )
 
@@ -35,7 +38,13 @@ func (j *Job) busRoom() float64 {
 	if j.Rig.Drive.SupplySinks || !j.Env.Brake || j.Env.BusMax <= 0 {
 		return math.Inf(1)
 	}
-	return busShare * (float64(j.Env.BusMax) - j.Rig.Drive.BusNominal)
+	room := busShare * (float64(j.Env.BusMax) - j.Rig.Drive.BusNominal)
+	if !j.ID.BusMeasured {
+		// The board then works out its duty from the nominal bus: what the bus rises
+		// by, the drive is wrong by.
+		room = math.Min(room, unseenShare*j.Rig.Drive.BusNominal)
+	}
+	return room
 }
 
 // brakeVolts is the back-EMF up to which a shorted winding keeps the current.
@@ -54,13 +63,26 @@ func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Pl
 	}
 	known := j.known()
 	known.Resistance = j.lowOhms()
-	for slope := float64(j.Env.VoltsMax) / 0.02; ; slope /= 1.6 {
-		f, err := forecast.Of(plan, known)
-		if err != nil || !f.BusRise.Known() || float64(f.BusRise) <= room || slope < 1e-3 {
+	over := func(p safety.Plan) bool {
+		f, err := forecast.Of(p, known)
+		return err == nil && (f.BusRise.Known() && float64(f.BusRise) > room || k.Dips && f.PeakCurrent.Known() && float64(f.PeakCurrent) > dipCurrent*float64(j.Env.CurrentMax))
+	}
+	if !over(plan) {
+		return k, plan
+	}
+	// A dip needs a few values of the console, and a winding that may be shorted.
+	if j.Tau >= dipTau && j.Bias+j.Amplitude <= k.BrakeVolts {
+		k.Dips = true
+		if plan = of(k); !over(plan) {
 			return k, plan
 		}
+		k.Dips = false
+	}
+	for slope := float64(j.Env.VoltsMax) / 0.02; ; slope /= 1.6 {
 		k.FallSlope = slope
-		plan = of(k)
+		if plan = of(k); !over(plan) || slope < 1e-3 {
+			return k, plan
+		}
 	}
 }
 

@@ -34,14 +34,18 @@ const breakRepeats = 4
 
 // doBreakaway finds the voltage at which the shaft starts, each way.
 func (j *Job) doBreakaway() (result, error) {
-	r, err := j.run(StepBreakaway, excite.Breakaway(j.sizing(), breakRepeats), nil)
+	if j.sizing().Coarse() {
+		// Quick ramps first, to know where the slow ones have to be slow.
+		if _, fwd, rev, err := j.ramps(2, false); err != nil {
+			return "", err
+		} else if len(fwd) > 0 && (len(rev) > 0 || !j.Env.Reverse) {
+			j.BreakForward, j.BreakReverse = fwd, rev
+		}
+	}
+	r, fwd, rev, err := j.ramps(breakRepeats, j.sizing().Coarse())
 	if err != nil {
 		return "", err
 	}
-	if r.Reason != safety.EndDone {
-		return "", j.notDone(r)
-	}
-	fwd, rev := j.starts(r.Samples)
 	if len(fwd) < 2 || j.Env.Reverse && len(rev) < 2 {
 		return "", refuse(722, "breakaway", "the shaft did not start in most ramps", "is it free? Do the sign check again")
 	}
@@ -57,6 +61,18 @@ func (j *Job) doBreakaway() (result, error) {
 		words += fmt.Sprintf("; R %.3g ± %.2g Ω", j.electric.R, 1.96*j.electric.RSD)
 	}
 	return result(words), j.h.Keep("fit", "breakaway", rec)
+}
+
+// ramps runs n breakaway ramps each way.
+func (j *Job) ramps(n int, slow bool) (r Result, fwd, rev []float64, err error) {
+	if r, err = j.run(StepBreakaway, excite.Breakaway(j.sizing(), n, slow), nil); err != nil {
+		return r, nil, nil, err
+	}
+	if r.Reason != safety.EndDone {
+		return r, nil, nil, j.notDone(r)
+	}
+	fwd, rev = j.starts(r.Samples)
+	return r, fwd, rev, nil
 }
 
 func breakQuantity(name string, v []float64, file string) sheet.Quantity {
@@ -314,6 +330,10 @@ func (j *Job) operating() (bias, amplitude float64) {
 	return bias, amplitude
 }
 
+// slowShare is the percentage of the longest run that steps with slow ways down
+// may take.
+const slowShare = 40
+
 // stepRepeats is how many steps each way the step test makes.
 const stepRepeats = 3
 
@@ -322,11 +342,21 @@ func (j *Job) doStep() (result, error) {
 	j.Bias, j.Amplitude = j.operating()
 	k, plan := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, stepRepeats) })
 	if k.FallSlope > 0 {
-		// A slow way down is no longer than it has to be.
-		if most := 4 * j.Tau * k.FallSlope; most < j.Amplitude {
-			j.Amplitude = math.Max(most, math.Min(j.Amplitude, 15*k.SpeedStep/j.Gain))
+		// The ways down are slow: as large as the time for a run allows.
+		for plan.Duration() > slowShare*j.Env.RunTimeMax/100 && j.Amplitude > 8*k.SpeedStep/j.Gain {
+			j.Amplitude *= 0.8
 			plan = excite.Step(k, j.Bias, j.Amplitude, stepRepeats)
 		}
+		if plan.Duration() > j.Env.RunTimeMax {
+			plan = excite.Step(k, j.Bias, j.Amplitude, 1)
+		}
+	}
+	for range 8 { // the largest size that fits
+		if _, _, err := j.forecast(plan); err == nil {
+			break
+		}
+		j.Amplitude *= 0.8
+		k, plan = j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, stepRepeats) })
 	}
 	tr, file, err := j.record(StepStep, plan)
 	if err != nil {
@@ -345,7 +375,7 @@ func (j *Job) doSecond() (result, error) {
 		return excite.PRBS(k, j.Bias, j.Amplitude, clock, bits, j.opt.Seed, longest)
 	})
 	words := fmt.Sprintf("pseudo-random ±%.3g V, one bit %s, seed %#x", j.Amplitude, milliseconds(clock), j.opt.Seed)
-	if k.FallSlope > 0 {
+	if k.FallSlope > 0 || k.Dips {
 		_, plan = j.braked(func(k excite.Known) safety.Plan { return excite.Heights(k, j.Bias, j.Amplitude, heights, j.opt.Seed) })
 		words = fmt.Sprintf("steps of different heights up to ±%.3g V, seed %#x", j.Amplitude, j.opt.Seed)
 	}

@@ -62,6 +62,9 @@ func (j *Job) forecast(p safety.Plan) (PlanView, []sheet.Quantity, error) {
 		if ohms := j.ohms(); ohms > 0 {
 			f.PeakCurrent = model.Value(over / ohms)
 		}
+		if f.BusRise.Known() && !j.Rig.Drive.SupplySinks && j.Env.Brake {
+			f.BusRise = model.Value(j.loopBus(r))
+		}
 	}
 	v.Band = f.Band
 	v.Expect = thin(f.Line.Time, f.Line.Speed)

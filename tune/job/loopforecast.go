@@ -40,9 +40,10 @@ type setpointStep struct{ from, to, slope float64 }
 // parts are the stairs of a step, and the rest of hold.
 func (s setpointStep) parts(hold float64) []design.Part {
 	n := max(1, int(math.Ceil(math.Abs(s.to-s.from)/(s.slope*renewS)-1e-9)))
+	stair := math.Copysign(s.slope*renewS, s.to-s.from)
 	var p []design.Part
 	for i := 1; i < n; i++ {
-		w := s.from + (s.to-s.from)*float64(i)/float64(n)
+		w := s.from + float64(i)*stair
 		p = append(p, design.Part{From: w, To: w, Duration: renewS})
 	}
 	return append(p, design.Part{From: s.to, To: s.to, Duration: math.Max(hold-float64(n-1)*renewS, renewS)})

@@ -119,10 +119,10 @@ func planParts(p safety.Plan) []design.Part {
 			parts = append(parts, design.Part{From: s.To, To: s.To, Duration: s.Duration.Seconds()})
 			continue
 		}
-		n := max(1, int(math.Round(s.Duration.Seconds()/renewS)))
-		for i := range n {
-			w := s.From + (s.To-s.From)*float64(i)/float64(n)
-			parts = append(parts, design.Part{From: w, To: w, Duration: s.Duration.Seconds() / float64(n)})
+		d := s.Duration.Seconds()
+		for t := 0.0; t < d-1e-9; t += renewS {
+			w := s.From + (s.To-s.From)*t/d
+			parts = append(parts, design.Part{From: w, To: w, Duration: math.Min(renewS, d-t)})
 		}
 	}
 	return parts

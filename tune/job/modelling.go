@@ -34,7 +34,7 @@ func about(tr *trace.Trace) *trace.Trace {
 	}
 	settled := first
 	for i := first + 1; i <= last; i++ {
-		if math.Abs(tr.Voltage[i]) > 0.5*top && math.Abs(tr.Voltage[i]-tr.Voltage[i-1]) < 0.002*top {
+		if math.Abs(tr.Voltage[i]) > 0.3*top && steady(tr, i, last, 0.004*top) {
 			settled = i
 			break
 		}
@@ -53,10 +53,30 @@ func about(tr *trace.Trace) *trace.Trace {
 	return tr.Slice(from, last)
 }
 
+// steadyS is longer than a ramp stands still between two values of the console.
+const steadyS = 0.045
+
+// steady reports whether the drive stays within band for steadyS from sample i on.
+func steady(tr *trace.Trace, i, last int, band float64) bool {
+	for k := i + 1; k <= last; k++ {
+		if math.Abs(tr.Voltage[k]-tr.Voltage[i]) > band {
+			return false
+		}
+		if tr.Time[k]-tr.Time[i] >= steadyS {
+			return true
+		}
+	}
+	return false
+}
+
 // doFit fits and judges.
 func (j *Job) doFit() (result, error) {
 	j.h.Show(func(v *View) { v.Busy, v.Share = "fitting", 0 })
 	set := fitDefaults
+	if !j.Rig.Drive.SupplySinks {
+		set.Bus = j.Rig.Drive.BusNominal
+	}
+	set.Edges = coarse(j.StepTrace, j.Tau) || j.SecondTrace != nil && coarse(j.SecondTrace, j.Tau)
 	res, err := set.Identify(j.StepTrace, j.SecondTrace)
 	if err != nil {
 		return "", refuse(730, "model", err.Error(), "repeat the step test, larger if the envelope allows it")

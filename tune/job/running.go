@@ -83,6 +83,10 @@ func (j *Job) notDone(r Result) error {
 		number = int(safety.CodeBusLow)
 		words, remedy = "the supply folds back: "+words, "raise its current limit, or make the run smaller"
 	}
+	if r.BoardStop != nil && r.BoardStop.Cause == protocol.CauseBeat {
+		number = 763
+		words, remedy = "the board hears nothing from this end: "+words, "look at the line to the board: cable, adapter, baud rate"
+	}
 	if number == 0 {
 		number = 721
 	}

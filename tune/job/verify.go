@@ -80,7 +80,8 @@ type StepMetrics struct {
 // the targets.
 func (j *Job) doVerify() (result, error) {
 	w := j.VerifySpeed()
-	lo, hi := 0.8*w, 1.2*w
+	share := j.verifyShare(w)
+	lo, hi := (1-share)*w, (1+share)*w
 	hold := time.Duration(math.Max(0.6, 6*settlingOr(j, 0.1)) * float64(time.Second)).Round(10 * time.Millisecond)
 	levels := []float64{lo, hi, lo}
 	if j.Env.Reverse {
@@ -105,6 +106,21 @@ func (j *Job) doVerify() (result, error) {
 	return j.judgeVerify(r, levels, hold, slope)
 }
 
+// Shares of the middle speed that a verify step goes to either side: larger where
+// the speed comes in coarse steps, so that an overshoot can be read at all.
+const (
+	verifyLeast = 0.2
+	verifyMost  = 0.4
+	verifySteps = 20.0 // speed steps in a step
+)
+
+func (j *Job) verifyShare(w float64) float64 {
+	if w <= 0 {
+		return verifyLeast
+	}
+	return math.Min(verifyMost, math.Max(verifyLeast, verifySteps*j.sizing().SpeedStep/(2*w)))
+}
+
 func settlingOr(j *Job, other float64) float64 {
 	if j.Margins != nil && j.Margins.Step.SettlingTime.Known() {
 		return float64(j.Margins.Step.SettlingTime)
@@ -127,8 +143,10 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope 
 			from = levels[i-1]
 		}
 		if from*to > 0 { // both turning, the same way
-			band = math.Max(math.Max(0.02*math.Abs(to-from), j.sizing().SpeedStep), 3*ripple)
 			seg := window(r, at, at+hold)
+			// Ripple may be another at each level: that of this one, at its end.
+			ripple = math.Max(ripple, rippleOf(window(r, at+hold*2/3, at+hold)))
+			band = math.Max(math.Max(0.02*math.Abs(to-from), j.sizing().SpeedStep), 3*ripple)
 			m, ok := measureStep(seg, from, to, band)
 			if ok {
 				f, pts, err := j.forecastMetrics(setpointStep{from, to, slope}, hold, band)
@@ -163,7 +181,10 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope 
 // steadyRipple is the RMS of the speed about its mean at the end of the first
 // level, in rad/s.
 func (j *Job) steadyRipple(r Result, hold time.Duration) float64 {
-	s := window(r, hold*2/3, hold)
+	return rippleOf(window(r, hold*2/3, hold))
+}
+
+func rippleOf(s []Sample) float64 {
 	v := make([]float64, len(s))
 	for i := range s {
 		v[i] = float64(s[i].Speed)

@@ -62,6 +62,7 @@ type motor struct {
 	tau, tauE        float64 // s, with all inertia
 	load, gear       float64 // inertia at the output, ratio
 	top, stall, amps float64 // rad/s, A, A
+	idle             float64 // A that friction draws
 }
 
 func (d *draw) motor() motor {
@@ -116,14 +117,14 @@ func (d *draw) rig(i int) Rig {
 	if d.chance(0.5) {
 		d.line("ambient_degC = %.3g\nthermal_resistance_K_W = %.3g\nthermal_time_constant_s = %.3g", d.between(5, 35), math.Min(20, 60*4*m.ohms/(m.volts*m.volts)), d.between(30, 120))
 	}
-	d.friction(m)
+	d.friction(&m)
 	d.rest(m, r.Fault)
 	r.Text = []byte(d.b.String())
 	return r
 }
 
 // friction draws breakaway as a share of the rated volts.
-func (d *draw) friction(m motor) {
+func (d *draw) friction(m *motor) {
 	share := d.ratio(0.02, 0.08)
 	if m.gear > 1 {
 		share = d.ratio(0.05, 0.15)
@@ -137,6 +138,7 @@ func (d *draw) friction(m motor) {
 		d.line("\n[load]\ngear_ratio = %g", m.gear)
 	}
 	static, over, viscous, stribeck := share*m.stall*m.k, d.between(1.1, 1.8), d.ratio(0.002, 0.04)*m.k*m.k/m.ohms, d.ratio(0.004, 0.012)*m.top
+	m.idle = share / over * m.stall
 	side := func(name string, f float64) {
 		d.line("\n[friction.%s]\ncoulomb_Nm = %.4g\nstatic_Nm = %.4g\nviscous_Nms = %.4g\nstribeck_rad_s = %.3g", name, f*static/over, f*static, viscous, stribeck)
 	}
@@ -215,7 +217,8 @@ func (d *draw) gains(m motor, fault string) {
 	case "resets-itself":
 		d.line("value = %.3g", d.between(3, 20))
 	case "supply-folds":
-		d.line("value = %.3g", d.between(0.03, 0.06)*m.stall)
+		// Less than half of what friction alone draws at half drive.
+		d.line("value = %.3g", 0.02+d.between(0.2, 0.45)*m.idle/2)
 	case "mute", "deaf", "restarts":
 		d.line("at_s = %.3g", d.between(2, 60))
 	}
