@@ -26,6 +26,9 @@ import (
 	"gainwright/tune/sheet"
 )
 
+// demoTiming is as patient as a rig file may be.
+const demoTiming = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\nboard_timeout_ms = 600\n"
+
 // consoleFlags are what console and demo share.
 type consoleFlags struct {
 	port, rigFile, out, operator string
@@ -75,8 +78,13 @@ func demoCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
+			// Board and console share this process: a laptop under load holds both up,
+			// and no shaft turns. A real board keeps the rig file's default.
+			if r, err = rig.Parse("demo", append(text, demoTiming...)); err != nil {
+				return err
+			}
 			o := bench.Options{Simulated: true}
-			o.Job.Rig, o.Job.RigText = r, text
+			o.Job.Rig, o.Job.RigText = r, append(text, demoTiming...)
 			sim, err := bench.ServePTY(simrig.New(cfg, 1))
 			if errors.Is(err, bench.ErrNoPTY) {
 				sim = bench.ServePipe(simrig.New(cfg, 1))

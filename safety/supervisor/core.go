@@ -241,6 +241,11 @@ type NotNow struct{ Cause safety.Cause }
 
 func (e *NotNow) Error() string { return e.Cause.String() }
 
+// Refusal returns the number, the cause and what to do.
+func (e *NotNow) Refusal() (number int, cause, remedy string) {
+	return int(e.Cause.Code), e.Cause.Words, e.Cause.Do
+}
+
 // Permit asks the limiter whether gains or limits may be written now, by a
 // safety.GainWrite or safety.LimitWrite.
 func (c *Core) Permit(e safety.Event) error {

@@ -154,10 +154,19 @@ func (j *Job) refused(id StepID, err error) error {
 		s.Status = ToDo
 	}
 	var r *RefusedError
-	if errors.As(err, &r) && r.Number > int(safety.CodeAsked)-1 && r.Number < int(safety.CodeNoPlan) {
+	var limiter interface {
+		Refusal() (number int, cause, remedy string)
+	}
+	if !errors.As(err, &r) && errors.As(err, &limiter) {
+		n, cause, remedy := limiter.Refusal()
+		r = &RefusedError{Number: n, What: s.Title, Cause: cause, Remedy: remedy}
+		err = r
+		s.Reason = err.Error()
+	}
+	if r != nil && r.Number > int(safety.CodeAsked)-1 && r.Number < int(safety.CodeNoPlan) {
 		s.Status = ToDo // stopped by the person: nothing was refused
 	}
-	if errors.As(err, &r) {
+	if r != nil {
 		j.h.Show(func(v *View) {
 			v.Refusal = &RefusalView{Number: r.Number, What: r.What, Cause: r.Cause, Remedy: r.Remedy}
 		})
