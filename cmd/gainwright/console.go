@@ -74,17 +74,19 @@ func demoCommand() *cobra.Command {
 			if err != nil {
 				return usage(err)
 			}
-			r, text, err := bench.RigOf(cfg)
+			_, text, err := bench.RigOf(cfg)
 			if err != nil {
 				return err
 			}
 			// Board and console share this process: a laptop under load holds both up,
 			// and no shaft turns. A real board keeps the rig file's default.
-			if r, err = rig.Parse("demo", append(text, demoTiming...)); err != nil {
+			text = append(text, demoTiming...)
+			r, err := rig.Parse("demo", text)
+			if err != nil {
 				return err
 			}
 			o := bench.Options{Simulated: true}
-			o.Job.Rig, o.Job.RigText = r, append(text, demoTiming...)
+			o.Job.Rig, o.Job.RigText = r, text
 			sim, err := bench.ServePTY(simrig.New(cfg, 1))
 			if errors.Is(err, bench.ErrNoPTY) {
 				sim = bench.ServePipe(simrig.New(cfg, 1))

@@ -164,7 +164,7 @@ func TestArming(t *testing.T) {
 	wantOld("another number", arm("00000000"))
 	wantOld("used up by the refusal before", arm(n))
 	old := nonce()
-	n = nonce()
+	nonce()
 	wantOld("a newer one was given out", arm(old))
 	n = nonce()
 	b.must("no 16", "arm", fmt.Sprintf("%s %04X", n, b.limits^1))

@@ -1,11 +1,14 @@
 package bench
 
 import (
+	"errors"
 	"fmt"
 	"sync"
 
+	"gainwright/safety"
 	"gainwright/tune/job"
 	"gainwright/tune/sheet"
+	"gainwright/tune/trace"
 )
 
 // lateFile is the tape's file before there is a folder to put it in: it keeps
@@ -89,3 +92,55 @@ func (h *hands) closeRecord(tape error) (string, error) {
 func (h *hands) Outcome(outcome, reason string) { h.outcome, h.reason = outcome, reason }
 
 var _ job.Hands = (*hands)(nil)
+
+func (h *hands) Keep(kind, name string, v any) error {
+	_, err := h.KeepFile(kind, name, v)
+	return err
+}
+
+func (h *hands) KeepFile(kind, name string, v any) (string, error) {
+	sh, err := h.record()
+	var l sheet.Line
+	if sh != nil {
+		l, err = sh.Entry(sheet.Kind(kind), name, v)
+	}
+	return l.File, h.wrote(err)
+}
+
+func (h *hands) KeepText(kind, name, text string) error {
+	sh, err := h.record()
+	if sh != nil {
+		_, err = sh.Text(sheet.Kind(kind), name, text)
+	}
+	return h.wrote(err)
+}
+
+func (h *hands) KeepTrace(name string, tr *trace.Trace, meta ...string) (string, error) {
+	sh, err := h.record()
+	var l sheet.Line
+	if sh != nil {
+		l, err = sh.Trace(name, tr, meta...)
+	}
+	return l.File, h.wrote(err)
+}
+
+func (h *hands) Card() (card, sticker string, err error) {
+	if h.sheet == nil {
+		return "", "", errors.New("there is no record to make a card from: give a folder for it")
+	}
+	r, problems := sheet.Open(h.sheet.Dir())
+	if r == nil {
+		return "", "", fmt.Errorf("the record cannot be read: %v", problems)
+	}
+	d := sheet.CardOf(r)
+	return sheet.Card(d), sheet.Sticker(d), nil
+}
+
+// wrote tells the limiter when the record cannot be written: the job stops, the
+// motor's limits do not depend on it.
+func (h *hands) wrote(err error) error {
+	if err != nil {
+		h.do(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
+	}
+	return err
+}
