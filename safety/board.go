@@ -85,7 +85,7 @@ func (m *machine) boardArmed() {
 		m.log("armed")
 	case Disarmed, Stopping, Tripped:
 		m.log("an arm that nobody waits for: taken back")
-		m.do(SendStop{})
+		m.cut()
 		m.do(SendDisarm{})
 		m.boardOff = false
 	}

@@ -27,6 +27,8 @@ func TestEveryLimitTrips(t *testing.T) {
 	}{
 		{"speed", safety.Plan{}, safety.CodeSpeed, 20 * ms,
 			func(d *drill, in time.Duration) { d.board.Speed = 241 }, nil},
+		{"speed backwards", safety.Plan{}, safety.CodeSpeed, 20 * ms,
+			func(d *drill, in time.Duration) { d.board.Speed = -241 }, nil},
 		{"speed of the plan", safety.Plan{SpeedMax: 20}, safety.CodeSpeed, 20 * ms,
 			func(d *drill, in time.Duration) { d.board.Speed = 21 }, nil},
 		{"speed ahead", safety.Plan{SpeedMax: 100}, safety.CodeSpeedAhead, 200 * ms,
@@ -164,7 +166,7 @@ func TestHeatFollowsTheThermalRelayCurve(t *testing.T) {
 		ic, tau := float64(env.CurrentContinuous), env.HeatTau.Seconds()
 		want := -tau * math.Log(1-(ic/amps)*(ic/amps))
 		at := 0.0
-		for us := uint64(1); ; us += 10000 {
+		for us := uint64(1); us < 300e6; us += 10000 {
 			s, _ = env.Step(s, safety.Sample{At: time.Duration(us) * time.Microsecond, Sample: protocol.Sample{
 				BoardUS: us, Has: protocol.HasCurrent, Current: si.Amps(amps)}})
 			if at = float64(us) / 1e6; env.HeatShare(s) >= 1 {
@@ -350,6 +352,15 @@ func TestARampBecomesACut(t *testing.T) {
 	d.wait(100 * ms)
 	if d.s.Phase != safety.Disarmed {
 		t.Errorf("after the ramp: %v", d.s.Phase)
+	}
+	d = begin()
+	d.do(safety.Ramping{At: d.now})
+	d.do(safety.BoardArmed{At: d.now}) // a late answer out of nowhere: a cut, and it is a level
+	d.all = nil
+	d.now += 10 * ms
+	d.do(safety.Tick{At: d.now})
+	if !has[safety.SendStop](d.all) {
+		t.Error("a cut in the ramp is not repeated")
 	}
 	d = begin()
 	d.do(safety.Wake{At: d.now})

@@ -144,16 +144,24 @@ func (w *World) any() safety.Event {
 }
 
 // asks sends an intent on its way from the keyboard: it arrives a little later,
-// and a stop may come in between.
+// and a stop may come in between. On a laptop that is held up it arrives much
+// later.
 func (w *World) asks(e safety.Event) {
-	w.at(w.now+time.Duration(1+w.rng.IntN(30))*ms, item{kind: itIntent, event: e, taken: w.now})
+	late := time.Duration(1+w.rng.IntN(30)) * ms
+	if w.rng.IntN(25) == 0 {
+		late += time.Duration(w.rng.IntN(1500)) * ms
+	}
+	w.at(w.now+late, item{kind: itIntent, event: e, taken: w.now})
 }
 
-// pickFault chooses a pair of a phase and a fault. A phase that is rare waits for
-// its turn, so that all pairs come about equally often.
+// pickFault chooses a pair of a phase and a fault. Tripped is chosen while it is
+// there: to wait for it would be to wait for a trip with nothing going wrong.
 func (w *World) pickFault() {
 	w.next = 1 + Fault(w.rng.IntN(int(FaultEnd)-1))
-	w.target = safety.Phase(w.rng.IntN(int(safety.Tripped) + 1))
+	w.target = safety.Phase(w.rng.IntN(int(safety.Tripped)))
+	if w.s.Phase == safety.Tripped && w.rng.IntN(2) == 0 {
+		w.target = safety.Tripped
+	}
 }
 
 // faults begins and ends faults, and counts what was covered.
