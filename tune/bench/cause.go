@@ -29,6 +29,9 @@ func causeOf(err error) string {
 	if w := causeWords[r.Number]; w != "" {
 		return w
 	}
+	if strings.Contains(r.Cause, "does not answer") {
+		return "mute"
+	}
 	for _, w := range []string{"resonance", "gravity"} {
 		if strings.Contains(r.Cause, w) {
 			return w

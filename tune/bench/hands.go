@@ -203,19 +203,34 @@ func stopSeen(s *session) job.StopSeen {
 func (h *hands) ClearTrip(q job.Question) error {
 	h.do(func(s *session) { s.askID++; q.ID = s.askID; s.asking, s.answer = &q, nil })
 	// Both the console's trip and the board's have to be gone.
-	declined := false
+	declined, gone, restarts := false, false, h.Line().Restarts
 	err := h.until(0, func(s *session) bool {
 		st := s.core.State()
+		if gone = s.boots-s.expected > restarts || s.core.Link().Lost; gone {
+			return true
+		}
 		if declined = s.answer != nil && s.answer.ID < 0; declined {
 			return true
 		}
 		return st.Phase == safety.Disarmed && st.Heard && st.Last.State == protocol.Off && !st.Last.TripHeld
 	})
 	h.do(func(s *session) { s.asking, s.answer = nil, nil })
-	if declined && err == nil {
-		err = job.ErrDeclined
+	switch {
+	case err != nil:
+	case h.Line().Restarts > restarts:
+		return h.restarted(q.Text)
+	case gone:
+		return &job.RefusedError{Number: int(safety.CodeLinkLost), What: q.Text, Cause: "link lost", Remedy: "look at cable and power; then start again at the identity"}
+	case declined:
+		return job.ErrDeclined
 	}
 	return err
+}
+
+// restarted refuses what goes on with a board that has begun anew.
+func (h *hands) restarted(what string) error {
+	return &job.RefusedError{Number: 727, What: what, Cause: fmt.Sprintf("the board restarted by itself, %d times in this session", h.Line().Restarts),
+		Remedy: "look for dips of its supply and for a watchdog; then start again at the identity"}
 }
 
 func (h *hands) Watch(d time.Duration) ([]protocol.Sample, error) {
@@ -294,6 +309,10 @@ func (h *hands) Run(spec job.Run) (job.Result, error) {
 		if r.declined {
 			return true
 		}
+		// An arm that lapsed or was lost before the run began can be asked for again.
+		if r.asked && r.ended == nil && s.core.State().Phase == safety.Disarmed {
+			r.asked = false
+		}
 		return r.ended != nil && !s.core.State().Phase.ArmHeld() && s.core.State().Phase != safety.Stopping
 	})
 	if err == nil && !r.declined && spec.Plan.Check == safety.CheckSilence && r.ended.Reason == safety.EndSilence {
@@ -306,9 +325,8 @@ func (h *hands) Run(spec job.Run) (job.Result, error) {
 	if err != nil {
 		return job.Result{}, err
 	}
-	if n := h.Line().Restarts; n > 0 && r.declined && r.refused != nil {
-		return job.Result{}, &job.RefusedError{Number: 727, What: spec.Plan.Name, Cause: fmt.Sprintf("the board restarted by itself, %d times in this session", n),
-			Remedy: "look for dips of its supply and for a watchdog; then start again at the identity"}
+	if r.declined && r.refused != nil && h.Line().Restarts > 0 {
+		return job.Result{}, h.restarted(spec.Plan.Name)
 	}
 	if r.declined && r.refused != nil {
 		return job.Result{}, &job.RefusedError{Number: int(r.refused.Code), What: "arm refused", Cause: r.refused.Words, Remedy: r.refused.Do}

@@ -221,11 +221,10 @@ type Stair struct {
 	Up       bool
 }
 
-// Staircase makes levels of voltage up to top volts, and down again where down is
-// set, in each of the ways (1 forward, -1 reverse). Each level is held for five
-// time constants, at least 0.4 s, and its second half is what is averaged. Where
-// the drive may not fall at once there is no way down, and one way a plan.
-func Staircase(k Known, levels int, top float64, ways []float64, down bool) (safety.Plan, []Stair) {
+// Staircase makes levels of voltage up to top volts in the direction dir (1
+// forward, -1 reverse), and down again where down is set. Each level is held for
+// five time constants, at least 0.4 s, and its second half is what is averaged.
+func Staircase(k Known, levels int, top, dir float64, down bool) (safety.Plan, []Stair) {
 	b := volts(k.Env)
 	var stairs []Stair
 	at := time.Duration(0)
@@ -235,32 +234,25 @@ func Staircase(k Known, levels int, top float64, ways []float64, down bool) (saf
 		stairs = append(stairs, Stair{Volts: v, From: at + dwell/2, To: at + dwell, Up: up})
 		at += dwell
 	}
-	for n, dir := range ways {
-		start := k.StartForward
-		if dir < 0 {
-			start = k.StartReverse
-		}
-		low := math.Min(1.25*start, 0.6*top)
-		if n > 0 {
-			rest := seconds(math.Max(0.3, 4*k.Tau))
-			b.hold(0, rest, "rest")
-			at += rest
-		}
-		for i := range levels {
-			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), true)
-		}
-		for i := levels - 2; i >= 0 && down; i-- {
-			level(dir*(low+(top-low)*float64(i)/float64(levels-1)), false)
-		}
+	start := k.StartForward
+	if dir < 0 {
+		start = k.StartReverse
+	}
+	low := math.Min(1.25*start, 0.6*top)
+	for i := range levels {
+		level(dir*(low+(top-low)*float64(i)/float64(levels-1)), true)
+	}
+	for i := levels - 2; i >= 0 && down; i-- {
+		level(dir*(low+(top-low)*float64(i)/float64(levels-1)), false)
 	}
 	if down {
 		b.off("rest")
 	}
 	name := "staircase"
-	if len(ways) == 1 && ways[0] < 0 {
+	if dir < 0 {
 		name = "staircase reverse"
 	}
-	return safety.Plan{Name: name, Purpose: "steady speed against voltage, up and down", Segments: b.segs}, stairs
+	return safety.Plan{Name: name, Purpose: "steady speed against voltage", Segments: b.segs}, stairs
 }
 
 // Times of the small-signal tests: the console renews a drive every 10 ms, and a

@@ -36,6 +36,10 @@ type Known struct {
 	CoulombForward, CoulombReverse     float64
 	BreakawayForward, BreakawayReverse float64
 
+	// DeadBand is the part of the Coulomb volts that the driver loses: it draws no
+	// current, and a motor that slows down under drive gives back all the more.
+	DeadBand float64
+
 	BusNominal     float64 // V
 	BusCapacitance float64 // F
 	SupplyCanSink  bool    // the supply takes energy back

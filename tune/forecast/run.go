@@ -75,7 +75,8 @@ func (r *runner) power(drive, before, h float64) {
 	if ohm <= 0 {
 		return
 	}
-	current := (drive - r.s.ke*before) / ohm
+	winding := math.Copysign(math.Max(0, math.Abs(drive)-r.s.k.DeadBand), drive)
+	current := (winding - r.s.ke*before) / ohm
 	if !r.s.tauKnown && !r.s.locked {
 		// Without the time constant the course of the speed is not known either:
 		// a stalled start, or a reversal at full back-EMF, is the bound.

@@ -32,14 +32,25 @@ func (j *Job) lowOhms() float64 {
 	return guessedOhms * j.Rig.Motor.VoltageRated / float64(j.Env.CurrentMax)
 }
 
+// deadBand is the part of the sliding friction in volts that draws no current,
+// forward: the driver's loss. Without a measured current half is taken for it.
+func (j *Job) deadBand() float64 {
+	all := j.slidingVolts()
+	if e := j.electric; e != nil && e.Ke > 0 {
+		return math.Max(0, all-e.R*e.Coulomb/e.Ke)
+	}
+	return all / 2
+}
+
 // busRoom is how many volts the bus may rise in a plan; +Inf where the supply
-// takes energy back or the drive cannot brake.
-func (j *Job) busRoom() float64 {
+// takes energy back or the drive cannot brake. unseen makes it small for a record
+// to be fitted whose bus is not measured.
+func (j *Job) busRoom(unseen bool) float64 {
 	if j.Rig.Drive.SupplySinks || !j.Env.Brake || j.Env.BusMax <= 0 {
 		return math.Inf(1)
 	}
 	room := busShare * (float64(j.Env.BusMax) - j.Rig.Drive.BusNominal)
-	if !j.ID.BusMeasured {
+	if unseen && !j.ID.BusMeasured {
 		// The board then works out its duty from the nominal bus: what the bus rises
 		// by, the drive is wrong by.
 		room = math.Min(room, unseenShare*j.Rig.Drive.BusNominal)
@@ -57,12 +68,12 @@ func (j *Job) brakeVolts() float64 {
 func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Plan) {
 	k := j.sizing()
 	k.BrakeVolts = j.brakeVolts()
-	plan, room := of(k), j.busRoom()
+	plan, room := of(k), j.busRoom(true)
 	if math.IsInf(room, 1) {
 		return k, plan
 	}
 	known := j.known()
-	known.Resistance = j.lowOhms()
+	known.Resistance, known.DeadBand = j.lowOhms(), j.deadBand()
 	over := func(p safety.Plan) bool {
 		f, err := forecast.Of(p, known)
 		return err == nil && (f.BusRise.Known() && float64(f.BusRise) > room || k.Dips && f.PeakCurrent.Known() && float64(f.PeakCurrent) > dipCurrent*float64(j.Env.CurrentMax))
@@ -92,9 +103,10 @@ func (j *Job) loopBus(r design.Run) float64 {
 	if ohms <= 0 || farads <= 0 {
 		return 0
 	}
-	bank, most := 0.0, 0.0
+	bank, most, dead := 0.0, 0.0, j.deadBand()
 	for i, u := range r.Drive {
-		bank = math.Max(0, bank-u*(u-ke*r.Speed[i])/ohms*r.Period)
+		winding := math.Copysign(math.Max(0, math.Abs(u)-dead), u)
+		bank = math.Max(0, bank-u*(winding-ke*r.Speed[i])/ohms*r.Period)
 		most = math.Max(most, bank)
 	}
 	v := j.Rig.Drive.BusNominal

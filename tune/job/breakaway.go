@@ -27,19 +27,32 @@ func (j *Job) roughModel(r Result) {
 // breakRepeats is how many ramps each way the breakaway test makes.
 const breakRepeats = 4
 
+// breakTries is how often they are repeated where the shaft started before
+// earlyStart of what was expected.
+const (
+	breakTries = 3
+	earlyStart = 0.72
+)
+
 // doBreakaway finds the voltage at which the shaft starts, each way.
 func (j *Job) doBreakaway() (result, error) {
-	if j.sizing().Coarse() {
-		// Quick ramps first, to know where the slow ones have to be slow.
-		if _, fwd, rev, err := j.ramps(2, false); err != nil {
-			return "", err
-		} else if len(fwd) > 0 && (len(rev) > 0 || !j.Env.Reverse) {
-			j.BreakForward, j.BreakReverse = fwd, rev
-		}
-	}
-	r, fwd, rev, err := j.ramps(breakRepeats, j.sizing().Coarse())
+	// A first ramp each way, to know where the others have to be slow.
+	r, fwd, rev, err := j.ramps(1, false)
 	if err != nil {
 		return "", err
+	}
+	for try := 0; try < breakTries; try++ {
+		if len(fwd) > 0 && (len(rev) > 0 || !j.Env.Reverse) {
+			j.BreakForward, j.BreakReverse = fwd, rev
+		}
+		k := j.sizing()
+		if r, fwd, rev, err = j.ramps(breakRepeats, k.Coarse()); err != nil {
+			return "", err
+		}
+		// A start before the slow part of the ramp was met too quickly.
+		if len(fwd) > 0 && mean(fwd) > earlyStart*k.StartForward && (len(rev) == 0 || mean(rev) > earlyStart*k.StartReverse) {
+			break
+		}
 	}
 	if len(fwd) < 2 || j.Env.Reverse && len(rev) < 2 {
 		return "", refuse(722, "breakaway", "the shaft did not start in most ramps", "is it free? Do the sign check again")

@@ -39,8 +39,8 @@ func (j *Job) doCount() (result, error) {
 	if err != nil {
 		return "", err
 	}
-	if len(after) == 0 {
-		return "", refuse(711, "count check", "no telemetry", "look at the link")
+	if err := j.needCounts(after); err != nil {
+		return "", err
 	}
 	got := float64(after[len(after)-1].Counts - before[len(before)-1].Counts)
 	finding, err := judgeCount(got, want)
@@ -55,6 +55,9 @@ func (j *Job) doCount() (result, error) {
 	finding = stopFinding(seen)
 	if errors.Is(err, ErrNoCut) {
 		finding = err.Error()
+		if _, gone := j.h.Request(protocol.VerbID, ""); errors.Is(gone, protocol.ErrNoAnswer) {
+			return "", refuse(763, "stop key", "the board sends, but answers neither a cut nor a request: it hears nothing from this end", "look at the line to the board: cable, adapter, baud rate")
+		}
 		err = refuse(762, "stop key", finding, "a board that does not answer a cut is look-only: use the E-stop, mend the firmware")
 	}
 	j.check("stop key", "board", ok, finding, stopQuantities(seen)...)
@@ -66,6 +69,9 @@ func (j *Job) doCount() (result, error) {
 }
 
 func (j *Job) needCounts(s []protocol.Sample) error {
+	if n := j.h.Line().Restarts; len(s) == 0 && n > 0 {
+		return refuse(727, "no telemetry", fmt.Sprintf("the board restarted by itself, %d times in this session", n), "look for dips of its supply and for a watchdog; then start again at the identity")
+	}
 	if len(s) == 0 {
 		return refuse(711, "no telemetry", "the board sends no samples", "look at the link; ask for the identity again")
 	}
@@ -288,6 +294,11 @@ func (j *Job) doSilence() (result, error) {
 	plan := excite.Creep(j.sizing(), safety.CheckSilence, 4*time.Second)
 	r, err := j.run(StepSilence, plan, nil)
 	if err != nil {
+		return "", err
+	}
+	if r.Judged == nil && r.Reason != safety.EndSilence {
+		err := j.notDone(r)
+		j.check("silence", "board", false, err.Error())
 		return "", err
 	}
 	if r.Judged == nil || !r.Judged.Passed {

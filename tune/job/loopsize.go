@@ -71,7 +71,7 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 		farthest, from = math.Max(farthest, math.Abs(to-from)), to
 	}
 	slope = math.Min(0.8*j.Env.AccelMax, farthest/renewS)
-	room := j.busRoom()
+	room := j.busRoom(false)
 	seen := math.Min(hold.Seconds(), 2*settlingOr(j, 0.3)+0.2) // long enough for the peak
 	var peak, top float64
 	for range slopeTries {

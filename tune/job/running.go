@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"strings"
 	"time"
 
 	"gainwright/protocol"
@@ -83,7 +84,8 @@ func (j *Job) notDone(r Result) error {
 		number = int(safety.CodeBusLow)
 		words, remedy = "the supply folds back: "+words, "raise its current limit, or make the run smaller"
 	}
-	if r.BoardStop != nil && r.BoardStop.Cause == protocol.CauseBeat {
+	// A board that hears nothing cannot be asked for its log either.
+	if r.BoardStop != nil && r.BoardStop.Cause == protocol.CauseBeat || strings.Contains(r.Cause.Words, protocol.CauseBeat.String()) {
 		number = 763
 		words, remedy = "the board hears nothing from this end: "+words, "look at the line to the board: cable, adapter, baud rate"
 	}

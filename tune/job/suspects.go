@@ -17,8 +17,8 @@ const (
 	turnShareRated   = 0.02 // of the rated volts
 	turnShareSliding = 0.15 // of sliding friction
 	turnSigmas       = 8.0  // of the amplitude's own ±
-	playLeast        = 0.08 // rad of the motor shaft
-	playSigmas       = 5.0
+	playLeast        = 0.12 // rad of the motor shaft
+	playSigmas       = 8.0
 	playCounts       = 3.0
 )
 
@@ -100,7 +100,7 @@ func (j *Job) play(s []Sample) (rad, sd float64, ramps int) {
 		}
 		dir := math.Copysign(1, float64(s[i].Volts))
 		from, base := i, s[max(i-1, 0)].Counts
-		for i < len(s) && float64(s[i].Volts)*dir > 0 && abs64(s[i].Counts-base) <= 1 {
+		for i < len(s) && float64(s[i].Volts)*dir > 0 && s[i].Counts == base {
 			i++
 		}
 		if x, ok := flight(s[from:i], dir, e); ok {

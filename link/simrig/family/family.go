@@ -96,7 +96,7 @@ func (d *draw) motor() motor {
 	}
 	m.load = math.Max(0, total-m.j) * m.gear * m.gear
 	m.top, m.stall = m.volts/m.k, m.volts/m.ohms
-	m.amps = m.stall * d.between(0.45, 0.95)
+	m.amps = math.Min(99, m.stall*d.between(0.45, 0.95))
 	return m
 }
 
