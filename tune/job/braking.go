@@ -16,6 +16,7 @@ const (
 	busShare    = 0.6  // of the room between nominal and highest bus that a plan may use
 	unseenShare = 0.01 // of the nominal bus, where the bus is not measured
 	dipTau      = 0.06 // s
+	slopeShare  = 0.7  // of the steepest fall that the forecast allows
 	dipCurrent  = 0.85 // of the current limit
 	guessedOhms = 0.45 // of rated volts over the current limit, where no resistance is known: rather too low (our choice)
 )
@@ -92,7 +93,10 @@ func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Pl
 	for slope := float64(j.Env.VoltsMax) / 0.02; ; slope /= 1.6 {
 		k.FallSlope = slope
 		if plan = of(k); !over(plan) || slope < 1e-3 {
-			return k, plan
+			// What comes back grows quickly with the slope, and friction is known to
+			// some tens of percent.
+			k.FallSlope = slopeShare * slope
+			return k, of(k)
 		}
 	}
 }

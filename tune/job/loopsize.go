@@ -73,7 +73,7 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 	slope = math.Min(0.8*j.Env.AccelMax, farthest/renewS)
 	room := j.busRoom(false)
 	seen := math.Min(hold.Seconds(), 2*settlingOr(j, 0.3)+0.2) // long enough for the peak
-	var peak, top float64
+	var peak, top, bus float64
 	for range slopeTries {
 		ramp := farthest / slope
 		if longer = hold + seconds(ramp).Round(10*time.Millisecond); longer*time.Duration(len(levels)) > j.Env.RunTimeMax-time.Second {
@@ -90,12 +90,13 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 		if err != nil {
 			return 0, 0, err
 		}
-		if peak, top = j.peaks(r); (most == 0 || peak <= most) && top <= speedMax && j.loopBus(r) <= room {
+		peak, top = j.peaks(r)
+		if bus = j.loopBus(r); (most == 0 || peak <= most) && top <= speedMax && bus <= room {
 			return slope, longer, nil
 		}
 		slope *= slopeFactor
 	}
-	return 0, 0, refuse(725, "closed loop refused", fmt.Sprintf("no ramp of the setpoint keeps the forecast inside: at best %.3g V over back-EMF, allowed %.3g V (%s), and %s, allowed %s", peak, most, why, rpm(top), rpm(speedMax)),
+	return 0, 0, refuse(725, "closed loop refused", fmt.Sprintf("no ramp of the setpoint keeps the forecast inside: at best %.3g V over back-EMF, allowed %.3g V (%s); %s, allowed %s; bus %.2g V up, allowed %.2g V", peak, most, why, rpm(top), rpm(speedMax), bus, room),
 		"choose a smaller Ms bound, or look at the current limit of the rig file")
 }
 

@@ -82,7 +82,8 @@ func (j *Job) doVerify() (result, error) {
 	w := j.VerifySpeed()
 	share := j.verifyShare(w)
 	lo, hi := (1-share)*w, (1+share)*w
-	hold := time.Duration(math.Max(0.6, 6*settlingOr(j, 0.1)) * float64(time.Second)).Round(10 * time.Millisecond)
+	settle := settlingOr(j, 0.1)
+	hold := seconds(math.Max(0.6, math.Min(6*settle, math.Max(4, 2*settle)))).Round(10 * time.Millisecond)
 	levels := []float64{lo, hi, lo}
 	if j.Env.Reverse {
 		levels = append(levels, 0, -lo, -hi, -lo)
