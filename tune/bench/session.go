@@ -201,7 +201,9 @@ func (s *session) intent(i job.Intent) {
 		s.core.Do(safety.Disarm{At: s.now})
 	case job.Acknowledge:
 		s.core.Do(safety.Acknowledge{At: s.now})
-		s.acknowledged()
+		if st := s.core.State(); st.Phase != safety.Tripped || st.Trip.Acked {
+			s.acknowledged() // the limiter has taken it, or there is nothing to take
+		}
 	case job.ResetTrip:
 		s.core.Do(safety.Reset{At: s.now})
 	case job.SetMark:
