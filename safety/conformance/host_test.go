@@ -43,7 +43,7 @@ func (l *hostLine) Write(p []byte) error {
 
 func (l *hostLine) Read(until time.Duration) ([]byte, error) {
 	for l.now < until {
-		d := min(time.Millisecond, until-l.now)
+		d := min(4*time.Millisecond, until-l.now)
 		l.now += d
 		b, err := l.order('R', uint32(d/time.Microsecond), nil)
 		if err != nil || len(b) > 0 {
@@ -105,6 +105,22 @@ func hostConforms(t *testing.T, l *hostLine, o Options) {
 	}
 }
 
+// sources lists files and reads them, so that a cached result of this test ends
+// with their change.
+func sources(t *testing.T, pattern string) []string {
+	t.Helper()
+	files, err := filepath.Glob(pattern)
+	if err != nil || len(files) == 0 {
+		t.Fatalf("no files match %s", pattern)
+	}
+	for _, f := range files {
+		if _, err := os.ReadFile(f); err != nil {
+			t.Fatal(err)
+		}
+	}
+	return files
+}
+
 // The reference firmware in C, compiled for this machine, in both arithmetics.
 func TestFirmwareConforms(t *testing.T) {
 	need(t, "gcc")
@@ -114,12 +130,9 @@ func TestFirmwareConforms(t *testing.T) {
 			dir := "../../protocol/firmware"
 			args := []string{"-O2", "-DGW_FIXED=" + fixed, "-I" + dir + "/core", "-I" + dir + "/host", "-o", bin}
 			for _, pattern := range []string{"/core/*.c", "/host/*.c"} {
-				files, err := filepath.Glob(dir + pattern)
-				if err != nil || len(files) == 0 {
-					t.Fatalf("no files match %s", pattern)
-				}
-				args = append(args, files...)
+				args = append(args, sources(t, dir+pattern)...)
 			}
+			sources(t, dir+"/*/*.h")
 			if msg, err := exec.Command("gcc", append(args, "-lm")...).CombinedOutput(); err != nil {
 				t.Fatalf("gcc: %v\n%s", err, msg)
 			}
