@@ -149,6 +149,24 @@ func (p *person) runs() {
 	p.until("running", phase("RUNNING"))
 }
 
+// runsAll arms and starts every run of a step: some make more than one.
+func (p *person) runsAll(id job.StepID) {
+	p.t.Helper()
+	for range 8 {
+		p.runs()
+		over := false
+		p.until("the next plan or the end of "+string(id), func(v *job.View) bool {
+			for _, s := range v.Steps {
+				over = over || s.ID == id && s.Status != job.Doing
+			}
+			return over || v.Plan != nil && v.Drive.Phase == "DISARMED"
+		})
+		if over {
+			return
+		}
+	}
+}
+
 // again presses a key until it has done what it is for: none does anything while
 // the shaft still turns.
 func (p *person) again(key string, ok func(*job.View) bool) {
@@ -210,7 +228,7 @@ func (p *person) upTo(last job.StepID) {
 			p.again("e", func(v *job.View) bool { return v.Drive.Acked })
 			p.again("z", phase("DISARMED"))
 		case job.StepSign, job.StepSilence, job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFirstLoop, job.StepVerify:
-			p.runs()
+			p.runsAll(s.ID)
 		case job.StepPush:
 			p.until("the word to type", func(v *job.View) bool { return v.Ask != nil && v.Ask.Kind == job.AskWord })
 			for _, c := range p.live.View().Ask.Want {
