@@ -113,6 +113,9 @@ func printConformance(w io.Writer, r conformance.Report) {
 		fmt.Fprintf(w, "not judged %s %s\n     %s\n", l.ID, l.What, plain.Visible(l.Reason, 300))
 	}
 	fmt.Fprintf(w, "board %s, protocol %s: %d passed, %d failed, %d not judged. Use: %s\n", plain.Visible(r.Board, 40), r.Protocol, r.Passed, r.Failed, len(r.NotJudged), r.Use)
+	if r.NotRestored != "" {
+		fmt.Fprintln(w, "ATTENTION: "+plain.Visible(r.NotRestored, 300))
+	}
 	if r.Reason != "" {
 		fmt.Fprintln(w, plain.Visible(r.Reason, 300))
 	}

@@ -44,6 +44,33 @@ func (s *session) open() error {
 		return ErrDriven
 	}
 	s.n = 100
+	if set, err := s.heldLimits(); err == nil { // P7.2a judges this
+		s.wasLimits = set
+	}
+	return nil
+}
+
+// putBack brings limits and gains back to what was found, also where the checks
+// were ended in the middle.
+func (s *session) putBack() error {
+	s.o.Interrupted = nil
+	if s.limits == nil && s.wasGains == nil {
+		return nil // nothing was changed
+	}
+	if err := first(s.settle, s.calm); err != nil {
+		return err
+	}
+	if s.wasLimits != nil && s.limits != nil && !slices.Equal(s.limits, s.wasLimits) {
+		if err := first(func() error { return s.putLimits(s.wasLimits) }, func() error { return s.limitsAre(s.wasLimits) }); err != nil {
+			return fmt.Errorf("limits are not as found: %w", err)
+		}
+	}
+	if s.wasGains == nil || s.gainsAre("run", s.wasGains) == nil && s.gainsAre("store", s.wasStored) == nil {
+		return nil
+	}
+	if err := first(func() error { return s.storeBack(nil) }, func() error { return s.gainsAre("store", s.wasStored) }, func() error { return s.gainsAre("run", s.wasGains) }); err != nil {
+		return fmt.Errorf("gains are not as found: %w", err)
+	}
 	return nil
 }
 

@@ -1,6 +1,7 @@
 package conformance
 
 import (
+	"errors"
 	"os"
 	"path/filepath"
 	"slices"
@@ -162,4 +163,55 @@ func TestIDsAreThoseOfTheSpecification(t *testing.T) {
 	if len(seen) < 60 {
 		t.Errorf("%d checks", len(seen))
 	}
+}
+
+// What the checks change is as found after a part of them, too, and where a
+// person ends them while other gains are stored.
+func TestLimitsAndGainsAreLeftAsFound(t *testing.T) {
+	cases := []Options{{Only: []string{"P6.2a", "P7.2f"}}, {Only: []string{"P8.3"}}}
+	for late := range 60 { // ends at every step of the checks that store
+		storing, steps := false, 0
+		cases = append(cases, Options{
+			Only: []string{"P8.3a", "P8.3e", "P8.3h"},
+			Interrupted: func() bool {
+				if storing {
+					steps++
+				}
+				return steps > late
+			},
+			Progress: func(r Result) { storing = storing || r.ID == "P8.3e" },
+		})
+	}
+	for i, o := range cases {
+		l := &rigLine{rig: loadRig(t, "benchtop")}
+		l.advance(200 * time.Millisecond)
+		before := asked(t, l)
+		r, err := Run(l, o)
+		if err != nil && !errors.Is(err, ErrInterrupted) || r.NotRestored != "" {
+			t.Errorf("%v, %s", err, r.NotRestored)
+		}
+		if after := asked(t, l); after != before {
+			t.Errorf("case %d: limits and gains %s, before %s", i, after, before)
+		}
+	}
+	if r := runRig(t, "gainsdiffer", Options{Brief: true}); !strings.HasPrefix(r.NotRestored, "gains are not as found: ") {
+		t.Errorf("a board that cannot store was left with %q", r.NotRestored)
+	}
+}
+
+// asked are the CRCs of limits and gains as the board gives them.
+func asked(t *testing.T, l Line) string {
+	t.Helper()
+	s := newSession(l, Options{})
+	s.n = 9000
+	var all []string
+	for _, q := range []string{"lim crc", "gain crc run", "gain crc store"} {
+		verb, args, _ := strings.Cut(q, " ")
+		a, err := s.must(verb, args)
+		if err != nil {
+			t.Fatal(err)
+		}
+		all = append(all, a.field(0))
+	}
+	return strings.Join(all, " ")
 }

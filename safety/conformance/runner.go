@@ -64,6 +64,9 @@ type Report struct {
 	Conforms  bool     `json:"conforms"` // nothing failed, and what decides was judged
 	Use       string   `json:"use"`
 	Reason    string   `json:"reason"` // why look-only; empty for drive
+	// NotRestored says what the checks could not bring back to as it was found;
+	// empty: limits and gains are as found.
+	NotRestored string `json:"not_restored"`
 }
 
 // check is one line of the list.
@@ -97,11 +100,19 @@ func Run(line Line, o Options) (rep Report, err error) {
 	s := newSession(line, o)
 	r := runner{s: s, o: o, verdict: map[string]bool{}}
 	defer func() { _ = line.Write([]byte{protocol.Cut}) }()
+	var back error
 	if err = s.open(); err == nil || errors.Is(err, errNoIdentity) {
 		spoke := err == nil
 		err = r.all(spoke)
+		if spoke && !errors.As(err, new(*lineError)) {
+			back = s.putBack()
+		}
 	}
-	return r.report(), err
+	rep = r.report()
+	if back != nil {
+		rep.NotRestored = back.Error()
+	}
+	return rep, err
 }
 
 type runner struct {
