@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"strconv"
+	"strings"
 	"time"
 
 	"gainwright/protocol"
@@ -106,7 +107,7 @@ func (h *hands) Check(c safety.Check, passed bool) {
 // long as one may coast; else for what comes by itself, such as the clearing of
 // the board's own trip.
 const (
-	coastMax  = 90 * time.Second
+	coastMax  = 4 * time.Minute
 	permitMax = 5 * time.Second
 )
 
@@ -312,6 +313,11 @@ func (h *hands) Run(spec job.Run) (job.Result, error) {
 		// An arm that lapsed or was lost before the run began can be asked for again.
 		if r.asked && r.ended == nil && s.core.State().Phase == safety.Disarmed {
 			r.asked = false
+		}
+		// A board that still sees its shaft turn is asked again later.
+		if e := r.ended; e != nil && !e.Started && e.Cause.Code == safety.CodeBoardRefused && strings.Contains(e.Cause.Words, protocol.RefMoving.String()) {
+			s.view.Refusal = &job.RefusalView{Number: int(e.Cause.Code), What: "arm refused", Cause: e.Cause.Words, Remedy: "wait until the shaft is at rest, then arm again"}
+			r.ended, r.asked, r.refused, r.samples = nil, false, &e.Cause, nil
 		}
 		return r.ended != nil && !s.core.State().Phase.ArmHeld() && s.core.State().Phase != safety.Stopping
 	})

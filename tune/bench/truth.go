@@ -59,7 +59,7 @@ func truth(v *Virtual, j *job.Job, rules bool) TruthReport {
 	// The loop sees the mean over the speed window: half of it is delay.
 	loop := m
 	loop.DeadTime += t.Window / 2
-	best := optimum(loop, *j.Gains, j.MsMax())
+	best := optimum(loop, *j.Gains, j.MsMax(), j.NoiseGainMax())
 	ours := judgeOn(loop, *j.Gains, best)
 	rep.Ms, rep.PhaseMargin, rep.LoadIAERatio = ours.Ms, ours.phase, ours.LoadIAERatio
 	if !ours.Stable {
@@ -107,9 +107,9 @@ func slowestReal(m model.Linear) float64 {
 }
 
 // optimum is the load-disturbance IAE of the largest integral gain for the true
-// plant under the same bound; 0 where there is none.
-func optimum(m model.Linear, g design.Gains, msMax float64) float64 {
-	best, chosen, err := design.Propose(m, design.Options{Rule: design.RuleLargestKi, MsMax: msMax, SampleTime: g.SampleTime, ComputeDelay: g.ComputeDelay,
+// plant under the same bounds; 0 where there is none.
+func optimum(m model.Linear, g design.Gains, msMax, noise float64) float64 {
+	best, chosen, err := design.Propose(m, design.Options{Rule: design.RuleLargestKi, MsMax: msMax, Noise: noise, SampleTime: g.SampleTime, ComputeDelay: g.ComputeDelay,
 		Discretisation: g.Discretisation})
 	if err != nil || chosen < 0 || !best[chosen].Margins.LoadStep.IAE.Known() {
 		return 0

@@ -179,7 +179,7 @@ const (
 	readingTime = 300 * time.Millisecond
 	turningTime = 2600 * time.Millisecond
 	stopAfter   = 1500 * time.Millisecond
-	patience    = 90 * time.Second // a flywheel coasts for long
+	patience    = 4 * time.Minute // a flywheel coasts for long
 	givesUp     = time.Minute
 )
 

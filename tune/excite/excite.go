@@ -258,7 +258,7 @@ func Staircase(k Known, levels int, top, dir float64, down bool) (safety.Plan, [
 // Times of the small-signal tests: the console renews a drive every 10 ms, and a
 // level has to last some of those.
 func leadIn(k Known) (ramp, settle float64) {
-	return math.Max(0.1, 2*k.Tau), math.Max(0.15, 6*k.Tau)
+	return math.Max(0.1, 4*k.Tau), math.Max(0.15, 6*k.Tau)
 }
 
 // Step makes n steps up and down about bias, each held for five time constants.

@@ -101,8 +101,9 @@ type DesignSettings struct {
 	Settling  float64 `json:"settling_target_s"` // 0: no target
 	Law
 	DriveMax float64  `json:"drive_max_V"`
-	Found    []string `json:"found_words"`   // gains as found, eight digits a slot
-	Running  []string `json:"running_words"` // gains running before the push
+	Noise    float64  `json:"noise_gain_max,omitempty"` // V of drive per rad/s of speed noise; 0: not bounded
+	Found    []string `json:"found_words"`              // gains as found, eight digits a slot
+	Running  []string `json:"running_words"`            // gains running before the push
 
 	// The motors of the worst case.
 	Seed            uint64  `json:"worst_seed,string"`
@@ -205,7 +206,7 @@ func linear(g design.Gains) design.Gains {
 func (s DesignSettings) propose(loop model.Linear) (proposals []design.Proposal, chosen int, err error) {
 	bound := s.MsMax
 	for {
-		proposals, chosen, err = design.Propose(loop, design.Options{MsMax: bound, SampleTime: s.SampleTime, ComputeDelay: s.ComputeDelay,
+		proposals, chosen, err = design.Propose(loop, design.Options{MsMax: bound, Noise: s.Noise, SampleTime: s.SampleTime, ComputeDelay: s.ComputeDelay,
 			Discretisation: s.Discretisation})
 		if err != nil || chosen < 0 {
 			return proposals, chosen, err

@@ -16,6 +16,7 @@ const (
 	busShare    = 0.6  // of the room between nominal and highest bus that a plan may use
 	unseenShare = 0.01 // of the nominal bus, where the bus is not measured
 	dipTau      = 0.06 // s
+	tightShare  = 0.88 // of the current limit
 	slopeShare  = 0.7  // of the steepest fall that the forecast allows
 	dipCurrent  = 0.85 // of the current limit
 	guessedOhms = 0.45 // of rated volts over the current limit, where no resistance is known: rather too low (our choice)
@@ -99,6 +100,13 @@ func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Pl
 			return k, of(k)
 		}
 	}
+}
+
+// tight reports whether the forecast of a plan comes nearer to the current limit
+// than the model is good for.
+func (j *Job) tight(p safety.Plan) bool {
+	f, err := forecast.Of(p, j.known())
+	return err == nil && f.PeakCurrent.Known() && float64(f.PeakCurrent) > tightShare*float64(j.Env.CurrentMax)
 }
 
 // loopBus is the rise of the bus in a forecast of the closed loop, in V.

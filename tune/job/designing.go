@@ -37,6 +37,20 @@ func (j *Job) Nudge(by int) {
 	_ = j.Do(StepDesign)
 }
 
+// noiseShare is the share of the drive by which one step of the reported speed may
+// move it (our choice).
+const noiseShare = 0.15
+
+// NoiseGainMax is the bound on the noise gain of proposals, in V of drive per
+// rad/s; 0 where the speed step is not known.
+func (j *Job) NoiseGainMax() float64 {
+	step := j.sizing().SpeedStep
+	if step <= 0 {
+		return 0
+	}
+	return noiseShare * float64(j.Env.VoltsMax) / step
+}
+
 // designSettings is what the proposal of this job depends on beside the fit. The
 // worst case takes a winding up to 60 K warmer and ferrite magnets, −0.2 % per K
 // (common practice, no source).
@@ -44,6 +58,7 @@ func (j *Job) designSettings() DesignSettings {
 	s := DesignSettings{MsMax: j.opt.MsMax, Overshoot: j.Rig.Targets.Overshoot, Settling: j.Rig.Targets.Settling, Law: LawOf(j.ID),
 		DriveMax: float64(j.Env.VoltsMax), Found: j.Found.digits(), Running: j.Running.digits(),
 		Seed: uint64(j.opt.Seed), WarmMin: 0, WarmMax: 60, MagnetPerKelvin: -0.002}
+	s.Noise = j.NoiseGainMax()
 	s.GainMin, s.GainMax = gainSpread(j.Static)
 	return s
 }

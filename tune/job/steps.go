@@ -52,7 +52,7 @@ func (j *Job) doStep() (result, error) {
 		}
 	}
 	for range 8 { // the largest size that fits
-		if _, _, err := j.forecast(plan); err == nil {
+		if _, _, err := j.forecast(plan); err == nil && !j.tight(plan) {
 			break
 		}
 		j.Amplitude *= 0.8

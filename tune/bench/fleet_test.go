@@ -1,0 +1,207 @@
+package bench
+
+import (
+	"bytes"
+	"encoding/json"
+	"math"
+	"os"
+	"path/filepath"
+	"slices"
+	"testing"
+
+	"gainwright/link/simrig"
+	"gainwright/link/simrig/family"
+)
+
+const rigs = "../../testdata/rigs"
+
+// Bounds of a model against the rig's own physics, and of the margins on it. The
+// physics is simrig's and shares nothing with the fit.
+const (
+	gainMost, tauMost, breakMost = 3.0, 5.0, 10.0 // percent
+	deadMost, deadMedian         = 0.5, 0.2       // loop periods
+	msMost                       = 1.15 * 1.6
+)
+
+// Every rig of testdata/rigs comes out as its file says, and where a model was
+// believed it is that of the rig.
+func TestEveryRigComesOutAsItsFileSays(t *testing.T) {
+	f, err := Rehearsal{Dir: rigs, Jobs: 2, Seed: 1, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	healthy := judgeFleet(t, f)
+	if healthy < 12 {
+		t.Errorf("%d healthy rigs came through, at least 12 are there", healthy)
+	}
+}
+
+// A drawn family, too, with its faulty fifth.
+func TestDrawnFamily(t *testing.T) {
+	dir := t.TempDir()
+	for _, r := range family.Make(16, 11) {
+		if err := os.WriteFile(filepath.Join(dir, r.Name+".toml"), r.Text, 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+	f, err := Rehearsal{Dir: dir, Jobs: 2, Seed: 1, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	judgeFleet(t, f)
+}
+
+// judgeFleet judges outcomes, models, margins and forecasts and returns the
+// number of rigs that were accepted or left alone.
+func judgeFleet(t *testing.T, f Fleet) (healthy int) {
+	t.Helper()
+	var dead []float64
+	for _, r := range f.Rigs {
+		if !r.AsExpected {
+			t.Errorf("%s: %s (%s), expected %s (%s): %s", r.File, r.Outcome, r.Cause, r.Expect, r.ExpectCause, r.Reason)
+		}
+		if r.Violations != 0 {
+			t.Errorf("%s: %d excursions out of the nameplate", r.File, r.Violations)
+		}
+		if r.Outcome != Accepted && r.Outcome != NoAdjustment {
+			continue
+		}
+		healthy++
+		e := r.Truth.Errors
+		if e == nil || r.Truth.Ms == nil {
+			t.Errorf("%s: %s without a model that could be judged", r.File, r.Outcome)
+			continue
+		}
+		dead = append(dead, math.Abs(e.DeadLoops))
+		over := func(what string, v *float64, most float64) {
+			if v != nil && !(math.Abs(*v) <= most) {
+				t.Errorf("%s: %s is off by %.2f, at most %g", r.File, what, *v, most)
+			}
+		}
+		over("gain, %", &e.Gain, gainMost)
+		over("time constant, %", e.Tau, tauMost)
+		over("dead time, loop periods", &e.DeadLoops, deadMost)
+		over("breakaway, %", e.Break, breakMost)
+		over("Ms on the true plant", r.Truth.Ms, msMost)
+		honest(t, r)
+	}
+	if slices.Sort(dead); len(dead) > 0 && dead[len(dead)/2] > deadMedian {
+		t.Errorf("dead time is off by %.2f loop periods in the median, at most %g", dead[len(dead)/2], deadMedian)
+	}
+	return healthy
+}
+
+// honest holds a verify against its own forecast: ±10 points of overshoot, ±30 %
+// of settling and what two samples of telemetry at 50 Hz may hide.
+func honest(t *testing.T, r RigReport) {
+	t.Helper()
+	if r.Verify == nil {
+		return
+	}
+	b, err := json.Marshal(r.Verify)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var v struct {
+		Overshoot float64 `json:"overshoot_percent"`
+		Settling  float64 `json:"settling_time_s"`
+		Forecast  struct {
+			Overshoot float64 `json:"overshoot_percent"`
+			Settling  float64 `json:"settling_time_s"`
+		} `json:"forecast"`
+	}
+	if err := json.Unmarshal(b, &v); err != nil {
+		t.Fatal(err)
+	}
+	if math.Abs(v.Overshoot-v.Forecast.Overshoot) > 10 || math.Abs(v.Settling-v.Forecast.Settling) > 0.3*v.Forecast.Settling+0.05 {
+		t.Errorf("%s: overshoot %.1f %% and settling %.3f s, forecast %.1f and %.3f", r.File, v.Overshoot, v.Settling, v.Forecast.Overshoot, v.Forecast.Settling)
+	}
+}
+
+// The same seed gives the same fleet on one core and on two, byte for byte but
+// for the time on the wall.
+func TestFleetDoesNotDependOnCores(t *testing.T) {
+	dir := t.TempDir()
+	for _, n := range []string{"choked", "coreless", "reversed", "ironcore"} {
+		b, err := os.ReadFile(filepath.Join(rigs, n+".toml"))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := os.WriteFile(filepath.Join(dir, n+".toml"), b, 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+	var got [2][]byte
+	for i := range got {
+		f, err := Rehearsal{Dir: dir, Jobs: i + 1, Seed: 7, Program: "test"}.Do()
+		if err != nil {
+			t.Fatal(err)
+		}
+		f.WallSeconds = 0
+		if got[i], err = json.Marshal(f); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if !bytes.Equal(got[0], got[1]) {
+		t.Error("one core and two give different fleets")
+	}
+	f, err := Rehearsal{Dir: dir, Jobs: 2, Seed: 8, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	f.WallSeconds = 0
+	if b, _ := json.Marshal(f); bytes.Equal(b, got[0]) {
+		t.Error("another seed gives the same fleet: the seed is not used")
+	}
+}
+
+// The same rig and seed leave the same record, file for file and byte for byte.
+func TestSameSeedSameSheet(t *testing.T) {
+	c, err := simrig.Load(filepath.Join(rigs, "choked.toml"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	read := func() map[string]string {
+		dir := filepath.Join(t.TempDir(), "sheet")
+		if _, err := (DryRun{Config: c, Seed: 3, Dir: dir, Program: "test", Start: rehearsalStart}).Do(); err != nil {
+			t.Fatal(err)
+		}
+		files := map[string]string{}
+		entries, err := os.ReadDir(dir)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, e := range entries {
+			b, err := os.ReadFile(filepath.Join(dir, e.Name()))
+			if err != nil {
+				t.Fatal(err)
+			}
+			files[e.Name()] = string(b)
+		}
+		return files
+	}
+	one, two := read(), read()
+	if len(one) < 20 || len(one) != len(two) {
+		t.Fatalf("%d and %d files", len(one), len(two))
+	}
+	for name, b := range one {
+		if two[name] != b {
+			t.Errorf("%s differs", name)
+		}
+	}
+}
+
+// A folder without rigs, and a file that is none, are refused before anything
+// runs.
+func TestRehearsalRefusesBadFolders(t *testing.T) {
+	dir := t.TempDir()
+	if _, err := (Rehearsal{Dir: dir, Jobs: 1}).Do(); err == nil {
+		t.Error("an empty folder was taken")
+	}
+	if err := os.WriteFile(filepath.Join(dir, "x.toml"), []byte("name = 3\n"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := (Rehearsal{Dir: dir, Jobs: 1}).Do(); err == nil || !bytes.Contains([]byte(err.Error()), []byte("x.toml:1")) {
+		t.Errorf("got %v, want the place of the mistake", err)
+	}
+}
