@@ -103,24 +103,57 @@ func (j *Job) starts(s []Sample) (fwd, rev []float64) {
 		for k < len(s) && float64(s[k].Volts)*dir > 0 {
 			k++
 		}
-		base := s[max(i-1, 0)].Counts
-		started := 0.0
-		for n := i; n < k; n++ {
-			d := float64(s[n].Counts-base) * dir
-			if math.Abs(d) <= 1 { // the noise of an edge
-				started = float64(s[n].Volts) * dir
-			}
-			if d < 4 {
-				continue
-			}
-			if dir > 0 {
-				fwd = append(fwd, started)
-			} else {
-				rev = append(rev, started)
-			}
-			break
+		if v, ok := startOf(s[max(i-1, 0):k], dir); ok && dir > 0 {
+			fwd = append(fwd, v)
+		} else if ok {
+			rev = append(rev, v)
 		}
 		i = k
 	}
 	return fwd, rev
+}
+
+// Counts at which a start is timed. Edges lie anywhere, so that a count is seen
+// half a count early on average.
+const (
+	earlyCounts = 2
+	lateCounts  = 8
+)
+
+// startOf is the drive at which one ramp set the shaft moving; s begins with the
+// last sample at rest. A heavy shaft takes its time to the first counts, and the
+// ramp goes on meanwhile: under a constant acceleration the way grows with the
+// square of the time, and the two times say when it was none. A ramp that makes the
+// acceleration grow has begun earlier still, so that this never goes too far back.
+func startOf(s []Sample, dir float64) (volts float64, ok bool) {
+	base := s[0].Counts
+	last, early, late := 0, -1, -1 // last sample within the noise of an edge
+	for n := 1; n < len(s); n++ {
+		d := float64(s[n].Counts-base) * dir
+		if math.Abs(d) <= 1 {
+			last = n
+		}
+		if early < 0 && d >= earlyCounts {
+			early = n
+		}
+		if d >= lateCounts {
+			late = n
+			break
+		}
+		ok = ok || d >= 4
+	}
+	if !ok && late < 0 {
+		return 0, false
+	}
+	volts = float64(s[last].Volts) * dir
+	if early < 0 || late <= early {
+		return volts, true
+	}
+	at := func(n int) float64 { return float64(s[n].BoardUS-s[0].BoardUS) * 1e-6 }
+	ratio := (float64(s[late].Counts-base)*dir - 0.5) / (float64(s[early].Counts-base)*dir - 0.5)
+	start := at(early) - (at(late)-at(early))/(math.Sqrt(ratio)-1)
+	for n := last; n > 0 && at(n) > start; n-- {
+		volts = float64(s[n].Volts) * dir
+	}
+	return volts, true
 }
