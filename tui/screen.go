@@ -258,6 +258,9 @@ func working(v *job.View) Page {
 // result returns the page of what the last step brought, so that it can be read
 // before the next one begins.
 func result(v *job.View) Page {
+	if st := step(v, v.Current); st != nil && st.ID == job.StepCard && st.Status == job.Done && v.Card != "" {
+		return PageCard // the job is over
+	}
 	last := job.StepID("")
 	for _, st := range v.Steps {
 		if st.ID == v.Current {

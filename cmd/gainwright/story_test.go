@@ -124,8 +124,14 @@ func (p *person) step(id job.StepID) {
 	// A key does nothing while the shaft still coasts from the run before.
 	for range 50 {
 		p.press("enter")
-		if v := p.live.View(); v.Doing || v.Current != id {
+		v := p.live.View()
+		if v.Doing || v.Current != id {
 			return
+		}
+		for _, s := range v.Steps {
+			if s.ID == id && s.Status == job.Done {
+				return
+			}
 		}
 		p.wait(200 * time.Millisecond)
 	}
@@ -262,6 +268,9 @@ func TestConsoleFromCableToCard(t *testing.T) {
 		v := p.live.View()
 		if !strings.Contains(v.Card, "SPEED LOOP CARD") || v.Verify == nil || !v.Verify.Passed {
 			t.Errorf("no card, or verify not passed:\n%s", p.see())
+		}
+		if !strings.Contains(p.see(), "SPEED LOOP CARD") {
+			t.Errorf("the card is not on screen at the end:\n%s", p.see())
 		}
 		// Under five minutes for somebody who reads the screen.
 		if took > 5*time.Minute {

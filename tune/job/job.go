@@ -218,6 +218,9 @@ func (j *Job) Remark(text string) {
 // Next is the first step behind the last one done that can be done, or else the
 // first of the path.
 func (j *Job) Next() StepID {
+	if j.steps[StepCard].Status == Done {
+		return StepCard // the job is over; a person may still go anywhere
+	}
 	last := -1
 	for i := range Path {
 		if j.steps[Path[i].ID].Status == Done {
