@@ -38,12 +38,12 @@ func (d *drill) do(e safety.Event) []safety.Effect {
 	d.s, d.out = d.env.Step(d.s, e)
 	d.all = append(d.all, d.out...)
 	for _, x := range d.out {
-		switch x.(type) {
+		switch x := x.(type) {
 		case safety.SendStop:
 			d.board.State = protocol.Off
 		case safety.SendDrive:
 			d.board.State = protocol.Driving
-			if x.(safety.SendDrive).Mode == safety.ModeSpeed {
+			if x.Mode == safety.ModeSpeed {
 				d.board.State = protocol.Looping
 			}
 		}

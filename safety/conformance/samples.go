@@ -91,7 +91,6 @@ func (f fixed) hex(i, n int) uint32 {
 func (f fixed) us() uint32            { return f.hex(0, 6) }
 func (f fixed) flags() byte           { return byte(f.hex(6, 2)) }
 func (f fixed) state() protocol.State { return protocol.State(f.flags() & 7) }
-func (f fixed) speed() int16          { return int16(f.hex(8, 4)) }
 func (f fixed) volts() int16          { return int16(f.hex(12, 4)) }
 
 // fixedLines are the hex lines since the last forget.

@@ -71,7 +71,6 @@ type session struct {
 	lines   []received
 	n       uint16
 	asked   map[uint16]bool
-	over    int
 	strange []string // lines nobody asked for that are none of P3.4
 	badCRC  []string
 	ugly    []string // too long or not printable

@@ -82,7 +82,6 @@ type Referee struct {
 	last       protocol.Sample
 	leased     bool
 	leasedAt   time.Duration
-	reasonDue  bool
 	knownTaken bool
 }
 

@@ -11,9 +11,6 @@ import (
 // them.
 type person struct {
 	since time.Duration // in the phase
-	told  bool          // the checks made by hand were passed since the last connect
-	boots uint16
-	wrote time.Duration
 }
 
 // acts does what a person would do next in the phase shown, and sometimes what
