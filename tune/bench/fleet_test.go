@@ -18,9 +18,10 @@ const rigs = "../../testdata/rigs"
 // Bounds of a model against the rig's own physics, and of the margins on it. The
 // physics is simrig's and shares nothing with the fit.
 const (
-	gainMost, tauMost, breakMost = 3.0, 5.0, 10.0 // percent
-	deadMost, deadMedian         = 0.5, 0.2       // loop periods
-	msMost                       = 1.15 * 1.6
+	gainMost, tauMost, breakMost  = 3.0, 5.0, 10.0 // percent
+	deadMost, deadMedian          = 0.5, 0.2       // loop periods
+	ohmsMost, keMost, inertiaMost = 5.0, 2.0, 10.0 // percent, where the current is measured
+	msMost                        = 1.15 * 1.6
 )
 
 // Every rig of testdata/rigs comes out as its file says, and where a model was
@@ -82,6 +83,9 @@ func judgeFleet(t *testing.T, f Fleet) (healthy int) {
 		over("time constant, %", e.Tau, tauMost)
 		over("dead time, loop periods", &e.DeadLoops, deadMost)
 		over("breakaway, %", e.Break, breakMost)
+		over("resistance, %", e.Resistance, ohmsMost)
+		over("Ke, %", e.Ke, keMost)
+		over("inertia, %", e.Inertia, inertiaMost)
 		over("Ms on the true plant", r.Truth.Ms, msMost)
 		honest(t, r)
 	}

@@ -29,6 +29,11 @@ type ModelErrors struct {
 	Tau       *float64 `json:"tau_percent"`       // of the slowest pole; null where the poles are complex
 	DeadLoops float64  `json:"dead_time_loops"`   // in loop periods, against the dead time that a model of its kind needs
 	Break     *float64 `json:"breakaway_percent"` // the worse direction
+
+	// Where the current is measured; null otherwise.
+	Resistance *float64 `json:"resistance_percent"` // winding at its temperature
+	Ke         *float64 `json:"ke_percent"`
+	Inertia    *float64 `json:"inertia_percent"` // rotor and load at the motor shaft
 }
 
 // RuleReport judges another rule on the rig's own physics, beside ours.
@@ -51,7 +56,7 @@ func truth(v *Virtual, j *job.Job, rules bool) TruthReport {
 	m := model.Linear{Kind: model.KindSecondOrder, Num: t.Num, Den: t.Den, DeadTime: t.DeadTime, InputUnit: model.InputVolts}
 	rep := TruthReport{Model: &m, BreakForward: sheet.Known(t.BreakawayForward), BreakReverse: sheet.Known(t.BreakawayReverse)}
 	if j.Fit != nil && j.Fit.Best() != nil {
-		rep.Errors = modelErrors(t, j)
+		rep.Errors = modelErrors(t, v.rig.Config(), j)
 	}
 	if j.Gains == nil {
 		return rep
@@ -71,7 +76,7 @@ func truth(v *Virtual, j *job.Job, rules bool) TruthReport {
 	return rep
 }
 
-func modelErrors(t simrig.Truth, j *job.Job) *ModelErrors {
+func modelErrors(t simrig.Truth, c simrig.Config, j *job.Job) *ModelErrors {
 	m := j.Fit.Best().Model
 	dead := t.DeadTime
 	if m.Kind == model.KindFirstOrder {
@@ -89,6 +94,14 @@ func modelErrors(t simrig.Truth, j *job.Job) *ModelErrors {
 			}
 		}
 		e.Break = &worst
+	}
+	if m, ok := j.Motor(); ok {
+		// The winding was about at ambient when its resistance was taken.
+		cold := c.Motor.Ohms * (1 + 0.00393*(c.Motor.Ambient-25))
+		e.Resistance, e.Ke = sheet.Known(100*(m.R/cold-1)), sheet.Known(100*(m.Ke/c.Motor.K-1))
+		if m.J > 0 {
+			e.Inertia = sheet.Known(100 * (m.J/(c.Motor.Inertia+c.Load.Inertia/(c.Load.Gear*c.Load.Gear)) - 1))
+		}
 	}
 	return e
 }

@@ -125,6 +125,40 @@ func (e *electrical) quantities(file string) []sheet.Quantity {
 		{Name: "Coulomb friction", Value: sheet.Known(e.Coulomb), Unit: "N m", Why: "Ke·I of the levels, drawn down to speed 0; " + file}}
 }
 
+// MotorConstants are the constants of the motor equations that a measured current
+// gives, with standard deviations; 0 where they are not identifiable.
+type MotorConstants struct {
+	R, RSD   float64 // Ω
+	Ke, KeSD float64 // V·s/rad
+	J        float64 // kg·m², at the motor shaft
+	Viscous  float64 // N·m·s/rad
+}
+
+// Motor returns the constants. Without a measured current only what the model has
+// is identifiable: gain, time constants, dead time, and friction in volts. The
+// gain is then Ke/(bR + Ke²) and the time constant JR/(bR + Ke²), and any R goes
+// with some Ke, J and b.
+func (j *Job) Motor() (m MotorConstants, ok bool) {
+	e := j.electric
+	if e == nil || e.Ke == 0 {
+		return m, false
+	}
+	m = MotorConstants{R: e.R, RSD: e.RSD, Ke: e.Ke, KeSD: e.KeSD}
+	if j.Fit == nil || j.Fit.Best() == nil {
+		return m, true
+	}
+	gain, _, _ := j.Fit.Best().Value("gain")
+	tau, _, okTau := j.Fit.Best().Value("tau")
+	if tau2, _, two := j.Fit.Best().Value("tau2"); two {
+		tau += tau2 // the s term of the denominator is their sum, and L/R·bR/(bR+Ke²) is small
+	}
+	if gain > 0 && okTau {
+		m.J = tau * e.Ke / (gain * e.R)
+		m.Viscous = math.Max(0, (e.Ke/gain-e.Ke*e.Ke)/e.R)
+	}
+	return m, true
+}
+
 // motor fills in what the current tells. gain and tau are those of the model, 0
 // where there is none: with the inductance left out, J = tau·Ke/(gain·R).
 func (e *electrical) motor(m *sheet.MotorRecord, gain, tau float64) {
@@ -139,7 +173,7 @@ func (e *electrical) motor(m *sheet.MotorRecord, gain, tau float64) {
 	if m.LoadState != "loaded" {
 		m.NoLoadCurrentA = sheet.Known(e.Idle)
 	}
-	if gain > 0 && tau > 0 {
+	if gain > 0 && tau > 0 { // tau2 is in tau: see Motor
 		m.JKgM2 = sheet.Known(tau * e.Ke / (gain * e.R))
 	}
 }

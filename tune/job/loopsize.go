@@ -73,6 +73,9 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 	slope = math.Min(0.8*j.Env.AccelMax, farthest/renewS)
 	room := j.busRoom(false)
 	seen := math.Min(hold.Seconds(), 2*settlingOr(j, 0.3)+0.2) // long enough for the peak
+	if !math.IsInf(room, 1) {
+		seen = hold.Seconds() // what comes back adds up
+	}
 	var peak, top, bus float64
 	for range slopeTries {
 		ramp := farthest / slope

@@ -213,6 +213,11 @@ func (j *Job) keepMotor() error {
 	if j.Margins != nil {
 		m.PhaseMarginDeg = sheet.Known(float64(j.Margins.PhaseMargin))
 	}
+	if f := j.Fit.Best(); f != nil && tau > 0 {
+		if tau2, _, two := f.Value("tau2"); two {
+			tau += tau2
+		}
+	}
 	j.electric.motor(&m, gain, tau)
 	if v := j.Verified; v != nil && v.Step != nil {
 		m.OvershootPercent, m.OvershootTarget = v.Step.OvershootPercent, sheet.Known(j.Rig.Targets.Overshoot)
@@ -322,6 +327,15 @@ func (j *Job) plausible(f *identify.Fit) []Fact {
 	}
 	if tau, _, ok := f.Value("tau"); ok {
 		add("time constant", fmt.Sprintf("%.4g ms", tau*1000), "1 ms to 5 s", tau >= 0.001 && tau <= 5, "bare motors 3 to 30 ms, loaded up to seconds; common practice, no source")
+	}
+	if m, ok := j.Motor(); ok {
+		add("R", fmt.Sprintf("%.3g ± %.2g Ω", m.R, 1.96*m.RSD), "0.05 to 50", m.R >= 0.05 && m.R <= 50, "slope of current over volts before the first motion; 12 to 48 V motors 0.1 to 20 Ω; common practice, no source")
+		add("Ke", fmt.Sprintf("%.4g ± %.2g V·s/rad", m.Ke, 1.96*m.KeSD), "0.005 to 0.15", m.Ke >= 0.005 && m.Ke <= 0.15, "V − R·I over speed on the levels of the staircase; in SI units it is the torque constant too; common practice, no source")
+		if m.J > 0 {
+			add("inertia", fmt.Sprintf("%.3g kg·m²", m.J), "over 0", true, "J = τ·Ke/(gain·R)")
+		}
+	} else {
+		out = append(out, Fact{Name: "R, Ke, J, friction torque", Value: "not identifiable", Why: "the current is not measured: gain and time constants alone fit any R with some Ke and J; friction is known in volts only"})
 	}
 	if n := len(j.BreakForward); n > 0 {
 		share := mean(j.BreakForward) / j.Rig.Motor.VoltageRated
