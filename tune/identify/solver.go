@@ -57,8 +57,8 @@ var ErrStart = errors.New("identify: the model cannot be computed at the startin
 // damping follows the ratio of real to predicted fall. Bounds are kept by
 // projection; a parameter whose gradient points out of its bound is frozen.
 //
-// References: D. W. Marquardt, J. SIAM 11 (1963) 431; J. J. Moré, Lecture Notes
-// in Mathematics 630 (1978) 105 (scaling by column norms); H. B. Nielsen, Damping
+// References: D. W. Marquardt, J. SIAM 11 (1963) 431; J. J. Moré, LNM
+// 630 (Springer 1978) 105 (scaling by column norms); H. B. Nielsen, Damping
 // parameter in Marquardt's method, IMM-REP-1999-05 (update of the damping).
 func Solve(prob Problem, start []float64, set Settings) (Solution, error) {
 	set = set.withDefaults()
