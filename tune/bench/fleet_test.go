@@ -209,3 +209,26 @@ func TestRehearsalRefusesBadFolders(t *testing.T) {
 		t.Errorf("got %v, want the place of the mistake", err)
 	}
 }
+
+// Drawn rigs that once came out wrong: heavy ones on supplies that take nothing
+// back, which braking brought over the highest bus, and one whose breakaway was
+// read 18 % high, since a heavy shaft is slow to its first counts.
+func TestDrawnRigsThatCameOutWrong(t *testing.T) {
+	dir := t.TempDir()
+	for _, was := range []struct {
+		seed uint64
+		n    int
+	}{{1, 17}, {1, 94}, {2, 0}, {2, 69}} {
+		r := family.Make(was.n+1, was.seed)[was.n]
+		if err := os.WriteFile(filepath.Join(dir, r.Name+".toml"), r.Text, 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+	f, err := Rehearsal{Dir: dir, Jobs: 2, Seed: 1, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	if n := judgeFleet(t, f); n != 4 {
+		t.Errorf("%d of 4 came through", n)
+	}
+}
