@@ -109,19 +109,20 @@ type Sample struct {
 
 // Result is what a run gave.
 type Result struct {
-	Name      string
-	Reason    safety.EndReason
-	Cause     safety.Cause
-	Started   bool
-	Begun     time.Duration
-	Lasted    time.Duration
-	Samples   []Sample
-	Capture   *trace.Trace // nil without capture
-	Judged    *safety.CheckJudged
-	Stop      *StopSeen  // of a stop during the run
-	BoardStop *BoardStop // the board's own record of the stop, where it tripped
-	Marks     []float64  // s since the first drive value
-	File      string     // of the trace in the record, filled by the job
+	Name        string
+	Reason      safety.EndReason
+	Cause       safety.Cause
+	Started     bool
+	Begun       time.Duration
+	Lasted      time.Duration
+	Samples     []Sample
+	Capture     *trace.Trace // nil without capture
+	Judged      *safety.CheckJudged
+	Stop        *StopSeen  // of a stop during the run
+	BoardStop   *BoardStop // the board's own record of the stop, where it tripped
+	Marks       []float64  // s since the first drive value
+	File        string     // of the telemetry's trace in the record, filled by the job
+	CaptureFile string     // of the capture's
 }
 
 // BoardStop is what the board kept of a stop of its own.

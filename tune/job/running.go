@@ -49,8 +49,8 @@ func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, erro
 		return r, err
 	}
 	r.File = file
-	if r.Capture != nil && r.Capture.Len() > 1 {
-		if r.File, err = j.h.KeepTrace(plan.Name+"-capture", r.Capture); err != nil {
+	if r.Capture != nil && r.Capture.Len() > captureLeast {
+		if r.CaptureFile, err = j.h.KeepTrace(plan.Name+"-capture", r.Capture); err != nil {
 			return r, err
 		}
 	}

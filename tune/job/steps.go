@@ -103,6 +103,10 @@ func (j *Job) prbsBits(clock time.Duration) int {
 	return 5
 }
 
+// captureLeast is how many samples a capture has to have to be worth more than
+// telemetry.
+const captureLeast = 100
+
 // record runs a plan and returns the best trace of it, cut to the part where it
 // drove about its middle.
 func (j *Job) record(step StepID, plan safety.Plan) (*trace.Trace, string, error) {
@@ -113,11 +117,10 @@ func (j *Job) record(step StepID, plan safety.Plan) (*trace.Trace, string, error
 	if r.Reason != safety.EndDone {
 		return nil, "", j.notDone(r)
 	}
-	tr := j.traceOf(plan.Name, r.Samples)
-	if r.Capture != nil && r.Capture.Len() > 100 {
-		tr = r.Capture
+	if r.Capture != nil && r.Capture.Len() > captureLeast {
+		return r.Capture, r.CaptureFile, nil
 	}
-	return tr, r.File, nil
+	return j.traceOf(plan.Name, r.Samples), r.File, nil
 }
 
 // capture asks for board memory at loop rate, thinned so that the plan fits. A
