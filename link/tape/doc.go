@@ -52,6 +52,20 @@ type Record struct {
 
 const headerWord = "gainwright tape 1 "
 
+// AppendHeader appends the first line of a tape that began at start, and
+// AppendRecord a record: for a recording that is written as it is made, in
+// virtual time say. A Writer does the same without keeping its caller waiting.
+func AppendHeader(dst []byte, start time.Time) []byte {
+	dst = append(dst, headerWord...)
+	dst = start.UTC().AppendFormat(dst, time.RFC3339Nano)
+	return append(dst, '\n')
+}
+
+// AppendRecord appends the line of one record at time t since the header's.
+func AppendRecord(dst []byte, t time.Duration, d Dir, b []byte) []byte {
+	return appendRecord(dst, t, d, b)
+}
+
 // appendRecord appends the line of a record to dst.
 func appendRecord(dst []byte, t time.Duration, d Dir, b []byte) []byte {
 	dst = appendMicros(dst, t)

@@ -64,7 +64,7 @@ type Writer struct {
 // Sync() error, as files have, it is called after every flush.
 func NewWriter(out io.Writer, cfg Config) *Writer {
 	w := &Writer{out: out, cfg: cfg, wake: make(chan struct{}, 1), done: make(chan struct{})}
-	w.text = append(w.text, headerWord+cfg.Start.UTC().Format(time.RFC3339Nano)+"\n"...)
+	w.text = AppendHeader(w.text, cfg.Start)
 	go link.WithPanicHook(cfg.OnPanic, w.run)
 	return w
 }

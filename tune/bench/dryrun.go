@@ -99,6 +99,14 @@ func (d DryRun) Do() (Report, error) {
 			return Report{}, err
 		}
 	}
+	endTape := func() error { return nil }
+	if record != nil {
+		out, err := record.Stream(sheet.KindTape, "session", "txt")
+		if err != nil {
+			return Report{}, err
+		}
+		endTape = v.Tape(out)
+	}
 	h := v.Hands(record)
 	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1)})
 	outcome, reason, stepErr := d.steps(v, j)
@@ -106,6 +114,9 @@ func (d DryRun) Do() (Report, error) {
 	rep.Cause = causeOf(stepErr)
 	if record != nil {
 		rep.Sheet = d.Dir
+		if err := endTape(); err != nil {
+			return rep, err
+		}
 		if err := record.Close(string(outcome), reason); err != nil {
 			return rep, err
 		}

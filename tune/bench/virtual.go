@@ -1,10 +1,13 @@
 package bench
 
 import (
+	"bufio"
 	"errors"
+	"io"
 	"time"
 
 	"gainwright/link/simrig"
+	"gainwright/link/tape"
 	"gainwright/protocol"
 	"gainwright/safety"
 	"gainwright/safety/supervisor"
@@ -30,6 +33,8 @@ type Virtual struct {
 	start  time.Time
 	budget time.Duration
 	op     operator
+	tape   *bufio.Writer // nil: bytes are not kept
+	line   []byte
 }
 
 // budgetMax bounds a virtual job: a step that never ends is a fault of ours, and
@@ -45,9 +50,27 @@ func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
 	v.s.core = supervisor.NewCore(&v.wire, v.s, 1)
 	v.s.core.Simulated = true
 	v.s.view.Simulated = true
-	v.wire.wrote = v.s.core.Wrote
+	v.wire.wrote = func(t time.Duration, b []byte) {
+		v.s.core.Wrote(t, b)
+		v.record(t, tape.ToBoard, b)
+	}
 	v.run(time.Duration(rig.Config().Board.BootMS)*time.Millisecond + 100*time.Millisecond)
 	return v
+}
+
+// Tape keeps every byte from now on in out; end writes what is left of it.
+func (v *Virtual) Tape(out io.Writer) (end func() error) {
+	w := bufio.NewWriterSize(out, 1<<16)
+	v.tape = w
+	w.Write(tape.AppendHeader(nil, v.start)) // a bufio.Writer keeps its first error for Flush
+	return w.Flush
+}
+
+func (v *Virtual) record(t time.Duration, d tape.Dir, b []byte) {
+	if v.tape != nil {
+		v.line = tape.AppendRecord(v.line[:0], t, d, b)
+		v.tape.Write(v.line)
+	}
 }
 
 // Hands lends a job its hands; record may be nil.
@@ -102,6 +125,7 @@ func (v *Virtual) step() {
 	}
 	v.rig.Advance(v.s.now)
 	if b := v.rig.Output(); len(b) > 0 {
+		v.record(v.s.now, tape.FromBoard, b)
 		v.s.core.Bytes(v.s.now, b)
 	}
 	if v.s.now-v.ticked >= tickEach {
