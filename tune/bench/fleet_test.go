@@ -40,7 +40,7 @@ func TestEveryRigComesOutAsItsFileSays(t *testing.T) {
 // A drawn family, too, with its faulty fifth.
 func TestDrawnFamily(t *testing.T) {
 	dir := t.TempDir()
-	for _, r := range family.Make(16, 11) {
+	for _, r := range family.Make(10, 11) {
 		if err := os.WriteFile(filepath.Join(dir, r.Name+".toml"), r.Text, 0o644); err != nil {
 			t.Fatal(err)
 		}

@@ -220,12 +220,34 @@ func (h *hands) ClearTrip(q job.Question) error {
 	case err != nil:
 	case h.Line().Restarts > restarts:
 		return h.restarted(q.Text)
+	case gone && h.beganAnew():
+		return h.restarted(q.Text)
 	case gone:
 		return &job.RefusedError{Number: int(safety.CodeLinkLost), What: q.Text, Cause: "link lost", Remedy: "look at cable and power; then start again at the identity"}
 	case declined:
+		// A trip that cannot be cleared may be a board that hears nothing.
+		if _, err := h.Request(protocol.VerbID, ""); errors.Is(err, protocol.ErrNoAnswer) {
+			return err
+		}
 		return job.ErrDeclined
 	}
 	return err
+}
+
+// beganAnew asks a board that went silent whether it has started since; that
+// counts as a restart, if one that was not heard.
+func (h *hands) beganAnew() bool {
+	a, _ := h.Request(protocol.VerbID, "")
+	id, err := protocol.ParseIdentity(a.Lines)
+	if err != nil {
+		return false
+	}
+	h.do(func(s *session) {
+		if id.Boots != s.core.Identity().Boots && s.boots == s.expected {
+			s.boots++
+		}
+	})
+	return h.Line().Restarts > 0
 }
 
 // restarted refuses what goes on with a board that has begun anew.

@@ -137,6 +137,9 @@ func (j *Job) Do(id StepID) error {
 	j.publish()
 	words, err := j.procedure(id)()
 	j.h.Show(func(v *View) { v.Doing, v.Busy, v.Ask, v.Plan = false, "", nil, nil })
+	if _, named := errors.AsType[*RefusedError](err); !named && errors.Is(err, protocol.ErrNoAnswer) {
+		err = refuse(763, s.Title, err.Error(), "look at the line to the board: cable, power, baud rate; then start again at the identity")
+	}
 	if err != nil {
 		return j.refused(id, err)
 	}

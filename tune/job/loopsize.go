@@ -13,7 +13,7 @@ import (
 // Shares of the sizing of closed-loop runs (our choice).
 const (
 	currentShare = 0.75 // of the current limit, in the forecast
-	seenShare    = 1.2  // of the drive over back-EMF that an open-loop run has had, where no current is known
+	seenShare    = 1.0  // of the drive over back-EMF that an open-loop run has had, where no current is known
 	slopeFactor  = 0.7  // from one try to the next
 	slopeTries   = 40
 )
@@ -57,7 +57,7 @@ func (j *Job) overdrive() (volts float64, why string) {
 			top = math.Max(top, math.Abs(tr.Voltage[i]-ke*tr.Speed[i]))
 		}
 	}
-	return seenShare * top, "the drive over back-EMF that the open-loop tests have had"
+	return math.Min(seenShare*top, currentShare*float64(j.Env.CurrentMax)*j.lowOhms()), "the drive over back-EMF that the open-loop tests have had"
 }
 
 // loopSlope is the steepest slope of the setpoint, in rad/s², at which the
