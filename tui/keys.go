@@ -311,3 +311,15 @@ func KeyTableMarkdown() string {
 	}
 	return b.String()
 }
+
+// KeyRow is one line of the key table: when a key counts, which it is, what it does.
+type KeyRow struct{ When, Keys, Does string }
+
+// KeyTable returns the key table for texts other than the README.
+func KeyTable() []KeyRow {
+	rows := make([]KeyRow, len(bindings))
+	for i, k := range bindings {
+		rows[i] = KeyRow{k.group, k.label, k.help}
+	}
+	return rows
+}

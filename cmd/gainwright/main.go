@@ -93,7 +93,8 @@ func newRoot() *cobra.Command {
 	root.RunE = c.RunE
 	root.Flags().AddFlagSet(c.Flags())
 	root.AddCommand(c, demoCommand(), portsCommand(), checkCommand(), dryrunCommand(), simCommand(), conformanceCommand(), fitCommand(), designCommand(),
-		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), rehearseCommand(), versionCommand())
+		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), rehearseCommand(), manCommand(), versionCommand())
+	completeFlags(root)
 	return root
 }
 

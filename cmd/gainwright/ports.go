@@ -32,10 +32,17 @@ func versionWords() string {
 }
 
 func versionCommand() *cobra.Command {
-	return &cobra.Command{Use: "version", Short: "say which version this is", Args: cobra.NoArgs,
+	var licences bool
+	c := &cobra.Command{Use: "version [--licenses]", Short: "say which version this is, and what it is built with", Args: cobra.NoArgs,
 		Run: func(c *cobra.Command, _ []string) {
+			if licences {
+				fmt.Fprint(c.OutOrStdout(), notices)
+				return
+			}
 			fmt.Fprintf(c.OutOrStdout(), "gainwright %s, protocol %d\n", versionWords(), protocol.Major)
 		}}
+	c.Flags().BoolVar(&licences, "licenses", false, "print the licences of everything that is built in")
+	return c
 }
 
 // portViews lists the ports of this machine for the screens.
