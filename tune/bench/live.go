@@ -2,6 +2,7 @@ package bench
 
 import (
 	"context"
+	"runtime"
 	"sync"
 	"sync/atomic"
 	"time"
@@ -164,6 +165,7 @@ func (l *Live) Stop(source safety.StopSource) {
 	at := l.now()
 	if source != safety.ByStopKey || l.style.Load() == 0 {
 		l.cut()
+		runtime.Gosched() // the writer goes on in this thread, at once, and no other has to wake up for it
 	}
 	l.post(func(s *session) { s.core.Stop(s.notLate(at), source) })
 }
