@@ -41,7 +41,7 @@ type Framer struct {
 	dirty    bool // the line in hand holds a byte outside printable ASCII
 	extra    RawExtra
 	hasExtra bool
-	slowNow  Slow
+	sample   Sample // the newest; what a U or V line brought stays as long as it holds
 	started  bool
 	last     RawFast
 	boardUS  uint64
@@ -62,7 +62,7 @@ func (f *Framer) Reset() {
 // Handler may call it.
 func (f *Framer) Restarted() {
 	f.started, f.hasExtra, f.counting = false, false, false
-	f.slowNow = Slow{}
+	f.sample = Sample{}
 }
 
 // Pending returns the number of bytes of the line in hand.
@@ -149,7 +149,7 @@ func (f *Framer) finish(line []byte) {
 }
 
 // fast completes a sample from its T line and what came before it.
-func (f *Framer) fast(r RawFast) error {
+func (f *Framer) fast(r *RawFast) error {
 	if r.State > Tripped {
 		return ErrMalformed
 	}
@@ -169,36 +169,38 @@ func (f *Framer) fast(r RawFast) error {
 		f.boardUS = uint64(r.TimeUS)
 		f.started = true
 	}
-	f.last = r
+	f.last = *r
 	f.Stats.Samples++
-	f.h.Sample(f.sample(r))
+	sc := &f.Scales
+	if sc.SpeedLSB == 0 {
+		sc = &unitScales
+	}
+	// What a sample holds for long is kept in place; only what a T line brings is
+	// written anew.
+	s := &f.sample
+	s.Seq, s.BoardUS, s.State, s.Saturated, s.TripHeld = r.Seq, f.boardUS, r.State, r.Saturated, r.TripHeld
+	s.Speed = si.RadPerSec(float64(r.Speed) * sc.SpeedLSB)
+	s.Volts = si.Volts(float64(r.Volts) * sc.VoltsLSB)
+	if f.hasExtra && f.extra.Seq == r.Seq {
+		f.addExtra(s, sc)
+	} else if s.Has&hasExtra != 0 {
+		s.Has &^= hasExtra
+		s.Current, s.Bus, s.Setpoint, s.Counts = 0, 0, 0, 0
+	}
+	f.hasExtra = false
+	f.h.Sample(*s)
 	return nil
 }
 
-func (f *Framer) sample(r RawFast) Sample {
-	sc := f.scales()
-	s := Sample{
-		Seq: r.Seq, BoardUS: f.boardUS, State: r.State, Saturated: r.Saturated, TripHeld: r.TripHeld,
-		Speed: si.RadPerSec(float64(r.Speed) * sc.SpeedLSB),
-		Volts: si.Volts(float64(r.Volts) * sc.VoltsLSB),
-		Slow:  f.slowNow,
-	}
-	if f.slowNow.HasTmp {
-		s.Has |= HasTemp
-	}
-	if f.slowNow.Seen {
-		s.Has |= HasInputs
-	}
-	if f.hasExtra && f.extra.Seq == r.Seq {
-		f.addExtra(&s, sc)
-	}
-	f.hasExtra = false
-	return s
-}
+// hasExtra is what a U line can bring.
+const hasExtra = HasCurrent | HasBus | HasSetpoint | HasCounts
 
-func (f *Framer) addExtra(s *Sample, sc Scales) {
-	x := f.extra
-	s.Has |= HasSetpoint | HasCounts
+var unitScales = Scales{SpeedLSB: 1, VoltsLSB: 1}
+
+func (f *Framer) addExtra(s *Sample, sc *Scales) {
+	x := &f.extra
+	s.Has = s.Has&^hasExtra | HasSetpoint | HasCounts
+	s.Current, s.Bus = 0, 0
 	s.Setpoint = si.RadPerSec(float64(x.Setpoint) * sc.SpeedLSB)
 	if sc.CurrentLSB > 0 {
 		s.Has |= HasCurrent
@@ -218,9 +220,12 @@ func (f *Framer) addExtra(s *Sample, sc Scales) {
 }
 
 func (f *Framer) slow(r RawSlow) {
-	f.slowNow = Slow{Seen: true, Inputs: r.Inputs, Trip: r.Trip, Heat: r.Heat, Boots: r.Boots}
+	s := &f.sample
+	s.Slow = Slow{Seen: true, Inputs: r.Inputs, Trip: r.Trip, Heat: r.Heat, Boots: r.Boots}
+	s.Has = s.Has&^HasTemp | HasInputs
 	if r.Temp != TempUnknown {
-		f.slowNow.HasTmp, f.slowNow.Temp = true, si.Celsius(float64(r.Temp)/10)
+		s.Slow.HasTmp, s.Slow.Temp = true, si.Celsius(float64(r.Temp)/10)
+		s.Has |= HasTemp
 	}
 }
 
@@ -257,7 +262,7 @@ func (f *Framer) decodeText(body []byte) error {
 	}
 	r.Speed = toLSB(speed, sc.SpeedLSB)
 	r.Volts = toLSB(volts, sc.VoltsLSB)
-	return f.fast(r)
+	return f.fast(&r)
 }
 
 func (f *Framer) decodeExtraText(sc Scales) error {

@@ -1,6 +1,8 @@
 package protocol
 
 import (
+	"encoding/binary"
+	"math/bits"
 	"strconv"
 
 	"gainwright/protocol/si"
@@ -199,34 +201,42 @@ func appendMilli(dst []byte, v float64) []byte {
 // decodeHex checks one fixed hex line without its line feed and stores what it
 // says. line[0] is T, U or V.
 func (f *Framer) decodeHex(line []byte) error {
-	var v [22]byte
-	var bad byte
-	for i := 1; i < HexLine-1; i++ {
-		d := hexValue[line[i]]
-		bad |= d
-		v[i-1] = d
-	}
-	if bad > 15 {
+	_ = line[HexLine-2]
+	a, bad1 := hex8(line[1:9])
+	b, bad2 := hex8(line[9:17])
+	c, bad3 := hex8(line[15:23]) // the last four of b once more, and the CRC
+	if bad1|bad2|bad3 != 0 {
 		return ErrMalformed
 	}
-	want := uint16(v[18])<<12 | uint16(v[19])<<8 | uint16(v[20])<<4 | uint16(v[21])
-	if CRC16(line[:19]) != want {
+	if CRC16(line[:19]) != uint16(c) {
 		return ErrBadCRC
 	}
-	seq := v[0]<<4 | v[1]
-	w := func(i int) uint16 {
-		return uint16(v[i])<<12 | uint16(v[i+1])<<8 | uint16(v[i+2])<<4 | uint16(v[i+3])
-	}
+	seq, w3 := uint8(a>>24), uint16(c>>16)
 	switch line[0] {
 	case 'T':
-		r := RawFast{Seq: seq, TimeUS: uint32(w(2))<<8 | uint32(v[6]<<4|v[7]), Speed: int16(w(10)), Volts: int16(w(14))}
-		r.setFlags(v[8]<<4 | v[9])
-		return f.fast(r)
+		r := RawFast{Seq: seq, TimeUS: a & 0xFFFFFF, Speed: int16(b >> 8), Volts: int16(w3)}
+		r.setFlags(byte(b >> 24))
+		return f.fast(&r)
 	case 'U':
-		f.extra = RawExtra{Seq: seq, Current: int16(w(2)), Bus: int16(w(6)), Setpoint: int16(w(10)), Counts: w(14)}
+		f.extra = RawExtra{Seq: seq, Current: int16(a >> 8), Bus: int16(a<<8 | b>>24), Setpoint: int16(b >> 8), Counts: w3}
 		f.hasExtra = true
 	case 'V':
-		f.slow(RawSlow{Seq: seq, Temp: int16(w(2)), Inputs: w(6), Trip: Cause(v[10]<<4 | v[11]), Heat: v[12]<<4 | v[13], Boots: w(14)})
+		f.slow(RawSlow{Seq: seq, Temp: int16(a >> 8), Inputs: uint16(a<<8 | b>>24), Trip: Cause(b >> 16), Heat: uint8(b >> 8), Boots: w3})
 	}
 	return nil
+}
+
+// hex8 reads eight upper-case hex digits, the first the most significant, all at
+// once in one word: the digit of a byte is its low half, plus nine for a letter,
+// and it was a digit if writing it again gives the same byte. bad is not 0 where
+// one is no such digit.
+func hex8(p []byte) (v uint32, bad uint64) {
+	const ones = 0x0101010101010101
+	x := binary.LittleEndian.Uint64(p)
+	n := x&(0x0F*ones) + 9*(x>>6&ones)
+	letter := (n + 6*ones) >> 4 & ones
+	bad = (n + 0x30*ones + 7*letter) ^ x | n&(0xF0*ones)
+	n = (n<<4 | n>>8) & 0x00FF00FF00FF00FF
+	n = (n | n>>8) & 0x0000FFFF0000FFFF
+	return bits.ReverseBytes32(uint32(n | n>>16)), bad
 }
