@@ -1,0 +1,157 @@
+//go:build unix
+
+package main
+
+import (
+	"bytes"
+	"io"
+	"os/exec"
+	"path/filepath"
+	"strings"
+	"syscall"
+	"testing"
+	"time"
+
+	"github.com/creack/pty"
+
+	"gainwright/link/ptyport"
+)
+
+// BenchmarkScreen runs the console on a terminal while telemetry comes in, and
+// beside it a Bubble Tea program that draws plain text of the same size thirty
+// times a second. It compares processor time and bytes a second. Wanted: cpu
+// ratio 1.5 at most. The terminal answers no question, as some do not.
+func BenchmarkScreen(b *testing.B) {
+	bin, floor := screenPrograms(b)
+	for _, c := range []struct {
+		name       string
+		rows, cols uint16
+	}{{"80x24", 24, 80}, {"200x50", 50, 200}} {
+		b.Run(c.name, func(b *testing.B) {
+			for range b.N {
+				mine := drawn(b, consoleOn(b, bin), c.rows, c.cols, 4*time.Second)
+				raw := drawn(b, []string{floor}, c.rows, c.cols, 4*time.Second)
+				b.ReportMetric(mine.cpu, "%core")
+				b.ReportMetric(raw.cpu, "%core-floor")
+				b.ReportMetric(mine.cpu/raw.cpu, "cpu-ratio")
+				b.ReportMetric(mine.rate/1000, "kB/s")
+				b.ReportMetric(raw.rate/1000, "kB/s-floor")
+			}
+		})
+	}
+}
+
+// BenchmarkFirstFrame measures from the start of the program to its first frame,
+// against a program that shows one word. Wanted: ratio 1.5 at most.
+func BenchmarkFirstFrame(b *testing.B) {
+	bin, floor := screenPrograms(b)
+	var mine, raw []time.Duration
+	for range b.N {
+		mine = append(mine, firstFrame(b, consoleOn(b, bin), "space"))
+		raw = append(raw, firstFrame(b, []string{floor, "hello"}, "hello"))
+	}
+	m, r := quantile(mine, 0.5)/1000, quantile(raw, 0.5)/1000
+	b.ReportMetric(m, "ms")
+	b.ReportMetric(r, "ms-hello")
+	b.ReportMetric(m/r, "ratio")
+}
+
+func screenPrograms(b *testing.B) (console, floor string) {
+	b.Helper()
+	console, err := program()
+	if err != nil {
+		b.Fatal(err)
+	}
+	floor = filepath.Join(b.TempDir(), "screenfloor")
+	if out, err := exec.Command("go", "build", "-o", floor, "./testdata/screenfloor").CombinedOutput(); err != nil {
+		b.Fatalf("%v: %s", err, out)
+	}
+	return console, floor
+}
+
+// consoleOn is a command line that opens the console on a port with fifty lines
+// a second.
+func consoleOn(b *testing.B, bin string) []string {
+	b.Helper()
+	port, path, err := ptyport.Open()
+	if err != nil {
+		b.Skip("no pseudo-terminals")
+	}
+	port.SetLossy(true)
+	quit := make(chan struct{})
+	b.Cleanup(func() { close(quit); port.Close() })
+	go flood(port, 100, quit)
+	return []string{bin, "console", "--port", path, "--out", filepath.Join(b.TempDir(), "s")}
+}
+
+// answered is the terminal's answer to a floor program's question for colours:
+// without one Bubble Tea waits five seconds. The console gets none.
+func answered(tty io.Writer, asked []byte, args []string) {
+	if strings.HasSuffix(args[0], "screenfloor") && bytes.Contains(asked, []byte("\x1b]11;?")) {
+		io.WriteString(tty, "\x1b]11;rgb:0000/0000/0000\x07\x1b[1;1R")
+	}
+}
+
+type drawing struct {
+	cpu  float64 // percent of a core
+	rate float64 // bytes a second
+}
+
+// drawn runs a program on a terminal and measures from one second after its
+// start on.
+func drawn(b *testing.B, args []string, rows, cols uint16, lasts time.Duration) drawing {
+	b.Helper()
+	run := func(d time.Duration) (cpu time.Duration, n int) {
+		cmd := exec.Command(args[0], args[1:]...)
+		cmd.Env = append(cmd.Environ(), "TERM=xterm-256color", "LANG=C.UTF-8")
+		tty, err := pty.StartWithSize(cmd, &pty.Winsize{Rows: rows, Cols: cols})
+		if err != nil {
+			b.Fatal(err)
+		}
+		defer tty.Close()
+		done := make(chan int)
+		go func() {
+			buf, sum := make([]byte, 65536), 0
+			for {
+				k, err := tty.Read(buf)
+				sum += k
+				answered(tty, buf[:k], args)
+				if err != nil {
+					done <- sum
+					return
+				}
+			}
+		}()
+		time.Sleep(d)
+		_ = cmd.Process.Signal(syscall.SIGKILL)
+		_ = cmd.Wait()
+		n = <-done
+		return cmd.ProcessState.UserTime() + cmd.ProcessState.SystemTime(), n
+	}
+	c1, n1 := run(time.Second)
+	c2, n2 := run(time.Second + lasts)
+	return drawing{cpu: 100 * float64(c2-c1) / float64(lasts), rate: float64(n2-n1) / lasts.Seconds()}
+}
+
+func firstFrame(b *testing.B, args []string, word string) time.Duration {
+	b.Helper()
+	cmd := exec.Command(args[0], args[1:]...)
+	cmd.Env = append(cmd.Environ(), "TERM=xterm-256color", "LANG=C.UTF-8")
+	t0 := time.Now()
+	tty, err := pty.StartWithSize(cmd, &pty.Winsize{Rows: 24, Cols: 80})
+	if err != nil {
+		b.Fatal(err)
+	}
+	defer func() { cmd.Process.Kill(); cmd.Wait(); tty.Close() }()
+	var seen bytes.Buffer
+	buf := make([]byte, 65536)
+	for !strings.Contains(seen.String(), word) {
+		n, err := tty.Read(buf)
+		seen.Write(buf[:n])
+		answered(tty, buf[:n], args)
+		if err != nil || time.Since(t0) > 20*time.Second {
+			b.Fatalf("no first frame: %v\n%.300q", err, seen.String())
+		}
+	}
+	return time.Since(t0)
+}
