@@ -254,9 +254,14 @@ func (l *Live) cycle() bool { return false }
 
 // supervise is the goroutine that owns the drive.
 func (l *Live) supervise() {
-	tick := time.NewTicker(tickEach)
+	pace := restTickEach
+	tick := time.NewTicker(pace)
 	defer tick.Stop()
 	for {
+		if want := l.tickEach(); want != pace {
+			pace = want
+			tick.Reset(pace)
+		}
 		select {
 		case <-l.over:
 			return
@@ -272,6 +277,17 @@ func (l *Live) supervise() {
 		}
 		l.leave()
 	}
+}
+
+// restTickEach is how often the limiter looks at its clock while it is disarmed
+// and no step is in work: then it only waits for the link to age.
+const restTickEach = 40 * time.Millisecond
+
+func (l *Live) tickEach() time.Duration {
+	if l.s.core.State().Phase == safety.Disarmed && len(l.waiters) == 0 {
+		return restTickEach
+	}
+	return tickEach
 }
 
 func (l *Live) enter() {

@@ -1,6 +1,7 @@
 // Command screenfloor draws a screen of plain text that changes everywhere,
-// thirty times a second, by Bubble Tea, and does nothing else. With the argument
-// hello it draws one word once.
+// thirty times a second, by Bubble Tea, reads the port in its argument and throws
+// away what comes, and does nothing else. With the argument hello it draws one
+// word once.
 package main
 
 import (
@@ -9,6 +10,7 @@ import (
 	"time"
 
 	tea "github.com/charmbracelet/bubbletea"
+	"go.bug.st/serial"
 )
 
 type screen struct {
@@ -50,7 +52,20 @@ func (s screen) View() string {
 }
 
 func main() {
-	s := screen{hello: len(os.Args) > 1 && os.Args[1] == "hello"}
+	s := screen{hello: os.Args[1] == "hello"}
+	if !s.hello {
+		port, err := serial.Open(os.Args[1], &serial.Mode{BaudRate: 115200})
+		if err != nil {
+			panic(err)
+		}
+		go func() {
+			for b := make([]byte, 4096); ; {
+				if _, err := port.Read(b); err != nil {
+					return
+				}
+			}
+		}()
+	}
 	if _, err := tea.NewProgram(s, tea.WithAltScreen()).Run(); err != nil {
 		os.Exit(1)
 	}
