@@ -46,6 +46,8 @@ func (p *painter) stepRow(a area, i int, st job.StepView, chosen bool) {
 	word := string(st.Status)
 	if st.Status == job.ToDo && !st.Ready {
 		word = "not yet"
+	} else if st.Status == job.ToDo && st.Optional {
+		word = "as wanted"
 	}
 	if st.Status == job.Refused && !chosen {
 		role = palette.Caution

@@ -3,6 +3,7 @@ package main
 import (
 	"fmt"
 	"os"
+	"slices"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -15,6 +16,7 @@ import (
 // dryrunCommand does the whole job unattended on a simulated rig in virtual time.
 func dryrunCommand() *cobra.Command {
 	var simFile, rigFile, out string
+	var also []string
 	var seed uint64
 	var asJSON bool
 	c := &cobra.Command{
@@ -25,6 +27,9 @@ func dryrunCommand() *cobra.Command {
 				return usage(err)
 			}
 			o := bench.DryRun{Config: cfg, Seed: seed, Dir: out, Program: "gainwright " + versionWords(), Start: time.Now()}
+			if o.Also, err = optionalSteps(also); err != nil {
+				return usage(err)
+			}
 			if rigFile != "" {
 				if o.Rig, o.RigText, err = readRig(rigFile); err != nil {
 					return err
@@ -55,11 +60,33 @@ func dryrunCommand() *cobra.Command {
 	f.StringVar(&simFile, "sim", "", "simulated board (TOML)")
 	f.StringVar(&rigFile, "rig", "", "rig file; without it the nameplate of the simulated board is the envelope")
 	f.StringVar(&out, "out", "", "folder for the record; it must not exist or be empty")
+	f.StringSliceVar(&also, "also", nil, "optional steps to be done as well, by their ids; all does every one")
 	f.Uint64Var(&seed, "seed", 1, "start of all random numbers")
 	f.BoolVar(&asJSON, "json", false, "print one JSON object")
 	must(c.MarkFlagRequired("sim"))
 	must(c.MarkFlagRequired("out"))
 	return c
+}
+
+// optionalSteps finds optional steps by their ids.
+func optionalSteps(ids []string) ([]job.StepID, error) {
+	var known, out []job.StepID
+	for _, p := range job.Path {
+		if p.Optional {
+			known = append(known, p.ID)
+		}
+	}
+	for _, id := range ids {
+		switch {
+		case id == "all":
+			out = append(out, known...)
+		case slices.Contains(known, job.StepID(id)):
+			out = append(out, job.StepID(id))
+		default:
+			return nil, fmt.Errorf("--also %s: no such optional step; there are %v", id, known)
+		}
+	}
+	return out, nil
 }
 
 // exitOf is the exit code of an outcome.

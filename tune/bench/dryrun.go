@@ -2,7 +2,7 @@ package bench
 
 import (
 	"errors"
-
+	"slices"
 	"time"
 
 	"gainwright/link/simrig"
@@ -34,7 +34,8 @@ type DryRun struct {
 	Dir      string // of the record; "" keeps none
 	Program  string
 	Start    time.Time
-	Rules    bool // judge other rules on the rig's own physics as well
+	Rules    bool         // judge other rules on the rig's own physics as well
+	Also     []job.StepID // optional steps to be done as well
 	Progress func(at time.Duration, step job.StepID, words string)
 }
 
@@ -127,7 +128,7 @@ func (d DryRun) Do() (Report, error) {
 // steps goes down the path and says what came of it.
 func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 	for _, p := range job.Path {
-		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" {
+		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" || p.Optional && !slices.Contains(d.Also, p.ID) {
 			continue
 		}
 		err := j.Do(p.ID)

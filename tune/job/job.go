@@ -98,7 +98,7 @@ func New(h Hands, opt Options) *Job {
 	for i := range Path {
 		p := &Path[i]
 		j.steps[p.ID] = &StepView{ID: p.ID, Title: p.Title, For: p.For, Needs: p.Needs, Moves: p.Moves, Takes: p.Takes,
-			Gives: p.Gives, Status: ToDo}
+			Gives: p.Gives, Status: ToDo, Optional: p.Optional}
 	}
 	j.publish()
 	h.Show(func(v *View) { v.Current = StepPort })
@@ -219,7 +219,7 @@ func (j *Job) Remark(text string) {
 }
 
 // Next is the first step behind the last one done that can be done, or else the
-// first of the path.
+// first of the path. Optional steps are passed over.
 func (j *Job) Next() StepID {
 	if j.steps[StepCard].Status == Done {
 		return StepCard // the job is over; a person may still go anywhere
@@ -233,7 +233,7 @@ func (j *Job) Next() StepID {
 	for _, part := range [][]Info{Path[last+1:], Path} {
 		for i := range part {
 			id := part[i].ID
-			if st := j.steps[id].Status; (st == ToDo || st == Refused) && j.missing(id) == "" {
+			if st := j.steps[id].Status; !part[i].Optional && (st == ToDo || st == Refused) && j.missing(id) == "" {
 				return id
 			}
 		}

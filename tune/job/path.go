@@ -6,6 +6,9 @@ type Info struct {
 	Title                           string
 	For, Needs, Moves, Takes, Gives string
 	needs                           []StepID // that must be done before it
+	// Optional steps stand at their place and are done by going there, or because
+	// a job file lists them; nothing else needs them and the way onward passes them.
+	Optional bool
 }
 
 // Path is the order of work. A person may go straight to any step whose needs

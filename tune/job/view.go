@@ -143,6 +143,8 @@ type StepView struct {
 	Reason string // of Refused and Skipped
 	Result string // of Done, one line
 	Ready  bool   // what it needs is there
+
+	Optional bool // done only where somebody wants it
 }
 
 // QuestionKind says what answer a question takes.
