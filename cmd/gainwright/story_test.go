@@ -218,6 +218,9 @@ func (p *person) upTo(last job.StepID) {
 		if s.ID == last {
 			return
 		}
+		if s.Optional {
+			continue
+		}
 		if s.ID != job.StepIdentity { // comes with the port
 			p.step(s.ID)
 		}
@@ -233,7 +236,7 @@ func (p *person) upTo(last job.StepID) {
 			p.until("the trip", phase("TRIPPED"))
 			p.again("e", func(v *job.View) bool { return v.Drive.Acked })
 			p.again("z", phase("DISARMED"))
-		case job.StepSign, job.StepSilence, job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFirstLoop, job.StepVerify:
+		case job.StepSign, job.StepSilence, job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFound, job.StepFirstLoop, job.StepVerify:
 			p.runsAll(s.ID)
 		case job.StepPush:
 			p.until("the word to type", func(v *job.View) bool { return v.Ask != nil && v.Ask.Kind == job.AskWord })

@@ -59,6 +59,8 @@ type Known struct {
 	FitFile                string // of the chosen fit, in the record
 
 	FoundMargins *design.Margins
+	foundGains   *design.Gains // while the as-found trace is taken
+	FoundStep    *sheet.AsFoundStepRecord
 	Proposals    []design.Proposal
 	Chosen       int
 	Gains        *design.Gains // proposed, as the board will hold them
@@ -270,7 +272,7 @@ func (j *Job) procedure(id StepID) func() (result, error) {
 	return map[StepID]func() (result, error){
 		StepPort: j.doPort, StepIdentity: j.doIdentity, StepCount: j.doCount, StepSign: j.doSign, StepStop: j.doStop,
 		StepSilence: j.doSilence, StepLimits: j.doLimits, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
-		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepDesign: j.doDesign, StepPush: j.doPush,
+		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepFound: j.doFound, StepDesign: j.doDesign, StepPush: j.doPush,
 		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
 	}[id]
 }

@@ -91,7 +91,7 @@ const phasesMost = 8
 // the measured one: at the telemetry's rate, and of the speed in whole counts.
 // Where a count shows, the middle of several places between two counts is taken.
 func (j *Job) forecastMetrics(step setpointStep, hold time.Duration, band float64) (StepMetrics, []Point, error) {
-	g := *j.Gains
+	g := *j.closing()
 	phases, quiet := 1, 5*g.SampleTime
 	if j.sizing().SpeedStep > 0.002*math.Abs(step.to-step.from) {
 		phases, quiet = phasesMost, math.Max(0.25*hold.Seconds(), 20*g.SampleTime)

@@ -41,6 +41,15 @@ func (j *Job) backEMF() float64 {
 	return 0
 }
 
+// closing is the law that closed-loop runs go by now: the one found while its
+// trace is taken, else the proposal.
+func (j *Job) closing() *design.Gains {
+	if j.foundGains != nil {
+		return j.foundGains
+	}
+	return j.Gains
+}
+
 // overdrive is the largest drive over back-EMF in volts that a closed loop may
 // use: what the current limit allows, or, where nothing says what a volt gives in
 // amperes, about what the open-loop tests have had without harm. 0: not known.
@@ -89,7 +98,7 @@ func (j *Job) loopSlope(levels []float64, hold time.Duration, speedMax float64) 
 			parts = append(parts, step.parts(seen+math.Abs(to-from)/slope)...)
 			from = to
 		}
-		r, err := j.simulateLoop(*j.Gains, 0, parts)
+		r, err := j.simulateLoop(*j.closing(), 0, parts)
 		if err != nil {
 			return 0, 0, err
 		}
@@ -135,10 +144,10 @@ func planParts(p safety.Plan) []design.Part {
 // loopCourse is the forecast of a closed-loop plan by the sampled loop itself;
 // false where there is no model or no gains yet.
 func (j *Job) loopCourse(p safety.Plan) (r design.Run, over, top float64, ok bool) {
-	if j.Gains == nil || j.Fit == nil || j.Fit.Best() == nil || len(p.Segments) == 0 || p.Segments[0].Mode != safety.ModeSpeed {
+	if j.closing() == nil || j.Fit == nil || j.Fit.Best() == nil || len(p.Segments) == 0 || p.Segments[0].Mode != safety.ModeSpeed {
 		return r, 0, 0, false
 	}
-	r, err := j.simulateLoop(*j.Gains, 0, planParts(p))
+	r, err := j.simulateLoop(*j.closing(), 0, planParts(p))
 	if err != nil {
 		return r, 0, 0, false
 	}

@@ -121,6 +121,7 @@ const (
 	StepStep      StepID = "step"
 	StepSecond    StepID = "second"
 	StepFit       StepID = "fit"
+	StepFound     StepID = "found"
 	StepDesign    StepID = "design"
 	StepPush      StepID = "push"
 	StepFirstLoop StepID = "first-loop"

@@ -36,7 +36,8 @@ type CardData struct {
 	Found, Left     CardColumn
 	OvershootTarget string
 	SettlingTarget  string
-	NoAsFoundTraces bool // declined
+	NoAsFoundTraces bool   // declined, or not taken
+	WhyNoTraces     string // in words, "" where declined
 	Model           CardModel
 	Limits          []Quantity // held by the board
 	Checks          []CardCheck
@@ -153,7 +154,7 @@ func (c *card) columns(d CardData) {
 	row("  settled within +-", with(rpm(fs.SettlingBandRadS), "rpm"), with(rpm(ls.SettlingBandRadS), "rpm"), "")
 	row("  steady ripple +-", with(rpm(fs.RippleRadS), "rpm"), with(rpm(ls.RippleRadS), "rpm"), "")
 	if d.NoAsFoundTraces {
-		c.add("no traces were taken as found")
+		c.add("no trace was taken as found%s", prefixed(": ", plain.Visible(d.WhyNoTraces, 44)))
 	}
 }
 
@@ -356,4 +357,12 @@ func Sticker(d CardData) string {
 		rest = short // the rig's name matters more than the word
 	}
 	return text(d.Rig, 40-plain.Width(rest)) + rest
+}
+
+// prefixed puts before in front of s, if there is an s.
+func prefixed(before, s string) string {
+	if s == "" {
+		return ""
+	}
+	return before + s
 }

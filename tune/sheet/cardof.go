@@ -38,7 +38,7 @@ func CardOf(r *Reader) CardData {
 	}
 	_ = r.LastJSON(KindAsLeft, "", &left)
 	d.Found, d.Left = columnOf(found), columnOf(left)
-	d.NoAsFoundTraces = found.BoardID != "" && len(found.TraceFiles) == 0
+	d.asFoundStep(r, found)
 	d.Firmware, d.LoadState = found.Firmware, left.LoadState
 	d.AmbientDegC, d.BusV = found.AmbientDegC, left.BusV
 	d.limits(r, found, left)
@@ -58,6 +58,16 @@ func CardOf(r *Reader) CardData {
 		}
 	}
 	return d
+}
+
+// asFoundStep sets what the loop did as it was found beside what it does as left.
+func (d *CardData) asFoundStep(r *Reader, found Snapshot) {
+	var step AsFoundStepRecord
+	if r.LastJSON(KindEvent, NameAsFoundStep, &step) == nil && step.Step != nil && d.Found.Step == nil {
+		d.Found.Step = step.Step
+	}
+	d.NoAsFoundTraces = found.BoardID != "" && len(found.TraceFiles) == 0 && d.Found.Step == nil
+	d.WhyNoTraces = step.NotTaken
 }
 
 // limits takes those that the session had the board hold, and sets those that it

@@ -16,6 +16,7 @@ const (
 
 	NameLimitsHeld   = "limits-held"   // KindEvent, with Limits
 	NameNoAdjustment = "no-adjustment" // KindEvent: the gains as found were good enough
+	NameAsFoundStep  = "as-found-step" // KindEvent, AsFoundStepRecord
 )
 
 // Quantity is one number with what a reader may ask of it.
@@ -66,6 +67,17 @@ type StepResult struct {
 	SettlingTimeS    *float64 `json:"settling_time_s"`
 	SettlingBandRadS *float64 `json:"settling_band_rad_s"`
 	RippleRadS       *float64 `json:"ripple_rad_s"` // half of peak to peak, at steady speed
+}
+
+// AsFoundStepRecord is a step of the closed loop as it was found, or why none was
+// taken. Kind event, NameAsFoundStep.
+type AsFoundStepRecord struct {
+	Step      *StepResult  `json:"step"`
+	Forecast  *StepResult  `json:"forecast"` // of the same gains on the fitted model
+	TraceFile string       `json:"trace_file"`
+	LoadState string       `json:"load_state"`
+	Curve     *VerifyCurve `json:"curve,omitempty"`
+	NotTaken  string       `json:"not_taken,omitempty"`
 }
 
 // CheckRecord is one check of the session. Kind check.
