@@ -101,6 +101,7 @@ func (p *reportPage) snapshots() {
 		p.sideBySide([]string{s.title + ": gain", "running", "stored"}, s.Running, s.Stored)
 		p.quantities("limit held by the board", readable(s.Limits))
 	}
+	p.foundStep()
 	for i, s := range states {
 		for k, file := range s.TraceFiles {
 			plot := plot{title: fmt.Sprintf("%s: %s", s.title, file), xLabel: "time, s", yLabel: "speed, rpm"}
@@ -112,6 +113,33 @@ func (p *reportPage) snapshots() {
 			p.addTrace(&plot, file, s.title)
 			p.raw("%s", plot.svg())
 		}
+	}
+}
+
+// foundStep shows the step of the loop as it was found, or why none was taken.
+func (p *reportPage) foundStep() {
+	for _, l := range p.r.Find(KindEvent, NameAsFoundStep) {
+		_ = show(p, l, func(_ Line, s AsFoundStepRecord) {
+			if s.Step == nil {
+				p.para("no step was taken as found: " + s.NotTaken)
+				return
+			}
+			f := StepResult{}
+			if s.Forecast != nil {
+				f = *s.Forecast
+			}
+			p.sub("step of the closed loop as found, load " + orNone(s.LoadState))
+			p.table([]string{"quantity", "measured", "forecast", "why"}, [][]string{
+				{"overshoot", with(s.Step.OvershootPercent, "%"), with(f.OvershootPercent, "%"), "peak over the setpoint less twice the steady RMS, share of the step; forecast: the same gains on the fitted model"},
+				{"settling time", with(s.Step.SettlingTimeS, "s"), with(f.SettlingTimeS, "s"), "to the last sample outside the band, " + s.TraceFile},
+				{"steady ripple ±", with(rpm(s.Step.RippleRadS), "rpm"), "", "twice the RMS about the mean at the end of the step"},
+			})
+			if s.Curve != nil {
+				plot := verifyPlot(*s.Curve)
+				plot.title = "as found"
+				p.raw("%s", plot.svg())
+			}
+		})
 	}
 }
 
