@@ -28,6 +28,10 @@ type LookAhead struct {
 	Gain     float64       // rad/s per V
 	Tau      time.Duration // time constant
 	DeadTime time.Duration
+
+	// What the motor was measured to have; used where the envelope has none.
+	Resistance float64 // Ω
+	Ke         float64 // V·s/rad
 }
 
 // Envelope holds the hard limits of one rig and the timing of one session. The

@@ -13,6 +13,8 @@ const (
 	slopeSpan   = 20 * time.Millisecond  // least span of the slope of speed
 	slipShare   = 0.3                    // speed may leave (V−IR)/Ke by this share
 	slipTime    = 300 * time.Millisecond // for this long
+	runawayGap  = 0.35                   // or by this share of the speed limit
+	runawayTime = 40 * time.Millisecond  // for this long: a loop that sees too little speed runs away
 	looseRatio  = 2.5                    // acceleration against the model's
 	looseTime   = 30 * time.Millisecond
 	aheadFrom   = 0.7                   // share of the ceiling from which to look ahead
@@ -41,6 +43,8 @@ type judgeState struct {
 	wrong     bool
 	slipFrom  time.Duration
 	slipping  bool
+	awayFrom  time.Duration
+	away      bool
 	looseFrom time.Duration
 	loose     bool
 }
@@ -78,7 +82,7 @@ func (j *judgeState) look(s protocol.Sample, dt time.Duration) {
 // start forgets what belongs to the run before.
 func (j *judgeState) start() {
 	j.changedAt = j.clock
-	j.stalling, j.wrong, j.slipping, j.loose = false, false, false, false
+	j.stalling, j.wrong, j.slipping, j.away, j.loose = false, false, false, false, false
 }
 
 // for returns whether cond has held for d without a break.
@@ -284,18 +288,32 @@ func (m *machine) judgeWay(s protocol.Sample) bool {
 	return true
 }
 
+// winding is resistance and back-EMF constant: the rig file's, else measured, else 0.
+func (env *Envelope) winding() (ohms, ke float64) {
+	if env.Ke > 0 && env.Resistance > 0 {
+		return env.Resistance, env.Ke
+	}
+	return env.Look.Resistance, env.Look.Ke
+}
+
 // judgeSlip compares the speed with (V − I·R)/Ke, which needs no model of the
 // load: they part when encoder or coupling slips, or the encoder is frozen.
 func (m *machine) judgeSlip(s protocol.Sample) bool {
 	j := &m.judge
-	if s.Has&protocol.HasCurrent == 0 || m.env.Ke <= 0 || m.env.Resistance <= 0 || m.Plan.plan.Locked {
+	ohms, ke := m.env.winding()
+	if s.Has&protocol.HasCurrent == 0 || ke <= 0 || ohms <= 0 || m.Plan.plan.Locked {
 		return false
 	}
-	byVolts := (float64(s.Volts) - float64(s.Current)*m.env.Resistance) / m.env.Ke
+	byVolts := (float64(s.Volts) - float64(s.Current)*ohms) / ke
 	apart := math.Abs(byVolts - float64(s.Speed))
-	far := apart > slipShare*math.Max(math.Abs(byVolts), 0.3*float64(m.env.SpeedMax))
-	if !j.lasts(far, &j.slipping, &j.slipFrom, slipTime) {
+	far := j.lasts(apart > slipShare*math.Max(math.Abs(byVolts), 0.3*float64(m.env.SpeedMax)), &j.slipping, &j.slipFrom, slipTime)
+	away := j.lasts(math.Abs(byVolts) > math.Abs(float64(s.Speed)) && apart > runawayGap*float64(m.env.SpeedMax), &j.away, &j.awayFrom, runawayTime)
+	if !far && !away {
 		return false
+	}
+	if byVolts*float64(s.Speed) < 0 && math.Abs(float64(s.Speed)) > math.Abs(byVolts)/2 {
+		m.trip(CodeWrongWay, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
+		return true
 	}
 	m.trip(CodeSlip, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
 	return true

@@ -34,6 +34,7 @@ func TestEveryLimitTrips(t *testing.T) {
 		{"speed ahead", safety.Plan{SpeedMax: 100}, safety.CodeSpeedAhead, 200 * ms,
 			func(d *drill, in time.Duration) {
 				d.board.Speed, d.board.Volts = si.RadPerSec(math.Min(80, 500*in.Seconds())), 20
+				d.board.Current = si.Amps((20 - ke*float64(d.board.Speed)) / r)
 			},
 			func(d *drill, in time.Duration) {
 				d.board.Speed, d.board.Volts = si.RadPerSec(math.Min(80, 500*in.Seconds())), 7
@@ -86,6 +87,16 @@ func TestEveryLimitTrips(t *testing.T) {
 				d.board.Volts, d.board.Current, d.board.Speed = 9, 0.5, 85
 				d.board.Counts += 2
 			}},
+		{"runaway unseen", safety.Plan{}, safety.CodeSlip, 100 * ms, // the loop sees no speed, volts and current say 102 rad/s
+			func(d *drill, in time.Duration) {
+				d.board.Volts, d.board.Current, d.board.Speed = 9, 0.5, 1
+				d.board.Counts++
+			},
+			func(d *drill, in time.Duration) { // volts far over the speed with the current of a start
+				d.board.Volts, d.board.Speed = 9, 1
+				d.board.Current = si.Amps((9 - ke*float64(d.board.Speed)) / r)
+				d.board.Counts++
+			}},
 		{"heat", safety.Plan{}, safety.CodeHeat, 6 * time.Second, // 20² · 30 A²s at 55 A: 4.3 s with the cooling
 			func(d *drill, in time.Duration) {
 				d.board.Current, d.board.Volts, d.board.Counts = 55, 3, d.board.Counts+1
@@ -126,7 +137,7 @@ func TestEveryLimitTrips(t *testing.T) {
 				}
 				d := newDrill(t).ready()
 				switch c.name {
-				case "wrong way", "slip":
+				case "wrong way", "slip", "runaway unseen":
 					d.env.Look = safety.LookAhead{} // made-up speeds jump
 				case "acceleration":
 					d.env.AccelMax = 4000

@@ -110,6 +110,10 @@ type ending struct {
 	at     time.Duration
 }
 
+// Ramping reports whether a ramp and cut is under way: the board brings the shaft
+// to rest under power, and a cut would take that away.
+func (s State) Ramping() bool { return s.Phase == Stopping && s.ramp.on }
+
 type rampState struct {
 	on       bool
 	answered bool

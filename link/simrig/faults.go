@@ -23,6 +23,9 @@ const (
 	FaultWrongCRC      = "wrong-crc"
 	FaultOldNumber     = "arms-on-old-number"
 	FaultStaleSequence = "stale-sequence"
+	FaultUnjudged      = "limits-not-judged"
+	FaultLoose         = "load-loose"
+	FaultPushed        = "load-pushes"
 )
 
 // faultKind says what a fault does and what its value means.
@@ -49,6 +52,9 @@ var faultKinds = map[string]faultKind{
 	FaultWrongCRC:      {does: "every line has a wrong CRC"},
 	FaultOldNumber:     {does: "arming takes any one-time number that was ever given out"},
 	FaultStaleSequence: {does: "telemetry repeats its number"},
+	FaultUnjudged:      {does: "limits are held and read back, and from then on not judged; timeout, inputs and cut work on"},
+	FaultLoose:         {does: "the load comes off: inertia and friction fall to this share", value: "share left", def: 0.2},
+	FaultPushed:        {does: "the load drives the shaft forward", value: "N·m; default three times Coulomb friction", def: 0},
 }
 
 // FaultKinds lists the kinds of fault, sorted.
@@ -138,6 +144,18 @@ func (r *Rig) begin(f *fault) {
 			f.value = r.cfg.Nameplate.AmpsMax / 10
 		}
 		r.plant.supply.limit, r.plant.supply.fold = f.value, f.value/4
+	case FaultLoose:
+		m := &r.plant.motor
+		for _, x := range []*float64{&m.j, &m.fwd.coulomb, &m.fwd.static, &m.fwd.viscous, &m.rev.coulomb, &m.rev.static, &m.rev.viscous} {
+			*x *= f.value
+		}
+		r.plant.forget()
+	case FaultPushed:
+		if f.value == 0 {
+			f.value = 3 * r.plant.motor.fwd.coulomb
+		}
+		r.plant.motor.load -= f.value
+		r.plant.forget()
 	case FaultRestarts:
 		r.Restart("brownout")
 	case FaultResetsItself:

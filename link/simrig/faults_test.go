@@ -181,8 +181,39 @@ func TestRigFaults(t *testing.T) {
 	}
 }
 
+// A load that comes off or pushes, and limits that are no longer judged.
+func TestFaultsOfTheLoad(t *testing.T) {
+	speed := func(kind string, value float64, more map[string]float64) (*console, float64) {
+		c := newConsole(t, benchConfig())
+		c.hold(more)
+		c.arm()
+		c.r.Inject(kind, value)
+		c.volts(40*time.Millisecond, 10)
+		return c, c.r.Speed()
+	}
+	healthy := newConsole(t, benchConfig())
+	healthy.hold(nil)
+	healthy.arm()
+	healthy.volts(40*time.Millisecond, 10)
+	w := healthy.r.Speed()
+	if _, got := speed(FaultLoose, 0.25, nil); got < 2*w {
+		t.Errorf("a quarter of the inertia: %g rad/s after 40 ms, whole load %g", got, w)
+	}
+	if _, got := speed(FaultPushed, 0.05, nil); got < 1.1*w {
+		t.Errorf("pushed: %g rad/s after 40 ms, healthy %g", got, w)
+	}
+	c, _ := speed(FaultUnjudged, 0, map[string]float64{"wmax": 20})
+	c.volts(500*time.Millisecond, 10)
+	if !c.r.Powered() || c.r.Speed() < 100 {
+		t.Errorf("it judges its limits: %q", c.events)
+	}
+	if c.wait(400 * time.Millisecond); c.r.Powered() {
+		t.Error("the timeout is gone as well")
+	}
+}
+
 func TestEveryFaultIsTested(t *testing.T) {
-	if len(FaultKinds()) != 16 {
+	if len(FaultKinds()) != 19 {
 		t.Errorf("%d kinds of fault: test the new one and count it here", len(FaultKinds()))
 	}
 }

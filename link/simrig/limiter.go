@@ -71,7 +71,7 @@ func (r *Rig) firstCause() protocol.Cause {
 	if !r.wrong[FaultNoTimeout] && r.now-b.arm.beatAt > int64(float64(l.value(limBeat))*1e9) {
 		return protocol.CauseBeat
 	}
-	if !b.state.Moving() {
+	if !b.state.Moving() || r.wrong[FaultUnjudged] {
 		return protocol.CauseNone
 	}
 	over := func(x float64, slot int) bool {

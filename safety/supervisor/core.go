@@ -120,6 +120,9 @@ func (c *Core) State() safety.State { return c.st }
 // Envelope returns the envelope in force.
 func (c *Core) Envelope() safety.Envelope { return c.env }
 
+// Pending is how many bytes of an unfinished line are held: never more than a line.
+func (c *Core) Pending() int { return c.framer.Pending() }
+
 // Identity returns what the board said of itself.
 func (c *Core) Identity() protocol.Identity { return c.id }
 
@@ -217,7 +220,7 @@ func (c *Core) Stop(now time.Duration, source safety.StopSource) {
 	// The limiter repeats a stop while something may move. Even where it sees
 	// nothing to stop, the key is passed on: the board's answer is what the stop
 	// check looks at.
-	if c.stop != nil && c.stop.Wire == 0 {
+	if c.stop != nil && c.stop.Wire == 0 && !c.st.Ramping() {
 		c.wire.Stop([]byte{protocol.Cut})
 	}
 }

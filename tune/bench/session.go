@@ -25,7 +25,8 @@ type session struct {
 	opened    bool     // a port is open
 	run       *running // the run that is shown, armed or under way
 	lastStop  *supervisor.StopTimes
-	stops     int // answered stops so far
+	lastEnd   *safety.RunEnded // of any run
+	stops     int              // answered stops so far
 	asking    *job.Question
 	askID     int
 	answer    *job.Answer
@@ -106,6 +107,7 @@ func (s *session) Effect(now time.Duration, e safety.Effect) {
 	case safety.Log:
 		s.say(e.Words)
 	case safety.RunEnded:
+		s.lastEnd = &e
 		if s.run != nil {
 			s.run.ended = &e
 			s.endLive(e)

@@ -35,6 +35,7 @@ type Virtual struct {
 	op     operator
 	tape   *bufio.Writer // nil: bytes are not kept
 	line   []byte
+	trial  *trial // nil but in a trial of a fault
 }
 
 // budgetMax bounds a virtual job: a step that never ends is a fault of ours, and
@@ -115,21 +116,25 @@ func (v *Virtual) run(d time.Duration) {
 // reach the console, the console ticks, the operator acts.
 func (v *Virtual) step() {
 	v.s.now += quantum
+	if v.trial != nil && v.trial.step(v) {
+		return
+	}
 	for {
 		at, b, ok := v.wire.next(v.s.now)
 		if !ok {
 			break
 		}
 		v.rig.Advance(at)
-		v.rig.Receive(b)
+		v.rig.Receive(v.trial.toBoard(b))
 	}
 	v.rig.Advance(v.s.now)
-	if b := v.rig.Output(); len(b) > 0 {
+	if b := v.trial.fromBoard(v.rig.Output()); len(b) > 0 {
 		v.record(v.s.now, tape.FromBoard, b)
 		v.s.core.Bytes(v.s.now, b)
 	}
-	if v.s.now-v.ticked >= tickEach {
+	if v.s.now-v.ticked >= tickEach && !v.trial.heldUp(v.s.now) {
 		v.ticked = v.s.now
+		v.trial.lease(v)
 		v.s.core.Tick(v.s.now)
 		v.op.act(v)
 	}
@@ -196,6 +201,8 @@ type operator struct {
 	turned       bool
 	refusedSince time.Duration
 	triedAt      time.Duration
+	attends      bool // sits at a terminal: frames have to reach it
+	leaves       bool // arms and goes away
 }
 
 // Times of the operator, in virtual time.
@@ -268,11 +275,11 @@ func (o *operator) drive(s *session, r *running) {
 		}
 		if st.Phase == safety.Disarmed && s.now-o.triedAt >= 200*time.Millisecond {
 			o.triedAt = s.now
-			s.arm(true)
+			s.arm(!o.attends)
 		}
 	case st.Phase == safety.Armed:
 		o.refusedSince = 0
-		if s.now-st.ArmedAt >= safety.ClearWait {
+		if s.now-st.ArmedAt >= safety.ClearWait && !o.leaves {
 			s.intent(job.SayClear{})
 			s.intent(job.Go{})
 		}

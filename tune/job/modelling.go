@@ -116,6 +116,9 @@ func (j *Job) lookAhead(f *identify.Fit) {
 	}
 	j.Gain, j.Tau = gain, tau
 	j.Env.Look = safety.LookAhead{Gain: gain, Tau: seconds(tau), DeadTime: seconds(f.Model.DeadTime)}
+	if e := j.electric; e != nil && e.R > 0 && e.Ke > 0 {
+		j.Env.Look.Resistance, j.Env.Look.Ke = e.R, e.Ke
+	}
 	j.h.Look(j.Env.Look)
 }
 
