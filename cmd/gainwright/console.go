@@ -42,7 +42,11 @@ func consoleCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use: "console [--port PATH] [--rig RIG.toml] [--out SHEET_DIR]", Short: "open the console (also what a bare gainwright does)", Args: cobra.NoArgs,
 		RunE: func(c *cobra.Command, _ []string) error {
-			o := bench.Options{Ports: portViews, Open: f.open}
+			seen := portMemory()
+			o := bench.Options{Ports: portViews, Open: f.open, Seen: seen.keep}
+			if !c.Flags().Changed("baud") {
+				o.OpenAt = openAt // a rate that was asked for is the only one
+			}
 			if f.rigFile != "" {
 				r, text, err := readRig(f.rigFile)
 				if err != nil {
@@ -57,7 +61,7 @@ func consoleCommand() *cobra.Command {
 	c.Flags().StringVar(&f.rigFile, "rig", "", "rig file; without it the console asks for the nameplate")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it one in the data directory")
 	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
-	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s")
+	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s; without it the usual ones are tried where nothing that can be read comes")
 	return c
 }
 
@@ -117,8 +121,10 @@ func demoCommand() *cobra.Command {
 	return c
 }
 
-func (f consoleFlags) open(path string) (bench.Opened, error) {
-	p, err := serialport.Open(path, f.baud)
+func (f consoleFlags) open(path string) (bench.Opened, error) { return openAt(path, f.baud) }
+
+func openAt(path string, baud int) (bench.Opened, error) {
+	p, err := serialport.Open(path, baud)
 	if err != nil {
 		return bench.Opened{}, err
 	}

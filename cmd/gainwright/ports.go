@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"os"
 	"runtime/debug"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -52,8 +53,10 @@ func portViews() []job.PortView {
 		return []job.PortView{{Note: err.Error()}}
 	}
 	var out []job.PortView
+	memory := portMemory()
 	for _, p := range ports {
-		out = append(out, job.PortView{Path: p.Path, Name: p.ByID, Product: p.Product, Serial: p.Serial, Note: usbWords(p)})
+		note := strings.TrimSpace(usbWords(p) + "  " + memory.words(p))
+		out = append(out, job.PortView{Path: p.Path, Name: p.ByID, Product: p.Product, Serial: p.Serial, Note: note})
 	}
 	return out
 }

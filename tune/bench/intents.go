@@ -1,6 +1,8 @@
 package bench
 
 import (
+	"errors"
+
 	"gainwright/safety"
 	"gainwright/tune/job"
 )
@@ -69,9 +71,41 @@ func (l *Live) pick(path string) {
 		return
 	}
 	l.connect(o, path)
-	if l.job.Do(job.StepPort) == nil {
-		_ = l.job.Do(job.StepIdentity)
+	if l.job.Do(job.StepPort) != nil {
+		return
 	}
+	err = l.job.Do(job.StepIdentity)
+	if l.unreadable(err) && l.opt.OpenAt != nil {
+		l.do(func(*session) { l.shut() })
+		rate := l.search(path, o.Baud)
+		if rate == 0 {
+			rate = o.Baud
+		}
+		if o, err = l.opt.OpenAt(path, rate); err != nil {
+			return
+		}
+		l.connect(o, path)
+		err = l.job.Do(job.StepIdentity)
+	}
+	if id := l.job.ID.Board; id != "" && l.opt.Seen != nil {
+		l.opt.Seen(path, id)
+	}
+}
+
+// unreadable says that a board did not answer in a way that can be read, which
+// another line rate may mend.
+func (l *Live) unreadable(err error) bool {
+	r, ok := errors.AsType[*job.RefusedError](err)
+	return ok && (r.Number == 702 || r.Number == 761 || r.Number == 763)
+}
+
+// shut gives the line back without a word of a lost link.
+func (l *Live) shut() {
+	if line := l.line.Swap(nil); line != nil {
+		line.cancel()
+		line.port.Close()
+	}
+	l.s.opened = false
 }
 
 // Connect opens a port from the command line, as a person's pick would.

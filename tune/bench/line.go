@@ -26,7 +26,7 @@ func (l *Live) giveUp() {
 	s := l.s
 	s.opened = false
 	s.view.Refusal = &job.RefusalView{Number: int(safety.CodeLinkLost), What: "LINK LOST", Cause: s.core.Link().LostWhy,
-		Remedy: "watch the shaft; use the E-stop if it turns. The port is looked for; then do the step \"Identity\" again"}
+		Remedy: "watch the shaft; use the E-stop if it turns. The board is looked for by its id, on its port and on ports that come; nothing is resumed"}
 }
 
 // reopenEvery is how often a port that was lost is looked for.
@@ -36,7 +36,10 @@ const reopenEvery = 500 * time.Millisecond
 // on is not resumed: the identity is asked for anew, disarmed.
 func (l *Live) reopen() {
 	l.opening.Store(true)
-	path := l.path
+	path, board, before := l.path, l.s.core.Identity().Board, l.s.view.Ports
+	if board != "" {
+		l.s.say("looking for board " + board + " on its port and on ports that come from now on")
+	}
 	l.goes(func() {
 		defer l.opening.Store(false)
 		for {
@@ -45,11 +48,11 @@ func (l *Live) reopen() {
 				return
 			case <-time.After(reopenEvery):
 			}
-			o, err := l.opt.Open(path)
-			if err != nil {
+			o, at, ok := l.found(path, board, before)
+			if !ok {
 				continue
 			}
-			l.connect(o, path)
+			l.connect(o, at)
 			l.step(func(j *job.Job) { _ = j.Again() })
 			return
 		}

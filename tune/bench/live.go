@@ -26,6 +26,11 @@ type Options struct {
 	// Open opens a port. It is called again, with the same path, when a port that
 	// was lost comes back.
 	Open func(path string) (Opened, error)
+	// OpenAt opens a port at another line rate, where nothing that can be read comes
+	// at that of Open. nil: no other rate is tried.
+	OpenAt func(path string, baud int) (Opened, error)
+	// Seen is told on which port a board was seen. nil: nobody keeps it.
+	Seen func(path, board string)
 	// NewSheet makes the record, once the board is known. nil: no record.
 	NewSheet func(board string, r rig.Rig) (*sheet.Sheet, error)
 	// Simulated says that the far end is a simulated rig of this program's own.

@@ -49,6 +49,9 @@ func (j *Job) doIdentity() (result, error) {
 
 // takeRig puts the rig file's envelope in force and keeps the file.
 func (j *Job) takeRig() error {
+	if f := j.FoundRec; f != nil && f.BoardID != j.ID.Board {
+		return refuse(718, "another board", fmt.Sprintf("this job was begun on board %q, this is %q", f.BoardID, j.ID.Board), "connect the board again, or leave and begin a job of its own")
+	}
 	if b := j.Rig.Board; b != "" && b != j.ID.Board {
 		return refuse(718, "another board", fmt.Sprintf("the rig file is for board %q, this is %q", b, j.ID.Board), "use the rig file of this board, or correct it")
 	}
@@ -103,7 +106,7 @@ func (j *Job) readIdentity() error {
 // startTelemetry asks for the quickest rate that the line carries.
 func (j *Job) startTelemetry() error {
 	var last error
-	for _, hz := range []int{500, 250, 200, 125, 100, 50} {
+	for _, hz := range []int{500, 250, 200, 125, 100, 50, 40, 25, 20, 10} {
 		_, err := j.h.Request(protocol.VerbRate, fmt.Sprintf("%d x tu", hz))
 		var ref *protocol.RefusedError
 		if errors.As(err, &ref) && (ref.Refusal == protocol.RefLineFull || ref.Refusal == protocol.RefArgument) {

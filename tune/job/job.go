@@ -175,6 +175,12 @@ func (j *Job) refused(id StepID, err error) error {
 		j.h.Show(func(v *View) {
 			v.Refusal = &RefusalView{Number: r.Number, What: r.What, Cause: r.Cause, Remedy: r.Remedy}
 		})
+	} else if errors.Is(err, protocol.ErrVoid) {
+		j.h.Show(func(v *View) {
+			if v.Refusal == nil { // what ended it has said more
+				v.Refusal = &RefusalView{Number: int(safety.CodeVoided), What: s.Title, Cause: "a stop or a lost link ended it", Remedy: "do the step again"}
+			}
+		})
 	} else if !errors.Is(err, ErrDeclined) && !errors.Is(err, ErrOver) {
 		j.h.Show(func(v *View) {
 			v.Refusal = &RefusalView{Number: 799, What: s.Title, Cause: err.Error(), Remedy: "mend the cause and do the step again"}
