@@ -25,6 +25,7 @@ var rooms = map[string]struct{ ours, forbidden []string }{
 	"link/tape":          {[]string{"link"}, nil},
 	"link/linktest":      {[]string{"link"}, nil},
 	"link/simrig":        {[]string{"link", "protocol", "protocol/si"}, nil},
+	"link/adapter":       {nil, []string{"net"}},
 	"link/simrig/family": {nil, []string{"os"}},
 	"safety":             {[]string{"protocol", "protocol/si"}, []string{"io", "os", "sync", "gonum.org/v1/gonum"}},
 	"safety/rig":         {[]string{"safety", "protocol/si"}, []string{"os"}},
