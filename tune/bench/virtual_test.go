@@ -27,6 +27,9 @@ func TestWholeJobInVirtualTime(t *testing.T) {
 		if s.ID == job.StepCard {
 			break // needs a record
 		}
+		if s.Optional {
+			continue
+		}
 		if next := j.Next(); next != s.ID {
 			t.Errorf("next is %s, want %s", next, s.ID)
 		}

@@ -255,6 +255,16 @@ func Staircase(k Known, levels int, top, dir float64, down bool) (safety.Plan, [
 	return safety.Plan{Name: name, Purpose: "steady speed against voltage", Segments: b.segs}, stairs
 }
 
+// Coast makes a run up to a steady speed that ends there: the output goes off and
+// the shaft coasts, which is what is looked at.
+func Coast(k Known, drive float64) safety.Plan {
+	b := volts(k.Env)
+	ramp, settle := leadIn(k)
+	b.ramp(drive, seconds(ramp), safety.Until{}, "up")
+	b.hold(drive, seconds(settle), "steady, then output off")
+	return safety.Plan{Name: "coast-down", Purpose: "friction: how the shaft slows down with the output off", Segments: b.segs}
+}
+
 // Times of the small-signal tests: the console renews a drive every 10 ms, and a
 // level has to last some of those.
 func leadIn(k Known) (ramp, settle float64) {

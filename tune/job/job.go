@@ -70,13 +70,14 @@ type Known struct {
 	NoChange     bool
 	Refused      string // why nothing is proposed
 
-	Pushed     bool
-	Verified   *sheet.VerifyRecord
-	forecastOf StepMetrics
-	StoredOK   bool
-	LeftRec    *sheet.Snapshot
-	Checks     []sheet.CheckRecord
-	Remarks    []string
+	Pushed      bool
+	Verified    *sheet.VerifyRecord
+	forecastOf  StepMetrics
+	StoredOK    bool
+	Experiments map[StepID]sheet.ExperimentRecord // optional ones that were done, newest of each
+	LeftRec     *sheet.Snapshot
+	Checks      []sheet.CheckRecord
+	Remarks     []string
 }
 
 // Job is one job on one rig. Its methods are called from one goroutine.
@@ -279,7 +280,7 @@ func (j *Job) procedure(id StepID) func() (result, error) {
 		StepPort: j.doPort, StepIdentity: j.doIdentity, StepCount: j.doCount, StepSign: j.doSign, StepStop: j.doStop,
 		StepSilence: j.doSilence, StepLimits: j.doLimits, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
 		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepFound: j.doFound, StepDesign: j.doDesign, StepPush: j.doPush,
-		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
+		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepCoast: j.doCoast, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
 	}[id]
 }
 

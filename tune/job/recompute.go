@@ -55,6 +55,9 @@ func Recompute(r *sheet.Reader) (Recomputed, error) {
 			return c.out, err
 		}
 	}
+	if err := c.experiments(); err != nil {
+		return c.out, err
+	}
 	c.out.Identical = len(c.out.Differences) == 0
 	return c.out, nil
 }

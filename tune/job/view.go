@@ -25,21 +25,23 @@ type View struct {
 	Busy    string  // long work that goes on, in words; "" if none
 	Share   float64 // of that work, 0 to 1
 
-	Ask     *Question
-	Plan    *PlanView
-	Live    *LiveView
-	Found   *FoundView
-	Checks  []CheckView
-	Model   *ModelView
-	Design  *DesignView
-	Push    *PushView
-	Verify  *VerifyView
-	Card    string
-	Alarms  []AlarmView
-	Log     []LogLine // oldest first
-	Refusal *RefusalView
-	Ports   []PortView
-	Hand    bool // a simulated shaft can be turned by key
+	Ask    *Question
+	Plan   *PlanView
+	Live   *LiveView
+	Found  *FoundView
+	Checks []CheckView
+	Model  *ModelView
+	// Experiments are the optional ones that were done, in the order of the path.
+	Experiments []ExperimentView
+	Design      *DesignView
+	Push        *PushView
+	Verify      *VerifyView
+	Card        string
+	Alarms      []AlarmView
+	Log         []LogLine // oldest first
+	Refusal     *RefusalView
+	Ports       []PortView
+	Hand        bool // a simulated shaft can be turned by key
 }
 
 // LinkState says how the line to the board stands.
@@ -121,6 +123,7 @@ const (
 	StepStep      StepID = "step"
 	StepSecond    StepID = "second"
 	StepFit       StepID = "fit"
+	StepCoast     StepID = "coast"
 	StepFound     StepID = "found"
 	StepDesign    StepID = "design"
 	StepPush      StepID = "push"
@@ -262,6 +265,23 @@ type ModelView struct {
 	HoldFit    []Point
 	Plausible  []Fact
 	Stairs     []Point // volts, speed
+}
+
+// ExperimentView is what an optional experiment showed.
+type ExperimentView struct {
+	Step    StepID
+	Title   string
+	Verdict string
+	Reasons []string
+	Finding string
+	Facts   []Fact
+	Series  []SeriesView
+}
+
+// SeriesView is a column of numbers of an experiment; NaN where not known.
+type SeriesView struct {
+	Name, Unit string
+	Values     []float64
 }
 
 // Candidate is one model structure that was tried.

@@ -16,30 +16,31 @@ type Kind string
 
 // The kinds of entry.
 const (
-	KindHeader   Kind = "header"
-	KindIdentity Kind = "identity"
-	KindRig      Kind = "rig"
-	KindPart     Kind = "part"
-	KindAsFound  Kind = "as-found"
-	KindCheck    Kind = "check"
-	KindRun      Kind = "run"
-	KindTrace    Kind = "trace"
-	KindFit      Kind = "fit"
-	KindProposal Kind = "proposal"
-	KindPush     Kind = "push"
-	KindVerify   Kind = "verify"
-	KindStore    Kind = "store"
-	KindAsLeft   Kind = "as-left"
-	KindRemark   Kind = "remark"
-	KindEvent    Kind = "event"
-	KindCard     Kind = "card"
-	KindTape     Kind = "tape"
-	KindClose    Kind = "close"
+	KindHeader     Kind = "header"
+	KindIdentity   Kind = "identity"
+	KindRig        Kind = "rig"
+	KindPart       Kind = "part"
+	KindAsFound    Kind = "as-found"
+	KindCheck      Kind = "check"
+	KindRun        Kind = "run"
+	KindTrace      Kind = "trace"
+	KindFit        Kind = "fit"
+	KindExperiment Kind = "experiment"
+	KindProposal   Kind = "proposal"
+	KindPush       Kind = "push"
+	KindVerify     Kind = "verify"
+	KindStore      Kind = "store"
+	KindAsLeft     Kind = "as-left"
+	KindRemark     Kind = "remark"
+	KindEvent      Kind = "event"
+	KindCard       Kind = "card"
+	KindTape       Kind = "tape"
+	KindClose      Kind = "close"
 )
 
 var kinds = map[Kind]bool{
 	KindHeader: true, KindIdentity: true, KindRig: true, KindPart: true, KindAsFound: true,
-	KindCheck: true, KindRun: true, KindTrace: true, KindFit: true, KindProposal: true,
+	KindCheck: true, KindRun: true, KindTrace: true, KindFit: true, KindExperiment: true, KindProposal: true,
 	KindPush: true, KindVerify: true, KindStore: true, KindAsLeft: true, KindRemark: true,
 	KindEvent: true, KindCard: true, KindTape: true, KindClose: true,
 }

@@ -198,6 +198,26 @@ type MotorRecord struct {
 	LoadState         string   `json:"load_state"`
 }
 
+// Series is a column of numbers of an experiment.
+type Series struct {
+	Name   string     `json:"name"`
+	Unit   string     `json:"unit"`
+	Values []*float64 `json:"values"`
+}
+
+// ExperimentRecord is what an optional experiment showed. Kind experiment, named
+// by its step.
+type ExperimentRecord struct {
+	Experiment string          `json:"experiment"` // step of the job path
+	Settings   json.RawMessage `json:"settings"`   // what the analysis was told, enough to repeat it
+	InputFiles []string        `json:"input_files"`
+	Params     []Quantity      `json:"params"`
+	Columns    []Series        `json:"columns"`
+	Verdict    string          `json:"verdict"` // believed, care or refused
+	Reasons    []string        `json:"reasons"`
+	Finding    string          `json:"finding"` // in one line
+}
+
 // Bode is the open loop, sampled in frequency, with its margins.
 type Bode struct {
 	FrequencyRadS    []float64 `json:"frequency_rad_s"`

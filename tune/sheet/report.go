@@ -29,6 +29,7 @@ func Report(dir string) string {
 	p.checks()
 	p.runs()
 	p.fits()
+	p.experiments()
 	p.proposals()
 	p.pushes()
 	p.verifies()

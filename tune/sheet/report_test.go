@@ -160,7 +160,7 @@ func TestHostileTextAppearsNowhereRaw(t *testing.T) {
 		v    any
 	}{
 		{KindIdentity, map[string]string{evil: evil}}, {KindPart, filled[PartRecord]()}, {KindAsFound, filled[Snapshot]()},
-		{KindCheck, filled[CheckRecord]()}, {KindRun, filled[RunRecord]()}, {KindFit, filled[FitRecord]()},
+		{KindCheck, filled[CheckRecord]()}, {KindRun, filled[RunRecord]()}, {KindFit, filled[FitRecord]()}, {KindExperiment, filled[ExperimentRecord]()},
 		{KindProposal, filled[ProposalRecord]()}, {KindPush, filled[PushRecord]()}, {KindVerify, filled[VerifyRecord]()},
 		{KindStore, filled[StoreRecord]()}, {KindAsLeft, filled[Snapshot]()}, {KindEvent, filled[EventRecord]()},
 	} {

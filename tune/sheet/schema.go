@@ -33,6 +33,7 @@ var records = []record{
 	{KindFit, NameStaircase, reflect.TypeFor[StaircaseRecord]()},
 	{KindFit, NameBreakaway, reflect.TypeFor[BreakawayRecord]()},
 	{KindFit, NameMotor, reflect.TypeFor[MotorRecord]()},
+	{KindExperiment, "", reflect.TypeFor[ExperimentRecord]()},
 	{KindProposal, "", reflect.TypeFor[ProposalRecord]()},
 	{KindPush, "", reflect.TypeFor[PushRecord]()},
 	{KindVerify, "", reflect.TypeFor[VerifyRecord]()},
