@@ -22,7 +22,7 @@ func facts(p Page, v *job.View) []job.Fact {
 		}
 	case PageModel:
 		if m := v.Model; m != nil {
-			all = append(append(append(all, m.Params...), m.Friction...), m.Plausible...)
+			all = append(append(append(append(all, m.Params...), m.Friction...), m.Plausible...), experimentFacts(v)...)
 		}
 	case PageDesign:
 		if d := v.Design; d != nil {

@@ -93,8 +93,28 @@ func (p *painter) modelText(a area, m *job.ModelView) {
 			f.Limit = "" // w shows it with its reason
 			list[i] = f
 		}
+		y = p.rows(a, y, p.widths(a.w, list), list)
+	}
+	if list := experimentFacts(p.v); len(list) > 0 && y < a.h-1 {
+		y = p.heading(a, y, " experiments")
 		p.rows(a, y, p.widths(a.w, list), list)
 	}
+}
+
+// experimentFacts are the numbers of the optional experiments, with a verdict
+// where one is not believed.
+func experimentFacts(v *job.View) []job.Fact {
+	var list []job.Fact
+	for _, x := range v.Experiments {
+		for i, f := range x.Facts {
+			if i == 0 && x.Verdict != "believed" {
+				f.Verdict = x.Verdict
+			}
+			f.Name = x.Title + ": " + f.Name
+			list = append(list, f)
+		}
+	}
+	return list
 }
 
 // design draws the proposal: gains, margins beside what was found and what is
