@@ -104,7 +104,7 @@ func (env Envelope) Missing(s State, p Plan) []Check { return (env.needs(p) &^ s
 
 func (m *machine) missing(p Plan) string {
 	var words []string
-	for _, c := range m.env.Missing(m.State, p) {
+	for _, c := range m.env.Missing(*m.State, p) {
 		words = append(words, c.String())
 	}
 	return strings.Join(words, ", ")

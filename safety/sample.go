@@ -9,7 +9,7 @@ import (
 
 // sample takes one telemetry sample: is it fresh, what does the board say it is
 // doing, and is everything inside its limits? (S6)
-func (m *machine) sample(e Sample) {
+func (m *machine) sample(e *Sample) {
 	if bad := notFinite(e.Sample); bad != "" {
 		m.tripIfArmed(CodeNotNumber, bad)
 		return
@@ -68,7 +68,7 @@ func notFinite(s protocol.Sample) string {
 // time does not go on is a repeat and refreshes nothing, and one that sat in a
 // buffer is as old as it is, not as old as its arrival. It returns the time
 // since the sample before.
-func (m *machine) freshen(e Sample) (dt time.Duration, ok bool) {
+func (m *machine) freshen(e *Sample) (dt time.Duration, ok bool) {
 	board := time.Duration(e.BoardUS) * time.Microsecond
 	off := e.At - board
 	if !m.arrived {

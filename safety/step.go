@@ -14,18 +14,27 @@ import (
 // every Tick while Stopping or Tripped until the board says that its output is
 // off (S1). An unknown event is a bug of the caller and panics.
 func (env Envelope) Step(s State, e Event) (State, []Effect) {
-	m := machine{env: &env, State: s}
+	out := env.Advance(&s, e)
+	return s, out
+}
+
+// Advance is Step in place: s becomes the state after e. A state is large, and
+// thousands of samples a second need not copy it.
+func (env *Envelope) Advance(s *State, e Event) []Effect {
+	m := machine{env: env, State: s}
 	m.clock(e.When())
 	m.deadlines()
 	m.handle(e)
-	slices.SortStableFunc(m.out, func(a, b Effect) int { return a.rank() - b.rank() })
-	return m.State, m.out
+	if len(m.out) > 1 {
+		slices.SortStableFunc(m.out, func(a, b Effect) int { return a.rank() - b.rank() })
+	}
+	return m.out
 }
 
 // machine is one call of Step at work: the state being changed and the effects
 // so far.
 type machine struct {
-	State
+	*State
 	env *Envelope
 	out []Effect
 }
@@ -101,6 +110,8 @@ func (m *machine) handle(e Event) {
 	case Tick:
 		m.tick()
 	case Sample:
+		m.sample(&e)
+	case *Sample: // the same, where thousands come a second
 		m.sample(e)
 	case Lease:
 		m.leased, m.leasedAt = true, max(e.At, m.leasedAt)

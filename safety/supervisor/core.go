@@ -97,6 +97,7 @@ type Core struct {
 	boots     int // boot count of the identity, -1: none yet
 
 	limitsCRC uint16
+	newest    safety.Sample // the event in hand
 	token     uint16
 	beat      uint16
 	stop      *StopTimes
@@ -116,6 +117,14 @@ func NewCore(wire Wire, sink Sink, first uint16) *Core {
 
 // State returns the state of the limiter.
 func (c *Core) State() safety.State { return c.st }
+
+// Phase is State().Phase without a copy of the rest.
+func (c *Core) Phase() safety.Phase { return c.st.Phase }
+
+// Ramps reports whether the first press of the stop key asks for a ramp now.
+func (c *Core) Ramps() bool {
+	return c.st.Phase == safety.Running && c.env.Stop == safety.StopRamp
+}
 
 // Envelope returns the envelope in force.
 func (c *Core) Envelope() safety.Envelope { return c.env }
@@ -278,10 +287,9 @@ func (c *Core) Tick(now time.Duration) {
 // Do hands an event to the limiter and carries out what it calls for.
 func (c *Core) Do(e safety.Event) {
 	c.advance(e.When())
-	was := c.st
-	var effects []safety.Effect
-	c.st, effects = c.env.Step(c.st, e)
-	if begins := c.st.Phase == safety.Stopping || c.st.Phase == safety.Tripped; c.st.Stops != was.Stops || begins && c.st.Phase != was.Phase {
+	stops, phase := c.st.Stops, c.st.Phase
+	effects := c.env.Advance(&c.st, e)
+	if begins := c.st.Phase == safety.Stopping || c.st.Phase == safety.Tripped; c.st.Stops != stops || begins && c.st.Phase != phase {
 		c.void() // a stop voids what was asked before it
 	}
 	for _, x := range effects {

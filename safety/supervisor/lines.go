@@ -21,7 +21,8 @@ func (h *handler) Sample(s protocol.Sample) {
 	}
 	was := c.boardWas
 	c.boardWas = s.State
-	c.Do(safety.Sample{At: c.now, Sample: s})
+	c.newest = safety.Sample{At: c.now, Sample: s}
+	c.Do(&c.newest)
 	c.sink.Sample(c.now, s)
 	if s.State == protocol.Tripped && was != protocol.Tripped {
 		c.askLog(3)

@@ -289,7 +289,7 @@ func (l *Live) supervise() {
 const restTickEach = 40 * time.Millisecond
 
 func (l *Live) tickEach() time.Duration {
-	if l.s.core.State().Phase == safety.Disarmed && len(l.waiters) == 0 {
+	if l.s.core.Phase() == safety.Disarmed && len(l.waiters) == 0 {
 		return restTickEach
 	}
 	return tickEach
@@ -315,12 +315,12 @@ func (l *Live) leave() {
 		}
 	}
 	l.waiters = keep
-	st := l.s.core.State()
-	if old := safety.Phase(l.phase.Swap(int32(st.Phase))); old != st.Phase || l.s.now-l.shownAt > 15*time.Millisecond {
+	phase := l.s.core.Phase()
+	if old := safety.Phase(l.phase.Swap(int32(phase))); old != phase || l.s.now-l.shownAt > 15*time.Millisecond {
 		l.publish()
 	}
 	ramp := int32(0)
-	if st.Phase == safety.Running && l.s.core.Envelope().Stop == safety.StopRamp {
+	if l.s.core.Ramps() {
 		ramp = 1
 	}
 	l.style.Store(ramp)

@@ -73,12 +73,12 @@ func (s *session) Sample(now time.Duration, x protocol.Sample) {
 	if r == nil || !r.asked || len(r.samples) >= samplesMax {
 		return
 	}
-	if !r.started && s.core.State().Phase == safety.Running {
+	if !r.started && s.core.Phase() == safety.Running {
 		r.started, r.begun, r.begunUS = true, now, x.BoardUS
 	}
 	// From the count-down on: what the shaft did before the drive belongs to the
 	// record.
-	if ph := s.core.State().Phase; r.started || ph == safety.CountDown {
+	if ph := s.core.Phase(); r.started || ph == safety.CountDown {
 		r.samples = append(r.samples, job.Sample{At: now, Sample: x})
 	}
 	s.draw(x)
