@@ -85,13 +85,10 @@ type World struct {
 }
 
 // New makes a world from a seed. Step is the limiter under test; nil is
-// Envelope().Step.
+// Envelope().Advance.
 func New(seed uint64, step func(safety.State, safety.Event) (safety.State, []safety.Effect)) *World {
 	env := Envelope()
 	w := &World{rng: rand.New(rand.NewPCG(seed, 0x9e3779b97f4a7c15)), env: env, step: step, ref: safetytest.New(env)}
-	if w.step == nil {
-		w.step = env.Step
-	}
 	w.b = board{motor: motor{gain: 12, tau: heldTau, coast: 0.3, deadBand: 0.5, r: 1, ke: 1 / 12.0}, timeout: 248 * ms, boots: 1}
 	w.plans = plans(env)
 	w.res.Seed = seed
@@ -192,7 +189,11 @@ func (w *World) arrive(it item) {
 // deliver is one step of the limiter, judged and carried out.
 func (w *World) deliver(e safety.Event) {
 	var out []safety.Effect
-	w.s, out = w.step(w.s, e)
+	if w.step != nil {
+		w.s, out = w.step(w.s, e)
+	} else {
+		out = w.env.Advance(&w.s, e)
+	}
 	w.ref.Saw(e, out)
 	w.hash(e, out)
 	if w.Trace != nil {
