@@ -9,7 +9,7 @@ import (
 )
 
 // done is what one call of Step put out, as far as it matters here.
-type done struct{ stop, ramp, ended, other, latched bool }
+type done struct{ stop, ramp, ended, silence, other, latched bool }
 
 // effects judges what goes out.
 func (r *Referee) effects(e safety.Event, out []safety.Effect) (did done) {
@@ -50,7 +50,7 @@ func (r *Referee) effects(e safety.Event, out []safety.Effect) (did done) {
 			did.latched = true
 			r.tripped, r.acked, r.trippedAt = true, false, r.now
 		case safety.RunEnded:
-			did.ended = true
+			did.ended, did.silence = true, x.Reason == safety.EndSilence
 		case safety.CheckJudged:
 			if _, word := e.(safety.OutputOff); x.Passed && !word || word && x.Passed != r.checks[x.Check] {
 				r.blame("S7", "the silence check was judged %v", x.Passed)

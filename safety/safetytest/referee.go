@@ -124,6 +124,14 @@ func (r *Referee) Saw(e safety.Event, out []safety.Effect) {
 	}
 	if must || did.stop && stageWas > idle || did.ended {
 		r.end(did.ramp && !did.stop)
+		// A run that anything but the board's own word ended was no silence check,
+		// whatever the board's log says of it later; it has to be made again.
+		switch e.(type) {
+		case safety.Sample, safety.BoardTripped, safety.OutputOff:
+			r.silentRun = r.silentRun && (!did.ended || did.silence)
+		default:
+			r.silentRun = r.silentRun && stageWas == idle && (!did.ended || did.silence)
+		}
 	}
 	if _, tick := e.(safety.Tick); tick && r.stopDue && !did.stop && !r.mayStillRamp() {
 		r.blame("S1", "the board has not said off and no stop was sent")
