@@ -209,6 +209,9 @@ func (env Envelope) admitCheck(p Plan) error {
 	if p.Locked && p.Duration() > env.LockedMax {
 		return over(0, "time with the shaft held", p.Duration().Seconds(), env.LockedMax.Seconds(), "s", "shorten it")
 	}
+	if p.Inch {
+		return env.admitInch(p)
+	}
 	switch p.Check {
 	case CheckNone, CheckLimit, CheckInterlock:
 	case CheckSign:

@@ -66,7 +66,7 @@ func TestEnvelopeWithAHoleAdmitsNothing(t *testing.T) {
 	p := safety.Plan{Segments: []safety.Segment{volts(0, 0, time.Millisecond)}}
 	mayBeZero := map[string]bool{"BusMax": true, "BusMin": true, "TempMax": true, "SignVolts": true, "SignTurns": true, "LockedMax": true,
 		"Resistance": true, "Ke": true, "RadPerCount": true, "Look": true, "Reverse": true, "Brake": true, "GravityLoad": true,
-		"BrakeListed": true, "Stop": true, "Inputs": true, "ChecksAsked": true, "Hash": true, "Loosened": true}
+		"BrakeListed": true, "Stop": true, "Inputs": true, "Enabling": true, "InchTurns": true, "InchTime": true, "ChecksAsked": true, "Hash": true, "Loosened": true}
 	typ := reflect.TypeFor[safety.Envelope]()
 	for i := range typ.NumField() {
 		env := sim.Envelope()

@@ -18,7 +18,8 @@ func (m *machine) arm(e ArmRequest) {
 	m.arming = m.Now
 	m.beatAt = m.Now
 	m.Clear, m.Silent, m.driven = false, false, false
-	m.silenceOpen = false
+	m.silenceOpen, m.whichInput = false, false
+	m.Inches = 0
 	m.resetOwed = false
 	m.boardOff = false
 	m.do(SendArm{})
@@ -73,6 +74,9 @@ func (m *machine) mayArm(e ArmRequest) (c Cause, ok bool) {
 	if in := m.openInput(); in != "" {
 		return no(CodeInterlock, in)
 	}
+	if p, not := m.notEnabled(); not {
+		return no(CodeEnabling, p.String())
+	}
 	return Cause{}, true
 }
 
@@ -84,15 +88,16 @@ func (m *machine) standstill() bool { return m.fresh() && m.boardOff && m.restin
 // move. Each check needs those before it; the sign ramp is the first thing that
 // moves, and only the stop key comes before it. (S7)
 func (env *Envelope) needs(p Plan) Checks {
+	ticked := env.ChecksAsked & SetOf(CheckTicked) // before anything moves
 	switch p.Check {
 	case CheckSign:
-		return SetOf(CheckStopKey)
+		return ticked | SetOf(CheckStopKey)
 	case CheckStop:
-		return SetOf(CheckStopKey, CheckCount, CheckSign)
+		return ticked | SetOf(CheckStopKey, CheckCount, CheckSign)
 	case CheckSilence:
-		return SetOf(CheckStopKey, CheckCount, CheckSign, CheckStop)
+		return ticked | SetOf(CheckStopKey, CheckCount, CheckSign, CheckStop)
 	}
-	usual := SetOf(CheckStopKey, CheckCount, CheckSign, CheckStop, CheckSilence)
+	usual := ticked | SetOf(CheckStopKey, CheckCount, CheckSign, CheckStop, CheckSilence)
 	if p.Check != CheckNone {
 		return usual
 	}
@@ -129,6 +134,8 @@ func (m *machine) start() {
 	case m.Phase != Armed:
 	case !m.Clear:
 		m.log("not started: the clear-area question is not answered")
+	case m.Inches > 0: // the way to the first inch was gone
+		m.begin()
 	default:
 		m.Phase = CountDown
 		m.CountedAt = m.Now

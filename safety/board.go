@@ -102,6 +102,8 @@ func (m *machine) boardTripped(c protocol.Cause) {
 	case m.Phase == Running && m.Silent && (c == protocol.CauseBeat || !c.Trip()):
 		m.boardTrip = true
 		m.silenceEnds()
+	case m.Phase.ArmHeld() && m.env.Enabling.Listed && (c == protocol.CauseInterlock || !c.Trip()):
+		m.inputTripped()
 	case m.boardTrip:
 		if m.Phase == Tripped && words != "" && m.Trip.Cause == cause(CodeBoardTripped, "") {
 			m.Trip.Cause = cause(CodeBoardTripped, words) // the same trip, now with its name

@@ -58,6 +58,7 @@ const (
 	CodePaste    Code = 403
 	CodeLapsed   Code = 404
 	CodeDisarmed Code = 405
+	CodeEnabling Code = 406
 
 	CodeNoPlan       Code = 501
 	CodeOverEnvelope Code = 502
@@ -144,6 +145,7 @@ var causes = map[Code]text{
 	CodePaste:    {"many keys at once", "type one key at a time"},
 	CodeLapsed:   {"the arm lapsed", "arm again"},
 	CodeDisarmed: {"disarmed", ""},
+	CodeEnabling: {"enabling switch not in its middle position", "hold it in the middle, then arm again"},
 
 	CodeNoPlan:       {"no admitted plan", "choose a plan that the envelope allows"},
 	CodeOverEnvelope: {"the plan is outside the envelope", "make it smaller"},

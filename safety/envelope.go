@@ -60,6 +60,8 @@ type Envelope struct {
 	SignVolts    si.Volts     // ceiling of the sign ramp
 	SignTurns    float64      // turns allowed to the sign ramp
 	LockedMax    time.Duration
+	InchTurns    float64 // turns of the motor shaft under drive, per press; 0: no inching
+	InchTime     time.Duration
 
 	RunTimeMax      time.Duration
 	TelemetryAgeMax time.Duration
@@ -82,7 +84,8 @@ type Envelope struct {
 	BrakeListed  bool // a holding brake stands in the rig file
 	Stop         StopStyle
 	Inputs       []Input
-	ChecksAsked  Checks // beyond the usual ones: CheckLimit, CheckInterlock
+	Enabling     Enabling
+	ChecksAsked  Checks // beyond the usual ones: CheckLimit, CheckInterlock, CheckTicked
 	Hash         string // of the rig file, for the record
 	Loosened     string // typed reason why a limit is looser than the rig file's default; "" if none
 }

@@ -134,7 +134,7 @@ func (m *machine) judgeStill(s protocol.Sample) {
 		m.trip(CodeUndriven, fmt.Sprintf("%.4g rad/s", v))
 		return
 	}
-	if !m.judgeSupply(s) {
+	if !m.judgeInchRest() && !m.judgeSupply(s) {
 		m.judgeInputs()
 	}
 }
@@ -357,7 +357,9 @@ func (m *machine) driveRange(applied float64) (lo, hi float64) {
 func (m *machine) judgeInputs() {
 	if in := m.openInput(); in != "" {
 		m.trip(CodeInterlock, in)
+		return
 	}
+	m.judgeEnabling()
 }
 
 // openInput names the first interlock input that is not in its working position,

@@ -37,11 +37,12 @@ const (
 	CheckSilence         // the board's own timeout, at creep speed
 	CheckLimit           // a board limit set low and provoked
 	CheckInterlock       // every input seen in both states
+	CheckTicked          // every line of the rig file's checklist ticked at the keyboard
 	checkEnd
 )
 
 var checkWords = [...]string{"none", "count check", "sign check", "stop-key check", "stop check at creep",
-	"silence check", "limit check", "interlock check"}
+	"silence check", "limit check", "interlock check", "checklist"}
 
 // String returns the check's name.
 func (c Check) String() string {
@@ -130,6 +131,10 @@ type Plan struct {
 	// Locked says that the shaft is held: no counts are expected, and motion
 	// trips instead. The time under drive is bounded by Envelope.LockedMax.
 	Locked bool
+	// Inch makes it a plan for inching: each press of the start key goes through
+	// the segments once, the first after the count-down; then the arm waits for the
+	// next press until it lapses. Limits count from the start of each inch.
+	Inch bool
 }
 
 // Duration is the longest that the plan can take.

@@ -10,6 +10,9 @@ import (
 func (m *machine) begin() {
 	m.Phase = Running
 	m.RunAt = m.Now
+	if m.Plan.plan.Inch {
+		m.Inches++
+	}
 	m.valueAt = m.Now
 	m.Value = 0
 	m.driven, m.Silent = false, false
@@ -80,6 +83,10 @@ func (m *machine) next(at time.Duration) bool {
 
 // over ends a run whose plan is done.
 func (m *machine) over(why string) {
+	if m.Plan.plan.Inch {
+		m.inched(why)
+		return
+	}
 	m.log("%s after %.3f s", why, (m.Now - m.RunAt).Seconds())
 	m.stopping(EndDone, Cause{})
 }

@@ -33,7 +33,8 @@ func (m *machine) sample(e *Sample) {
 			m.until()
 		}
 	case Stopping:
-		if m.ramp.on {
+		m.which(e.Sample)
+		if m.Phase == Stopping && m.ramp.on {
 			m.rampLook()
 		}
 	}

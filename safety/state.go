@@ -67,6 +67,7 @@ type State struct {
 	SegmentAt time.Duration
 	Value     float64 // last drive value sent, V or rad/s
 	Silent    bool    // heartbeats and drive values are withheld
+	Inches    int     // made under this arm
 
 	unattended  bool
 	leased      bool
@@ -91,6 +92,8 @@ type State struct {
 	resetOwed   bool
 	resetAt     time.Duration
 	silenceOpen bool // a silence run ended and its time is not known yet
+	whichInput  bool // the board stopped by an input and has not said by which
+	inchedAt    time.Duration
 	disarmedAt  time.Duration
 	pos         float64 // turns of the motor shaft since the first sample
 	runPos      float64 // pos when the run began

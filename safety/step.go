@@ -130,12 +130,12 @@ func (m *machine) handle(e Event) {
 			m.log("mark at %.3f s of the run", (m.Now - m.RunAt).Seconds())
 		}
 	case Enough:
-		if m.Phase == Running && !m.Silent {
+		if m.Phase == Running && !m.Silent && !m.Plan.plan.Inch {
 			m.over("enough is known")
 		}
 	case ArmRequest, ClearArea, Start, Disarm, Acknowledge, Reset:
 		// What a person asks for before a run is an unlisted key once it goes. (S2)
-		if !m.keyStops() {
+		if m.listedBetweenInches(e) || !m.keyStops() {
 			m.person(e)
 		} else if _, asked := e.(ArmRequest); asked {
 			m.do(ArmRefused{cause(CodeNotDisarmed, "")})

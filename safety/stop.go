@@ -29,9 +29,10 @@ func (m *machine) stop(c Cause, mayRamp bool) {
 	}
 }
 
-// keyStops stops when the motor moves or is about to, and says so. (S2)
+// keyStops stops when the motor moves, is about to or waits for the next inch,
+// and says so. (S2)
 func (m *machine) keyStops() bool {
-	moving := m.Phase == CountDown || m.Phase == Running || m.Phase == Stopping && m.ramp.on
+	moving := m.Phase == CountDown || m.Phase == Running || m.Phase == Stopping && m.ramp.on || m.betweenInches()
 	if moving {
 		m.stop(cause(CodeOtherKey, ""), false)
 	}
@@ -151,6 +152,7 @@ func (m *machine) still() {
 	m.Value = 0
 	m.ramp = rampState{}
 	m.end = ending{}
+	m.whichInput = false
 	m.boardOff = false
 	m.stoppingAt = m.Now
 }
@@ -159,7 +161,7 @@ func (m *machine) still() {
 func (m *machine) off(at time.Duration) {
 	switch m.Phase {
 	case Stopping:
-		if at < m.stoppingAt {
+		if at < m.stoppingAt || m.whichInput {
 			return
 		}
 		m.report()
@@ -183,8 +185,8 @@ func (m *machine) report() {
 	}
 	p, e := m.Plan.plan, m.end
 	m.end.due = false
-	r := RunEnded{At: m.Now, Name: p.Name, Check: p.Check, Reason: e.reason, Cause: e.cause, Started: m.driven}
-	if m.driven {
+	r := RunEnded{At: m.Now, Name: p.Name, Check: p.Check, Reason: e.reason, Cause: e.cause, Started: m.driven || m.Inches > 0}
+	if r.Started {
 		r.Lasted = e.at - m.RunAt
 	}
 	m.do(r)

@@ -68,6 +68,8 @@ var keys = []key{
 	{path: "limits.sign_volts_V", unit: "V", min: 1e-3, max: 400, def: "0.4 × motor.voltage_rated_V", derive: func(r *Rig) float64 { return 0.4 * r.Motor.VoltageRated }, meaning: "ceiling of the sign ramp", at: func(r *Rig) any { return &r.Limits.SignVolts }},
 	{path: "limits.sign_turns", unit: "turns", min: 1e-4, max: 1000, def: "3", derive: fixed(3), meaning: "turns of the motor shaft allowed to the sign ramp", at: func(r *Rig) any { return &r.Limits.SignTurns }},
 	{path: "limits.locked_time_s", unit: "s", min: 0, max: 60, def: "2", derive: fixed(2), meaning: "longest run with the shaft held", at: func(r *Rig) any { return &r.Limits.LockedTime }},
+	{path: "limits.inch_turns", unit: "turns", min: 1e-4, max: 100, def: "0.1", derive: fixed(0.1), meaning: "turns of the motor shaft under drive in one inch; it may run on by as much again", at: func(r *Rig) any { return &r.Limits.InchTurns }},
+	{path: "limits.inch_time_s", unit: "s", min: 0.2, max: 5, def: "1", derive: fixed(1), meaning: "longest drive of one inch", at: func(r *Rig) any { return &r.Limits.InchTime }},
 	{path: "limits.loosened_reason", def: "none", meaning: "why a limit is looser than its default; asked for where one is, and kept", at: func(r *Rig) any { return &r.Limits.Loosened }},
 
 	{path: "timing.heartbeat_ms", unit: "ms", min: 10, max: 400, def: "50", derive: fixed(50), meaning: "interval of heartbeats", at: func(r *Rig) any { return &r.Timing.Heartbeat }},
@@ -87,8 +89,10 @@ var keys = []key{
 
 	{path: "stop.style", oneOf: []string{"cut", "ramp-and-cut"}, word: "cut", def: "cut", meaning: "what the first press of the stop key asks for; `ramp-and-cut` works in a checked closed loop only, and the second press cuts", at: func(r *Rig) any { return &r.Stop.Style }},
 
+	{path: "stop.off", oneOf: []string{"any", "coast", "short"}, word: "any", def: "any", meaning: "what *output off* has to do on this rig: let the motor coast, or short its winding to brake it. It is the board's doing; a board that does the other is refused", at: func(r *Rig) any { return &r.Stop.Off }},
+
 	{path: "checks.limit", def: "false", meaning: "arming asks for the limit check of the session", at: func(r *Rig) any { return &r.Checks.Limit }},
-	{path: "checks.interlock", def: "false", meaning: "arming asks for the interlock check of the session", at: func(r *Rig) any { return &r.Checks.Interlock }},
+	{path: "checks.interlock", def: "false", meaning: "a file without an input to check is refused; where inputs are named, arming asks for the interlock check of the session in any case", at: func(r *Rig) any { return &r.Checks.Interlock }},
 }
 
 // busMax keeps a 48 V rig under 60 V, the ceiling of touch voltage for PELV in

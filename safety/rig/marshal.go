@@ -30,6 +30,9 @@ func Marshal(r Rig) []byte {
 	}
 	for _, in := range r.Interlocks {
 		fmt.Fprintf(&b, "\n[[interlock]]\nbit = %d\nname = %s\n", in.Bit, quote(in.Name))
+		if in.Kind != "" && in.Kind != KindInput {
+			fmt.Fprintf(&b, "kind = %s\n", quote(in.Kind))
+		}
 	}
 	return []byte(b.String())
 }

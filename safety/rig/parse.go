@@ -154,6 +154,7 @@ func (c *checker) run() {
 		c.key(&keys[i])
 	}
 	c.interlocks()
+	c.checklist()
 	if len(c.errs) > 0 {
 		return // what hangs together is looked at once the single values are right
 	}
@@ -211,8 +212,23 @@ func (c *checker) interlocks() {
 		c.bad("interlock", ErrRange, "more than %d", InterlocksMax)
 	}
 	seen := map[int64]bool{}
-	for i, in := range c.r.Interlocks {
+	kinds := map[string]int{}
+	for i := range c.r.Interlocks {
+		in := &c.r.Interlocks[i]
 		path := "interlock." + strconv.Itoa(i)
+		if in.Kind == "" {
+			in.Kind = KindInput
+		}
+		kinds[in.Kind]++
+		switch in.Kind {
+		case KindInput:
+		case KindEnabling, KindThrough:
+			if kinds[in.Kind] > 1 {
+				c.bad(path+".kind", ErrRange, "%q is there twice: one enabling switch is read", in.Kind)
+			}
+		default:
+			c.bad(path+".kind", ErrRange, "%q is none of %s, %s, %s", in.Kind, KindInput, KindEnabling, KindThrough)
+		}
 		switch {
 		case in.Bit < 0 || in.Bit >= InterlocksMax:
 			c.bad(path+".bit", ErrRange, "%d is not from 0 to %d", in.Bit, InterlocksMax-1)
@@ -226,6 +242,23 @@ func (c *checker) interlocks() {
 			c.bad(path+".name", ErrMissing, "a name of 1 to 64 bytes is missing")
 		}
 		seen[in.Bit] = true
+	}
+	if kinds[KindThrough] > 0 && kinds[KindEnabling] == 0 {
+		c.bad("interlock", ErrMissing, "there is a contact %q and none of kind %q", KindThrough, KindEnabling)
+	}
+}
+
+// ChecklistMax bounds the lines of a checklist: more are not read but clicked away.
+const ChecklistMax = 30
+
+func (c *checker) checklist() {
+	if n := len(c.r.Checklist); n > ChecklistMax {
+		c.bad("checklist", ErrRange, "%d lines are more than %d", n, ChecklistMax)
+	}
+	for i, s := range c.r.Checklist {
+		if strings.TrimSpace(s) == "" || len(s) > 128 {
+			c.bad("checklist", ErrRange, "line %d is empty or longer than 128 bytes", i+1)
+		}
 	}
 }
 

@@ -78,6 +78,8 @@ type Limits struct {
 	SignVolts    float64 `toml:"sign_volts_V"`
 	SignTurns    float64 `toml:"sign_turns"`
 	LockedTime   float64 `toml:"locked_time_s"`
+	InchTurns    float64 `toml:"inch_turns"`
+	InchTime     float64 `toml:"inch_time_s"`
 	Loosened     string  `toml:"loosened_reason"`
 }
 
@@ -108,6 +110,7 @@ type Targets struct {
 // Stop is what the stop key asks for.
 type Stop struct {
 	Style string `toml:"style"`
+	Off   string `toml:"off"`
 }
 
 // Checks are asked for in every session beyond the usual ones.
@@ -120,7 +123,16 @@ type Checks struct {
 type Interlock struct {
 	Bit  int64  `toml:"bit"`
 	Name string `toml:"name"`
+	Kind string `toml:"kind"` // KindInput where the file gives none
 }
+
+// The kinds of inputs. An enabling switch has one contact that is closed in its
+// middle position and may have another that opens when it is pressed through.
+const (
+	KindInput    = "interlock"
+	KindEnabling = "enabling"
+	KindThrough  = "enabling-through"
+)
 
 // CountsPerMotorTurn is how many counts one turn of the motor shaft gives.
 func (r Rig) CountsPerMotorTurn() float64 {
@@ -148,6 +160,7 @@ func (r Rig) Envelope() safety.Envelope {
 		StallVolts: si.Volts(l.StallVolts), StallTime: seconds(l.StallTime), WrongWayTime: seconds(l.WrongWayTime),
 		RestSpeed: si.FromRPM(l.RestSpeed), CreepMax: si.FromRPM(l.CreepSpeed),
 		SignVolts: si.Volts(l.SignVolts), SignTurns: l.SignTurns, LockedMax: seconds(l.LockedTime),
+		InchTurns: l.InchTurns, InchTime: seconds(l.InchTime),
 		RunTimeMax: seconds(l.RunTime), TelemetryAgeMax: seconds(t.TelemetryAge / 1000), LeaseMax: seconds(t.Lease / 1000),
 		ArmLapse: seconds(t.ArmLapse), CountDown: seconds(t.CountDown),
 		Heartbeat: seconds(t.Heartbeat / 1000), BoardTimeout: seconds(t.BoardTimeout / 1000),
@@ -162,11 +175,21 @@ func (r Rig) Envelope() safety.Envelope {
 	if r.Checks.Limit {
 		env.ChecksAsked = env.ChecksAsked.With(safety.CheckLimit)
 	}
-	if r.Checks.Interlock {
+	if len(r.Interlocks) > 0 {
 		env.ChecksAsked = env.ChecksAsked.With(safety.CheckInterlock)
 	}
+	if len(r.Checklist) > 0 {
+		env.ChecksAsked = env.ChecksAsked.With(safety.CheckTicked)
+	}
 	for _, in := range r.Interlocks {
-		env.Inputs = append(env.Inputs, safety.Input{Bit: uint8(in.Bit), Name: in.Name})
+		switch in.Kind {
+		case KindEnabling:
+			env.Enabling.Listed, env.Enabling.Name, env.Enabling.Bit = true, in.Name, uint8(in.Bit)
+		case KindThrough:
+			env.Enabling.Two, env.Enabling.ThroughBit = true, uint8(in.Bit)
+		default:
+			env.Inputs = append(env.Inputs, safety.Input{Bit: uint8(in.Bit), Name: in.Name})
+		}
 	}
 	return env
 }

@@ -147,6 +147,14 @@ style = "ramp-and-cut"
 [[interlock]]
 bit = 0
 name = "guard"
+[[interlock]]
+bit = 1
+name = "enabling switch"
+kind = "enabling"
+[[interlock]]
+bit = 2
+name = "pressed through"
+kind = "enabling-through"
 `, 1)
 	text = strings.Replace(text, `name = "bench"`, "name = \"bench\"\nchecklist = [\"glasses on\", \"disc guarded\"]", 1)
 	one, err := Parse("RIG.toml", []byte(text))

@@ -74,6 +74,7 @@ func (r *Referee) drive(x safety.SendDrive) {
 		r.drives, r.driveAt = true, r.now
 		r.counts0, r.counted = r.last.Counts, r.last.Has&protocol.HasCounts != 0
 	}
+	r.asked0 = x.Value
 	top := least(r.plan.VoltsMax, float64(r.env.VoltsMax))
 	if x.Mode == safety.ModeSpeed {
 		top = least(r.plan.SpeedMax, float64(r.env.SpeedMax))
@@ -151,6 +152,9 @@ func (r *Referee) arm(e safety.Event) {
 	}
 	if math.Abs(float64(r.last.Speed)) > float64(r.env.RestSpeed) {
 		r.blame("S9", "armed while the shaft turns")
+	}
+	if r.env.ChecksAsked.Has(safety.CheckTicked) && !r.checks[safety.CheckTicked] {
+		r.blame("S7", "armed for %q without the checklist", p.Name)
 	}
 	for _, c := range asks(p.Check, r.env.ChecksAsked) {
 		if !r.checks[c] {
@@ -233,6 +237,9 @@ func (r *Referee) sample(e safety.Sample) string {
 		if r.stage > idle && s.Slow.Inputs>>in.Bit&1 == 0 {
 			return "S8"
 		}
+	}
+	if en := r.env.Enabling; en.Listed && r.stage > idle && s.Slow.Inputs>>en.Bit&1 == 0 {
+		return "S16"
 	}
 	if r.stage != going || !r.drives {
 		return ""

@@ -66,7 +66,7 @@ var mutants = []mutant{
 	{"S6", "sample.go", "if e.BoardUS <= m.boardUS {", "if e.BoardUS < m.boardUS {", step, "TestRepeatsAndBufferedTelemetryAreNotFresh"},
 	{"S6", "sample.go", "m.HeardAt = max(m.HeardAt, board+m.offset)", "m.HeardAt = e.At", step, "TestRepeatsAndBufferedTelemetryAreNotFresh"},
 	{"S6", "arm.go", "case e.Unattended && !m.Simulated:", "case false:", step, "TestUnattendedIsForSimulatedRigsOnly"},
-	{"S7", "arm.go", "return SetOf(CheckStopKey, CheckCount, CheckSign)\n", "return SetOf(CheckStopKey, CheckSign)\n", step, "TestChecksComeBeforeMotion"},
+	{"S7", "arm.go", "return ticked | SetOf(CheckStopKey, CheckCount, CheckSign)\n", "return SetOf(CheckStopKey, CheckSign)\n", step, "TestChecksComeBeforeMotion"},
 	{"S7", "board.go", "j.Passed = e.SinceBeat >= lo && e.SinceBeat <= hi &&", "j.Passed = e.SinceBeat <= hi &&", step, "TestSilenceCheckIsJudgedHere"},
 	{"S7", "run.go", "	if m.Silent {\n		return\n	}\n", "", step, "TestSilenceIsSilentAndBounded"},
 	{"S7", "admit.go", "s.Until.Counts > SignCounts)", "s.Until.Counts > 100*SignCounts)", step, "TestBoundedRunsAreHeldToTheirBounds"},

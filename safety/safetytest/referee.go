@@ -47,6 +47,7 @@ type Referee struct {
 	startAt time.Duration
 	drives  bool // a drive value was sent in this run
 	driveAt time.Duration
+	asked0  float64 // newest drive value
 	counts0 int64
 	counted bool
 	endedAt time.Duration // on the world's clock
@@ -205,6 +206,10 @@ func (r *Referee) event(e safety.Event) (must bool, promise string) {
 			r.stage = clear
 		}
 	case safety.Start:
+		if r.betweenInches() {
+			r.drives = false // the next inch is counted anew
+			return must, promise
+		}
 		if r.stage == going {
 			return true, "S2"
 		}
@@ -303,10 +308,17 @@ func (r *Referee) overdue() string {
 		return "S6"
 	case (r.stage == armed || r.stage == clear) && r.now-r.armedAt > r.env.ArmLapse:
 		return "S8"
-	case r.stage == going && r.drives && r.now-r.driveAt > r.env.RunTimeMax:
+	case r.plan.Inch && r.stage == going && r.now-r.armedAt > r.env.ArmLapse+r.env.CountDown+r.plan.Duration():
+		return "S8"
+	case r.stage == going && r.drives && !r.plan.Inch && r.now-r.driveAt > r.env.RunTimeMax:
 		return "S4"
 	}
 	return ""
+}
+
+// betweenInches says that an inch has had its time and that no drive is asked for.
+func (r *Referee) betweenInches() bool {
+	return r.stage == going && r.plan.Inch && r.drives && r.asked0 == 0
 }
 
 func clearMap(m map[safety.Check]bool) {

@@ -31,7 +31,7 @@ func Envelope() safety.Envelope {
 		VoltsMax: 24, SpeedMax: 240, CurrentMax: 60, BusMax: 30, BusMin: 15, TempMax: 80,
 		AccelMax: 20000, SlewMax: 4800, TurnsMax: 5000, CurrentContinuous: 20, HeatTau: 30 * time.Second,
 		StallVolts: 4, StallTime: 300 * ms, WrongWayTime: 150 * ms, RestSpeed: 2, CreepMax: 80,
-		SignVolts: 8, SignTurns: 2, LockedMax: 2 * time.Second,
+		SignVolts: 8, SignTurns: 2, LockedMax: 2 * time.Second, InchTurns: 0.3, InchTime: time.Second,
 		RunTimeMax: 20 * time.Second, TelemetryAgeMax: 150 * ms, LeaseMax: time.Second, ArmLapse: 60 * time.Second,
 		CountDown: 3 * time.Second, Heartbeat: 50 * ms, BoardTimeout: 250 * ms,
 		Resistance: 1, Ke: 1 / 12.0, RadPerCount: 2 * math.Pi / countsPerTurn,
@@ -333,6 +333,8 @@ func plans(env safety.Envelope) []safety.Admitted {
 	motion.Until = safety.Until{Kind: safety.UntilMotion, Counts: 20}
 	back := volts(0, -7, 3*sec)
 	back.Until = motion.Until
+	inch := volts(0, 7, 900*ms)
+	inch.Until = safety.Until{Kind: safety.UntilMotion, Counts: 20}
 	rest := volts(0, 0, sec)
 	rest.Until.Kind = safety.UntilRest
 	var l []safety.Admitted
@@ -344,7 +346,8 @@ func plans(env safety.Envelope) []safety.Admitted {
 		{Name: "loop", SpeedMax: 200, Segments: []safety.Segment{speed(0, 100, sec), speed(150, 150, 2*sec), speed(50, 50, sec)}},
 		{Name: "sign", Check: safety.CheckSign, TurnsMax: 2, Segments: []safety.Segment{motion, rest, back}},
 		{Name: "creep", Check: safety.CheckStop, SpeedMax: 80, Segments: []safety.Segment{volts(0, 5, sec), volts(5, 5, 2*sec)}},
-		{Name: "inch", TurnsMax: 0.5, Segments: []safety.Segment{volts(3, 3, 2*sec)}},
+		{Name: "short", TurnsMax: 0.5, Segments: []safety.Segment{volts(3, 3, 2*sec)}},
+		{Name: "inch", Inch: true, SpeedMax: 80, TurnsMax: 0.6, Segments: []safety.Segment{inch, volts(0, 0, 300*ms)}},
 	} {
 		a, err := env.Admit(p)
 		if err != nil {
