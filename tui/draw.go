@@ -133,6 +133,8 @@ func (p *painter) body(a area) {
 		p.help(a)
 	case PageWords:
 		p.words(a)
+	case PageInterlocks:
+		p.interlocks(a)
 	default:
 		p.steps(a)
 	}
@@ -142,7 +144,7 @@ var titles = [pageCount]string{
 	PagePath: "The job, step by step", PagePorts: "Ports", PageFound: "As-found: the board before the first touch",
 	PageChecks: "Checks: seen working this session", PagePlan: "Plan and forecast", PageLive: "Run", PageModel: "Model",
 	PageDesign: "Proposal", PagePush: "Push: gains to the board", PageVerify: "Verify: measured against forecast",
-	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words",
+	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words", PageInterlocks: "Interlocks",
 }
 
 func (p *painter) title(a area) {
@@ -158,6 +160,9 @@ func (p *painter) title(a area) {
 	side := p.page.String()
 	if p.v.Simulated {
 		side = "simulated rig: nothing real moves"
+	}
+	if e := p.v.Drive.Enabling; e != "" {
+		side = "enabling switch: " + e
 	}
 	if end+len(side)+2 < a.w {
 		a.right(a.w-1, 0, palette.Bar, side)

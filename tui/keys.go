@@ -101,7 +101,8 @@ var bindings = []binding{
 	{"", "any other", "stops", groupMotion, "Stop as well.", func(_ Screen, v *job.View) bool { return Hot(v) }, nil},
 
 	{"y", "y", "area is clear", groupArmed, "Say that everyone is clear of the shaft. Taken no sooner than 2 s after the question.", func(_ Screen, v *job.View) bool { return inArm(v) && v.Drive.ClearAsk }, sayClear},
-	{"g", "g", "go", groupArmed, "Start the count-down. Any key ends it.", func(_ Screen, v *job.View) bool { return inArm(v) && v.Drive.Clear && !v.Drive.ClearAsk }, say(job.Go{})},
+	{"g", "g", "go", groupArmed, "Start the count-down; any key ends it. Armed for inching: after the first, move one bounded inch at once.", func(_ Screen, v *job.View) bool { return inArm(v) && v.Drive.Clear && !v.Drive.ClearAsk }, say(job.Go{})},
+	{"", "any other", "", groupArmed, "Armed for inching and an inch made: disarm. g is the next inch.", never, nil},
 	{"x n b", "x", "disarm", groupArmed, "Withdraw the arm.", func(_ Screen, v *job.View) bool { return inArm(v) }, say(job.Disarm{})},
 
 	{"e", "e", "acknowledge", groupTrip, "Seen. Changes nothing in the drive.", func(_ Screen, v *job.View) bool { return mayAcknowledge(v) }, say(job.Acknowledge{})},
@@ -111,6 +112,10 @@ var bindings = []binding{
 	{"n", "n", "no", groupAsk, "No.", asking(job.AskYesNo), answer(false)},
 	{"enter", "enter", "seen, go on", groupAsk, "Seen, done, or: take what was typed.", asking(job.AskEnter, job.AskHandTurn, job.AskPower), answer(true)},
 	{"enter", "enter", "to the field", groupAsk, "Go back to a field that was left with esc.", asking(job.AskText, job.AskWord, job.AskNumber), backToField},
+	{"1 2 3 4 5 6 7 8 9", "1..9", "answer", groupAsk, "One of the answers that are listed.", asking(job.AskChoice), chosen},
+	{"o", "o", "work the input", groupAsk, "Simulated rig only: work the input that is asked for.", func(s Screen, v *job.View) bool {
+		return v.Simulated && v.Ask != nil && v.Ask.Kind == job.AskInput && !Hot(v) && s.local == localNone
+	}, say(job.WorkInput{})},
 	{"t", "t", "turn the shaft", groupAsk, "Simulated rig only: turn the shaft one turn by hand.", func(s Screen, v *job.View) bool {
 		return v.Hand && asking(job.AskHandTurn)(s, v)
 	}, say(job.TurnHand{})},
@@ -144,6 +149,8 @@ var bindings = []binding{
 	{"s", "s", "skip", groupStill, "Leave the step out that is selected on the path, with a reason.", func(s Screen, v *job.View) bool {
 		return on(PagePath)(s, v) && !v.Doing && len(v.Steps) > 0
 	}, opened(localSkip)},
+	{"s", "s", "shelve", groupStill, "On the alarms page: put the newest alarm that is no trip aside for a quarter of an hour, with a reason.", mayShelve, opened(localShelve)},
+	{"u", "u", "out of service", groupStill, "On the alarms page: take that alarm out of service until it returns, with a reason.", mayShelve, opened(localService)},
 	{"v", "v", "revert", groupStill, "Push the gains of as-found back.", func(s Screen, v *job.View) bool { return (on(PagePush)(s, v) || on(PageVerify)(s, v)) && !v.Doing }, say(job.Revert{})},
 	{"w", "w", "why", groupStill, "Where a number comes from; j and k step from number to number.", func(s Screen, v *job.View) bool { return free(s, v) && len(facts(s.page(v), v)) > 0 }, toggleWhy},
 	{"r", "r", "remark", groupStill, "Keep a remark in the record.", free, opened(localRemark)},
@@ -151,6 +158,7 @@ var bindings = []binding{
 	{"1 2 3 4 5 6 7 8 9 0", "1..9 0", "", groupStill, "Page by its number: 1 path, 2 ports, 3 as-found, 4 checks, 5 plan, 6 run, 7 model, 8 design, 9 push, 0 verify.", free, numbered},
 	{"c", "c", "", groupStill, "Card.", free, shown(PageCard)},
 	{"f", "f", "", groupStill, "Alarms, and what happened.", free, shown(PageAlarms)},
+	{"i", "i", "", groupStill, "Interlocks: every input, as it stands now and as it was seen.", free, shown(PageInterlocks)},
 	{"? h", "?", "keys", groupStill, "This list, and back from it (h does the same).", free, toggled(PageHelp)},
 	{"d", "d", "", groupStill, "Words: what the terms mean.", free, shown(PageWords)},
 	{"q ctrl+c", "q", "quit", groupStill, "Leave; it asks first.", func(s Screen, v *job.View) bool {
@@ -170,7 +178,7 @@ func mayAcknowledge(v *job.View) bool {
 		return !v.Drive.Acked
 	}
 	for _, a := range v.Alarms {
-		if standing(v) && unacknowledged(a.State) {
+		if standing(v) && !a.Acked && unacknowledged(a.State) {
 			return true
 		}
 	}
@@ -207,7 +215,7 @@ func hasRows(s Screen, v *job.View) bool {
 		return true
 	}
 	switch s.page(v) {
-	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords:
+	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords, PageInterlocks:
 		return true
 	}
 	return false
@@ -219,6 +227,44 @@ func sayClear(s Screen, v *job.View, _ string) (Screen, intents) {
 		return s, nil
 	}
 	return s, intents{job.SayClear{}}
+}
+
+// chosen answers a question that lists its answers.
+func chosen(s Screen, v *job.View, key string) (Screen, intents) {
+	n := int(key[0] - '1')
+	if n >= len(v.Ask.Options) {
+		s.notice = fmt.Sprintf("There are %d answers.", len(v.Ask.Options))
+		return s, nil
+	}
+	return s, intents{job.GiveAnswer{Answer: job.Answer{ID: v.Ask.ID, Yes: true, Text: v.Ask.Options[n]}}}
+}
+
+// shelvable is the newest alarm that may be put aside, -1 where there is none.
+func shelvable(v *job.View) int {
+	for i := len(v.Alarms) - 1; i >= 0; i-- {
+		if a := v.Alarms[i]; a.Active && a.MayShelve && a.Shelved == job.NotShelved {
+			return i
+		}
+	}
+	return -1
+}
+
+func mayShelve(s Screen, v *job.View) bool { return on(PageAlarms)(s, v) && shelvable(v) >= 0 }
+
+// inchRest reports whether the arm waits for the press of the next inch.
+func inchRest(v *job.View) bool { return v.Drive.Phase == armed && v.Drive.Inch && v.Drive.Inches > 0 }
+
+// inchKey is a key between two inches: the next inch, or disarm.
+func inchKey(s Screen, v *job.View, key string) (Screen, intents) {
+	s.notice = ""
+	switch {
+	case key != "g" && key != "G":
+		return s, intents{job.Disarm{}}
+	case v.Drive.Moving:
+		s.notice = "The shaft still turns: press again once it stands."
+		return s, nil
+	}
+	return s, intents{job.Go{}}
 }
 
 func backToField(s Screen, v *job.View, _ string) (Screen, intents) {

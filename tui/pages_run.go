@@ -39,7 +39,10 @@ func (p *painter) plan(a area) {
 		head.put(widths[0]+widths[1], 0, palette.Strong, "limit")
 		y++
 	}
-	p.rows(facts, y+1, widths, pl.Facts)
+	y = p.rows(facts, y+1, widths, pl.Facts) + 1
+	for _, n := range pl.Notes {
+		y = facts.sub(1, 0, left-2, facts.h).wrap(y, palette.Caution, n)
+	}
 
 	x := left + 1
 	if p.v.Drive.Phase == countDown {
@@ -91,6 +94,8 @@ func (p *painter) flow(a area) {
 		if d.ClearWait > 0 {
 			say = "Look at the shaft: is everyone clear, tools away, guard closed? An answer counts in " + seconds(d.ClearWait) + "."
 		}
+	case d.Phase == armed && d.Inch && d.Inches > 0:
+		at, say = 4, "g moves the next inch; any other key disarms. The arm lapses in "+whole(d.ArmLeft)+"."
 	case d.Phase == armed:
 		at, say = 2, "g starts the count-down of 3 s.   x disarms.   The arm lapses in "+whole(d.ArmLeft)+"."
 	case d.Phase == countDown:

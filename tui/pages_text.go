@@ -39,42 +39,6 @@ func (p *painter) card(a area) {
 	p.scroll(a, x, rows)
 }
 
-func unacknowledged(state string) bool { return strings.HasPrefix(state, "unack") }
-
-// alarms lists the alarms in their standard states, the newest first, and then
-// what happened.
-func (p *painter) alarms(a area) {
-	v := p.v
-	var rows []line
-	if len(v.Alarms) == 0 {
-		rows = append(rows, line{palette.Plain, "No alarm in this session."})
-	}
-	for i := len(v.Alarms) - 1; i >= 0; i-- {
-		al := v.Alarms[i]
-		role := palette.Plain
-		switch {
-		case unacknowledged(al.State):
-			role = p.flash(true)
-		case al.State == "acknowledged":
-			role = palette.Strong
-		}
-		rows = append(rows, line{role, clock(al.At) + "  " + strings.ToUpper(p.tame(al.State)) + "  " + al.Text})
-		for _, l := range [][2]string{{"first cause: ", al.Cause}, {"do: ", al.Do}} {
-			if l[1] == "" {
-				continue
-			}
-			for _, s := range lines(p.tame(l[0]+l[1]), a.w-12) {
-				rows = append(rows, line{palette.Plain, "        " + s})
-			}
-		}
-	}
-	rows = append(rows, line{}, line{palette.Strong, "What happened, the newest first"})
-	for i := len(v.Log) - 1; i >= 0 && len(rows) < 400; i-- {
-		rows = append(rows, line{palette.Plain, clock(v.Log[i].At) + "  " + v.Log[i].Text})
-	}
-	p.scroll(a, 1, rows)
-}
-
 // help lists the keys from the key table.
 func (p *painter) help(a area) {
 	var rows []line

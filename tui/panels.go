@@ -44,6 +44,13 @@ func (p *painter) panels(a area) area {
 		a = p.panel(a, "SKIP A STEP", palette.Bar, []line{
 			{palette.Plain, "Reason for leaving out: " + st.Title}, {palette.Key, p.cursor("> " + p.s.typed)},
 		})
+	case p.s.local == localShelve || p.s.local == localService:
+		heading := map[local]string{localShelve: "SHELVE AN ALARM", localService: "OUT OF SERVICE"}[p.s.local]
+		text := "It has returned by itself."
+		if i := shelvable(v); i >= 0 {
+			text = "Reason, kept in the log: " + v.Alarms[i].Text
+		}
+		a = p.panel(a, heading, palette.Bar, []line{{palette.Plain, text}, {palette.Key, p.cursor("> " + p.s.typed)}})
 	case v.Ask != nil:
 		a = p.panel(a, "QUESTION", palette.Bar, p.question(v.Ask))
 	}
@@ -105,6 +112,9 @@ func (p *painter) trip() []line {
 			rows = append(rows, line{palette.Plain, t})
 		}
 	}
+	if q := p.v.Ask; q != nil && q.Kind == job.AskInput {
+		rows = append(rows, line{palette.Key, p.inputHow()})
+	}
 	if d.Remedy != "" {
 		rows = append(rows, line{palette.Plain, "Do: " + d.Remedy})
 	}
@@ -144,6 +154,12 @@ func (p *painter) question(q *job.Question) []line {
 			how = "t turns the simulated shaft once, then enter"
 		}
 		rows = append(rows, line{palette.Key, how})
+	case job.AskChoice:
+		for i, o := range q.Options {
+			rows = append(rows, line{palette.Key, fmt.Sprintf("%d %s", i+1, o)})
+		}
+	case job.AskInput:
+		rows = append(rows, line{palette.Key, p.inputHow()})
 	case job.AskStopKey:
 		rows = append(rows, line{palette.Key, "press space"})
 	case job.AskPower:
@@ -154,6 +170,14 @@ func (p *painter) question(q *job.Question) []line {
 		rows = append(rows, line{palette.Key, how})
 	}
 	return rows
+}
+
+// inputHow says how an input is worked that a question asks for.
+func (p *painter) inputHow() string {
+	if p.v.Simulated {
+		return "o works the simulated input; b puts the question aside"
+	}
+	return "it goes on by itself once the board reports it; b puts it aside"
 }
 
 func (p *painter) byDefault(q *job.Question) string {

@@ -28,13 +28,14 @@ const (
 	PageAlarms
 	PageHelp
 	PageWords
+	PageInterlocks
 	pageCount
 )
 
 var pageNames = [pageCount]string{
 	PagePath: "path", PagePorts: "ports", PageFound: "as-found", PageChecks: "checks", PagePlan: "plan",
 	PageLive: "run", PageModel: "model", PageDesign: "design", PagePush: "push", PageVerify: "verify",
-	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words",
+	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks",
 }
 
 // String returns the name of the page as it is shown.
@@ -83,11 +84,13 @@ func LookFrom(getenv func(string) string) Look {
 type local uint8
 
 const (
-	localNone   local = iota
-	localQuit         // leave?
-	localRemark       // the text of a remark
-	localSkip         // the reason for leaving a step out
-	localMenu         // choose a page
+	localNone    local = iota
+	localQuit          // leave?
+	localRemark        // the text of a remark
+	localSkip          // the reason for leaving a step out
+	localMenu          // choose a page
+	localShelve        // the reason for shelving an alarm
+	localService       // the reason for taking one out of service
 )
 
 // Screen is what the console remembers between keys. It is a value; the zero
@@ -170,7 +173,7 @@ func (s Screen) typing(v *job.View) bool {
 	if v == nil || !standing(v) {
 		return false
 	}
-	if s.local == localRemark || s.local == localSkip {
+	if s.local == localRemark || s.local == localSkip || s.local == localShelve || s.local == localService {
 		return true
 	}
 	return s.local == localNone && asksText(v.Ask) && (s.left == 0 || s.left != v.Ask.ID)
@@ -226,6 +229,8 @@ func working(v *job.View) Page {
 		return PageFound
 	case job.StepCount, job.StepSign, job.StepStop, job.StepSilence, job.StepLimits:
 		return PageChecks
+	case job.StepInterlocks:
+		return PageInterlocks
 	case job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFirstLoop:
 		if v.Live != nil {
 			return PageLive

@@ -130,8 +130,9 @@ func stages() []stage {
 	v.Live = runningLive(1.1)
 	v.Live.Running, v.Live.Ended = false, "tripped"
 	v.Alarms = []job.AlarmView{
-		{At: 20 * time.Second, Text: "telemetry late", State: "returned", Cause: "no sample for 180 ms", Do: "look at the cable"},
-		{At: 61 * time.Second, Text: "speed over limit", State: "unacknowledged", Cause: "3215 rpm over 3200 rpm, seen by the board", Do: "find out why it ran away before the next arm: load, encoder, plan"},
+		{At: 20 * time.Second, Text: "telemetry late", State: string(job.ReturnedUnacknowledged), Cause: "no sample for 180 ms", Do: "look at the cable"},
+		{At: 30 * time.Second, Text: "battery at 9 %", State: "unacknowledged", Active: true, MayShelve: true, Shelved: job.ShelvedForATime, ShelvedUntil: 900 * time.Second, Why: "mains in ten minutes"},
+		{At: 61 * time.Second, Text: "speed over limit", State: "unacknowledged", Active: true, Cause: "3215 rpm over 3200 rpm, seen by the board", Do: "find out why it ran away before the next arm: load, encoder, plan"},
 	}
 	v.Log = []job.LogLine{{At: 58 * time.Second, Text: "run started: step test"}, {At: 61 * time.Second, Text: "board cut the output"}}
 	add("tripped", withDrive(v, func(d *job.DriveView) {
@@ -165,6 +166,25 @@ func stages() []stage {
 	v.Log = []job.LogLine{{At: 3 * time.Second, Text: "port opened"}, {At: 9 * time.Second, Text: "as-found saved"}}
 	add("alarms", v, "f")
 	add("checks", at(job.StepSilence, false), "4")
+
+	v = at(job.StepStep, false)
+	v.Drive.Enabling = "released"
+	v.Interlocks = []job.InterlockView{
+		{Name: "E-stop", Now: "working position", Seen: "open, in its working position", Stop: "open by the board, 0.82 s, 4.60 turns", Passed: "passed"},
+		{Name: "guard", Bit: 1, Now: "OPEN", Seen: "open"},
+		{Name: "enabling switch", Bit: 2, Now: "released", Seen: "released, pressed through, held in the middle"},
+	}
+	add("interlocks", v, "i")
+	v = at(job.StepStep, true)
+	v.Doing = false
+	v.Ask = &job.Question{ID: 9, Kind: job.AskChoice, Text: "Why was it stopped?", Options: []string{"a person came near", "a noise", "another reason"}, Detail: []string{"The answer goes into the record."}}
+	add("why-stopped", v, "")
+	v = at(job.StepStep, true)
+	v.Plan = stepPlan()
+	v.Plan.Notes = []string{"the battery is at 9 % and not charging"}
+	add("inching", withDrive(v, func(d *job.DriveView) {
+		d.Phase, d.Inch, d.Inches, d.Clear, d.ArmLeft = armed, true, 2, true, 41*time.Second
+	}), "")
 	return out
 }
 

@@ -31,6 +31,9 @@ func (s Screen) Update(key string, v *job.View) (Screen, []job.Intent) {
 		}
 		return s, nil
 	}
+	if inchRest(v) {
+		return inchKey(s, v, key)
+	}
 	if Hot(v) {
 		if key == "m" || key == "M" {
 			return s, []job.Intent{job.SetMark{}}
@@ -112,6 +115,8 @@ func (s Screen) give(v *job.View) (Screen, []job.Intent) {
 	text := s.typed
 	var in job.Intent
 	switch s.local {
+	case localShelve, localService:
+		return s.giveShelf(v, text)
 	case localRemark, localSkip:
 		if strings.TrimSpace(text) == "" {
 			s.notice = "Nothing is typed yet; esc leaves the field."
@@ -145,6 +150,22 @@ func (s Screen) give(v *job.View) (Screen, []job.Intent) {
 	}
 	s.typed = ""
 	return s, []job.Intent{job.GiveAnswer{Answer: job.Answer{ID: q.ID, Yes: true, Text: text}}}
+}
+
+// giveShelf puts the newest alarm that may be aside, with the reason typed.
+func (s Screen) giveShelf(v *job.View, reason string) (Screen, []job.Intent) {
+	i := shelvable(v)
+	if strings.TrimSpace(reason) == "" {
+		s.notice = "Nothing is typed yet; esc leaves the field."
+		return s, nil
+	}
+	service := s.local == localService
+	s.local, s.typed, s.askID = localNone, "", 0
+	if i < 0 {
+		s.notice = "That alarm has returned by itself."
+		return s.settle(v), nil
+	}
+	return s.settle(v), []job.Intent{job.Shelve{ID: v.Alarms[i].ID, Reason: reason, OutOfService: service}}
 }
 
 // show picks a page; PageNone follows the job again.

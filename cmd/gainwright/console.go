@@ -107,7 +107,7 @@ func demoCommand() *cobra.Command {
 			o.Ports = func() []job.PortView {
 				return []job.PortView{{Path: sim.Path, Name: cfg.Name, Product: "simulated board " + cfg.Board.ID, Note: "built in, nothing real moves"}}
 			}
-			o.Hand, o.Cycle = sim.Hand, sim.Cycle
+			o.Hand, o.Cycle, o.Work = sim.Hand, sim.Cycle, sim.Work
 			if f.out == "" {
 				if f.out, err = os.MkdirTemp("", "gainwright-demo-"); err != nil {
 					return err

@@ -128,7 +128,7 @@ func (d DryRun) Do() (Report, error) {
 // steps goes down the path and says what came of it.
 func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 	for _, p := range job.Path {
-		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" || p.Optional && !slices.Contains(d.Also, p.ID) {
+		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" || j.StatusOf(p.ID) == job.Skipped || p.Optional && !slices.Contains(d.Also, p.ID) {
 			continue
 		}
 		err := j.Do(p.ID)

@@ -346,7 +346,7 @@ func (h *hands) Run(spec job.Run) (job.Result, error) {
 	if err == nil && !r.declined && spec.Plan.Check == safety.CheckSilence && r.ended.Reason == safety.EndSilence {
 		err = h.wait(3*time.Second, func(*session) bool { return r.judged != nil })
 	}
-	if err == nil && !r.declined && r.ended.Reason == safety.EndTripped && r.ended.Cause.Code == safety.CodeBoardTripped {
+	if err == nil && !r.declined && awaitsLog(r) {
 		err = h.wait(2*time.Second, func(*session) bool { return r.board != nil })
 	}
 	h.put(r)
@@ -397,7 +397,7 @@ func (h *hands) result(r *running) job.Result {
 		res.Stop = &job.StopSeen{KeyToWire: wire - r.stop.Asked, WireToBoard: r.stop.Answer - wire, Cuts: r.stop.Count}
 	}
 	if r.board != nil {
-		res.BoardStop = &job.BoardStop{Cause: r.board.Cause, SpeedRadS: r.board.Speed, SinceBeat: r.board.SinceBeat()}
+		res.BoardStop = &job.BoardStop{Cause: r.board.Cause, SpeedRadS: r.board.Speed, SinceBeat: r.board.SinceBeat(), SeenUS: r.board.SeenUS, OffUS: r.board.OffUS}
 	}
 	return res
 }

@@ -38,6 +38,10 @@ type Options struct {
 	// Hand and Cycle act on a simulated rig: one turn of its shaft, its power. nil
 	// where people have to.
 	Hand, Cycle func()
+	// Work has inputs of a simulated rig worked. nil where people have to.
+	Work func([]job.InputBit)
+	// Laptop reads battery and sleep. nil: nothing is told.
+	Laptop func() job.Laptop
 	// OnPanic is called, after a stop was sent, when a goroutine of ours panics.
 	OnPanic func(v any, stack []byte)
 }
@@ -118,6 +122,7 @@ func NewLive(opt Options) *Live {
 	l.s.core.Simulated = opt.Simulated
 	l.s.view = job.View{Program: opt.Program, Simulated: opt.Simulated, Rig: opt.Job.Rig.Name, Hand: opt.Hand != nil}
 	l.s.view.Link.State = job.NoPort
+	l.s.work, l.s.laptop = opt.Work, opt.Laptop
 	l.s.onRestart = func() { l.step(func(j *job.Job) { _ = j.Again() }) }
 	l.s.tapeNote = func(text string) { l.tape.Remark(l.now(), text) }
 	l.tape = tape.NewWriter(l.late, tape.Config{Start: l.start, OnPanic: l.panicked, OnError: func(err error) {
@@ -361,6 +366,8 @@ func (l *Live) tick() {
 	}
 	wasLost := s.core.Link().Lost
 	s.core.Tick(s.now)
+	s.provoke()
+	s.watchAlarms()
 	if !wasLost && s.core.Link().Lost {
 		l.giveUp()
 	}

@@ -6,6 +6,7 @@ import (
 	"gainwright/link"
 	"gainwright/link/ptyport"
 	"gainwright/link/simrig"
+	"gainwright/tune/job"
 )
 
 // ErrNoPTY says that this system has no pseudo-terminals.
@@ -53,3 +54,6 @@ func (s *Served) Rig(f func(*simrig.Rig)) { s.srv.Do(f) }
 
 // Close ends the serving.
 func (s *Served) Close() error { return s.srv.Close() }
+
+// Work has inputs of the rig worked.
+func (s *Served) Work(set []job.InputBit) { s.srv.Do(func(r *simrig.Rig) { WorkInputs(r, set) }) }

@@ -22,20 +22,23 @@ type session struct {
 	now  time.Duration
 	view job.View
 
-	opened    bool     // a port is open
-	run       *running // the run that is shown, armed or under way
-	lastStop  *supervisor.StopTimes
-	lastEnd   *safety.RunEnded // of any run
-	stops     int              // answered stops so far
-	asking    *job.Question
-	askID     int
-	answer    *job.Answer
-	watching  *watch
-	cycling   bool   // a restart is asked for and expected
-	onRestart func() // told of a restart that nobody asked for
-	boots     int    // restarts of the board seen
-	expected  int    // of them asked for
-	tapeNote  func(string)
+	opened      bool     // a port is open
+	run         *running // the run that is shown, armed or under way
+	lastStop    *supervisor.StopTimes
+	lastEnd     *safety.RunEnded // of any run
+	stops       int              // answered stops so far
+	asking      *job.Question
+	askID       int
+	answer      *job.Answer
+	watching    *watch
+	cycling     bool   // a restart is asked for and expected
+	onRestart   func() // told of a restart that nobody asked for
+	boots       int    // restarts of the board seen
+	expected    int    // of them asked for
+	tapeNote    func(string)
+	work        func([]job.InputBit) // works the inputs of a simulated rig; nil where people have to
+	laptop      func() job.Laptop
+	laptopWords string // the grave ones, for the alarms
 }
 
 // running is a run from the moment it is shown.
@@ -43,6 +46,7 @@ type running struct {
 	spec     job.Run
 	admitted safety.Admitted
 	asked    bool // the arm was asked for
+	provoked bool // what the run asks for was worked
 	declined bool
 	refused  *safety.Cause // of the newest arm that was refused
 	begun    time.Duration
@@ -112,9 +116,6 @@ func (s *session) Effect(now time.Duration, e safety.Effect) {
 			s.run.ended = &e
 			s.endLive(e)
 		}
-		if e.Reason == safety.EndTripped {
-			s.alarm(e.Cause)
-		}
 	case safety.ArmRefused:
 		s.view.Refusal = &job.RefusalView{Number: int(e.Cause.Code), What: "arm refused", Cause: e.Cause.Words, Remedy: e.Cause.Do}
 		if s.run != nil {
@@ -139,11 +140,6 @@ func (s *session) endLive(e safety.RunEnded) {
 		l.Ended += ": " + e.Cause.Words
 	}
 	s.view.Live = &l
-}
-
-func (s *session) alarm(c safety.Cause) {
-	a := job.AlarmView{At: s.now, Text: c.String(), State: "unacknowledged", Cause: c.Words, Do: c.Do}
-	s.view.Alarms = append(s.view.Alarms[:len(s.view.Alarms):len(s.view.Alarms)], a)
 }
 
 // Event takes a line of the board that answers nothing.
@@ -210,6 +206,10 @@ func (s *session) intent(i job.Intent) {
 		s.core.Do(safety.Reset{At: s.now})
 	case job.SetMark:
 		s.mark()
+	case job.WorkInput:
+		s.workInput()
+	case job.Shelve:
+		s.shelve(i)
 	case job.GiveAnswer:
 		if s.asking != nil && i.Answer.ID == s.asking.ID {
 			a := i.Answer
@@ -246,14 +246,4 @@ func (s *session) mark() {
 			s.view.Live = &l
 		}
 	}
-}
-
-func (s *session) acknowledged() {
-	alarms := append([]job.AlarmView(nil), s.view.Alarms...)
-	for i := range alarms {
-		if alarms[i].State == "unacknowledged" {
-			alarms[i].State = "acknowledged"
-		}
-	}
-	s.view.Alarms = alarms
 }

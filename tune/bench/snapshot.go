@@ -18,6 +18,7 @@ func (s *session) snapshot() *job.View {
 	v.Link = s.linkView()
 	v.Drive = s.driveView(v.Link)
 	v.Ask = s.asking
+	v.Interlocks = s.inputViews()
 	if r := s.run; r != nil && r.ended == nil {
 		p := r.spec.View
 		v.Plan = &p
@@ -85,13 +86,17 @@ func (s *session) driveView(l job.LinkView) job.DriveView {
 			n := x.Counts
 			d.Counts = &n
 		}
-		d.Moving = x.State.Moving() || x.Speed > env.RestSpeed || x.Speed < -env.RestSpeed
+		d.Moving = x.State.Moving() && !(st.Phase == safety.Armed && st.Inches > 0) || x.Speed > env.RestSpeed || x.Speed < -env.RestSpeed
 	}
 	d.Unknown = l.State == job.LinkLost || l.State == job.Stale || !st.Heard
 	if h := float64(env.CurrentContinuous*env.CurrentContinuous) * env.HeatTau.Seconds(); h > 0 {
 		d.HeatShare = st.Heat / h
 	}
 	d.Space = s.spaceWords(st, env)
+	d.Inch, d.Inches = st.Plan.Plan().Inch, st.Inches
+	if env.Enabling.Listed {
+		d.Enabling = env.Enabling.Position(st.Last).String()
+	}
 	switch st.Phase {
 	case safety.Armed:
 		d.ArmLeft = env.ArmLapse - (s.now - st.ArmedAt)
@@ -112,6 +117,9 @@ func (s *session) spaceWords(st safety.State, env safety.Envelope) string {
 	case st.Phase == safety.Running && env.Stop == safety.StopRamp && len(st.Plan.Plan().Segments) > 0 && st.Plan.Plan().Segments[0].Mode == safety.ModeSpeed:
 		return "RAMP AND CUT, again: CUT"
 	case st.Phase == safety.Running || st.Phase == safety.CountDown || st.Phase == safety.Stopping:
+		if s.core.Identity().OffMeans == "short" {
+			return "CUT, the winding brakes"
+		}
 		return "CUT, the motor coasts"
 	case st.Phase == safety.Armed || st.Phase == safety.Arming:
 		return "CUT and disarm"

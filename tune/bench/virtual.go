@@ -50,6 +50,7 @@ func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
 	v.s = &session{opened: true}
 	v.s.core = supervisor.NewCore(&v.wire, v.s, 1)
 	v.s.core.Simulated = true
+	v.s.work = func(set []job.InputBit) { WorkInputs(rig, set) }
 	v.s.view.Simulated = true
 	v.wire.wrote = func(t time.Duration, b []byte) {
 		v.s.core.Wrote(t, b)
@@ -136,6 +137,8 @@ func (v *Virtual) step() {
 		v.ticked = v.s.now
 		v.trial.lease(v)
 		v.s.core.Tick(v.s.now)
+		v.s.provoke()
+		v.s.watchAlarms()
 		v.op.act(v)
 	}
 }
@@ -212,6 +215,7 @@ const (
 	stopAfter   = 1500 * time.Millisecond
 	patience    = 4 * time.Minute // a flywheel coasts for long
 	givesUp     = time.Minute
+	inchesMade  = 3
 )
 
 func (o *operator) act(v *Virtual) {
@@ -248,6 +252,10 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 			s.core.Stop(s.now, safety.ByStopKey)
 		}
 	case q.Kind == job.AskPower:
+	case q.Kind == job.AskInput:
+		s.workInput()
+	case q.Kind == job.AskChoice:
+		s.answer = &job.Answer{ID: q.ID, Yes: true, Text: q.Default}
 	case st.Phase == safety.Tripped:
 		s.intent(job.Acknowledge{})
 		s.intent(job.ResetTrip{})
@@ -257,6 +265,9 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 		s.answer = &job.Answer{ID: q.ID, Yes: true, Text: q.Want}
 		if q.Want == "" {
 			s.answer.Text = q.Default
+		}
+		if q.Kind == job.AskText && s.answer.Text == "" {
+			s.answer.Text = "sim" // initials of the virtual operator
 		}
 	}
 }
@@ -276,6 +287,14 @@ func (o *operator) drive(s *session, r *running) {
 		if st.Phase == safety.Disarmed && s.now-o.triedAt >= 200*time.Millisecond {
 			o.triedAt = s.now
 			s.arm(!o.attends)
+		}
+	case st.Phase == safety.Armed && st.Inches > 0:
+		switch {
+		case st.Inches == inchesMade:
+			s.intent(job.Disarm{})
+		case st.Last.Speed == 0 && s.now-o.triedAt >= time.Second:
+			o.triedAt = s.now
+			s.intent(job.Go{})
 		}
 	case st.Phase == safety.Armed:
 		o.refusedSince = 0

@@ -27,8 +27,8 @@ func TestWholeJobInVirtualTime(t *testing.T) {
 		if s.ID == job.StepCard {
 			break // needs a record
 		}
-		if s.Optional {
-			continue
+		if s.Optional || j.StatusOf(s.ID) == job.Skipped {
+			continue // nobody asks for it, or there is no input to check
 		}
 		if next := j.Next(); next != s.ID {
 			t.Errorf("next is %s, want %s", next, s.ID)

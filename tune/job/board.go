@@ -61,6 +61,8 @@ func (j *Job) takeRig() error {
 		}
 	}
 	j.Env = j.Rig.Envelope()
+	j.inputsNamed()
+	j.ticked = false // the limiter forgets it with the rig file before
 	j.h.Rig(j.Env)
 	j.h.Connected(j.ID, "")
 	if j.FoundRec != nil {
@@ -159,6 +161,10 @@ func (j *Job) fits() error {
 	if id.SpeedMax > 0 && float64(j.Env.SpeedMax) > id.SpeedMax {
 		return refuse(705, "limit over the board's own", fmt.Sprintf("the rig file allows %.0f rpm, the board's hard limit is %.0f rpm", j.Env.SpeedMax.RPM(), id.SpeedMax*60/(2*math.Pi)),
 			"lower the limit in the rig file")
+	}
+	if want := j.Rig.Stop.Off; want != "" && want != "any" && id.OffMeans != want {
+		return refuse(785, "output off means something else", fmt.Sprintf("the rig file asks for a board whose output off is %q, this one does %q", want, id.OffMeans),
+			"use the board the rig was laid out for, or correct stop.off in the rig file")
 	}
 	if id.Input == "A" {
 		return refuse(706, "current-mode drive", "the board takes amperes, not volts", "this console drives voltage and duty drives only")

@@ -42,6 +42,11 @@ type Hands interface {
 	Look(safety.LookAhead)
 	// LimitsHeld says that the board holds the limits of that crc, read back equal.
 	LimitsHeld(crc uint16)
+	// Input waits until the board reports the inputs of q.Set as they are asked
+	// for, and returns when it did.
+	Input(q Question) (time.Duration, error)
+	// Laptop tells of battery and sleep what the system tells.
+	Laptop() Laptop
 	// Check says whether a check was seen working.
 	Check(c safety.Check, passed bool)
 	// Line says how the line and the board have done since the session began.
@@ -93,6 +98,9 @@ type Run struct {
 	Plan    safety.Plan
 	View    PlanView
 	Capture *Capture // at loop rate in board memory; nil: telemetry only
+	// Provoke are the inputs that somebody works in motion: what a simulated rig
+	// has worked for them.
+	Provoke []InputBit
 }
 
 // Capture is a capture that the first drive value of a run triggers.
@@ -130,6 +138,8 @@ type BoardStop struct {
 	Cause     protocol.Cause
 	SpeedRadS float64
 	SinceBeat time.Duration
+	SeenUS    uint32 // board time at which it saw the cause, µs, low 32 bits
+	OffUS     uint32 // and at which its output was off
 }
 
 // StopSeen is one stop, from the key to the board's answer.

@@ -86,6 +86,9 @@ type Job struct {
 	h     Hands
 	opt   Options
 	steps map[StepID]*StepView
+
+	ticked bool            // the checklist, this session
+	laptop map[string]bool // what of the laptop was said and answered
 }
 
 // New returns a job at its beginning.
@@ -103,6 +106,7 @@ func New(h Hands, opt Options) *Job {
 		j.steps[p.ID] = &StepView{ID: p.ID, Title: p.Title, For: p.For, Needs: p.Needs, Moves: p.Moves, Takes: p.Takes,
 			Gives: p.Gives, Status: ToDo, Optional: p.Optional}
 	}
+	j.inputsNamed()
 	j.publish()
 	h.Show(func(v *View) { v.Current = StepPort })
 	return j
@@ -211,7 +215,8 @@ func (j *Job) Again() error {
 
 // forgetChecks sets the checks back to be made, as the limiter has done.
 func (j *Job) forgetChecks(why string) {
-	for _, id := range []StepID{StepCount, StepSign, StepStop, StepSilence, StepLimits} {
+	j.ticked = false
+	for _, id := range []StepID{StepCount, StepSign, StepStop, StepSilence, StepInterlocks, StepLimits} {
 		if s := j.steps[id]; s.Status == Done {
 			s.Status, s.Reason = ToDo, why
 		}
@@ -264,7 +269,7 @@ func (j *Job) missing(id StepID) string {
 }
 
 // canSkip are the steps that later ones can do without.
-var canSkip = map[StepID]bool{StepLimits: true, StepSecond: true, StepVerify: true}
+var canSkip = map[StepID]bool{StepLimits: true, StepInterlocks: true, StepSecond: true, StepVerify: true}
 
 func (j *Job) publish() {
 	steps := make([]StepView, len(Path))
@@ -278,7 +283,7 @@ func (j *Job) publish() {
 func (j *Job) procedure(id StepID) func() (result, error) {
 	return map[StepID]func() (result, error){
 		StepPort: j.doPort, StepIdentity: j.doIdentity, StepCount: j.doCount, StepSign: j.doSign, StepStop: j.doStop,
-		StepSilence: j.doSilence, StepLimits: j.doLimits, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
+		StepSilence: j.doSilence, StepInterlocks: j.doInterlocks, StepLimits: j.doLimits, StepInch: j.doInch, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
 		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepFound: j.doFound, StepDesign: j.doDesign, StepPush: j.doPush,
 		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepCoast: j.doCoast, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
 	}[id]

@@ -15,11 +15,19 @@ import (
 
 // run has a plan forecast, shown, armed, run and recorded.
 func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, error) {
+	return j.runWith(step, plan, capture, nil)
+}
+
+// runWith is run with inputs that somebody works in motion.
+func (j *Job) runWith(step StepID, plan safety.Plan, capture *Capture, provoke []InputBit) (Result, error) {
 	view, quantities, err := j.forecast(plan)
 	if err != nil {
 		return Result{}, err
 	}
-	r, err := j.h.Run(Run{Plan: plan, View: view, Capture: capture})
+	if view.Notes, err = j.before(); err != nil {
+		return Result{}, err
+	}
+	r, err := j.h.Run(Run{Plan: plan, View: view, Capture: capture, Provoke: provoke})
 	if err != nil {
 		return r, j.admitError(plan.Name, err)
 	}
@@ -54,7 +62,7 @@ func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, erro
 			return r, err
 		}
 	}
-	return r, nil
+	return r, j.whyStopped(plan, r)
 }
 
 // admitError turns a plan that the envelope does not allow into a refusal.

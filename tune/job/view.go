@@ -25,12 +25,13 @@ type View struct {
 	Busy    string  // long work that goes on, in words; "" if none
 	Share   float64 // of that work, 0 to 1
 
-	Ask    *Question
-	Plan   *PlanView
-	Live   *LiveView
-	Found  *FoundView
-	Checks []CheckView
-	Model  *ModelView
+	Ask        *Question
+	Plan       *PlanView
+	Live       *LiveView
+	Found      *FoundView
+	Checks     []CheckView
+	Interlocks []InterlockView
+	Model      *ModelView
 	// Experiments are the optional ones that were done, in the order of the path.
 	Experiments []ExperimentView
 	Design      *DesignView
@@ -92,6 +93,9 @@ type DriveView struct {
 	Bus       *si.Volts
 	Counts    *int64
 	HeatShare float64 // of the heat budget, 0 to 1; negative: not known
+	Inch      bool    // the arm is one for inching: each start key moves one inch
+	Inches    int     // made under this arm
+	Enabling  string  // position of the enabling switch, "" where none is wired
 }
 
 // Status is where a step stands.
@@ -111,27 +115,29 @@ type StepID string
 
 // The steps in the order of the path.
 const (
-	StepPort      StepID = "port"
-	StepIdentity  StepID = "identity"
-	StepCount     StepID = "count"
-	StepSign      StepID = "sign"
-	StepStop      StepID = "stop"
-	StepSilence   StepID = "silence"
-	StepLimits    StepID = "limits"
-	StepBreakaway StepID = "breakaway"
-	StepStaircase StepID = "staircase"
-	StepStep      StepID = "step"
-	StepSecond    StepID = "second"
-	StepFit       StepID = "fit"
-	StepCoast     StepID = "coast"
-	StepFound     StepID = "found"
-	StepDesign    StepID = "design"
-	StepPush      StepID = "push"
-	StepFirstLoop StepID = "first-loop"
-	StepVerify    StepID = "verify"
-	StepStore     StepID = "store"
-	StepAsLeft    StepID = "as-left"
-	StepCard      StepID = "card"
+	StepPort       StepID = "port"
+	StepIdentity   StepID = "identity"
+	StepCount      StepID = "count"
+	StepSign       StepID = "sign"
+	StepStop       StepID = "stop"
+	StepSilence    StepID = "silence"
+	StepInterlocks StepID = "interlocks"
+	StepLimits     StepID = "limits"
+	StepInch       StepID = "inch"
+	StepBreakaway  StepID = "breakaway"
+	StepStaircase  StepID = "staircase"
+	StepStep       StepID = "step"
+	StepSecond     StepID = "second"
+	StepFit        StepID = "fit"
+	StepCoast      StepID = "coast"
+	StepFound      StepID = "found"
+	StepDesign     StepID = "design"
+	StepPush       StepID = "push"
+	StepFirstLoop  StepID = "first-loop"
+	StepVerify     StepID = "verify"
+	StepStore      StepID = "store"
+	StepAsLeft     StepID = "as-left"
+	StepCard       StepID = "card"
 )
 
 // StepView is one step of the path.
@@ -151,39 +157,6 @@ type StepView struct {
 	Optional bool // done only where somebody wants it
 }
 
-// QuestionKind says what answer a question takes.
-type QuestionKind string
-
-// The kinds of questions.
-const (
-	AskYesNo    QuestionKind = "yes-no"
-	AskEnter    QuestionKind = "enter"     // seen; go on
-	AskWord     QuestionKind = "word"      // type Want exactly
-	AskText     QuestionKind = "text"      // free text
-	AskNumber   QuestionKind = "number"    // a number in Unit
-	AskHandTurn QuestionKind = "hand-turn" // turn the shaft, then enter; the live count is shown
-	AskStopKey  QuestionKind = "stop-key"  // press the stop key
-	AskPower    QuestionKind = "power"     // switch the board off and on
-)
-
-// Question waits for the person.
-type Question struct {
-	ID      int
-	Kind    QuestionKind
-	Text    string
-	Detail  []string // lines below it
-	Want    string   // for AskWord
-	Unit    string   // for AskNumber
-	Default string
-}
-
-// Answer is what the person said.
-type Answer struct {
-	ID   int
-	Yes  bool
-	Text string
-}
-
 // PlanView is a plan that waits for its arm, with its forecast.
 type PlanView struct {
 	Name     string
@@ -195,8 +168,9 @@ type PlanView struct {
 	Band     float64 // half width of the expected band as a share of the speed
 	Unit     string  // of Drive
 	Facts    []Fact
-	Size     float64 // of the size chosen, 1 = as proposed
-	Resize   bool    // the size can be changed
+	Size     float64  // of the size chosen, 1 = as proposed
+	Resize   bool     // the size can be changed
+	Notes    []string // said before arming: battery, sleep
 }
 
 // Fact is a quantity with its name, in words ready to show.
@@ -319,15 +293,6 @@ type VerifyView struct {
 	BandLow  []Point
 	BandHigh []Point
 	Hunting  string
-}
-
-// AlarmView is one alarm in a standard state (ISA-18.2, IEC 62682).
-type AlarmView struct {
-	At    time.Duration
-	Text  string
-	State string // unacknowledged, acknowledged, returned, normal
-	Cause string // first cause
-	Do    string
 }
 
 // LogLine is one line of what happened.

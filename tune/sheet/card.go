@@ -41,6 +41,7 @@ type CardData struct {
 	Model           CardModel
 	Limits          []Quantity // held by the board
 	Checks          []CardCheck
+	Inputs          []CardCheck // opened at creep
 	Remarks         []string
 	ReRead          *bool // after a power-cycle, equal
 	Hash            string
@@ -197,6 +198,13 @@ func (c *card) findings(d CardData) {
 		seen = append(seen, words)
 	}
 	c.list("seen working this session", seen, 4)
+	if len(d.Inputs) > 0 {
+		var inputs []string
+		for _, k := range d.Inputs {
+			inputs = append(inputs, box(k.Seen)+" "+plain.Visible(k.Name, 20)+" ("+plain.Visible(k.Note, 60)+")")
+		}
+		c.list("inputs at creep, seconds and turns to rest", inputs, 4)
+	}
 	if len(d.Nameplate.Absent) > 0 {
 		c.list("not on this rig", d.Nameplate.Absent, 1)
 	}
@@ -211,7 +219,7 @@ func (c *card) list(title string, words []string, lines int) {
 	}
 	line, used := title+":", 0
 	for i, w := range words {
-		w = plain.Visible(w, 50)
+		w = plain.Visible(w, 70)
 		more := fmt.Sprintf("  and %d more", len(words)-i)
 		room := cardColumns
 		if used == lines-1 && i < len(words)-1 {

@@ -52,6 +52,12 @@ func CardOf(r *Reader) CardData {
 			d.Checks = append(d.Checks, cardCheck(c))
 		}
 	}
+	for _, l := range r.Find(KindInterlock, "") {
+		var in InterlockRecord
+		if r.JSON(l, &in) == nil {
+			d.Inputs = append(d.Inputs, in.line())
+		}
+	}
 	for _, l := range r.Find(KindRemark, "") {
 		if b, err := r.Read(l); err == nil {
 			d.Remarks = append(d.Remarks, strings.TrimSpace(string(b)))

@@ -22,6 +22,7 @@ const (
 	KindPart       Kind = "part"
 	KindAsFound    Kind = "as-found"
 	KindCheck      Kind = "check"
+	KindInterlock  Kind = "interlock"
 	KindRun        Kind = "run"
 	KindTrace      Kind = "trace"
 	KindFit        Kind = "fit"
@@ -40,7 +41,7 @@ const (
 
 var kinds = map[Kind]bool{
 	KindHeader: true, KindIdentity: true, KindRig: true, KindPart: true, KindAsFound: true,
-	KindCheck: true, KindRun: true, KindTrace: true, KindFit: true, KindExperiment: true, KindProposal: true,
+	KindCheck: true, KindInterlock: true, KindRun: true, KindTrace: true, KindFit: true, KindExperiment: true, KindProposal: true,
 	KindPush: true, KindVerify: true, KindStore: true, KindAsLeft: true, KindRemark: true,
 	KindEvent: true, KindCard: true, KindTape: true, KindClose: true,
 }

@@ -27,6 +27,7 @@ func Report(dir string) string {
 	p.snapshots()
 	p.parts()
 	p.checks()
+	p.interlocks()
 	p.runs()
 	p.fits()
 	p.experiments()
@@ -245,7 +246,7 @@ func (p *reportPage) runs() {
 }
 
 // endsEarly are the steps whose runs are meant to be cut short.
-var endsEarly = map[string]bool{"stop": true, "silence": true, "limits": true}
+var endsEarly = map[string]bool{"stop": true, "silence": true, "limits": true, "interlocks": true, "inch": true}
 
 // changed shows limits that are not those shown last, and says where they are.
 func (p *reportPage) changed(title string, last, now []Quantity) []Quantity {

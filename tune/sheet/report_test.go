@@ -160,12 +160,14 @@ func TestHostileTextAppearsNowhereRaw(t *testing.T) {
 		v    any
 	}{
 		{KindIdentity, map[string]string{evil: evil}}, {KindPart, filled[PartRecord]()}, {KindAsFound, filled[Snapshot]()},
-		{KindCheck, filled[CheckRecord]()}, {KindRun, filled[RunRecord]()}, {KindFit, filled[FitRecord]()}, {KindExperiment, filled[ExperimentRecord]()},
+		{KindCheck, filled[CheckRecord]()}, {KindInterlock, filled[InterlockRecord]()}, {KindRun, filled[RunRecord]()}, {KindFit, filled[FitRecord]()}, {KindExperiment, filled[ExperimentRecord]()},
 		{KindProposal, filled[ProposalRecord]()}, {KindPush, filled[PushRecord]()}, {KindVerify, filled[VerifyRecord]()},
 		{KindStore, filled[StoreRecord]()}, {KindAsLeft, filled[Snapshot]()}, {KindEvent, filled[EventRecord]()},
 	} {
 		step(s.Entry(e.kind, evil, e.v))
 	}
+	step(s.Entry(KindEvent, NameChecklist, filled[ChecklistRecord]()))
+	step(s.Entry(KindEvent, NameWhyStopped, filled[WhyStoppedRecord]()))
 	step(s.Entry(KindRig, NameNameplate, filled[NameplateRecord]()))
 	step(s.Entry(KindFit, NameMotor, filled[MotorRecord]()))
 	step(s.Entry(KindFit, NameStaircase, filled[StaircaseRecord]()))
