@@ -184,7 +184,7 @@ func (env Envelope) admitSegment(p Plan, i int, s Segment) error {
 	if !env.Brake && s.Mode == ModeSpeed && env.falls(p, i) {
 		return refused(n, "its setpoint falls and the drive cannot brake", "end the run there and let it coast")
 	}
-	if s.Until.Kind > UntilRest || s.Until.Counts < 0 || (s.Until.Kind == UntilMotion && s.Until.Counts == 0) {
+	if s.Until.Kind > UntilBelow || !finite(s.Until.Speed) || s.Until.Counts < 0 || (s.Until.Kind == UntilMotion && s.Until.Counts == 0) {
 		return refused(n, "its end condition makes no sense", "give a time, a number of counts above 0, or rest")
 	}
 	return nil

@@ -52,6 +52,7 @@ const (
 	CodeUndriven    Code = 318
 	CodeNotHeld     Code = 319
 	CodeLoose       Code = 320
+	CodeForecast    Code = 321
 
 	CodeAsked    Code = 401
 	CodeOtherKey Code = 402
@@ -139,6 +140,7 @@ var causes = map[Code]text{
 	CodeUndriven:    {"the shaft turns without drive", watch},
 	CodeNotHeld:     {"the shaft turned and was to be held", "fasten it before the next run"},
 	CodeLoose:       {"far more acceleration than the model allows: load coming loose", "power off, look at couplings, keys and screws"},
+	CodeForecast:    {"the speed left the band of the forecast", "look for what changed: load, coupling, supply; then find the model anew"},
 
 	CodeAsked:    {"stop asked for", ""},
 	CodeOtherKey: {"a key that is not on the short list", ""},

@@ -94,6 +94,11 @@ type (
 	Mark struct{ At time.Duration }
 	// Enough ends a run early as if its plan were over: what it was for is known.
 	Enough struct{ At time.Duration }
+	// LeftForecast says that a run is not going as it was forecast.
+	LeftForecast struct {
+		At    time.Duration
+		Words string
+	}
 	// Stop asks for a stop, in every phase.
 	Stop struct {
 		At     time.Duration
@@ -182,6 +187,7 @@ func (e Start) When() time.Duration          { return e.At }
 func (e Key) When() time.Duration            { return e.At }
 func (e Mark) When() time.Duration           { return e.At }
 func (e Enough) When() time.Duration         { return e.At }
+func (e LeftForecast) When() time.Duration   { return e.At }
 func (e Stop) When() time.Duration           { return e.At }
 func (e Disarm) When() time.Duration         { return e.At }
 func (e Acknowledge) When() time.Duration    { return e.At }

@@ -91,12 +91,15 @@ const (
 	UntilTime   UntilKind = iota // nothing but its duration
 	UntilMotion                  // the shaft has moved by Until.Counts, either way
 	UntilRest                    // the shaft has stood still for RestHold
+	UntilAbove                   // the speed has come to Until.Speed or above
+	UntilBelow                   // the speed has come to Until.Speed or below
 )
 
 // Until is a condition that ends a segment early. Its duration always ends it.
 type Until struct {
 	Kind   UntilKind
-	Counts int64 // for UntilMotion, > 0
+	Counts int64   // for UntilMotion, > 0
+	Speed  float64 `json:",omitempty"` // for UntilAbove and UntilBelow, rad/s with its sign
 }
 
 // RestHold is how long the shaft must show no speed to count as at rest.

@@ -132,6 +132,10 @@ func (m *machine) until() {
 		done = m.movedBy(u.Counts)
 	case UntilRest:
 		done = m.resting
+	case UntilAbove:
+		done = float64(m.Last.Speed) >= u.Speed
+	case UntilBelow:
+		done = float64(m.Last.Speed) <= u.Speed
 	}
 	if done {
 		m.next(m.Now)

@@ -133,6 +133,10 @@ func (m *machine) handle(e Event) {
 		if m.Phase == Running && !m.Silent && !m.Plan.plan.Inch {
 			m.over("enough is known")
 		}
+	case LeftForecast:
+		if m.Phase == Running && !m.Silent {
+			m.trip(CodeForecast, e.Words)
+		}
 	case ArmRequest, ClearArea, Start, Disarm, Acknowledge, Reset:
 		// What a person asks for before a run is an unlisted key once it goes. (S2)
 		if m.listedBetweenInches(e) || !m.keyStops() {

@@ -86,6 +86,32 @@ func (s *session) Sample(now time.Duration, x protocol.Sample) {
 		r.samples = append(r.samples, job.Sample{At: now, Sample: x})
 	}
 	s.draw(x)
+	s.learn(r, x)
+}
+
+// learn looks whether the run does what was forecast, and whether what it is for
+// is known.
+func (s *session) learn(r *running, x protocol.Sample) {
+	if !r.started || r.ended != nil || s.core.State().Phase != safety.Running {
+		return
+	}
+	t := float64(x.BoardUS-r.begunUS) * 1e-6
+	if words := r.spec.Band.Left(t, float64(x.Speed)); words != "" {
+		s.core.Do(safety.LeftForecast{At: s.now, Words: words})
+		return
+	}
+	if r.spec.Learn == nil {
+		return
+	}
+	words, enough := r.spec.Learn(job.Sample{At: s.now, Sample: x})
+	if words != "" && s.view.Live != nil {
+		l := *s.view.Live
+		l.Learn = words
+		s.view.Live = &l
+	}
+	if enough {
+		s.core.Do(safety.Enough{At: s.now})
+	}
 }
 
 // draw extends the live strips. Slices are only ever appended to, so that a view

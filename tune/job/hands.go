@@ -101,6 +101,11 @@ type Run struct {
 	// Provoke are the inputs that somebody works in motion: what a simulated rig
 	// has worked for them.
 	Provoke []InputBit
+	Band    *Band // leaving it stops the run; nil: none
+	// Learn is told of every sample of the run, from its first drive value on. It
+	// returns how well the number is known that the run is for, "" for no news, and
+	// whether that is enough: then the run ends. It must be quick.
+	Learn func(Sample) (words string, enough bool)
 }
 
 // Capture is a capture that the first drive value of a run triggers.

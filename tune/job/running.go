@@ -15,11 +15,22 @@ import (
 
 // run has a plan forecast, shown, armed, run and recorded.
 func (j *Job) run(step StepID, plan safety.Plan, capture *Capture) (Result, error) {
-	return j.runWith(step, plan, capture, nil)
+	return j.runAs(step, Run{Plan: plan, Capture: capture})
 }
 
 // runWith is run with inputs that somebody works in motion.
 func (j *Job) runWith(step StepID, plan safety.Plan, capture *Capture, provoke []InputBit) (Result, error) {
+	return j.runAs(step, Run{Plan: plan, Capture: capture, Provoke: provoke})
+}
+
+// runLearning is run with something that is told of every sample.
+func (j *Job) runLearning(step StepID, plan safety.Plan, capture *Capture, learn func(Sample) (string, bool)) (Result, error) {
+	return j.runAs(step, Run{Plan: plan, Capture: capture, Learn: learn})
+}
+
+// runAs adds forecast, band and notes to a run and has it done.
+func (j *Job) runAs(step StepID, run Run) (Result, error) {
+	plan := run.Plan
 	view, quantities, err := j.forecast(plan)
 	if err != nil {
 		return Result{}, err
@@ -27,7 +38,8 @@ func (j *Job) runWith(step StepID, plan safety.Plan, capture *Capture, provoke [
 	if view.Notes, err = j.before(); err != nil {
 		return Result{}, err
 	}
-	r, err := j.h.Run(Run{Plan: plan, View: view, Capture: capture, Provoke: provoke})
+	run.View, run.Band = view, j.band(plan, view.Expect, view.Band)
+	r, err := j.h.Run(run)
 	if err != nil {
 		return r, j.admitError(plan.Name, err)
 	}
