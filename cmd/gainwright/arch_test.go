@@ -22,6 +22,7 @@ var rooms = map[string]struct{ ours, forbidden []string }{
 	"link":               {nil, nil},
 	"link/serialport":    {[]string{"link"}, nil},
 	"link/ptyport":       {[]string{"link"}, nil},
+	"link/laptop":        {nil, []string{"os"}},
 	"link/tape":          {[]string{"link"}, nil},
 	"link/linktest":      {[]string{"link"}, nil},
 	"link/simrig":        {[]string{"link", "protocol", "protocol/si"}, nil},

@@ -188,6 +188,7 @@ func console(f consoleFlags, o bench.Options) error {
 	o.Program = "gainwright " + versionWords()
 	o.Job.Version, o.Job.Operator = o.Program, f.operator
 	o.NewSheet = f.newSheet(&o)
+	o.Laptop = laptopNow
 	// More threads than cores: a fit on every core must not keep the stop waiting
 	// for one.
 	runtime.GOMAXPROCS(runtime.NumCPU() + 2)

@@ -23,6 +23,7 @@ const (
 	FaultWrongCRC      = "wrong-crc"
 	FaultOldNumber     = "arms-on-old-number"
 	FaultStaleSequence = "stale-sequence"
+	FaultIgnoresInputs = "ignores-inputs"
 	FaultUnjudged      = "limits-not-judged"
 	FaultLoose         = "load-loose"
 	FaultPushed        = "load-pushes"
@@ -51,6 +52,7 @@ var faultKinds = map[string]faultKind{
 	FaultResetsItself:  {does: "the board restarts again and again", value: "s between restarts", def: 5},
 	FaultWrongCRC:      {does: "every line has a wrong CRC"},
 	FaultOldNumber:     {does: "arming takes any one-time number that was ever given out"},
+	FaultIgnoresInputs: {does: "inputs are reported and not judged"},
 	FaultStaleSequence: {does: "telemetry repeats its number"},
 	FaultUnjudged:      {does: "limits are held and read back, and from then on not judged; timeout, inputs and cut work on"},
 	FaultLoose:         {does: "the load comes off: inertia and friction fall to this share", value: "share left", def: 0.2},

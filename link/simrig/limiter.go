@@ -110,6 +110,9 @@ func (r *Rig) firstCause() protocol.Cause {
 
 // interlock judges the input bits, also while armed and still.
 func (r *Rig) interlock() protocol.Cause {
+	if r.wrong[FaultIgnoresInputs] {
+		return protocol.CauseNone
+	}
 	for i, name := range r.cfg.Board.Inputs {
 		if r.inputs>>i&1 == 1 {
 			continue

@@ -13,7 +13,7 @@ import (
 var causeWords = map[int]string{
 	702: "no-identity", 710: "encoder-slips", 712: "encoder-reversed", 713: "encoder-reversed", 714: "stalled", 716: "no-timeout",
 	717: "lies-about-limits", 719: "arms-on-old-number", 726: "stale-sequence", 727: "resets-itself", 728: "gravity", 729: "lost-motion",
-	746: "stored-gains-differ", 760: "encoder-dead", 761: "wrong-crc", 762: "ignores-cut", 763: "mute",
+	746: "stored-gains-differ", 783: "ignores-inputs", 760: "encoder-dead", 761: "wrong-crc", 762: "ignores-cut", 763: "mute",
 	int(safety.CodeStale): "mute", int(safety.CodeLinkLost): "mute", int(safety.CodeRestarted): "resets-itself", int(safety.CodeBoardNoTime): "no-timeout",
 	int(safety.CodeBusLow): "supply-folds", int(safety.CodeStalled): "stalled", int(safety.CodeNoCounts): "encoder-dead", int(safety.CodeStallOrDead): "stalled",
 	int(safety.CodeWrongWay): "encoder-reversed", int(safety.CodeSlip): "encoder-slips", int(safety.CodeNoStopAnswer): "ignores-cut",

@@ -33,6 +33,7 @@ type Virtual struct {
 	start  time.Time
 	budget time.Duration
 	op     operator
+	each   func()        // called with every tick; nil but where somebody meddles
 	tape   *bufio.Writer // nil: bytes are not kept
 	line   []byte
 	trial  *trial // nil but in a trial of a fault
@@ -137,6 +138,9 @@ func (v *Virtual) step() {
 		v.ticked = v.s.now
 		v.trial.lease(v)
 		v.s.core.Tick(v.s.now)
+		if v.each != nil {
+			v.each()
+		}
 		v.s.provoke()
 		v.s.watchAlarms()
 		v.op.act(v)
@@ -199,6 +203,7 @@ func (w *virtualWire) next(now time.Duration) (at time.Duration, b []byte, ok bo
 // operator is the person of a virtual bench: answers what is asked, arms what is
 // shown, after the times that the console insists on.
 type operator struct {
+	says         func(*job.Question) *job.Answer // answers of its own; nil: what is asked for
 	asked        int
 	askAt        time.Duration
 	turned       bool
@@ -240,6 +245,13 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 	if waited > givesUp {
 		s.intent(job.Decline{})
 		return
+	}
+	if o.says != nil {
+		if a := o.says(q); a != nil {
+			a.ID = q.ID
+			s.answer = a
+			return
+		}
 	}
 	switch st := s.core.State(); {
 	case q.Kind == job.AskHandTurn && !o.turned:
