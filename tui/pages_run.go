@@ -3,6 +3,7 @@ package tui
 import (
 	"fmt"
 	"math"
+	"strings"
 
 	"gainwright/tui/palette"
 	"gainwright/tui/strip"
@@ -39,10 +40,7 @@ func (p *painter) plan(a area) {
 		head.put(widths[0]+widths[1], 0, palette.Strong, "limit")
 		y++
 	}
-	y = p.rows(facts, y+1, widths, pl.Facts) + 1
-	for _, n := range pl.Notes {
-		y = facts.sub(1, 0, left-2, facts.h).wrap(y, palette.Caution, n)
-	}
+	p.rows(facts, y+1, widths, pl.Facts)
 
 	x := left + 1
 	if p.v.Drive.Phase == countDown {
@@ -102,6 +100,9 @@ func (p *painter) flow(a area) {
 		at, say = 3, "The motor starts in "+whole(d.CountLeft)+". Any key ends the count-down."
 	case d.Phase == running || d.Phase == stopping:
 		at, say = 4, "The run goes on."
+	}
+	if p.v.Plan != nil && len(p.v.Plan.Notes) > 0 {
+		a.put(1, 0, palette.Caution, " "+strings.Join(p.v.Plan.Notes, "; ")+" ")
 	}
 	x := 1
 	for i, word := range []string{"1 arm", "2 area clear", "3 go", "4 count-down", "5 run"} {

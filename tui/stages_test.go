@@ -181,7 +181,7 @@ func stages() []stage {
 	add("why-stopped", v, "")
 	v = at(job.StepStep, true)
 	v.Plan = stepPlan()
-	v.Plan.Notes = []string{"the battery is at 9 % and not charging"}
+	v.Plan.Notes = []string{"battery 9 % and not charging", "sleep is not held off: start under systemd-inhibit"}
 	add("inching", withDrive(v, func(d *job.DriveView) {
 		d.Phase, d.Inch, d.Inches, d.Clear, d.ArmLeft = armed, true, 2, true, 41*time.Second
 	}), "")

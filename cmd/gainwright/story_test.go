@@ -41,9 +41,18 @@ func sitDown(t *testing.T, cfg simrig.Config, withRig bool) *person {
 	if err != nil {
 		t.Fatal(err)
 	}
+	if !withRig {
+		text = nil
+	}
+	return sitAt(t, cfg, r, text)
+}
+
+// sitAt sits down at a rig with a rig file; without text the console asks for it.
+func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte) *person {
+	t.Helper()
 	p := &person{t: t, sim: bench.ServePipe(simrig.New(cfg, 1)), screen: tui.New(tui.Look{})}
 	dir := t.TempDir() + "/sheet"
-	o := bench.Options{Simulated: true, Program: "gainwright test", Hand: p.sim.Hand, Cycle: p.sim.Cycle,
+	o := bench.Options{Simulated: true, Program: "gainwright test", Hand: p.sim.Hand, Cycle: p.sim.Cycle, Work: p.sim.Work,
 		Ports: func() []job.PortView { return []job.PortView{{Path: "memory", Name: cfg.Name}} },
 		Open: func(string) (bench.Opened, error) {
 			return bench.Opened{Port: p.sim.Port(), Baud: cfg.Board.Baud}, nil
@@ -53,7 +62,7 @@ func sitDown(t *testing.T, cfg simrig.Config, withRig bool) *person {
 		},
 		OnPanic: func(v any, stack []byte) { t.Errorf("panic: %v\n%s", v, stack) },
 	}
-	if withRig {
+	if text != nil {
 		o.Job.Rig, o.Job.RigText = r, text
 	}
 	p.live = bench.NewLive(o)
@@ -140,7 +149,15 @@ func (p *person) step(id job.StepID) {
 
 func (p *person) runs() {
 	p.t.Helper()
-	p.until("a plan", func(v *job.View) bool { return v.Plan != nil && v.Drive.Phase == "DISARMED" })
+	for ticking := true; ticking; {
+		p.until("a plan, or a line to tick", func(v *job.View) bool {
+			ticking = v.Ask != nil && v.Ask.Kind == job.AskYesNo
+			return ticking || v.Plan != nil && v.Drive.Phase == "DISARMED"
+		})
+		if ticking {
+			p.press("y")
+		}
+	}
 	for range 20 { // a stop a moment ago, or a shaft still turning, holds the arm off
 		p.press("a")
 		if ph := p.live.View().Drive.Phase; ph == "ARMED" || ph == "ARMING" {
@@ -211,6 +228,15 @@ func (p *person) answerHand() {
 	p.press(" ")
 }
 
+// limitTrip has the provoked trip of the limit check, and clears it.
+func (p *person) limitTrip() {
+	p.t.Helper()
+	p.runs()
+	p.until("the trip", phase("TRIPPED"))
+	p.again("e", func(v *job.View) bool { return v.Drive.Acked })
+	p.again("z", phase("DISARMED"))
+}
+
 // upTo goes down the path to before the given step.
 func (p *person) upTo(last job.StepID) {
 	p.t.Helper()
@@ -232,10 +258,7 @@ func (p *person) upTo(last job.StepID) {
 			p.wait(time.Second)
 			p.press(" ")
 		case job.StepLimits:
-			p.runs()
-			p.until("the trip", phase("TRIPPED"))
-			p.again("e", func(v *job.View) bool { return v.Drive.Acked })
-			p.again("z", phase("DISARMED"))
+			p.limitTrip()
 		case job.StepSign, job.StepSilence, job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFound, job.StepFirstLoop, job.StepVerify:
 			p.runsAll(s.ID)
 		case job.StepPush:

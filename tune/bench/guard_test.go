@@ -318,7 +318,7 @@ func TestALowBatteryIsSaidBeforeArming(t *testing.T) {
 	if err := j.Do(job.StepBreakaway); err != nil || asked != 2 {
 		t.Fatalf("asked %d times, error %v", asked, err)
 	}
-	if !strings.Contains(notes, "9 %") || !strings.Contains(notes, "no way here to hold off sleep") {
+	if !strings.Contains(notes, "9 %") || !strings.Contains(notes, "sleep cannot be held off here") {
 		t.Errorf("beside the plan: %q", notes)
 	}
 	if err := j.Do(job.StepStaircase); err != nil || asked != 2 {

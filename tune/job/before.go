@@ -26,15 +26,15 @@ const BatteryLeast = 0.15
 // Words are what has to be said before arming: the grave first.
 func (l Laptop) Words() (grave, notes []string) {
 	if l.Battery != nil && *l.Battery < BatteryLeast && !l.Charging {
-		grave = append(grave, fmt.Sprintf("the battery is at %.0f %% and not charging: a laptop that dies leaves the stop to the board's timeout", 100**l.Battery))
+		grave = append(grave, fmt.Sprintf("battery %.0f %% and not charging", 100**l.Battery))
 	}
 	switch {
 	case !l.Told:
-		notes = append(notes, "whether sleep can be held off is unknown on this system: switch sleep and lid off yourself")
+		notes = append(notes, "hold-off of sleep: unknown here, switch sleep off yourself")
 	case l.HoldOff == "":
-		notes = append(notes, "there is no way here to hold off sleep: switch sleep and lid off yourself")
+		notes = append(notes, "sleep cannot be held off here: switch it off yourself")
 	default:
-		notes = append(notes, "sleep is not held off by this program; "+l.HoldOff+" does it")
+		notes = append(notes, "sleep is not held off: start under "+l.HoldOff)
 	}
 	return grave, notes
 }
@@ -50,7 +50,7 @@ func (j *Job) before() ([]string, error) {
 		if j.laptop[g] {
 			continue
 		}
-		a, err := j.h.Ask(Question{Kind: AskYesNo, Text: "Go on all the same?", Detail: []string{strings.ToUpper(g[:1]) + g[1:] + ".", "Plug it in first, or go on: your answer is kept."}})
+		a, err := j.h.Ask(Question{Kind: AskYesNo, Text: "Go on all the same?", Detail: []string{"The laptop: " + g + ". If it dies in motion, the stop is left to the board's timeout.", "Plug it in first, or go on: your answer is kept."}})
 		if err != nil {
 			return nil, err
 		}
