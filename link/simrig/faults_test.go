@@ -213,7 +213,7 @@ func TestFaultsOfTheLoad(t *testing.T) {
 }
 
 func TestEveryFaultIsTested(t *testing.T) {
-	if len(FaultKinds()) != 19 {
+	if len(FaultKinds()) != 20 {
 		t.Errorf("%d kinds of fault: test the new one and count it here", len(FaultKinds()))
 	}
 }
@@ -239,5 +239,29 @@ func TestOneQuadrantDoesNotBrake(t *testing.T) {
 	full.volts(50*time.Millisecond, 2)
 	if lost, braked := from-coast, from-full.r.Speed(); lost > braked/2 || lost <= 0 {
 		t.Errorf("one quadrant lost %g rad/s, four %g", lost, braked)
+	}
+}
+
+// A board that ignores its inputs goes on with its guard open, and says so.
+func TestIgnoredInputsAreReportedAndNotJudged(t *testing.T) {
+	for _, ignores := range []bool{false, true} {
+		cfg := benchConfig()
+		cfg.Board.Inputs = []string{"guard"}
+		c := newConsole(t, cfg)
+		if ignores {
+			c.r.Inject(FaultIgnoresInputs, 0)
+		}
+		c.hold(nil)
+		c.must("rate", "125 x tu")
+		c.arm()
+		c.volts(200*time.Millisecond, 6)
+		c.r.SetInput("guard", false)
+		c.volts(300*time.Millisecond, 6)
+		if c.r.Powered() != ignores {
+			t.Errorf("ignores %v: powered %v", ignores, c.r.Powered())
+		}
+		if in := c.last().Slow; !in.Seen || in.Inputs&1 != 0 {
+			t.Errorf("ignores %v: inputs %+v", ignores, in)
+		}
 	}
 }
