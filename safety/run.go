@@ -97,13 +97,17 @@ func (m *machine) wanted() float64 {
 	s := m.Plan.plan.Segments[m.Segment]
 	at := math.Min(float64(m.Now-m.SegmentAt)/float64(s.Duration), 1)
 	v := s.From + (s.To-s.From)*at
+	v = math.Max(math.Min(s.From, s.To), math.Min(v, math.Max(s.From, s.To))) // rounding never leaves the plan
 	rate := m.env.SlewMax
 	if s.Mode == ModeSpeed {
 		rate = m.env.AccelMax
 	}
 	most := rate * (m.Now - m.valueAt).Seconds()
 	m.valueAt = m.Now
-	return m.Value + math.Max(-most, math.Min(most, v-m.Value))
+	if math.Abs(v-m.Value) <= most {
+		return v // itself: the sum could be rounded out of the plan
+	}
+	return m.Value + math.Copysign(most, v-m.Value)
 }
 
 // bounded cuts v to what plan and envelope allow.

@@ -45,7 +45,7 @@ var mutants = []mutant{
 	{"S3", "step.go", "if m.Now-m.CountedAt >= m.env.CountDown {", "if m.Now-m.CountedAt >= m.env.CountDown-100*time.Millisecond {", step, "TestNothingDrivesWithoutTheWholeWay"},
 	{"S4", "admit.go", "if lim := tighter(p.VoltsMax, float64(env.VoltsMax)); top > lim {", "if lim := tighter(p.VoltsMax, float64(env.VoltsMax)); s.To > lim {", step, "TestDriveStaysInsideTheEnvelope"},
 	{"S4", "admit.go", "if !env.Reverse && math.Min(s.From, s.To) < 0 {", "if false {", step, "TestDriveStaysInsideTheEnvelope"},
-	{"S4", "run.go", "return m.Value + math.Max(-most, math.Min(most, v-m.Value))", "return m.Value + math.Max(-most, math.Min(9*most, v-m.Value))", step, "TestDriveKeepsTheSlewLimit"},
+	{"S4", "run.go", "if math.Abs(v-m.Value) <= most {", "if math.Abs(v-m.Value) <= 9*most {", step, "TestDriveKeepsTheSlewLimit"},
 	{"S4", "judge.go", "if m.limit(math.Abs(w), top, CodeSpeed, \"rad/s\") {", "if m.limit(w, top, CodeSpeed, \"rad/s\") {", step, "TestEveryLimitTrips"},
 	{"S4", "judge.go", "top*(1+voltsSlack)+voltsOffset", "top*(2+voltsSlack)+voltsOffset", step, "TestEveryLimitTrips"},
 	{"S4", "judge.go", "m.limit(math.Abs(float64(s.Current)), most, CodeCurrent, \"A\")", "m.limit(float64(s.Current), most, CodeCurrent, \"A\")", step, "TestEveryLimitTrips"},

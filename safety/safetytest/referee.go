@@ -91,6 +91,9 @@ func New(env safety.Envelope) *Referee {
 	return &Referee{env: env, checks: map[safety.Check]bool{}}
 }
 
+// Under puts another envelope in force, as a rig file read in a session does.
+func (r *Referee) Under(env safety.Envelope) { r.env = env }
+
 // Violations lists what was not kept, oldest first, at most 100.
 func (r *Referee) Violations() []Violation { return r.list }
 

@@ -74,6 +74,9 @@ type Core struct {
 	// Simulated says that the far end is a simulated rig: set by the program that
 	// made the rig, never by what a board says.
 	Simulated bool
+	// Watch, if set, is shown every event with what the limiter called for, before
+	// that is carried out. A *safety.Sample is valid during the call only.
+	Watch func(safety.Event, []safety.Effect)
 
 	env  safety.Envelope
 	st   safety.State
@@ -289,6 +292,9 @@ func (c *Core) Do(e safety.Event) {
 	c.advance(e.When())
 	stops, phase := c.st.Stops, c.st.Phase
 	effects := c.env.Advance(&c.st, e)
+	if c.Watch != nil {
+		c.Watch(e, effects)
+	}
 	if begins := c.st.Phase == safety.Stopping || c.st.Phase == safety.Tripped; c.st.Stops != stops || begins && c.st.Phase != phase {
 		c.void() // a stop voids what was asked before it
 	}
