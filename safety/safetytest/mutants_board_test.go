@@ -36,7 +36,16 @@ var boardMutants = []mutant{
 	{"S10", "../protocol/firmware/core/gw_run.c", "		else if (!g.rest)\n			no = REF_MOVING;\n		if (no == 0) {", "		if (no == 0) {", board, "TestResetIsRefusedWhileTheCauseIsThere"},
 }
 
-func init() { mutants = append(mutants, boardMutants...) }
+// coreMutants break what joins the limiter with the wire.
+var coreMutants = []mutant{
+	{"S5", "supervisor/core.go", "		c.void() // a stop voids what was asked before it\n", "", core, "TestAStopVoidsRequests"},
+	{"S5", "supervisor/lines.go", "	c.void()\n	c.connected = false\n", "	c.connected = false\n", core, "TestARestartVoidsWhatWasAsked"},
+	{"S6", "supervisor/core.go", "if c.streaming && !c.lost && now-c.lastAt > linkLostAge {", "if false {", core, "TestSilenceIsALostLink"},
+	{"S8", "supervisor/lines.go", "int(s.Slow.Boots) != c.boots {", "int(s.Slow.Boots) < c.boots {", core, "TestARestartVoidsWhatWasAsked"},
+	{"S13", "supervisor/core.go", " && !c.st.Ramping() {", " {", bench, "TestARampIsNotOvertakenByACut"},
+}
+
+func init() { mutants = append(append(mutants, boardMutants...), coreMutants...) }
 
 // runBoardMutant builds the C core from a copy with one line changed and runs the
 // test that has to fail.

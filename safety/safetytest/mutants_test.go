@@ -27,6 +27,7 @@ const (
 	world     = "sim"
 	drawn     = "safetytest"
 	core      = "supervisor"
+	bench     = "../tune/bench"
 	board     = "../protocol/firmware" // its tests run the C core behind a host build
 	worlds    = "TestWorlds"
 	drawnTest = "TestRandomHistories"
@@ -94,7 +95,7 @@ var mutants = []mutant{
 // code and that the test that is to kill it exists.
 func TestMutantsFitTheCode(t *testing.T) {
 	tests := map[string]string{}
-	for _, pkg := range []string{step, world, drawn, core, board} {
+	for _, pkg := range []string{step, world, drawn, core, board, bench} {
 		files, err := filepath.Glob(filepath.Join("..", pkg, "*_test.go"))
 		if err != nil {
 			t.Fatal(err)
@@ -191,7 +192,7 @@ func runMutant(t *testing.T, m mutant) (out string, err error) {
 		t.Fatal(err)
 	}
 	cmd := exec.Command("go", "test", "-vet=off", "-count=1", "-timeout=90s", "-overlay", overlay, "-run", "^"+regexp.QuoteMeta(m.test)+"$", ".", "-rapid.nofailfile")
-	if m.pkg == world || m.pkg == core {
+	if m.pkg == world || m.pkg == core || m.pkg == bench {
 		cmd.Args = cmd.Args[:len(cmd.Args)-1] // that package draws nothing
 	}
 	cmd.Dir = filepath.Join("..", m.pkg)
