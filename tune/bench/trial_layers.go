@@ -34,7 +34,16 @@ func (l Layers) String() string {
 // told to hold.
 type trialHands struct {
 	job.Hands
-	env func(safety.Envelope) safety.Envelope
+	env     func(safety.Envelope) safety.Envelope
+	console bool
+}
+
+// Run leaves the band of the forecast away where the console is not to judge.
+func (h trialHands) Run(r job.Run) (job.Result, error) {
+	if !h.console {
+		r.Band = nil
+	}
+	return h.Hands.Run(r)
 }
 
 func (h trialHands) Rig(env safety.Envelope) { h.Hands.Rig(h.env(env)) }
@@ -48,7 +57,7 @@ func (l Layers) hands(h job.Hands, style safety.StopStyle) job.Hands {
 			env = permissive(env)
 		}
 		return env
-	}}
+	}, l.Console}
 }
 
 // permissive is an envelope that admits the same drive and judges nothing.
