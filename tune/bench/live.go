@@ -153,8 +153,20 @@ func (l *Live) goes(f func()) {
 }
 
 func (l *Live) panicked(v any, stack []byte) {
-	l.cut()
-	time.Sleep(20 * time.Millisecond) // for the byte to leave; the program ends after this
+	if line := l.line.Load(); line != nil {
+		sent := line.writer.Stats().StopsSent
+		l.cut()
+		time.Sleep(20 * time.Millisecond) // for the byte to leave; the program ends after this
+		if line.writer.Stats().StopsSent == sent {
+			// The writer itself is what broke: the byte goes past it, from a goroutine
+			// that may hang or break as it likes.
+			go func() {
+				defer func() { _ = recover() }()
+				_, _ = line.port.Write([]byte{protocol.Cut})
+			}()
+			time.Sleep(20 * time.Millisecond)
+		}
+	}
 	if l.opt.OnPanic != nil {
 		l.opt.OnPanic(v, stack)
 	}

@@ -1,7 +1,11 @@
 package bench
 
 import (
+	"context"
+	"runtime"
 	"strings"
+	"sync"
+	"sync/atomic"
 	"testing"
 	"testing/synctest"
 	"time"
@@ -9,6 +13,7 @@ import (
 	"gainwright/link"
 	"gainwright/protocol"
 	"gainwright/tune/job"
+	"gainwright/tune/sheet"
 )
 
 // A fault in any goroutine of ours puts the cut byte on the wire before anybody
@@ -47,4 +52,95 @@ func TestAFaultCutsFirst(t *testing.T) {
 		}
 		far.Close()
 	})
+}
+
+// brittle is a port in which one thing panics, once it is told to.
+type brittle struct {
+	link.Port
+	read, write atomic.Bool
+}
+
+func (b *brittle) Read(p []byte) (int, error) {
+	if b.read.Load() {
+		panic("read")
+	}
+	return b.Port.Read(p)
+}
+
+func (b *brittle) Write(p []byte) (int, error) {
+	if b.write.Swap(false) { // the first only
+		panic("write")
+	}
+	return b.Port.Write(p)
+}
+
+// Whichever goroutine breaks, the cut byte leaves before anybody is told.
+func TestAFaultInAnyGoroutineCutsFirst(t *testing.T) {
+	for name, fault := range map[string]func(l *Live, b *brittle){
+		"reader":     func(_ *Live, b *brittle) { b.read.Store(true) },
+		"writer":     func(l *Live, b *brittle) { b.write.Store(true); l.Post(job.DoStep{Step: job.StepIdentity}) },
+		"supervisor": func(l *Live, _ *brittle) { l.post(func(*session) { panic("supervisor") }) },
+		"job":        func(l *Live, _ *brittle) { l.steps <- func(*job.Job) { panic("job") } },
+		"tape": func(l *Live, _ *brittle) {
+			l.late.mu.Lock()
+			l.late.out = new(sheet.Stream) // writing into it is a fault
+			l.late.mu.Unlock()
+			l.Post(job.DoStep{Step: job.StepIdentity}) // so that there is something to write
+		},
+	} {
+		t.Run(name, func(t *testing.T) {
+			synctest.Test(t, func(t *testing.T) {
+				near, far := link.Pipe()
+				b := &brittle{Port: near}
+				var mu sync.Mutex
+				var got strings.Builder
+				go func() {
+					buf := make([]byte, 256)
+					for {
+						n, err := far.Read(buf)
+						mu.Lock()
+						got.Write(buf[:n])
+						mu.Unlock()
+						if err != nil {
+							return
+						}
+					}
+				}()
+				told := make(chan string, 8)
+				l := NewLive(Options{
+					Open: func(string) (Opened, error) { return Opened{Port: b, Baud: 115200}, nil },
+					OnPanic: func(v any, _ []byte) {
+						synctest.Wait()
+						mu.Lock()
+						told <- got.String()
+						mu.Unlock()
+						runtime.Goexit() // a real program ends here
+					},
+				})
+				l.Connect("memory")
+				time.Sleep(300 * time.Millisecond)
+				mu.Lock()
+				got.Reset()
+				mu.Unlock()
+				fault(l, b)
+				select {
+				case s := <-told:
+					if strings.IndexByte(s, protocol.Cut) < 0 {
+						t.Errorf("when the fault was told the line had %q", s)
+					}
+				case <-time.After(time.Minute):
+					t.Error("nobody was told of the fault")
+				}
+				l.overOnce.Do(func() { close(l.over) })
+				if line := l.line.Load(); line != nil {
+					line.cancel()
+				}
+				far.Close()
+				ctx, cancel := context.WithTimeout(context.Background(), time.Second)
+				defer cancel()
+				_ = l.tape.Close(ctx)
+				time.Sleep(5 * time.Second)
+			})
+		})
+	}
 }
