@@ -255,6 +255,38 @@ func Staircase(k Known, levels int, top, dir float64, down bool) (safety.Plan, [
 	return safety.Plan{Name: name, Purpose: "steady speed against voltage", Segments: b.segs}, stairs
 }
 
+// RelaySpec is a relay about a middle: High until the speed has come to Upper, Low
+// until it has come to Lower.
+type RelaySpec struct {
+	Bias, High, Low float64 // V
+	Upper, Lower    float64 // rad/s
+	Cycles          int
+}
+
+// Relay makes a relay-feedback run from the console: every half of a cycle ends at
+// its threshold, and in any case after six time constants. Its end is the number
+// of cycles.
+func Relay(k Known, r RelaySpec) safety.Plan {
+	b := volts(k.Env)
+	b.fall = k.FallSlope
+	ramp, settle := leadIn(k)
+	b.ramp(r.Bias, seconds(ramp), safety.Until{}, "to the middle")
+	b.hold(r.Bias, seconds(settle), "settle")
+	longest := seconds(math.Max(0.3, 6*k.Tau))
+	half := func(v float64, until safety.Until, note string) {
+		j := b.jumpTime(v)
+		b.segs = append(b.segs, safety.Segment{Mode: b.mode, From: b.at, To: v, Duration: j, Until: until, Note: note},
+			safety.Segment{Mode: b.mode, From: v, To: v, Duration: longest, Until: until, Note: note})
+		b.at = v
+	}
+	for range r.Cycles {
+		half(r.High, safety.Until{Kind: safety.UntilAbove, Speed: r.Upper}, "relay high")
+		half(r.Low, safety.Until{Kind: safety.UntilBelow, Speed: r.Lower}, "relay low")
+	}
+	b.end(k, r.Low)
+	return safety.Plan{Name: "relay", Purpose: "limit cycle under a relay: gain and phase where a loop would cross over", Segments: b.segs}
+}
+
 // Coast makes a run up to a steady speed that ends there: the output goes off and
 // the shaft coasts, which is what is looked at.
 func Coast(k Known, drive float64) safety.Plan {

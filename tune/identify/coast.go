@@ -238,8 +238,7 @@ type Mean struct {
 	N                 int
 }
 
-// MeanOf combines repeats. Standard deviations of 0 count as unknown: then all
-// weigh the same.
+// MeanOf combines repeats. With sd nil or one of them 0 all weigh the same.
 func MeanOf(values, sd []float64) Mean {
 	m := Mean{N: len(values), SD: math.NaN(), Spread: math.NaN()}
 	if m.N == 0 {
@@ -248,7 +247,7 @@ func MeanOf(values, sd []float64) Mean {
 	}
 	sum := 0.0
 	w := make([]float64, m.N)
-	known := true
+	known := len(sd) == m.N
 	for _, s := range sd {
 		known = known && s > 0 && finite(s)
 	}

@@ -281,11 +281,14 @@ func (j *Job) publish() {
 }
 
 func (j *Job) procedure(id StepID) func() (result, error) {
+	if f := j.optional(id); f != nil {
+		return f
+	}
 	return map[StepID]func() (result, error){
 		StepPort: j.doPort, StepIdentity: j.doIdentity, StepCount: j.doCount, StepSign: j.doSign, StepStop: j.doStop,
 		StepSilence: j.doSilence, StepInterlocks: j.doInterlocks, StepLimits: j.doLimits, StepInch: j.doInch, StepBreakaway: j.doBreakaway, StepStaircase: j.doStaircase,
 		StepStep: j.doStep, StepSecond: j.doSecond, StepFit: j.doFit, StepFound: j.doFound, StepDesign: j.doDesign, StepPush: j.doPush,
-		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepCoast: j.doCoast, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
+		StepFirstLoop: j.doFirstLoop, StepVerify: j.doVerify, StepStore: j.doStore, StepAsLeft: j.doAsLeft, StepCard: j.doCard,
 	}[id]
 }
 

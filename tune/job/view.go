@@ -129,7 +129,6 @@ const (
 	StepStep       StepID = "step"
 	StepSecond     StepID = "second"
 	StepFit        StepID = "fit"
-	StepCoast      StepID = "coast"
 	StepFound      StepID = "found"
 	StepDesign     StepID = "design"
 	StepPush       StepID = "push"
