@@ -21,7 +21,7 @@ type ExperimentSettings struct {
 
 // analyses are the pure analyses by their step.
 var analyses = map[StepID]func(ExperimentSettings, []*trace.Trace, *sheet.ExperimentRecord) error{
-	StepCoast: analyseCoast, StepRelay: analyseRelay,
+	StepCoast: analyseCoast, StepRelay: analyseRelay, StepFrequency: analyseFrequency,
 }
 
 // Analyse computes what an experiment shows from its traces.

@@ -16,6 +16,6 @@ const (
 // optional are their procedures.
 func (j *Job) optional(id StepID) func() (result, error) {
 	return map[StepID]func() (result, error){
-		StepCoast: j.doCoast, StepRelay: j.doRelay,
+		StepCoast: j.doCoast, StepRelay: j.doRelay, StepFrequency: j.doFrequency,
 	}[id]
 }
