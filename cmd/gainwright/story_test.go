@@ -238,9 +238,16 @@ func (p *person) limitTrip() {
 }
 
 // upTo goes down the path to before the given step.
-func (p *person) upTo(last job.StepID) {
+func (p *person) upTo(last job.StepID) { p.t.Helper(); p.upToFrom(job.Path[0].ID, last) }
+
+// upToFrom goes down the path from one step to before another.
+func (p *person) upToFrom(first, last job.StepID) {
 	p.t.Helper()
+	begun := false
 	for _, s := range job.Path {
+		if begun = begun || s.ID == first; !begun {
+			continue
+		}
 		if s.ID == last {
 			return
 		}
@@ -462,4 +469,61 @@ func TestConsoleAsksForTheNameplate(t *testing.T) {
 			t.Errorf("%+v, %v", r, err)
 		}
 	})
+}
+
+// A plan is made smaller by key before the arm, its forecast follows at once, sizes
+// end where the envelope or their range does, and the record holds what was run.
+func TestAPlanIsResizedByKey(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		p := newPerson(t, demoRig(t))
+		defer p.leave()
+		p.upTo(job.StepStep)
+		p.step(job.StepStep)
+		p.until("a plan", func(v *job.View) bool { return v.Plan != nil && v.Plan.Resize })
+		top := func() float64 {
+			m := 0.0
+			for _, x := range p.live.View().Plan.Drive {
+				m = max(m, x.V)
+			}
+			return m
+		}
+		was, length := top(), p.live.View().Live.Length
+		for range 3 {
+			p.press("j")
+			p.wait(100 * time.Millisecond)
+		}
+		v := p.live.View()
+		if v.Plan.Size != 0.7 || top() >= was || !strings.Contains(p.see(), "size 70 %") || v.Live.Length == 0 || length == 0 {
+			t.Fatalf("size %v, top %v of %v:\n%s", v.Plan.Size, top(), was, p.see())
+		}
+		for range 9 {
+			p.press("j")
+			p.wait(100 * time.Millisecond)
+		}
+		if v := p.live.View(); v.Plan.Size != 0.3 || v.Refusal == nil || v.Refusal.Number != 728 {
+			t.Errorf("at the end: size %v, %+v", v.Plan.Size, v.Refusal)
+		}
+		for range 4 {
+			p.press("k")
+			p.wait(100 * time.Millisecond)
+		}
+		p.runsAll(job.StepStep)
+		p.done(job.StepStep)
+		if v := p.live.View(); !strings.Contains(resultOf(v, job.StepStep), "±") {
+			t.Errorf("result %q", resultOf(v, job.StepStep))
+		}
+		p.press("j") // nothing waits: a row down, not a size
+		p.upToFrom(job.StepSecond, job.StepDesign)
+		p.step(job.StepDesign)
+		p.done(job.StepDesign)
+	})
+}
+
+func resultOf(v *job.View, id job.StepID) string {
+	for _, s := range v.Steps {
+		if s.ID == id {
+			return s.Result
+		}
+	}
+	return ""
 }

@@ -25,7 +25,11 @@ func (l *Live) Post(i job.Intent) {
 	case job.AddRemark:
 		l.step(func(j *job.Job) { j.Remark(i.Text) })
 	case job.Nudge:
-		l.step(func(j *job.Job) { j.Nudge(i.By) })
+		l.post(func(s *session) {
+			if !s.resize(i.By) {
+				l.step(func(j *job.Job) { j.Nudge(i.By) })
+			}
+		})
 	case job.TurnHand:
 		if l.opt.Hand != nil {
 			l.opt.Hand()

@@ -6,6 +6,7 @@
 package bench
 
 import (
+	"errors"
 	"fmt"
 	"time"
 
@@ -249,6 +250,30 @@ func (s *session) intent(i job.Intent) {
 			s.answer = &job.Answer{ID: -1}
 		}
 	}
+}
+
+// resize steps the size of the plan that is shown, if it waits for its arm and has
+// sizes. The job waits meanwhile, so its numbers stand still.
+func (s *session) resize(by int) bool {
+	r := s.run
+	if r == nil || r.asked || r.ended != nil || r.spec.Resize == nil {
+		return false
+	}
+	spec, err := r.spec.Resize(by)
+	if err == nil {
+		r.admitted, err = s.core.Envelope().Admit(spec.Plan)
+	}
+	if err != nil {
+		refusal := job.RefusalView{Number: 728, What: "another size", Cause: err.Error(), Remedy: "leave the size as it is"}
+		if ref, ok := errors.AsType[*job.RefusedError](err); ok {
+			refusal = job.RefusalView{Number: ref.Number, What: ref.What, Cause: ref.Cause, Remedy: ref.Remedy}
+		}
+		s.view.Refusal = &refusal
+		return true
+	}
+	r.spec = spec
+	s.show(r)
+	return true
 }
 
 func (s *session) arm(unattended bool) {

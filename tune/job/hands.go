@@ -106,6 +106,11 @@ type Run struct {
 	// returns how well the number is known that the run is for, "" for no news, and
 	// whether that is enough: then the run ends. It must be quick.
 	Learn func(Sample) (words string, enough bool)
+	// Sized makes the plan in another size, 1 as proposed; nil: it has one size only.
+	Sized func(size float64) safety.Plan
+	// Resize steps the size of a plan that is shown and not armed, with its forecast.
+	// It is quick and asks nobody, so that it may be called while the job waits.
+	Resize func(by int) (Run, error)
 }
 
 // Capture is a capture that the first drive value of a run triggers.
@@ -123,6 +128,7 @@ type Sample struct {
 // Result is what a run gave.
 type Result struct {
 	Name        string
+	Size        float64 // of the plan, 1 as proposed
 	Reason      safety.EndReason
 	Cause       safety.Cause
 	Started     bool

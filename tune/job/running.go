@@ -28,18 +28,82 @@ func (j *Job) runLearning(step StepID, plan safety.Plan, capture *Capture, learn
 	return j.runAs(step, Run{Plan: plan, Capture: capture, Learn: learn})
 }
 
+// runSized is run with a plan that a person may make smaller or larger before the
+// arm. size is what it was run at.
+func (j *Job) runSized(step StepID, sized func(size float64) safety.Plan, run Run) (r Result, size float64, err error) {
+	run.Sized = sized
+	r, err = j.runAs(step, run)
+	return r, r.Size, err
+}
+
+// Sizes of a plan, as shares of what is proposed (our choice).
+const (
+	sizeStep  = 0.1
+	sizeLeast = 0.3
+	sizeMost  = 1.5
+)
+
+// prepared is a run in one size with its forecast.
+func (j *Job) prepared(run Run, size float64) (Run, []sheet.Quantity, error) {
+	if run.Sized != nil {
+		run.Plan = run.Sized(size)
+	}
+	notes := run.View.Notes
+	view, quantities, err := j.forecast(run.Plan)
+	if err != nil {
+		return run, nil, err
+	}
+	if _, err := j.Env.Admit(run.Plan); err != nil {
+		return run, nil, j.admitError(run.Plan.Name, err)
+	}
+	view.Size, view.Resize, view.Notes = size, run.Sized != nil, notes
+	run.View, run.Band = view, j.band(run.Plan, view.Expect, view.Band)
+	return run, quantities, nil
+}
+
+// fitting is the run in the largest size that its forecast and the envelope allow,
+// at most as proposed.
+func (j *Job) fitting(run Run) (Run, []sheet.Quantity, error) {
+	out, q, first := j.prepared(run, 1)
+	if first == nil || run.Sized == nil {
+		return out, q, first
+	}
+	for size := 1 - sizeStep; size >= sizeLeast-1e-9; size -= sizeStep {
+		if out, q, err := j.prepared(run, size); err == nil {
+			out.View.Notes = append(out.View.Notes, fmt.Sprintf("made smaller: %.0f %% is the largest size that fits; at 100 %% %v", 100*size, first))
+			return out, q, nil
+		}
+	}
+	return run, nil, first
+}
+
 // runAs adds forecast, band and notes to a run and has it done.
-func (j *Job) runAs(step StepID, run Run) (Result, error) {
-	plan := run.Plan
-	view, quantities, err := j.forecast(plan)
+func (j *Job) runAs(step StepID, asked Run) (Result, error) {
+	run, quantities, err := j.fitting(asked)
 	if err != nil {
 		return Result{}, err
 	}
-	if view.Notes, err = j.before(); err != nil {
+	notes, err := j.before()
+	if err != nil {
 		return Result{}, err
 	}
-	run.View, run.Band = view, j.band(plan, view.Expect, view.Band)
+	run.View.Notes = append(notes, run.View.Notes...)
+	if run.Sized != nil {
+		run.Resize = func(by int) (Run, error) {
+			size := math.Round(10*(run.View.Size+sizeStep*float64(by))) / 10
+			if size < sizeLeast-1e-9 || size > sizeMost+1e-9 {
+				return run, refuse(728, run.Plan.Name, fmt.Sprintf("sizes go from %.0f to %.0f %%", 100*sizeLeast, 100*sizeMost), "leave it as it is, or change the envelope in the rig file")
+			}
+			next, q, err := j.prepared(run, size)
+			if err == nil {
+				run, quantities = next, q
+			}
+			return run, err
+		}
+	}
 	r, err := j.h.Run(run)
+	plan := run.Plan
+	r.Size = run.View.Size
 	if err != nil {
 		return r, j.admitError(plan.Name, err)
 	}

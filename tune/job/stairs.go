@@ -70,14 +70,20 @@ func (j *Job) climb(k excite.Known, top float64) ([]stairRun, error) {
 	var runs []stairRun
 	j.Levels, j.rising = nil, nil
 	for _, w := range ways {
-		plan, stairs := excite.Staircase(k, 5, top, w, down)
-		if d := plan.Duration(); d > j.Env.RunTimeMax {
-			plan, stairs = excite.Staircase(k, 3, top, w, down)
+		made := func(size float64) (safety.Plan, []excite.Stair) {
+			// The lowest level is over breakaway whatever the size.
+			low := 1.3 * math.Max(k.StartForward, k.StartReverse)
+			plan, stairs := excite.Staircase(k, 5, math.Max(size*top, math.Min(low, top)), w, down)
+			if d := plan.Duration(); d > j.Env.RunTimeMax {
+				plan, stairs = excite.Staircase(k, 3, math.Max(size*top, math.Min(low, top)), w, down)
+			}
+			return plan, stairs
 		}
-		r, err := j.run(StepStaircase, plan, nil)
+		r, size, err := j.runSized(StepStaircase, func(size float64) safety.Plan { p, _ := made(size); return p }, Run{})
 		if err != nil {
 			return nil, err
 		}
+		_, stairs := made(size)
 		if r.Reason != safety.EndDone {
 			return nil, j.notDone(r)
 		}

@@ -40,15 +40,17 @@ const stepRepeats = 3
 // doStep records small steps about the middle, at loop rate where the board can.
 func (j *Job) doStep() (result, error) {
 	j.Bias, j.Amplitude = j.operating()
-	k, plan := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, stepRepeats) })
+	n := stepRepeats
+	k, plan := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, n) })
 	if k.FallSlope > 0 {
 		// The ways down are slow: as large as the time for a run allows.
 		for plan.Duration() > slowShare*j.Env.RunTimeMax/100 && j.Amplitude > 8*k.SpeedStep/j.Gain {
 			j.Amplitude *= 0.8
-			plan = excite.Step(k, j.Bias, j.Amplitude, stepRepeats)
+			plan = excite.Step(k, j.Bias, j.Amplitude, n)
 		}
 		if plan.Duration() > j.Env.RunTimeMax {
-			plan = excite.Step(k, j.Bias, j.Amplitude, 1)
+			n = 1
+			plan = excite.Step(k, j.Bias, j.Amplitude, n)
 		}
 	}
 	for range 8 { // the largest size that fits
@@ -58,10 +60,18 @@ func (j *Job) doStep() (result, error) {
 		j.Amplitude *= 0.8
 		k, plan = j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, j.Amplitude, stepRepeats) })
 	}
-	tr, file, err := j.record(StepStep, plan)
+	resized := func(size float64) safety.Plan {
+		if size == 1 {
+			return plan
+		}
+		_, p := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, size*j.Amplitude, n) })
+		return p
+	}
+	tr, file, size, err := j.record(StepStep, plan, resized)
 	if err != nil {
 		return "", err
 	}
+	j.Amplitude *= size
 	j.StepTrace, j.StepFile = tr, file
 	return result(fmt.Sprintf("%d samples, steps of ±%.3g V about %.3g V", tr.Len(), j.Amplitude, j.Bias)), nil
 }
@@ -79,9 +89,25 @@ func (j *Job) doSecond() (result, error) {
 		_, plan = j.braked(func(k excite.Known) safety.Plan { return excite.Heights(k, j.Bias, j.Amplitude, heights, j.opt.Seed) })
 		words = fmt.Sprintf("steps of different heights up to ±%.3g V, seed %#x", j.Amplitude, j.opt.Seed)
 	}
-	tr, file, err := j.record(StepSecond, plan)
+	resized := func(size float64) safety.Plan {
+		if size == 1 {
+			return plan
+		}
+		if k.FallSlope > 0 || k.Dips {
+			_, p := j.braked(func(k excite.Known) safety.Plan { return excite.Heights(k, j.Bias, size*j.Amplitude, heights, j.opt.Seed) })
+			return p
+		}
+		_, p := j.braked(func(k excite.Known) safety.Plan {
+			return excite.PRBS(k, j.Bias, size*j.Amplitude, clock, bits, j.opt.Seed, longest)
+		})
+		return p
+	}
+	tr, file, size, err := j.record(StepSecond, plan, resized)
 	if err != nil {
 		return "", err
+	}
+	if size != 1 {
+		words += fmt.Sprintf(", at %.0f %% of that size", 100*size)
 	}
 	j.SecondTrace, j.SecondFile = tr, file
 	return result(fmt.Sprintf("%d samples, %s", tr.Len(), words)), nil
@@ -109,18 +135,19 @@ const captureLeast = 100
 
 // record runs a plan and returns the best trace of it, cut to the part where it
 // drove about its middle.
-func (j *Job) record(step StepID, plan safety.Plan) (*trace.Trace, string, error) {
-	r, err := j.run(step, plan, j.capture(plan))
+// sized makes it in another size; the size that it was run at is returned.
+func (j *Job) record(step StepID, plan safety.Plan, sized func(float64) safety.Plan) (tr *trace.Trace, file string, size float64, err error) {
+	r, size, err := j.runSized(step, sized, Run{Plan: plan, Capture: j.capture(plan)})
 	if err != nil {
-		return nil, "", err
+		return nil, "", size, err
 	}
 	if r.Reason != safety.EndDone {
-		return nil, "", j.notDone(r)
+		return nil, "", size, j.notDone(r)
 	}
 	if r.Capture != nil && r.Capture.Len() > captureLeast {
-		return r.Capture, r.CaptureFile, nil
+		return r.Capture, r.CaptureFile, size, nil
 	}
-	return j.traceOf(plan.Name, r.Samples), r.File, nil
+	return j.traceOf(plan.Name, r.Samples), r.File, size, nil
 }
 
 // capture asks for board memory at loop rate, thinned so that the plan fits. A
