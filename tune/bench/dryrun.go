@@ -139,6 +139,10 @@ func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 			}
 			d.Progress(v.Now(), p.ID, words)
 		}
+		var no *job.RefusedError
+		if p.Optional && errors.As(err, &no) && v.s.core.State().Phase != safety.Tripped {
+			continue // said and kept; nothing else needs it
+		}
 		if err != nil {
 			_ = j.Do(job.StepAsLeft)
 			o, why := outcomeOf(v, p.ID, err)

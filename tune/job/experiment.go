@@ -21,7 +21,8 @@ type ExperimentSettings struct {
 
 // analyses are the pure analyses by their step.
 var analyses = map[StepID]func(ExperimentSettings, []*trace.Trace, *sheet.ExperimentRecord) error{
-	StepCoast: analyseCoast, StepRelay: analyseRelay, StepFrequency: analyseFrequency,
+	StepCoast: analyseCoast, StepRelay: analyseRelay, StepFrequency: analyseFrequency, StepTiming: analyseTiming,
+	StepResistance: analyseResistance, StepReversal: analyseReversal, StepWarmUp: analyseWarmUp,
 }
 
 // Analyse computes what an experiment shows from its traces.

@@ -1,0 +1,117 @@
+package bench
+
+import (
+	"errors"
+	"math"
+	"path/filepath"
+	"testing"
+	"time"
+
+	"gainwright/link/simrig"
+	"gainwright/tune/job"
+	"gainwright/tune/sheet"
+)
+
+// everything does a whole job with all optional steps and returns the record.
+func everything(t *testing.T, cfg simrig.Config) (Report, *sheet.Reader) {
+	t.Helper()
+	d := DryRun{Config: cfg, Seed: 1, Dir: filepath.Join(t.TempDir(), "sheet"), Program: "test", Start: time.Date(2026, 1, 2, 8, 0, 0, 0, time.UTC)}
+	for _, p := range job.Path {
+		if p.Optional {
+			d.Also = append(d.Also, p.ID)
+		}
+	}
+	rep, err := d.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, problems := sheet.Open(d.Dir)
+	if len(problems) > 0 {
+		t.Fatal(problems)
+	}
+	return rep, r
+}
+
+// found reads the numbers of an experiment from a record, NaN where there is none.
+func found(t *testing.T, r *sheet.Reader, step job.StepID, name string) (v, sd float64) {
+	t.Helper()
+	l, ok := r.Last(sheet.KindExperiment, string(step))
+	if !ok {
+		t.Fatalf("no experiment %s", step)
+	}
+	var x sheet.ExperimentRecord
+	if err := r.JSON(l, &x); err != nil {
+		t.Fatal(err)
+	}
+	for _, q := range x.Params {
+		if q.Name == name && q.Value != nil {
+			if q.PlusMinus != nil {
+				sd = *q.PlusMinus / 1.96
+			}
+			return *q.Value, sd
+		}
+	}
+	t.Fatalf("%s has no %s", step, name)
+	return 0, 0
+}
+
+// Every optional experiment is done on a bench rig and finds the rig's own numbers,
+// which are those of its file; and all of it comes out again from the record, bit for
+// bit.
+func TestOptionalExperimentsFindTheRigsOwnNumbers(t *testing.T) {
+	cfg, err := simrig.Load(rigs + "/benchtop.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	rep, r := everything(t, cfg)
+	if rep.Outcome != Accepted || rep.Violations != 0 {
+		t.Fatalf("%s: %s, %d violations", rep.Outcome, rep.Reason, rep.Violations)
+	}
+	m, inertia := cfg.Motor, cfg.Motor.Inertia+cfg.Load.Inertia
+	rev := cfg.Friction.Reverse
+	gain := m.K / (m.K*m.K + m.Ohms*cfg.Friction.Forward.Viscous)
+	tau := inertia * m.Ohms / (m.K*m.K + m.Ohms*cfg.Friction.Forward.Viscous)
+	for _, c := range []struct {
+		step  job.StepID
+		name  string
+		want  float64
+		share float64 // of want that it may be off
+	}{
+		{job.StepTiming, "loop period, quick telemetry", float64(cfg.Board.LoopUS) * 1e-6, 1e-6},
+		{job.StepTiming, "bus at rest", cfg.Supply.Volts, 0.005},
+		{job.StepResistance, "resistance at 25 °C", m.Ohms, 0.03},
+		{job.StepCoast, "dry friction over inertia forward", cfg.Friction.Forward.Coulomb / inertia, 0.03},
+		{job.StepCoast, "dry friction over inertia reverse", rev.Coulomb / inertia, 0.03},
+		{job.StepCoast, "viscous friction over inertia forward", cfg.Friction.Forward.Viscous / inertia, 0.25},
+		{job.StepRelay, "gain", gain, 0.03},
+		{job.StepRelay, "time constant", tau, 0.05},
+		{job.StepFrequency, "gain", gain, 0.03},
+		{job.StepFrequency, "time constant", tau, 0.05},
+	} {
+		if got, sd := found(t, r, c.step, c.name); !(math.Abs(got/c.want-1) <= c.share) {
+			t.Errorf("%s: %s is %.4g ± %.2g, the rig's own is %.4g", c.step, c.name, got, 1.96*sd, c.want)
+		}
+	}
+	if lost, sd := found(t, r, job.StepReversal, "lost motion"); math.Abs(lost) > 4*sd {
+		t.Errorf("lost motion %.3g ± %.2g rad of a rig without any", lost, 1.96*sd)
+	}
+	again, err := job.Recompute(r)
+	if err != nil || !again.Identical {
+		t.Errorf("recomputed: %v, differences %v", err, again.Differences)
+	}
+}
+
+// A board without a current sensor refuses what needs one, in words, and the job
+// goes on.
+func TestExperimentsThatCannotBeDone(t *testing.T) {
+	_, j := onBench(t, "geared", job.StepFit)
+	for _, id := range []job.StepID{job.StepResistance, job.StepReversal} {
+		var r *job.RefusedError
+		if err := j.Do(id); !errors.As(err, &r) || r.Cause == "" || r.Remedy == "" {
+			t.Errorf("%s: %v", id, err)
+		}
+	}
+	if err := j.Do(job.StepDesign); err != nil {
+		t.Errorf("afterwards: %v", err)
+	}
+}
