@@ -30,8 +30,9 @@ type LookAhead struct {
 	DeadTime time.Duration
 
 	// What the motor was measured to have; used where the envelope has none.
-	Resistance float64 // Ω
-	Ke         float64 // V·s/rad
+	Resistance float64  // Ω
+	Ke         float64  // V·s/rad
+	StallVolts si.Volts // drive above which it was seen to turn; used where it is below the envelope's. 0: not known
 }
 
 // Envelope holds the hard limits of one rig and the timing of one session. The

@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"gainwright/protocol"
+	"gainwright/protocol/si"
 )
 
 // Judging constants. None of them is a limit of the rig.
@@ -15,6 +16,7 @@ const (
 	slipTime    = 300 * time.Millisecond // for this long
 	runawayGap  = 0.35                   // or by this share of the speed limit
 	runawayTime = 40 * time.Millisecond  // for this long: a loop that sees too little speed runs away
+	unseenTime  = 40 * time.Millisecond  // without a count, beside a speed by volts: none comes
 	looseRatio  = 2.5                    // acceleration against the model's
 	looseTime   = 30 * time.Millisecond
 	aheadFrom   = 0.7                   // share of the ceiling from which to look ahead
@@ -95,6 +97,15 @@ func (j *judgeState) lasts(cond bool, on *bool, from *time.Duration, d time.Dura
 		*on, *from = true, j.clock
 	}
 	return j.clock-*from >= d
+}
+
+// stallVolts is the drive above which the shaft is expected to turn: what was seen
+// only lowers it.
+func (env *Envelope) stallVolts() si.Volts {
+	if v := env.Look.StallVolts; v > 0 && v < env.StallVolts {
+		return v
+	}
+	return env.StallVolts
 }
 
 // heatMax is the heat budget in A²s.
@@ -250,15 +261,15 @@ func (m *machine) judgeCounts(s protocol.Sample) bool {
 		return false
 	}
 	j := &m.judge
-	driven := math.Abs(float64(s.Volts)) > float64(m.env.StallVolts)
+	driven := math.Abs(float64(s.Volts)) > float64(m.env.stallVolts())
 	still := driven && j.clock-j.changedAt > 0
 	if !j.lasts(still, &j.stalling, &j.stallFrom, m.env.StallTime) {
 		return false
 	}
 	detail := fmt.Sprintf("%.4g V for %d ms", s.Volts, (j.clock - j.stallFrom).Milliseconds())
 	code := CodeStallOrDead
-	if s.Has&protocol.HasCurrent != 0 && m.env.Resistance > 0 {
-		locked := math.Abs(float64(s.Volts)) / m.env.Resistance
+	if ohms, _ := m.env.winding(); s.Has&protocol.HasCurrent != 0 && ohms > 0 {
+		locked := math.Abs(float64(s.Volts)) / ohms
 		i := math.Abs(float64(s.Current))
 		detail += fmt.Sprintf(", %.3g A", i)
 		switch {
@@ -315,7 +326,11 @@ func (m *machine) judgeSlip(s protocol.Sample) bool {
 		m.trip(CodeWrongWay, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
 		return true
 	}
-	m.trip(CodeSlip, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
+	code := CodeSlip
+	if j.counted && j.clock-j.changedAt >= unseenTime {
+		code = CodeNoCounts // not one count: it turns unseen
+	}
+	m.trip(code, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
 	return true
 }
 

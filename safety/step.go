@@ -135,7 +135,7 @@ func (m *machine) handle(e Event) {
 		}
 	case LeftForecast:
 		if m.Phase == Running && !m.Silent {
-			m.trip(CodeForecast, e.Words)
+			m.leftForecast(e.Words)
 		}
 	case ArmRequest, ClearArea, Start, Disarm, Acknowledge, Reset:
 		// What a person asks for before a run is an unlisted key once it goes. (S2)

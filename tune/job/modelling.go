@@ -4,7 +4,7 @@ import (
 	"fmt"
 	"math"
 
-	"gainwright/safety"
+	"gainwright/protocol/si"
 	"gainwright/tune/identify"
 	"gainwright/tune/model"
 	"gainwright/tune/sheet"
@@ -115,9 +115,19 @@ func (j *Job) lookAhead(f *identify.Fit) {
 		return
 	}
 	j.Gain, j.Tau = gain, tau
-	j.Env.Look = safety.LookAhead{Gain: gain, Tau: seconds(tau), DeadTime: seconds(f.Model.DeadTime)}
+	j.Env.Look.Gain, j.Env.Look.Tau, j.Env.Look.DeadTime = gain, seconds(tau), seconds(f.Model.DeadTime)
+	j.lookMotor()
+}
+
+// lookMotor gives the limiter what the motor was seen to be: from which drive on it
+// turns, twice its breakaway, and its winding, by which causes are told apart. It
+// only tightens.
+func (j *Job) lookMotor() {
 	if e := j.electric; e != nil && e.R > 0 && e.Ke > 0 {
 		j.Env.Look.Resistance, j.Env.Look.Ke = e.R, e.Ke
+	}
+	for _, b := range append(append([]float64(nil), j.BreakForward...), j.BreakReverse...) {
+		j.Env.Look.StallVolts = max(j.Env.Look.StallVolts, si.Volts(2*b))
 	}
 	j.h.Look(j.Env.Look)
 }

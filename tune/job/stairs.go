@@ -49,6 +49,7 @@ func (j *Job) doStaircase() (result, error) {
 		if j.electric != nil {
 			j.electric.running(j.Levels)
 		}
+		j.lookMotor()
 		words, err := j.keepStairs(static, runs[0].Result)
 		return words, errors.Join(err, j.gravity(runs), j.lostMotion())
 	}
