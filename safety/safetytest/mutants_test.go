@@ -89,6 +89,16 @@ var mutants = []mutant{
 	{"S12", "admit.go", "		if !(l.v > 0) || math.IsInf(l.v, 0) {\n			return refused(0, \"the \"", "		if l.v < 0 || math.IsInf(l.v, 0) {\n			return refused(0, \"the \"", step, "TestEnvelopeWithAHoleAdmitsNothing"},
 	{"S13", "stop.go", "m.Now-m.ramp.at > RampAnswer:", "m.Now-m.ramp.at > time.Second:", step, "TestARampBecomesACut"},
 	{"S13", "stop.go", "now > 0.95*m.ramp.speed {", "now > 9.5*m.ramp.speed {", step, "TestARampBecomesACut"},
+	{"S16", "enabling.go", "if p, not := m.notEnabled(); not && m.Phase.ArmHeld() {", "if p, not := m.notEnabled(); not && m.Phase == Running {", step, "TestEnablingSwitchStopsAndDisarms"},
+	{"S16", "enabling.go", "	case free:\n		return Released\n", "	case free:\n		return HeldMiddle\n", step, "TestEnablingSwitchHasThreePositions"},
+	{"S16", "enabling.go", "	case in != \"\":\n		m.trip(CodeInterlock, in)\n", "	case false && in != \"\":\n		m.trip(CodeInterlock, in)\n", step, "TestTheBoardsWordOnTheEnablingSwitch"},
+	{"S16", "stop.go", "if at < m.stoppingAt || m.whichInput {", "if at < m.stoppingAt {", step, "TestTheBoardsWordOnTheEnablingSwitch"},
+	{"S16", "arm.go", "if p, not := m.notEnabled(); not {", "if p, not := m.notEnabled(); false && not {", step, "TestEnablingSwitchStopsAndDisarms"},
+	{"S16", "inch.go", "if v := math.Abs(float64(m.Last.Volts)); v > voltsOffset {", "if v := math.Abs(float64(m.Last.Volts)); v > 1e6 {", step, "TestAnInchEndsAtItsAngle"},
+	{"S16", "inch.go", "if driven > env.InchTime {", "if driven > 2*env.InchTime {", step, "TestInchIsAdmittedInsideItsBounds"},
+	{"S16", "inch.go", "func (m *machine) betweenInches() bool { return m.Phase == Armed && m.Inches > 0 }", "func (m *machine) betweenInches() bool { return false }", world, worlds},
+	{"S16", "step.go", "if m.Phase == Running && !m.Silent && !m.Plan.plan.Inch {", "if m.Phase == Running && !m.Silent {", world, worlds},
+	{"S16", "arm.go", "		return ticked | SetOf(CheckStopKey)\n", "		return SetOf(CheckStopKey)\n", step, "TestChecklistComesBeforeAnythingMoves"},
 }
 
 // TestMutantsFitTheCode shows that every mutant still changes one place of the
