@@ -31,7 +31,7 @@ func (m *machine) tellApart() (Code, string) {
 		}
 		return CodeStallOrDead, detail
 	}
-	if measured && ke > 0 {
+	if measured && ke > 0 && !m.freewheels(s, ke) {
 		byVolts := (v - float64(s.Current)*ohms) / ke
 		detail := fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", w, byVolts)
 		switch {

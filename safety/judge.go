@@ -312,7 +312,7 @@ func (env *Envelope) winding() (ohms, ke float64) {
 func (m *machine) judgeSlip(s protocol.Sample) bool {
 	j := &m.judge
 	ohms, ke := m.env.winding()
-	if s.Has&protocol.HasCurrent == 0 || ke <= 0 || ohms <= 0 || m.Plan.plan.Locked {
+	if s.Has&protocol.HasCurrent == 0 || ke <= 0 || ohms <= 0 || m.Plan.plan.Locked || m.freewheels(s, ke) {
 		return false
 	}
 	byVolts := (float64(s.Volts) - float64(s.Current)*ohms) / ke
@@ -332,6 +332,12 @@ func (m *machine) judgeSlip(s protocol.Sample) bool {
 	}
 	m.trip(code, fmt.Sprintf("encoder says %.4g rad/s, volts and current say %.4g", s.Speed, byVolts))
 	return true
+}
+
+// freewheels reports whether a drive that cannot brake lets go of a shaft that is
+// faster than its volts: then they say nothing of its speed.
+func (m *machine) freewheels(s protocol.Sample, ke float64) bool {
+	return !m.env.Brake && math.Abs(float64(s.Speed))*ke > math.Abs(float64(s.Volts))
 }
 
 // judgeLoose compares the acceleration with what the model allows for the volts

@@ -40,7 +40,7 @@ func TestCausesAreToldApart(t *testing.T) {
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			v, j, _ := interlocked(t, job.StepFound, nil) // the model is known
-			v.op.attends = true // frames reach the screen as long as it says so
+			v.op.attends = true                           // frames reach the screen as long as it says so
 			did := false
 			var ended safety.RunEnded
 			v.each = func() {

@@ -145,6 +145,9 @@ func (j *Job) runAs(step StepID, asked Run) (Result, error) {
 func (j *Job) admitError(name string, err error) error {
 	var l *safety.LimitError
 	if errors.As(err, &l) {
+		if errors.Is(err, safety.ErrRefused) && l.Remedy != "" {
+			return refuse(720, name+" refused", l.What, l.Remedy)
+		}
 		return refuse(720, name+" refused", err.Error(), "make the run smaller, or change the limit in the rig file with a reason")
 	}
 	return err
