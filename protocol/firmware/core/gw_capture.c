@@ -187,16 +187,16 @@ static void say_crc(uint16_t n)
 /* gw_cap works off "cap". */
 void gw_cap(uint16_t n, char **f, uint8_t nf)
 {
-	uint32_t what = nf < 3 ? 0 : gw_word(f[2]);
+	uint8_t what = nf < 3 ? (uint8_t)W_NONE : gw_word(f[2]);
 	uint16_t a, b, c;
 
-	if (what == W5('s', 't', 'a', 't', 'e') && nf == 3) {
+	if (what == W_STATE && nf == 3) {
 		say_state(n);
-	} else if (what == W3('a', 'r', 'm') && nf == 6 && gw_uint16(f[3], &a) && gw_uint16(f[4], &b) && gw_uint16(f[5], &c)) {
+	} else if (what == W_ARM && nf == 6 && gw_uint16(f[3], &a) && gw_uint16(f[4], &b) && gw_uint16(f[5], &c)) {
 		begin(n, a, b, c, 0);
-	} else if (what == W3('n', 'o', 'w') && nf == 5 && gw_uint16(f[3], &a) && gw_uint16(f[4], &b)) {
+	} else if (what == W_NOW && nf == 5 && gw_uint16(f[3], &a) && gw_uint16(f[4], &b)) {
 		begin(n, a, 0, b, 1);
-	} else if ((what == W3('g', 'e', 't') && nf == 4 && gw_uint16(f[3], &a)) || (what == W3('c', 'r', 'c') && nf == 3)) {
+	} else if ((what == W_GET && nf == 4 && gw_uint16(f[3], &a)) || (what == W_CRC && nf == 3)) {
 		if (cap.state != FULL)
 			gw_no(n, REF_STATE);
 		else if (nf == 4)

@@ -8,6 +8,7 @@
 #define LSB_RAD (6.28318530717958648f / (GW_TURN_COUNTS) / (1e-6f * GW_WIN * GW_LOOP_US) / (1 << GW_SPEED_SHIFT))
 
 const float gw_speed_lsb_mrad[] GW_FLASH = {LSB_RAD * 1000.0f};
+const float gw_lsb_a_mrad[] GW_FLASH = {0.001f / LSB_RAD};
 
 static const char text[] GW_FLASH =
 	"proto 1.0\n"
@@ -21,27 +22,15 @@ static const char text[] GW_FLASH =
 #if GW_PID
 	"law pid\n"
 	"deriv measurement\n"
-	"gains kp ki kd tf b kv ks\n"
 #else
 	"law pi\n"
-	"gains kp ki b kv ks\n"
 #endif
+	"gains%g\n"
 	"form parallel\n"
 	"disc backward-euler\n"
 	"windup clamp\n"
 	"num float\n"
-	"limits vmax wmax"
-#if GW_HAS_CURRENT
-	" imax"
-#endif
-#if GW_HAS_BUS
-	" bmax bmin"
-#endif
-	" amax turns stall wrong nocnt vbreak"
-#if GW_HAS_CURRENT
-	" heat"
-#endif
-	" run beat slew\n"
+	"limits%l\n"
 	"input " GW_INPUT "\n"
 #if GW_HAS_BUS
 	"bus measured %f\n"
@@ -93,6 +82,10 @@ static void put_special(char what, uint8_t *value)
 		gw_put_hex(gw_port_serial(), 8);
 	} else if (what == 'b') {
 		gw_put_boot();
+	} else if (what == 'g') {
+		gw_put_all(gw_gain_names);
+	} else if (what == 'l') {
+		gw_put_all(gw_lim_names);
 	} else {
 		gw_put_hex(gw_float_bits(&values[*value]), 8);
 		(*value)++;

@@ -137,7 +137,7 @@ uint16_t gw_set_crc(const uint32_t *v, uint8_t n);
 uint8_t gw_int32(const char *s, int32_t *v);
 uint8_t gw_uint16(const char *s, uint16_t *v);
 uint8_t gw_hex(const char *s, uint8_t digits, uint32_t *v);
-uint32_t gw_word(const char *s);
+uint8_t gw_word(const char *s);
 uint8_t gw_room(uint8_t n);
 void gw_tx_reset(void);
 void gw_begin(void);
@@ -147,6 +147,7 @@ void gw_end_hex(void);
 void gw_put(char c);
 void gw_puts(const char *flash);
 void gw_put_at(const char *flash, uint8_t index);
+void gw_put_all(const char *flash);
 void gw_put_hex(uint32_t v, uint8_t digits);
 void gw_put_count(uint32_t v);
 void gw_put_u(uint32_t v);
@@ -156,11 +157,9 @@ void gw_no(uint16_t n, uint8_t code);
 void gw_again(void);
 void gw_blank(void);
 
-/* A word of up to six small letters as a number, as gw_word reads it. */
-#define W3(a, b, c) (((uint32_t)((a) & 31) << 10) | ((uint32_t)((b) & 31) << 5) | (uint32_t)((c) & 31))
-#define W2(a, b) W3(0, a, b)
-#define W4(a, b, c, d) ((W3(a, b, c) << 5) | (uint32_t)((d) & 31))
-#define W5(a, b, c, d, e) ((W4(a, b, c, d) << 5) | (uint32_t)((e) & 31))
+/* The words of requests, in the order of the list in gw_text.c. */
+enum { W_NONE, W_ID, W_TEL, W_STOP, W_RATE, W_NONCE, W_ARM, W_DIS, W_RAMP, W_RESET, W_LIM, W_GAIN, W_LOG, W_IN, W_CAP,
+	W_DV, W_DS, W_HB, W_GET, W_SET, W_USE, W_CRC, W_STORE, W_RUN, W_STATE, W_NOW };
 
 /* gw_scale.c */
 #if GW_FIXED
@@ -169,18 +168,18 @@ int64_t gw_times(int32_t a, struct gw_scale k);
 int32_t gw_clip(int64_t v);
 #endif
 void gw_copy(void *to, const void *from, uint8_t n);
-/* a times, and divided by, a binary32; and a limit as an integer in parts of
+/* a times a binary32; and a limit as an integer in parts of
  * its unit, which is what the loop compares. All round to nearest and hold the
  * result inside 31 bits. */
 int32_t gw_mul(int32_t a, uint32_t bits);
-int32_t gw_per(int32_t a, uint32_t bits);
 uint32_t gw_scaled(uint32_t bits, uint32_t by);
+void gw_from_flash(void *to, const void *flash, uint8_t n);
 uint32_t gw_float_bits(const float *flash);
 
 /* gw_run.c. Those with _locked are called with the lock held. */
 void gw_stop_locked(uint8_t cause, uint32_t seen);
 void gw_log_init(uint8_t cause);
-void gw_motion(uint32_t verb, char **f, uint8_t n);
+void gw_motion(uint8_t verb, char **f, uint8_t n);
 void gw_nonce(uint16_t n);
 void gw_arm(uint16_t n, char **f, uint8_t nf);
 void gw_disarm(uint16_t n);
@@ -200,6 +199,7 @@ void gw_law_reset(void);
 int32_t gw_law_step(int32_t set_mrad, int32_t lo_mv, int32_t hi_mv, uint8_t *sat);
 
 /* gw_sets.c, gw_store.c */
+extern const char gw_lim_names[], gw_gain_names[];
 void gw_sets_init(void);
 void gw_limit(uint16_t n, char **f, uint8_t nf);
 void gw_gain(uint16_t n, char **f, uint8_t nf);
@@ -218,7 +218,7 @@ void gw_rate(uint16_t n, char **f, uint8_t nf);
 /* gw_id.c */
 void gw_id_poll(void);
 void gw_put_boot(void);
-extern const float gw_speed_lsb_mrad[];
+extern const float gw_speed_lsb_mrad[], gw_lsb_a_mrad[];
 
 /* gw_capture.c */
 #if GW_CAPTURE

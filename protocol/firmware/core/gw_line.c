@@ -114,7 +114,7 @@ static void tel_poll(void)
 }
 
 /* request works off one numbered request whose line was good. */
-static void request(uint32_t verb, uint16_t n, uint16_t crc, char **f, uint8_t nf)
+static void request(uint8_t verb, uint16_t n, uint16_t crc, char **f, uint8_t nf)
 {
 	uint8_t again = g.answered && n == g.last_n && crc == g.last_crc;
 
@@ -122,13 +122,13 @@ static void request(uint32_t verb, uint16_t n, uint16_t crc, char **f, uint8_t n
 	g.last_n = n;
 	g.last_crc = crc;
 	switch (verb) { /* these may be done again at any time */
-	case W2('i', 'd'):
+	case W_ID:
 		job_start(JOB_ID, n);
 		return;
-	case W3('t', 'e', 'l'):
+	case W_TEL:
 		job_start(JOB_TEL, n);
 		return;
-	case W4('s', 't', 'o', 'p'):
+	case W_STOP:
 		stop_line();
 		gw_ok(n);
 		gw_end();
@@ -141,40 +141,40 @@ static void request(uint32_t verb, uint16_t n, uint16_t crc, char **f, uint8_t n
 		return;
 	}
 	switch (verb) {
-	case W4('r', 'a', 't', 'e'):
+	case W_RATE:
 		gw_rate(n, f, nf);
 		break;
-	case W5('n', 'o', 'n', 'c', 'e'):
+	case W_NONCE:
 		gw_nonce(n);
 		break;
-	case W3('a', 'r', 'm'):
+	case W_ARM:
 		gw_arm(n, f, nf);
 		break;
-	case W3('d', 'i', 's'):
+	case W_DIS:
 		gw_disarm(n);
 		break;
-	case W4('r', 'a', 'm', 'p'):
+	case W_RAMP:
 		gw_ramp(n, f, nf);
 		break;
-	case W5('r', 'e', 's', 'e', 't'):
+	case W_RESET:
 		gw_reset(n);
 		break;
-	case W3('l', 'i', 'm'):
+	case W_LIM:
 		gw_limit(n, f, nf);
 		break;
-	case W4('g', 'a', 'i', 'n'):
+	case W_GAIN:
 		gw_gain(n, f, nf);
 		break;
-	case W3('l', 'o', 'g'):
+	case W_LOG:
 		gw_log(n, f, nf);
 		break;
-	case W2('i', 'n'):
+	case W_IN:
 		gw_ok(n);
 		gw_put(' ');
 		gw_put_hex(gw_port_inputs(), 4);
 		gw_end();
 		break;
-	case W3('c', 'a', 'p'):
+	case W_CAP:
 #if GW_CAPTURE
 		gw_cap(n, f, nf);
 #else
@@ -209,14 +209,14 @@ static uint8_t split(char *s, char **f)
 static uint8_t bare(void)
 {
 	switch (gw_word(g.line)) {
-	case W4('s', 't', 'o', 'p'):
+	case W_STOP:
 		stop_line();
 		return 1;
-	case W2('i', 'd'):
+	case W_ID:
 		if (g.job == JOB_NONE)
 			job_start(JOB_ID, 0);
 		return 1;
-	case W3('t', 'e', 'l'):
+	case W_TEL:
 		if (g.job == JOB_NONE)
 			job_start(JOB_TEL, 0);
 		return 1;
@@ -232,7 +232,8 @@ static uint8_t work(void)
 	char *f[FIELDS];
 	uint8_t nf, body, stop;
 	uint16_t crc = 0xFFFF, n;
-	uint32_t sent, verb;
+	uint32_t sent;
+	uint8_t verb;
 
 	if (g.n == 0 && !g.over && !g.dirty)
 		return 1;

@@ -215,18 +215,18 @@ static void drive_locked(uint8_t state, int32_t value, uint16_t k, uint32_t now)
 
 /* gw_motion takes hb, dv and ds. Whatever is wrong with one, it is as if it had
  * not come (P6.3). */
-void gw_motion(uint32_t verb, char **f, uint8_t nf)
+void gw_motion(uint8_t verb, char **f, uint8_t nf)
 {
 	uint8_t state;
 	uint16_t k;
 	uint32_t token, now = gw_port_us();
 	int32_t value = 0;
 
-	if (verb == W2('d', 'v'))
+	if (verb == W_DV)
 		state = GW_DRIVING;
-	else if (verb == W2('d', 's'))
+	else if (verb == W_DS)
 		state = GW_LOOPING;
-	else if (verb == W2('h', 'b'))
+	else if (verb == W_HB)
 		state = GW_OFF_STATE;
 	else
 		return;

@@ -65,15 +65,6 @@ uint32_t gw_scaled(uint32_t bits, uint32_t by)
 	return p > 0x7FFFFFFFu ? 0x7FFFFFFFu : (uint32_t)p;
 }
 
-/* gw_per returns a divided by a positive value, rounded. */
-int32_t gw_per(int32_t a, uint32_t bits)
-{
-	struct gw_scale k = gw_scale_of(bits);
-	int64_t v = ((int64_t)a << k.s) / (k.m / 2); /* twice the quotient */
-
-	return gw_clip((v < 0 ? v - 1 : v + 1) / 2);
-}
-
 #else
 
 static float value(uint32_t bits)
@@ -104,21 +95,23 @@ uint32_t gw_scaled(uint32_t bits, uint32_t by)
 	return (uint32_t)held(value(bits) * (float)by);
 }
 
-int32_t gw_per(int32_t a, uint32_t bits)
-{
-	return held((float)a / value(bits));
-}
-
 #endif
+
+/* gw_from_flash copies constants, which may lie in another memory. */
+void gw_from_flash(void *to, const void *flash, uint8_t n)
+{
+	uint8_t *t = to;
+	const uint8_t *f = flash;
+
+	for (; n > 0; n--, f++)
+		*t++ = GW_FLASH_BYTE(f);
+}
 
 /* gw_float_bits reads a constant from flash as its 32 bits. */
 uint32_t gw_float_bits(const float *flash)
 {
-	uint8_t b[4];
 	uint32_t u;
 
-	for (uint8_t i = 0; i < 4; i++)
-		b[i] = GW_FLASH_BYTE((const uint8_t *)flash + i);
-	gw_copy(&u, b, 4);
+	gw_from_flash(&u, flash, 4);
 	return u;
 }

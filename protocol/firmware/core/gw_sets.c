@@ -4,7 +4,7 @@
 #define POSITIVE 1u /* 0 is refused */
 #define UNJUDGED 2u /* 0 means not judged, and is the value after a start */
 
-static const char lim_names[] GW_FLASH = "vmax|wmax|"
+const char gw_lim_names[] GW_FLASH = "vmax|wmax|"
 #if GW_HAS_CURRENT
 	"imax|"
 #endif
@@ -17,7 +17,7 @@ static const char lim_names[] GW_FLASH = "vmax|wmax|"
 #endif
 	"run|beat|slew";
 
-static const char gain_names[] GW_FLASH = "kp|ki|"
+const char gw_gain_names[] GW_FLASH = "kp|ki|"
 #if GW_PID
 	"kd|tf|"
 #endif
@@ -54,10 +54,8 @@ static const struct row {
 static struct row row_of(uint8_t slot)
 {
 	struct row r;
-	uint8_t *to = (uint8_t *)&r;
 
-	for (uint8_t i = 0; i < sizeof r; i++)
-		to[i] = GW_FLASH_BYTE((const uint8_t *)&rows[slot] + i);
+	gw_from_flash(&r, &rows[slot], sizeof r);
 	return r;
 }
 
@@ -173,19 +171,20 @@ static void limit_use(uint16_t n, uint32_t crc)
 /* gw_limit works off "lim": P7.2, P7.3. */
 void gw_limit(uint16_t n, char **f, uint8_t nf)
 {
-	uint32_t what = nf < 3 ? 0 : gw_word(f[2]), v;
+	uint32_t v;
+	uint8_t what = nf < 3 ? (uint8_t)W_NONE : gw_word(f[2]);
 	uint16_t slot;
 	uint8_t no;
 
-	if (what == W3('c', 'r', 'c') && nf == 3) {
+	if (what == W_CRC && nf == 3) {
 		answer_crc(n, gw_set_crc(g.lim_held, LIM_N), LIM_N);
-	} else if (what == W3('u', 's', 'e') && nf == 4 && gw_hex(f[3], 4, &v)) {
+	} else if (what == W_USE && nf == 4 && gw_hex(f[3], 4, &v)) {
 		limit_use(n, v);
 	} else if (nf < 4 || !gw_uint16(f[3], &slot) || slot >= LIM_N) {
 		gw_no(n, REF_ARG);
-	} else if (what == W3('g', 'e', 't') && nf == 4) {
-		answer_value(n, slot, lim_names, g.lim_held[slot]);
-	} else if (what == W3('s', 'e', 't') && nf == 5 && gw_hex(f[4], 8, &v)) {
+	} else if (what == W_GET && nf == 4) {
+		answer_value(n, slot, gw_lim_names, g.lim_held[slot]);
+	} else if (what == W_SET && nf == 5 && gw_hex(f[4], 8, &v)) {
 		no = g.state != GW_OFF_STATE ? (uint8_t)REF_STATE : limit_refusal(slot, v);
 		if (no != 0) {
 			gw_no(n, no);
@@ -263,7 +262,8 @@ static void gain_store(uint16_t n, uint32_t crc)
 /* gw_gain works off "gain": P8.3, P8.4. */
 void gw_gain(uint16_t n, char **f, uint8_t nf)
 {
-	uint32_t what = nf < 4 ? 0 : gw_word(f[2]), where, v;
+	uint32_t v;
+	uint8_t what = nf < 4 ? (uint8_t)W_NONE : gw_word(f[2]), where;
 	uint32_t stored[G_N];
 	const uint32_t *set = g.gain_run;
 	uint16_t slot, writes;
@@ -272,26 +272,26 @@ void gw_gain(uint16_t n, char **f, uint8_t nf)
 		gw_no(n, REF_ARG);
 		return;
 	}
-	if (what == W3('g', 'e', 't') || what == W3('c', 'r', 'c')) {
+	if (what == W_GET || what == W_CRC) {
 		where = gw_word(f[3]);
-		if (where == W5('s', 't', 'o', 'r', 'e')) {
+		if (where == W_STORE) {
 			gw_store_load(stored, &writes);
 			set = stored;
-		} else if (where != W3('r', 'u', 'n')) {
+		} else if (where != W_RUN) {
 			gw_no(n, REF_ARG);
 			return;
 		}
-		if (what == W3('c', 'r', 'c') && nf == 4)
+		if (what == W_CRC && nf == 4)
 			answer_crc(n, gw_set_crc(set, G_N), G_N);
-		else if (what == W3('g', 'e', 't') && nf == 5 && gw_uint16(f[4], &slot) && slot < G_N)
-			answer_value(n, slot, gain_names, set[slot]);
+		else if (what == W_GET && nf == 5 && gw_uint16(f[4], &slot) && slot < G_N)
+			answer_value(n, slot, gw_gain_names, set[slot]);
 		else
 			gw_no(n, REF_ARG);
-	} else if (what == W3('s', 'e', 't') && nf == 5 && gw_uint16(f[3], &slot) && slot < G_N && gw_hex(f[4], 8, &v)) {
+	} else if (what == W_SET && nf == 5 && gw_uint16(f[3], &slot) && slot < G_N && gw_hex(f[4], 8, &v)) {
 		gain_set(n, slot, v);
-	} else if (what == W3('u', 's', 'e') && nf == 4 && gw_hex(f[3], 4, &v)) {
+	} else if (what == W_USE && nf == 4 && gw_hex(f[3], 4, &v)) {
 		gain_use(n, v);
-	} else if (what == W5('s', 't', 'o', 'r', 'e') && nf == 4 && gw_hex(f[3], 4, &v)) {
+	} else if (what == W_STORE && nf == 4 && gw_hex(f[3], 4, &v)) {
 		gain_store(n, v);
 	} else {
 		gw_no(n, REF_ARG);

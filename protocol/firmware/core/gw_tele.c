@@ -42,7 +42,7 @@ void gw_snap_locked(struct gw_snap *s)
 #endif
 	s->set = 0;
 	if (g.state == GW_LOOPING || (g.state == GW_RAMPING && g.ramp_from == GW_LOOPING))
-		s->set = held16(gw_per(g.target, gw_float_bits(gw_speed_lsb_mrad)));
+		s->set = held16(gw_mul(g.target, gw_float_bits(gw_lsb_a_mrad)));
 	s->counts = g.ring[g.ring_at];
 	g.sat = 0;
 	g.volts_sum = 0;

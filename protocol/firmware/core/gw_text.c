@@ -38,7 +38,7 @@ uint8_t gw_int32(const char *s, int32_t *v)
 {
 	uint8_t neg = *s == '-';
 	uint8_t n = 0;
-	uint32_t u = 0;
+	uint32_t u = 0, was;
 
 	s += neg;
 	if (*s == '0' && (s[1] != 0 || neg))
@@ -48,7 +48,10 @@ uint8_t gw_int32(const char *s, int32_t *v)
 
 		if (d > 9 || ++n > 10)
 			return 0;
-		u = u > (0x7FFFFFFFu - d) / 10u ? 0x7FFFFFFFu : u * 10u + d;
+		was = u;
+		u = u * 10u + d;
+		if (was > 214748364u || u > 0x7FFFFFFFu)
+			u = 0x7FFFFFFFu;
 	}
 	*v = neg ? -(int32_t)u : (int32_t)u;
 	return n > 0;
@@ -84,18 +87,27 @@ uint8_t gw_hex(const char *s, uint8_t digits, uint32_t *v)
 	return *s == 0;
 }
 
-/* gw_word turns a word of one to six small letters into a number, 0 if it is no
- * such word. */
-uint32_t gw_word(const char *s)
-{
-	uint32_t w = 0;
+static const char words[] GW_FLASH = "id|tel|stop|rate|nonce|arm|dis|ramp|reset|lim|gain|log|in|cap|dv|ds|hb|"
+	"get|set|use|crc|store|run|state|now|";
 
-	for (uint8_t n = 0; *s != 0; s++) {
-		if (*s < 'a' || *s > 'z' || ++n > 6)
-			return 0;
-		w = (w << 5) | (uint32_t)(*s & 31);
+/* gw_word is the number of a word in that list, W_NONE where it is not there. */
+uint8_t gw_word(const char *s)
+{
+	const char *p = s, *list = words;
+	uint8_t n = 1;
+	char c;
+
+	for (; (c = (char)GW_FLASH_BYTE(list)) != 0; list++) {
+		if (c == '|') {
+			if (p != 0 && *p == 0)
+				return n;
+			n++;
+			p = s;
+		} else if (p != 0) {
+			p = *p == c ? p + 1 : 0;
+		}
 	}
-	return w;
+	return W_NONE;
 }
 
 void gw_tx_reset(void)
@@ -225,6 +237,16 @@ void gw_put_at(const char *s, uint8_t index)
 			gw_put(c);
 		}
 	}
+}
+
+/* gw_put_all writes such a list, a space before each word. */
+void gw_put_all(const char *s)
+{
+	char c;
+
+	gw_put(' ');
+	for (; (c = (char)GW_FLASH_BYTE(s)) != 0; s++)
+		gw_put(c == '|' ? ' ' : c);
 }
 
 void gw_put_hex(uint32_t v, uint8_t digits)

@@ -11,6 +11,7 @@
  *       D n + n bytes  receive bytes this instant                 -> nothing
  *       R µs           let time pass                              -> bytes sent
  *       X cause        restart                                    -> nothing
+ *       H 0            a hand turns the shaft a turn, in two s    -> nothing
  *       S key + number change the rig                             -> nothing
  *       Q 0            -> text: state, mV driven, mV commanded, speed in mrad/s,
  *                         mA, time in µs, time of the last off in µs */
@@ -49,6 +50,7 @@ static struct {
 	int driven, waiting; /* the bridge is on; a drive waits for its delay */
 	int32_t mv, next_mv;
 	uint64_t next_us, off_us;
+	uint64_t hand_until; /* µs; a hand turns the shaft until then */
 	uint64_t rx_ns, tx_ns; /* when the line is free */
 	uint8_t *rx;
 	size_t rx_n, rx_at, rx_cap;
@@ -181,7 +183,12 @@ static size_t step(uint8_t *out, size_t cap)
 	double top = bus();
 	double volts = fmax(-top, fmin(top, rig.mv / 1000.0));
 
-	motor_step(&rig.motor, STEP_US * 1e-6, volts, !rig.driven);
+	if (rig.us < rig.hand_until) {
+		rig.motor.angle += PI * STEP_US * 1e-6;
+		rig.motor.speed = 0;
+	} else {
+		motor_step(&rig.motor, STEP_US * 1e-6, volts, !rig.driven);
+	}
 	rig.us += STEP_US;
 	line_in();
 	if (rig.waiting && rig.us >= rig.next_us) {
@@ -282,6 +289,8 @@ static void run_virtual(void)
 				n += step(big + n, sizeof big - n);
 		} else if (op == 'X') {
 			start((uint8_t)arg);
+		} else if (op == 'H') {
+			rig.hand_until = rig.us + 2000000u;
 		} else if (op == 'S') {
 			set(arg, (int32_t)need32());
 		} else if (op == 'Q') {

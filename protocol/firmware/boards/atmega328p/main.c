@@ -207,6 +207,7 @@ ISR(TIMER1_COMPA_vect)
 	looping = 1;
 	sei();
 #if BOARD_SIM
+	board_motor_hand(PINB & _BV(PINB0)); /* the runner pulls it up while a hand turns the shaft */
 	board_motor_step(drive_mv, !lit, GW_LOOP_US / 2);
 	board_motor_step(drive_mv, !lit, GW_LOOP_US / 2);
 #endif

@@ -1,7 +1,7 @@
 /* Runs an ATmega328P image under libsimavr.
  *
  *   avrrun IMAGE --pty-link PATH   in real time, UART 0 on a pseudo-terminal
- *   avrrun IMAGE --virtual         the orders B, R and Q of host/host.c; Q answers
+ *   avrrun IMAGE --virtual         the orders B, R, X, H and Q of host/host.c; Q answers
  *                                  with the bytes of static data and of stack at its
  *                                  deepest, which the image has painted */
 #define _GNU_SOURCE
@@ -15,6 +15,7 @@
 #include <time.h>
 #include <unistd.h>
 
+#include <simavr/avr_ioport.h>
 #include <simavr/avr_uart.h>
 #include <simavr/sim_avr.h>
 #include <simavr/sim_elf.h>
@@ -25,7 +26,8 @@
 #define PAINT 0xC5
 
 static avr_t *avr;
-static avr_irq_t *to_uart;
+static avr_irq_t *to_uart, *to_hand;
+static avr_cycle_count_t hand_until; /* 0: no hand at the shaft */
 static FILE *say; /* our standard output: the library chats on stdout */
 static int open_in = 1; /* the UART's input has room */
 static uint8_t in[1 << 16], out[1 << 20];
@@ -72,6 +74,10 @@ static void run(uint32_t us)
 
 		if (slice > end)
 			slice = end;
+		if (hand_until != 0 && avr->cycle >= hand_until) {
+			hand_until = 0;
+			avr_raise_irq(to_hand, 0);
+		}
 		while (in_at < in_n && open_in && in_free <= avr->cycle) {
 			in_free = (in_free + HZ / 10000u < avr->cycle ? avr->cycle : in_free) + HZ / 11520u;
 			avr_raise_irq(to_uart, in[in_at++]);
@@ -142,6 +148,15 @@ static int run_virtual(void)
 			run(arg);
 			reply(out, out_n);
 			out_n = 0;
+		} else if (head[0] == 'X') {
+			in_n = in_at = 0;
+			open_in = 1;
+			avr_reset(avr); /* RAM and EEPROM stay as they are */
+			reply("", 0);
+		} else if (head[0] == 'H') {
+			hand_until = avr->cycle + 2u * HZ;
+			avr_raise_irq(to_hand, 1);
+			reply("", 0);
 		} else if (head[0] == 'Q') {
 			memory(text, sizeof text);
 			reply(text, strlen(text));
@@ -227,6 +242,7 @@ int main(int argc, char **argv)
 	avr_ioctl(avr, AVR_IOCTL_UART_GET_FLAGS('0'), &flags);
 	flags &= (uint32_t) ~(AVR_UART_FLAG_STDIO | AVR_UART_FLAG_POLL_SLEEP);
 	avr_ioctl(avr, AVR_IOCTL_UART_SET_FLAGS('0'), &flags);
+	to_hand = avr_io_getirq(avr, AVR_IOCTL_IOPORT_GETIRQ('B'), 0);
 	to_uart = avr_io_getirq(avr, AVR_IOCTL_UART_GETIRQ('0'), UART_IRQ_INPUT);
 	avr_irq_register_notify(avr_io_getirq(avr, AVR_IOCTL_UART_GETIRQ('0'), UART_IRQ_OUTPUT), sent, NULL);
 	avr_irq_register_notify(avr_io_getirq(avr, AVR_IOCTL_UART_GETIRQ('0'), UART_IRQ_OUT_XON), room, avr);

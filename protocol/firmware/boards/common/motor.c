@@ -11,12 +11,35 @@
 static float speed, fraction; /* rad/s; part of a count */
 static float amps;
 static uint16_t counts;
+static uint8_t by_hand;
+
+void board_motor_hand(uint8_t turning)
+{
+	by_hand = turning;
+}
+
+/* turned goes on counting at the speed that there is. */
+static void turned(float dt)
+{
+	float whole;
+
+	fraction += speed * dt * COUNTS_PER_RAD;
+	whole = (float)(int16_t)fraction;
+	fraction -= whole;
+	counts = (uint16_t)(counts + (uint16_t)(int16_t)whole);
+}
 
 void board_motor_step(int32_t mv, uint8_t open, uint16_t us)
 {
 	const float dt = (float)us * 1e-6f;
-	float torque, friction, next, whole;
+	float torque, friction, next;
 
+	if (by_hand) {
+		speed = 3.14159265f;
+		turned(dt);
+		speed = 0; /* a hand lets go at rest */
+		return;
+	}
 	amps = open ? 0 : ((float)mv * 1e-3f - K * speed) / OHM;
 	torque = K * amps;
 	friction = VISCOUS * speed;
@@ -29,10 +52,7 @@ void board_motor_step(int32_t mv, uint8_t open, uint16_t us)
 	}
 	next = speed + dt * PER_INERTIA * (torque - friction);
 	speed = next * speed < 0 ? 0 : next;
-	fraction += speed * dt * COUNTS_PER_RAD;
-	whole = (float)(int16_t)fraction;
-	fraction -= whole;
-	counts = (uint16_t)(counts + (uint16_t)(int16_t)whole);
+	turned(dt);
 }
 
 uint16_t board_motor_counts(void)

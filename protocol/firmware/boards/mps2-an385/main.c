@@ -1,5 +1,14 @@
 /* The core on a Cortex-M3, the machine mps2-an385 of QEMU, with the motor
- * simulated in the image. Without any library but libgcc. */
+ * simulated in the image. Without any library but libgcc.
+ *
+ * With BOARD_STEPPED its time is given to it over the second UART, a byte an
+ * order, so that a test can run it in a time of its own, the same way each time:
+ *   80 hex and up   a control period, once as many bytes have come on the line as
+ *                   the lower seven bits say, modulo 128; answered by a byte, the
+ *                   number of bytes sent on the line, modulo 256
+ *   h               a hand turns the shaft a turn, in two seconds; answered by h
+ *   x               reset
+ * After a start it sends r. An order waits for the answer of the one before. */
 #include <stddef.h>
 
 #include "gw.h"
@@ -12,6 +21,12 @@
 #define UART_CTRL REG(0x40004008u)
 #define UART_CLEAR REG(0x4000400Cu)
 #define UART_DIV REG(0x40004010u)
+#define STEP_DATA REG(0x40005000u)
+#define STEP_STATE REG(0x40005004u)
+#define STEP_CTRL REG(0x40005008u)
+#define STEP_CLEAR REG(0x4000500Cu)
+#define STEP_DIV REG(0x40005010u)
+#define RESET_CTRL REG(0xE000ED0Cu)
 #define TICK_CTRL REG(0xE000E010u)
 #define TICK_LOAD REG(0xE000E014u)
 #define TICK_NOW REG(0xE000E018u)
@@ -34,6 +49,13 @@ static struct {
 } kept __attribute__((section(".noinit")));
 
 static uint8_t cause;
+
+#if BOARD_STEPPED
+static volatile uint8_t rx_count;
+static volatile uint16_t order; /* 0: none waits */
+static uint8_t tx_count;
+static uint16_t hand;           /* control periods that a hand goes on for */
+#endif
 
 /* The compiler may call these of its own accord. */
 void *memset(void *to, int c, size_t n);
@@ -73,6 +95,9 @@ int32_t gw_port_drive(int32_t mv)
 	return mv;
 }
 
+#if BOARD_STEPPED
+uint32_t gw_port_us(void) { return loops_us; }
+#else
 uint32_t gw_port_us(void)
 {
 	uint32_t us, now, mask;
@@ -87,6 +112,7 @@ uint32_t gw_port_us(void)
 	__asm volatile("msr primask, %0" : : "r"(mask) : "memory");
 	return us + (TICKS - 1u - now) / MHZ;
 }
+#endif
 
 uint16_t gw_port_counts(void) { return board_motor_counts(); }
 int32_t gw_port_current_ma(void) { return board_motor_ma(); }
@@ -113,11 +139,19 @@ int gw_port_store_write(uint16_t at, const uint8_t *from, uint8_t n)
 
 /* ---- Start and interrupts ---- */
 
+static void received(uint8_t b)
+{
+	gw_rx_byte(b);
+#if BOARD_STEPPED
+	rx_count++;
+#endif
+}
+
 static void uart_rx(void)
 {
 	UART_CLEAR = 2u; /* first: a byte that comes after the last look asks again */
 	while (UART_STATE & 2u)
-		gw_rx_byte((uint8_t)UART_DATA);
+		received((uint8_t)UART_DATA);
 }
 
 static void tick(void)
@@ -138,11 +172,65 @@ static void send(void)
 
 	while (tx_budget >= 1000u && !(UART_STATE & 1u) && (b = gw_tx_byte()) >= 0) {
 		UART_DATA = (uint32_t)b;
+#if BOARD_STEPPED
+		tx_count++;
+#endif
 		__asm volatile("cpsid i" : : : "memory");
 		tx_budget -= 1000u;
 		__asm volatile("cpsie i" : : : "memory");
 	}
 }
+
+#if BOARD_STEPPED
+static void step_rx(void)
+{
+	STEP_CLEAR = 2u;
+	if (STEP_STATE & 2u)
+		order = (uint16_t)(0x100u | (STEP_DATA & 0xFFu));
+}
+
+static void step_say(uint8_t b)
+{
+	while (STEP_STATE & 1u)
+		;
+	STEP_DATA = b;
+}
+
+/* obey does what the order in hand says, once it can. */
+static void obey(void)
+{
+	uint8_t o = (uint8_t)order;
+
+	if (order == 0)
+		return;
+	if (o == 'x') {
+		RESET_CTRL = 0x05FA0004u;
+		for (;;)
+			;
+	}
+	if (o & 0x80u) {
+		if (((rx_count ^ o) & 0x7Fu) != 0)
+			return;
+		board_motor_hand(hand > 0);
+		if (hand > 0)
+			hand--;
+		tick();
+		for (uint8_t i = 0; i < 10; i++) {
+			gw_poll();
+			send();
+		}
+		order = 0;
+		step_say(tx_count);
+		return;
+	}
+	if (o == 'h')
+		hand = 2000000u / GW_LOOP_US;
+	order = 0;
+	step_say(o);
+}
+#else
+static void step_rx(void) {}
+#endif
 
 static void board_main(void)
 {
@@ -154,9 +242,20 @@ static void board_main(void)
 	TICK_PRIORITY = 0x80000000u; /* the tick below the receiver */
 	TICK_LOAD = TICKS - 1u;
 	TICK_NOW = 0;
+#if BOARD_STEPPED
+	STEP_DIV = MHZ * 1000000u / (uint32_t)GW_BAUD;
+	STEP_CTRL = 1u | 2u | 8u;
+	IRQ_ENABLE = 1u | 4u;
+	step_say('r');
+#else
 	TICK_CTRL = 7u;
 	IRQ_ENABLE = 1u;
+#endif
 	__asm volatile("cpsie i" : : : "memory");
+#if BOARD_STEPPED
+	for (;;)
+		obey();
+#else
 	for (;;) {
 		gw_poll();
 		send();
@@ -165,6 +264,7 @@ static void board_main(void)
 			__asm volatile("wfi");
 		__asm volatile("cpsie i" : : : "memory");
 	}
+#endif
 }
 
 extern uint32_t data_start, data_end, data_from, bss_start, bss_end, stack_top;
@@ -196,8 +296,8 @@ typedef void (*vector)(void);
 
 static const struct {
 	uint32_t *stack;
-	vector v[15 + 1];
+	vector v[15 + 3];
 } vectors __attribute__((section(".vectors"), used)) = {
 	&stack_top,
-	{board_reset, stuck, stuck, stuck, stuck, stuck, 0, 0, 0, 0, stuck, stuck, 0, stuck, tick, uart_rx},
+	{board_reset, stuck, stuck, stuck, stuck, stuck, 0, 0, 0, 0, stuck, stuck, 0, stuck, tick, uart_rx, stuck, step_rx},
 };
