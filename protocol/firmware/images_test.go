@@ -165,6 +165,25 @@ func TestATmega328P(t *testing.T) {
 	}
 }
 
+// The 8-bit image without its motor keeps its budget of flash: half of the chip's.
+func TestATmega328PFitsInItsFlash(t *testing.T) {
+	t.Parallel()
+	need(t, "avr-size")
+	elf := needImage(t, []string{"gcc", "avr-gcc"}, "m328.elf")
+	out, err := exec.Command("avr-size", elf).Output()
+	if err != nil {
+		t.Fatal(err)
+	}
+	var text, data, bss int
+	if _, err := fmt.Sscan(strings.SplitN(string(out), "\n", 2)[1], &text, &data, &bss); err != nil {
+		t.Fatalf("%q: %v", out, err)
+	}
+	t.Logf("%d bytes of flash, %d of static RAM", text+data, data+bss)
+	if flash := text + data; flash > 16384 || flash < 8192 {
+		t.Errorf("%d bytes of flash, at most 16384", flash)
+	}
+}
+
 // TestCortexM3 runs the 32-bit image under QEMU, in real time, over a socket.
 func TestCortexM3(t *testing.T) {
 	t.Parallel() // it waits most of the time

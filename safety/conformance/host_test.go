@@ -120,23 +120,3 @@ func sources(t *testing.T, pattern string) []string {
 	}
 	return files
 }
-
-// The reference firmware in C, compiled for this machine, in both arithmetics.
-func TestFirmwareConforms(t *testing.T) {
-	need(t, "gcc")
-	for _, fixed := range []string{"0", "1"} {
-		t.Run("GW_FIXED="+fixed, func(t *testing.T) {
-			bin := filepath.Join(t.TempDir(), "gwhost")
-			dir := "../../protocol/firmware"
-			args := []string{"-O2", "-DGW_FIXED=" + fixed, "-I" + dir + "/core", "-I" + dir + "/host", "-o", bin}
-			for _, pattern := range []string{"/core/*.c", "/host/*.c"} {
-				args = append(args, sources(t, dir+pattern)...)
-			}
-			sources(t, dir+"/*/*.h")
-			if msg, err := exec.Command("gcc", append(args, "-lm")...).CombinedOutput(); err != nil {
-				t.Fatalf("gcc: %v\n%s", err, msg)
-			}
-			hostConforms(t, startHost(t, bin, "--virtual"), Options{Permit: permitted, Brief: fixed == "1"})
-		})
-	}
-}

@@ -22,12 +22,24 @@ const (
 	tickEach = 10 * time.Millisecond
 )
 
+// FarEnd is a board whose time the bench owns: a simulated rig, or firmware on an
+// emulated chip whose motor is computed. Nobody can own the time of a real motor,
+// so that what may be driven without a person is told by its type.
+type FarEnd interface {
+	Advance(to time.Duration)
+	Receive(b []byte)
+	Output() []byte
+	PowerCycle()
+	Hand(turns float64)
+}
+
 // Virtual is a whole bench in one goroutine: a simulated rig, the console's core
 // and an operator who does what the screen asks. Equal rigs and seeds give equal
 // jobs, byte for byte.
 type Virtual struct {
 	s      *session
-	rig    *simrig.Rig
+	far    FarEnd
+	rig    *simrig.Rig // far, where it is a simulated rig; else nil
 	wire   virtualWire
 	ticked time.Duration
 	start  time.Time
@@ -46,8 +58,19 @@ const budgetMax = time.Hour
 // NewVirtual puts a rig on the bench. start is the time of day that the record
 // shows.
 func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
-	v := &Virtual{rig: rig, start: start, budget: budgetMax}
-	v.wire = virtualWire{baud: rig.Config().Board.Baud, now: func() time.Duration { return v.s.now }}
+	c := rig.Config().Board
+	return newVirtual(rig, rig, c.Baud, time.Duration(c.BootMS)*time.Millisecond, start)
+}
+
+// NewHosted puts firmware on the bench that runs in a time of its own, and has
+// started.
+func NewHosted(far FarEnd, baud int, start time.Time) *Virtual {
+	return newVirtual(far, nil, baud, 0, start)
+}
+
+func newVirtual(far FarEnd, rig *simrig.Rig, baud int, boot time.Duration, start time.Time) *Virtual {
+	v := &Virtual{far: far, rig: rig, start: start, budget: budgetMax}
+	v.wire = virtualWire{baud: baud, now: func() time.Duration { return v.s.now }}
 	v.s = &session{opened: true}
 	v.s.core = supervisor.NewCore(&v.wire, v.s, 1)
 	v.s.core.Simulated = true
@@ -57,7 +80,7 @@ func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
 		v.s.core.Wrote(t, b)
 		v.record(t, tape.ToBoard, b)
 	}
-	v.run(time.Duration(rig.Config().Board.BootMS)*time.Millisecond + 100*time.Millisecond)
+	v.run(boot + 100*time.Millisecond)
 	return v
 }
 
@@ -104,7 +127,7 @@ func (v *Virtual) until(limit time.Duration, cond func(*session) bool) error {
 }
 
 func (v *Virtual) cycle() bool {
-	v.rig.PowerCycle()
+	v.far.PowerCycle()
 	return true
 }
 
@@ -126,11 +149,11 @@ func (v *Virtual) step() {
 		if !ok {
 			break
 		}
-		v.rig.Advance(at)
-		v.rig.Receive(v.trial.toBoard(b))
+		v.far.Advance(at)
+		v.far.Receive(v.trial.toBoard(b))
 	}
-	v.rig.Advance(v.s.now)
-	if b := v.trial.fromBoard(v.rig.Output()); len(b) > 0 {
+	v.far.Advance(v.s.now)
+	if b := v.trial.fromBoard(v.far.Output()); len(b) > 0 {
 		v.record(v.s.now, tape.FromBoard, b)
 		v.s.core.Bytes(v.s.now, b)
 	}
@@ -255,7 +278,7 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 	}
 	switch st := s.core.State(); {
 	case q.Kind == job.AskHandTurn && !o.turned:
-		v.rig.Hand(1)
+		v.far.Hand(1)
 		o.turned = true
 	case q.Kind == job.AskHandTurn && waited < turningTime:
 	case q.Kind == job.AskStopKey:

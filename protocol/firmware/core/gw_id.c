@@ -21,10 +21,10 @@ static const char text[] GW_FLASH =
 	"win " TEXT(GW_WIN) "\n"
 #if GW_PID
 	"law pid\n"
-	"deriv measurement\n"
 #else
 	"law pi\n"
 #endif
+	"deriv measurement\n"
 	"gains%g\n"
 	"form parallel\n"
 	"disc backward-euler\n"

@@ -153,6 +153,10 @@ static uint8_t arm_locked(uint32_t nonce, uint16_t crc)
 	g.lapse_us = now;
 	g.target = 0;
 	g.state = GW_ARMED;
+	/* A sample that was latched before waits to be sent, and goes out after the
+	 * answer: with the state of then a console would see an arm that has ended. */
+	if (g.due)
+		g.snap.flags = (uint8_t)((g.snap.flags & ~7u) | GW_ARMED);
 	return 0;
 }
 
