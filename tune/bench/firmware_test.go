@@ -3,7 +3,6 @@ package bench
 import (
 	"fmt"
 	"math"
-	"os"
 	"strings"
 	"testing"
 	"time"
@@ -95,11 +94,7 @@ func TestWholeJobOnATmega328P(t *testing.T) {
 	firmwareJob(t, emulate.ATmega328P(t, "m328-sim"))
 }
 
-// The Cortex-M3 takes minutes: GAINWRIGHT_LONG=1 has it run.
 func TestWholeJobOnCortexM3(t *testing.T) {
-	if os.Getenv("GAINWRIGHT_LONG") == "" {
-		t.Skip("takes minutes: set GAINWRIGHT_LONG=1")
-	}
 	t.Parallel()
 	firmwareJob(t, emulate.CortexM3(t))
 }
