@@ -73,11 +73,14 @@ var glossary = [][2]string{
 	{"cut", "output off; the motor coasts"},
 	{"dead time", "how long the speed does not answer a change of voltage"},
 	{"disarmed", "will not be commanded to turn; it may still coast"},
+	{"enabling switch", "a switch held in its middle position to permit motion; released or pressed through it stops"},
 	{"envelope", "the limits that no run may cross: volts, speed, current, bus, turns, heat, time"},
 	{"forecast", "what a plan is expected to do"},
 	{"gain K", "steady speed for each volt"},
 	{"GM", "gain margin: how much more gain the loop bears"},
 	{"hold-out", "data kept back from the fit, on which it is judged"},
+	{"inch", "one bounded move of the shaft for one press of a key"},
+	{"interlock", "an input of the board that has to be in its working position: a guard switch, an E-stop"},
 	{"look-only", "connected, never driving"},
 	{"Ms", "peak of the sensitivity: how near the loop comes to hunting; less is calmer"},
 	{"NRMSE", "error of the model as a share of the spread of the data; 0 is perfect"},
@@ -89,6 +92,7 @@ var glossary = [][2]string{
 	{"re-read", "read the gains back after the power was off"},
 	{"rig", "motor, driver, board and load as one thing with a name"},
 	{"sheet", "the record of one job: a folder readable without this program"},
+	{"shelved", "an alarm put aside for a time, with a reason; a trip never is"},
 	{"silence", "the check that the board stops by itself when it hears nothing"},
 	{"speed ceiling", "the speed at which the board trips"},
 	{"staircase", "steady speeds at rising and falling voltages"},
@@ -102,12 +106,12 @@ var glossary = [][2]string{
 func (p *painter) words(a area) {
 	var rows []line
 	for _, g := range glossary {
-		for k, s := range lines(g[1], a.w-18) {
+		for k, s := range lines(g[1], a.w-20) {
 			name := ""
 			if k == 0 {
 				name = g[0]
 			}
-			rows = append(rows, line{palette.Plain, name + strings.Repeat(" ", max(1, 15-len(name))) + s})
+			rows = append(rows, line{palette.Plain, name + strings.Repeat(" ", max(1, 17-len(name))) + s})
 		}
 	}
 	p.scroll(a, 1, rows)

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"bytes"
 	"context"
 	"crypto/rand"
 	"errors"
@@ -68,23 +69,29 @@ func consoleCommand() *cobra.Command {
 // demoCommand opens the console on a built-in rig behind a pseudo-terminal.
 func demoCommand() *cobra.Command {
 	var f consoleFlags
-	var simFile string
+	var simFile, rigFile string
 	c := &cobra.Command{
 		Use: "demo", Short: "open the console on a built-in simulated rig", Args: cobra.NoArgs,
 		Long: "demo opens the console on a built-in simulated rig: a board in software behind a pseudo-terminal that is opened\n" +
-			"like any port. Nothing real moves. On screen, t turns its shaft by hand and o switches its power.",
+			"like any port. Nothing real moves. On screen, t turns its shaft by hand and o switches its power or works\n" +
+			"the input that is asked for.",
 		RunE: func(c *cobra.Command, _ []string) error {
 			cfg, err := demoConfig(simFile)
 			if err != nil {
 				return usage(err)
 			}
 			_, text, err := bench.RigOf(cfg)
+			if rigFile != "" {
+				_, text, err = readRig(rigFile)
+			}
 			if err != nil {
-				return err
+				return usage(err)
 			}
 			// Board and console share this process: a laptop under load holds both up,
 			// and no shaft turns. A real board keeps the rig file's default.
-			text = append(text, demoTiming...)
+			if !bytes.Contains(text, []byte("[timing]")) {
+				text = append(text, demoTiming...)
+			}
 			r, err := rig.Parse("demo", text)
 			if err != nil {
 				return err
@@ -117,6 +124,7 @@ func demoCommand() *cobra.Command {
 		},
 	}
 	c.Flags().StringVar(&simFile, "sim", "", "another simulated board (TOML)")
+	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
 	return c
 }
