@@ -10,7 +10,6 @@ type arming struct {
 	given    []uint32 // every number given out; only the faulty board looks
 	token    uint16
 	armed    bool
-	counted  bool // a heartbeat number has been seen in this arm
 	k        uint16
 	beatAt   int64 // ns of the last heartbeat accepted
 	driveAt  int64 // ns of the last drive line accepted, or of the arm
@@ -70,7 +69,7 @@ func (r *Rig) doArm(args []string, a *answer) {
 		a.no(protocol.RefMoving)
 	default:
 		m.token = uint16(1 + r.random.IntN(65535))
-		m.armed, m.counted = true, false
+		m.armed, m.k = true, 0
 		m.beatAt, m.driveAt = r.now, r.now
 		b.state = protocol.Armed
 		a.ok(hex16(m.token))
@@ -154,7 +153,7 @@ func (r *Rig) drive(c protocol.Command) {
 		return
 	}
 	token, ok := protocol.ParseHex16(c.Args[0])
-	if !ok || token != m.token || m.counted && !protocol.Newer(c.N, m.k) {
+	if !ok || token != m.token || !protocol.Newer(c.N, m.k) {
 		return
 	}
 	if c.Verb == protocol.VerbBeat {
@@ -181,7 +180,7 @@ func (r *Rig) drive(c protocol.Command) {
 
 func (r *Rig) beat(k uint16) {
 	m := &r.board.arm
-	m.k, m.counted, m.beatAt = k, true, r.now
+	m.k, m.beatAt = k, r.now
 }
 
 // follow takes a new drive value, and begins the run with the first.

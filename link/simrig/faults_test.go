@@ -265,3 +265,21 @@ func TestIgnoredInputsAreReportedAndNotJudged(t *testing.T) {
 		}
 	}
 }
+
+// P6.3: the first line after an arm carries 1; a line with 0 is not newer, so it is
+// no heartbeat and no drive.
+func TestTheFirstNumberAfterAnArm(t *testing.T) {
+	c := newConsole(t, benchConfig())
+	c.hold(nil)
+	c.arm()
+	c.r.Receive(protocol.AppendDriveVolts(nil, 0, c.token, 5))
+	c.wait(50 * time.Millisecond)
+	if c.r.Powered() {
+		t.Error("number 0 drives")
+	}
+	c.r.Receive(protocol.AppendDriveVolts(nil, 1, c.token, 5))
+	c.wait(50 * time.Millisecond)
+	if !c.r.Powered() {
+		t.Error("number 1 does not")
+	}
+}
