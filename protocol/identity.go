@@ -27,14 +27,15 @@ type Identity struct {
 	ComputeDelay time.Duration // from the latch of the counts to the output that uses them
 	WindowLoops  int           // speed is the mean over so many loop periods
 
-	Law            string   // pi or pid
-	Form           string   // parallel, ideal or series
-	Derivative     string   // measurement or error
-	Discretisation string   // backward-euler, forward-euler, tustin or incremental
-	AntiWindup     string   // none, clamp or back-calculation
-	Number         string   // float (binary32) or int (32 bits)
-	GainNames      []string // slots of a gain set, in order
-	LimitNames     []string // slots of the limits, in order
+	Law            string    // pi or pid
+	Form           string    // parallel, ideal or series
+	Derivative     string    // measurement or error
+	Discretisation string    // backward-euler, forward-euler, tustin or incremental
+	AntiWindup     string    // none, clamp or back-calculation
+	Number         string    // float (binary32) or int (32 bits)
+	GainNames      []string  // slots of a gain set, in order
+	GainLSB        []float64 // of integer gains: what one unit of each slot stands for, SI
+	LimitNames     []string  // slots of the limits, in order
 
 	Input       string  // V, duty, dac or A
 	BusMeasured bool    // the bus voltage is measured
@@ -97,6 +98,13 @@ func (id *Identity) LookOnly() string {
 		return fmt.Sprintf("the line runs at %d baud; below 38400 a stop takes too long", id.Baud)
 	case len(id.LimitNames) == 0:
 		return "the board holds no limits"
+	case id.Number == "int" && len(id.GainLSB) != len(id.GainNames):
+		return "the board holds integer gains and does not say what one unit of each stands for"
+	}
+	for i, v := range id.GainLSB {
+		if v <= 0 {
+			return fmt.Sprintf("one unit of gain number %d stands for nothing", i)
+		}
 	}
 	return ""
 }
@@ -220,6 +228,11 @@ var identityKeys = map[string]func(*Identity, *idParser){
 	},
 	"windup": func(id *Identity, p *idParser) { id.AntiWindup = p.oneOf("none", "clamp", "back-calculation") },
 	"num":    func(id *Identity, p *idParser) { id.Number = p.oneOf("float", "int") },
+	"glsb": func(id *Identity, p *idParser) {
+		for len(p.words) > 0 {
+			id.GainLSB = append(id.GainLSB, p.float())
+		}
+	},
 	"gains":  func(id *Identity, p *idParser) { id.GainNames = p.all() },
 	"limits": func(id *Identity, p *idParser) { id.LimitNames = append(id.LimitNames, p.all()...) },
 	"input":  func(id *Identity, p *idParser) { id.Input = p.oneOf("V", "duty", "dac", "A") },

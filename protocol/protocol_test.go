@@ -293,3 +293,23 @@ func TestNewer(t *testing.T) {
 		}
 	}
 }
+
+// Integer gains need the unit of each; without it such a board is look-only.
+func TestIntegerGainsNeedTheirUnits(t *testing.T) {
+	lines := []string{"proto 1.0", "board b", "boot 1 power", "loop 1000", "num int", "gains kp ki", "limits vmax wmax beat",
+		"scale 3F800000 3F800000 00000000 00000000"}
+	id, err := ParseIdentity(lines)
+	if err != nil || id.LookOnly() == "" {
+		t.Errorf("without units: %v, %q", err, id.LookOnly())
+	}
+	id, err = ParseIdentity(append(lines, "glsb 37800000", "glsb 35800000")) // 2⁻¹⁶, 2⁻²⁰
+	if err != nil || id.LookOnly() != "" || len(id.GainLSB) != 2 || id.GainLSB[0] != 1.0/65536 || id.GainLSB[1] != 1.0/1048576 {
+		t.Errorf("with units: %v, %q, %v", err, id.LookOnly(), id.GainLSB)
+	}
+	if id, _ = ParseIdentity(append(lines, "glsb 37800000 00000000")); id.LookOnly() == "" {
+		t.Error("a unit of nothing is taken")
+	}
+	if _, err = ParseIdentity(append(lines, "glsb 37800000 xyz")); err == nil {
+		t.Error("a unit that is no number is taken")
+	}
+}

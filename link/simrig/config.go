@@ -126,6 +126,8 @@ type BoardSpec struct {
 	Form     string   `toml:"form" one:"parallel ideal series" default:"parallel" doc:"form of the gains"`
 	Deriv    string   `toml:"derivative" one:"measurement error" default:"measurement" doc:"what the derivative acts on"`
 	Disc     string   `toml:"discretisation" one:"backward-euler forward-euler tustin incremental" default:"backward-euler" doc:"of integral and derivative"`
+	Number   string   `toml:"gain_number" one:"float int" default:"float" doc:"how a gain is held: binary32, or a whole number of units of 2 to the power of minus gain_shift"`
+	Shift    int      `toml:"gain_shift" unit:"bits" range:"0..30" default:"16" doc:"bits behind the point of integer gains"`
 	Windup   string   `toml:"anti_windup" one:"none clamp back-calculation" default:"clamp" doc:"what keeps the integral from winding up"`
 	VoltsMax float64  `toml:"voltage_max_V" unit:"V" range:"0..60" default:"0" doc:"hard limit of the board; 0: the supply's voltage"`
 	SpeedMax float64  `toml:"speed_max_rad_s" unit:"rad/s" range:"0..10000" default:"0" doc:"hard limit of the board; 0: 1.5 times the nameplate's"`

@@ -42,9 +42,25 @@ func gainBits(c *Config) []uint32 {
 		"tf": g.Tf, "b": g.B, "tt": g.Tt, "kv": g.Kv, "ks": g.Ks}
 	var bits []uint32
 	for _, n := range gainNames(c) {
-		bits = append(bits, math.Float32bits(float32(all[n])))
+		bits = append(bits, c.Board.gainBits(all[n]))
 	}
 	return bits
+}
+
+// gain is what the board makes of the digits of a gain.
+func (b *BoardSpec) gain(bits uint32) float32 {
+	if b.Number == "int" {
+		return float32(math.Ldexp(float64(int32(bits)), -b.Shift))
+	}
+	return math.Float32frombits(bits)
+}
+
+// gainBits are the digits of a gain as the board holds it.
+func (b *BoardSpec) gainBits(v float64) uint32 {
+	if b.Number == "int" {
+		return uint32(int32(math.Round(math.Ldexp(v, b.Shift))))
+	}
+	return math.Float32bits(float32(v))
 }
 
 func newGainSet(c *Config, stored []uint32) gainSet {
@@ -55,7 +71,7 @@ func newGainSet(c *Config, stored []uint32) gainSet {
 func (g *gainSet) law(c *Config) law {
 	v := map[string]float32{}
 	for i, n := range g.names {
-		v[n] = math.Float32frombits(g.held[i])
+		v[n] = c.Board.gain(g.held[i])
 	}
 	l := law{kp: v["kp"], ki: v["ki"], kd: v["kd"], tf: v["tf"], b: v["b"], tt: v["tt"], kv: v["kv"], ks: v["ks"],
 		period: float32(c.Board.LoopUS) * 1e-6, disc: c.Board.Disc, windup: c.Board.Windup,
@@ -132,7 +148,7 @@ func (r *Rig) settable() protocol.Refusal {
 func (r *Rig) stageGain(which, digits string) protocol.Refusal {
 	i, ok := slot(which, len(r.board.gains.names))
 	bits, ok2 := protocol.ParseHex32([]byte(digits))
-	v := float64(math.Float32frombits(bits))
+	v := float64(r.cfg.Board.gain(bits))
 	if !ok || !ok2 || math.IsNaN(v) || math.IsInf(v, 0) {
 		return protocol.RefArgument
 	}

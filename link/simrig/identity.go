@@ -39,7 +39,7 @@ func (r *Rig) identityLines(a *answer) {
 		"deriv " + b.Deriv,
 		"disc " + b.Disc,
 		"windup " + b.Windup,
-		"num float",
+		"num " + b.Number,
 		"gains " + strings.Join(r.board.gains.names, " "),
 		"limits " + strings.Join(limitNames, " "),
 		"input V",
@@ -50,6 +50,10 @@ func (r *Rig) identityLines(a *answer) {
 		"scale " + f32(sc.SpeedLSB) + " " + f32(sc.VoltsLSB) + " " + f32(sc.CurrentLSB) + " " + f32(sc.BusLSB),
 		"max " + f32(b.VoltsMax) + " " + f32(b.SpeedMax) + " " + f32(b.AmpsMax),
 		"beat " + itoa(b.BeatMin) + " " + itoa(b.BeatMax),
+	}
+	if b.Number == "int" {
+		one := " " + f32(math.Ldexp(1, -b.Shift))
+		lines = append(lines, "glsb"+strings.Repeat(one, len(r.board.gains.names)))
 	}
 	var can []string
 	if b.Capture > 0 {

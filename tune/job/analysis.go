@@ -79,19 +79,21 @@ type Law struct {
 	ComputeDelay   float64  `json:"compute_delay"` // s
 	Window         float64  `json:"window_s"`
 	Slots          []string `json:"slots"` // of a gain set, in order
+	// GainLSB is what one unit of each integer gain stands for; nil: binary32.
+	GainLSB []float64 `json:"gain_lsb,omitempty"`
 }
 
 // LawOf takes the law from a board's identity.
 func LawOf(id protocol.Identity) Law {
 	return Law{Form: id.Form, Number: id.Number, DerivativeOn: id.Derivative, Discretisation: id.Discretisation, AntiWindup: id.AntiWindup,
-		Quadrants: id.Quadrants, SampleTime: id.Loop.Seconds(), ComputeDelay: id.ComputeDelay.Seconds(), Window: id.Window().Seconds(), Slots: id.GainNames}
+		Quadrants: id.Quadrants, SampleTime: id.Loop.Seconds(), ComputeDelay: id.ComputeDelay.Seconds(), Window: id.Window().Seconds(), Slots: id.GainNames, GainLSB: id.GainLSB}
 }
 
 // identity is the law as gain sets take it.
 func (l Law) identity() protocol.Identity {
 	whole := func(s float64) time.Duration { return time.Duration(math.Round(s * 1e9)) }
 	return protocol.Identity{Form: l.Form, Number: l.Number, Derivative: l.DerivativeOn, Discretisation: l.Discretisation, AntiWindup: l.AntiWindup,
-		Quadrants: l.Quadrants, Loop: whole(l.SampleTime), ComputeDelay: whole(l.ComputeDelay), GainNames: l.Slots}
+		Quadrants: l.Quadrants, Loop: whole(l.SampleTime), ComputeDelay: whole(l.ComputeDelay), GainNames: l.Slots, GainLSB: l.GainLSB}
 }
 
 // DesignSettings is what the proposal was told beside the fit.
@@ -134,11 +136,11 @@ var ErrNoRule = errors.New("no rule applies")
 // it is returned.
 func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 	out := Designed{Chosen: -1}
-	found, err := wordsSet(s.Slots, s.Found)
+	found, err := wordsSet(s.identity(), s.Found)
 	if err != nil {
 		return out, err
 	}
-	running, err := wordsSet(s.Slots, s.Running)
+	running, err := wordsSet(s.identity(), s.Running)
 	if err != nil {
 		return out, err
 	}
@@ -316,8 +318,8 @@ func (s GainSet) digits() []string {
 }
 
 // wordsSet turns words back into a set.
-func wordsSet(slots, words []string) (GainSet, error) {
-	s := GainSet{Names: slots}
+func wordsSet(id protocol.Identity, words []string) (GainSet, error) {
+	s, slots := newGainSet(id), id.GainNames
 	if len(words) != len(slots) {
 		return s, fmt.Errorf("%d words for %d gains", len(words), len(slots))
 	}

@@ -275,7 +275,7 @@ func (j *Job) readGains() error {
 }
 
 func (j *Job) readSet(which string) (GainSet, error) {
-	s := GainSet{Names: j.ID.GainNames}
+	s := newGainSet(j.ID)
 	for i, name := range s.Names {
 		a, err := j.h.Request(protocol.VerbGain, fmt.Sprintf("get %s %d", which, i))
 		if err != nil {
@@ -384,10 +384,10 @@ func (j *Job) showFound() {
 		{Name: "encoder", Value: fmt.Sprintf("%g counts a turn, on the %s shaft", id.CountsPerTurn, id.EncoderSide)},
 	}}
 	for i, n := range j.Running.Names {
-		f.Running = append(f.Running, Fact{Name: n, Value: number(float64(math.Float32frombits(j.Running.Bits[i]))) + " " + gainUnits[n]})
+		f.Running = append(f.Running, Fact{Name: n, Value: number(j.Running.at(i)) + " " + gainUnits[n]})
 	}
 	for i, n := range j.Stored.Names {
-		f.Stored = append(f.Stored, Fact{Name: n, Value: number(float64(math.Float32frombits(j.Stored.Bits[i]))) + " " + gainUnits[n]})
+		f.Stored = append(f.Stored, Fact{Name: n, Value: number(j.Stored.at(i)) + " " + gainUnits[n]})
 	}
 	j.h.Show(func(v *View) { v.Found, v.Board, v.Rig = f, id.Board, j.Rig.Name })
 }

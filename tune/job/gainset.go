@@ -1,6 +1,7 @@
 package job
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -14,6 +15,40 @@ import (
 type GainSet struct {
 	Names []string
 	Bits  []uint32
+	LSB   []float64 // of a board with integer gains: what one unit stands for; nil: binary32
+}
+
+// newGainSet is an empty set of the board's slots.
+func newGainSet(id protocol.Identity) GainSet {
+	s := GainSet{Names: id.GainNames}
+	if id.Number == "int" && len(id.GainLSB) == len(id.GainNames) {
+		s.LSB = id.GainLSB
+	}
+	return s
+}
+
+// at is the value of slot i in SI units.
+func (s GainSet) at(i int) float64 {
+	if s.LSB != nil {
+		return float64(int32(s.Bits[i])) * s.LSB[i]
+	}
+	return float64(math.Float32frombits(s.Bits[i]))
+}
+
+// rounded is v as slot i holds it. An integer that would be too large, or nothing
+// where something is wanted, is an error.
+func (s GainSet) rounded(i int, v float64) (uint32, error) {
+	if s.LSB == nil {
+		return math.Float32bits(float32(v)), nil
+	}
+	n := math.RoundToEven(v / s.LSB[i])
+	switch {
+	case math.IsNaN(n) || math.Abs(n) > math.MaxInt32:
+		return 0, fmt.Errorf("gain %s = %.6g does not fit into the board's integer: one unit is %.3g", s.Names[i], v, s.LSB[i])
+	case n == 0 && v != 0:
+		return 0, fmt.Errorf("gain %s = %.6g rounds to 0 on this board: one unit is %.3g", s.Names[i], v, s.LSB[i])
+	}
+	return uint32(int32(n)), nil
 }
 
 // CRC is the set's own check code.
@@ -26,7 +61,7 @@ func (s GainSet) Equal(t GainSet) bool {
 
 // Clone copies the set.
 func (s GainSet) Clone() GainSet {
-	return GainSet{Names: slices.Clone(s.Names), Bits: slices.Clone(s.Bits)}
+	return GainSet{Names: slices.Clone(s.Names), Bits: slices.Clone(s.Bits), LSB: s.LSB}
 }
 
 // Value returns a gain of a float board as a number.
@@ -35,16 +70,20 @@ func (s GainSet) Value(name string) (float64, bool) {
 	if i < 0 {
 		return 0, false
 	}
-	return float64(math.Float32frombits(s.Bits[i])), true
+	return s.at(i), true
 }
 
-// set rounds v to the board's binary32 and puts it into a slot, if there is one.
-func (s GainSet) set(name string, v float64) bool {
+// set rounds v to what the board holds and puts it into a slot, if there is one.
+func (s GainSet) set(name string, v float64) (there bool, err error) {
 	i := slices.Index(s.Names, name)
-	if i >= 0 {
-		s.Bits[i] = math.Float32bits(float32(v))
+	if i < 0 {
+		return false, nil
 	}
-	return i >= 0
+	bits, err := s.rounded(i, v)
+	if err == nil {
+		s.Bits[i] = bits
+	}
+	return true, err
 }
 
 // gainUnits are the units of SPEC.md P8.1.
@@ -55,6 +94,10 @@ var gainUnits = map[string]string{"kp": "V/(rad/s)", "ki": "V/rad", "kd": "V·s�
 func (s GainSet) Words() map[string]string {
 	w := map[string]string{}
 	for i, n := range s.Names {
+		if s.LSB != nil {
+			w[n] = fmt.Sprintf("%08X %d × %.9g %s", s.Bits[i], int32(s.Bits[i]), s.LSB[i], gainUnits[n])
+			continue
+		}
 		w[n] = fmt.Sprintf("%08X %.9g %s", s.Bits[i], math.Float32frombits(s.Bits[i]), gainUnits[n])
 	}
 	return w
@@ -63,7 +106,7 @@ func (s GainSet) Words() map[string]string {
 // Finite reports whether every slot is a finite number.
 func (s GainSet) Finite() error {
 	for i, n := range s.Names {
-		if v := float64(math.Float32frombits(s.Bits[i])); math.IsNaN(v) || math.IsInf(v, 0) {
+		if v := s.at(i); math.IsNaN(v) || math.IsInf(v, 0) {
 			return fmt.Errorf("the board holds %v as gain %s", v, n)
 		}
 	}
@@ -73,8 +116,8 @@ func (s GainSet) Finite() error {
 // Design returns the set as gains of the law that the identity declares, under
 // the limit uMax in V.
 func (s GainSet) Design(id protocol.Identity, uMax float64) (design.Gains, error) {
-	if id.Number == "int" {
-		return design.Gains{}, fmt.Errorf("the board holds integer gains: reading them is not supported yet; use convert with its scaling")
+	if id.Number == "int" && s.LSB == nil {
+		return design.Gains{}, fmt.Errorf("the board holds integer gains and does not say what one unit of each stands for")
 	}
 	g := design.Gains{Form: id.Form, SetpointWeight: 1, SampleTime: id.Loop.Seconds(), ComputeDelay: id.ComputeDelay.Seconds(),
 		DerivativeOn: id.Derivative, Discretisation: id.Discretisation, AntiWindup: id.AntiWindup}
@@ -85,7 +128,7 @@ func (s GainSet) Design(id protocol.Identity, uMax float64) (design.Gains, error
 	g.UMin, g.UMax = &lo, &uMax
 	var ff design.Feedforward
 	for i, n := range s.Names {
-		v := float64(math.Float32frombits(s.Bits[i]))
+		v := s.at(i)
 		switch n {
 		case "kp":
 			g.Kp = v
@@ -130,8 +173,13 @@ func (s GainSet) With(g design.Gains, id protocol.Identity) (GainSet, error) {
 	t := s.Clone()
 	p := g.Parallel()
 	var missing []string
+	var coarse []error
 	put := func(name string, v float64, needed bool) {
-		if !t.set(name, v) && needed {
+		there, err := t.set(name, v)
+		if err != nil {
+			coarse = append(coarse, err)
+		}
+		if !there && needed {
 			missing = append(missing, name)
 		}
 	}
@@ -160,5 +208,5 @@ func (s GainSet) With(g design.Gains, id protocol.Identity) (GainSet, error) {
 	if missing != nil {
 		return t, fmt.Errorf("the board has no slot for %s", strings.Join(missing, ", "))
 	}
-	return t, t.Finite()
+	return t, errors.Join(append(coarse, t.Finite())...)
 }

@@ -3,7 +3,6 @@ package job
 import (
 	"errors"
 	"fmt"
-	"math"
 
 	"gainwright/protocol"
 	"gainwright/safety"
@@ -112,8 +111,8 @@ func (j *Job) pushRecord(old, to, back GainSet, same bool, typed string, err err
 func pushRows(old, to GainSet) []PushRow {
 	var rows []PushRow
 	for i, n := range to.Names {
-		rows = append(rows, PushRow{Name: n, Old: number(float64(math.Float32frombits(old.Bits[i]))),
-			New: number(float64(math.Float32frombits(to.Bits[i]))), Unit: gainUnits[n]})
+		rows = append(rows, PushRow{Name: n, Old: number(old.at(i)),
+			New: number(to.at(i)), Unit: gainUnits[n]})
 	}
 	return rows
 }

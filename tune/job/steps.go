@@ -94,7 +94,9 @@ func (j *Job) doSecond() (result, error) {
 			return plan
 		}
 		if k.FallSlope > 0 || k.Dips {
-			_, p := j.braked(func(k excite.Known) safety.Plan { return excite.Heights(k, j.Bias, size*j.Amplitude, heights, j.opt.Seed) })
+			_, p := j.braked(func(k excite.Known) safety.Plan {
+				return excite.Heights(k, j.Bias, size*j.Amplitude, heights, j.opt.Seed)
+			})
 			return p
 		}
 		_, p := j.braked(func(k excite.Known) safety.Plan {
