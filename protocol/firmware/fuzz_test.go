@@ -41,6 +41,7 @@ func seeds(t *testing.T, dir string) {
 	for i, s := range []string{
 		"\xfd\xfe\x00\x05\xc8\xfe\x02\x05\xc8\xff",
 		"\xfd\xfe\x02\x85\xd0\xfe\x03\x00\xc1\x03id\n\x02\x18\n",
+		"\xfd\xc0\x05hb 1 \x02\x18\n\xc0" + line("log 1 0"),
 		line("id 1") + line("tel 2") + line("stop 3") + "\xc0" + line("log 4 0"),
 		line("lim 1 get 2") + line("lim 2 set 0 41200000") + line("lim 3 crc") + line("lim 4 use 29B1"),
 		line("gain 1 get run 0") + line("gain 2 set 0 3F800000") + line("gain 3 use 0000") + line("gain 4 store 0000") + line("gain 5 crc store"),
