@@ -2,6 +2,7 @@ package tui
 
 import (
 	"testing"
+	"time"
 
 	"gainwright/tune/job"
 )
@@ -62,6 +63,35 @@ func TestShelvingNeedsAReason(t *testing.T) {
 		}
 		if len(wants) != 1 || wants[0] != (job.Shelve{ID: "battery", Reason: "ok", OutOfService: service}) {
 			t.Errorf("%s: %#v", key, wants)
+		}
+	}
+}
+
+// Only what is unacknowledged and not put aside flashes: the picture of half a
+// second later is another one, or the same.
+func TestOnlyTheUnacknowledgedFlashes(t *testing.T) {
+	for _, c := range []struct {
+		name    string
+		change  func(*job.View)
+		flashes bool
+	}{
+		{"unacknowledged", func(*job.View) {}, true},
+		{"acknowledged", func(v *job.View) { v.Alarms[0].Acked, v.Alarms[0].State = true, string(job.Acknowledged) }, false},
+		{"returned", func(v *job.View) {
+			v.Link.State, v.Alarms[0].Active, v.Alarms[0].State = job.Fresh, false, string(job.ReturnedUnacknowledged)
+		}, true},
+		{"shelved", func(v *job.View) { v.Alarms[0].Shelved, v.Alarms[0].ShelvedUntil = job.OutOfService, time.Hour }, false},
+	} {
+		v := at(job.StepStep, false)
+		v.Link.State, v.Link.Age = job.LinkLost, time.Second
+		v.Alarms = []job.AlarmView{{ID: "link", Active: true, MayShelve: true, State: string(job.Unacknowledged), Text: "link lost"}}
+		c.change(v)
+		s, _ := New(Look{}).Update("f", v)
+		v.Now = 0
+		one := s.Draw(v, 80, 24)
+		v.Now = 500 * time.Millisecond
+		if two := s.Draw(v, 80, 24); one != two != c.flashes {
+			t.Errorf("%s: flashes %v, want %v", c.name, one != two, c.flashes)
 		}
 	}
 }

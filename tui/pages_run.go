@@ -3,7 +3,6 @@ package tui
 import (
 	"fmt"
 	"math"
-	"strings"
 
 	"gainwright/tui/palette"
 	"gainwright/tui/strip"
@@ -101,8 +100,15 @@ func (p *painter) flow(a area) {
 	case d.Phase == running || d.Phase == stopping:
 		at, say = 4, "The run goes on."
 	}
-	if p.v.Plan != nil && len(p.v.Plan.Notes) > 0 {
-		a.put(1, 0, palette.Caution, " "+strings.Join(p.v.Plan.Notes, "; ")+" ")
+	if pl := p.v.Plan; pl != nil {
+		x := 1
+		for i, n := range pl.Notes {
+			role := palette.Plain
+			if i < pl.Grave {
+				role = palette.Caution
+			}
+			x = a.put(x, 0, role, n) + 2
+		}
 	}
 	x := 1
 	for i, word := range []string{"1 arm", "2 area clear", "3 go", "4 count-down", "5 run"} {

@@ -18,7 +18,7 @@ type line struct {
 func (p *painter) panels(a area) area {
 	v := p.v
 	if v.Link.State == job.LinkLost {
-		a = p.panel(a, "LINK LOST", p.flash(true), p.lost())
+		a = p.panel(a, "LINK LOST", p.flash(p.lostFlashes()), p.lost())
 	}
 	if v.Drive.Phase == tripped {
 		a = p.panel(a, "TRIPPED", p.flash(!v.Drive.Acked), p.trip())

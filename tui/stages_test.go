@@ -182,6 +182,7 @@ func stages() []stage {
 	v = at(job.StepStep, true)
 	v.Plan = stepPlan()
 	v.Plan.Notes = []string{"battery 9 % and not charging", "sleep is not held off: start under systemd-inhibit"}
+	v.Plan.Grave = 1
 	add("inching", withDrive(v, func(d *job.DriveView) {
 		d.Phase, d.Inch, d.Inches, d.Clear, d.ArmLeft = armed, true, 2, true, 41*time.Second
 	}), "")

@@ -123,7 +123,7 @@ func (p *painter) link() (string, palette.Role) {
 	case job.Stale:
 		role = palette.Caution
 	case job.LinkLost:
-		role = p.flash(true)
+		role = p.flash(p.lostFlashes())
 	case job.LookOnly:
 		role = palette.Notice
 	}
@@ -138,6 +138,17 @@ func (p *painter) link() (string, palette.Role) {
 		text += " " + string(`|/-\`[(l.Frames/4)%4])
 	}
 	return text, role
+}
+
+// lostFlashes reports whether a lost link may flash: not once it was acknowledged
+// or put aside.
+func (p *painter) lostFlashes() bool {
+	for i := len(p.v.Alarms) - 1; i >= 0; i-- {
+		if a := p.v.Alarms[i]; a.ID == "link" && a.Active {
+			return a.Flashes()
+		}
+	}
+	return true
 }
 
 // old marks a text that is not fresh: grey and struck, or between waves where

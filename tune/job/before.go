@@ -40,32 +40,33 @@ func (l Laptop) Words() (grave, notes []string) {
 }
 
 // before does what comes before an arm: the checklist, once a session, and what is
-// to be said of the laptop. It returns the notes that stand beside the plan.
-func (j *Job) before() ([]string, error) {
+// to be said of the laptop. It returns the notes that stand beside the plan, the
+// grave ones first.
+func (j *Job) before() (notes []string, grave int, err error) {
 	if err := j.tickList(); err != nil {
-		return nil, err
+		return nil, 0, err
 	}
-	grave, notes := j.h.Laptop().Words()
-	for _, g := range grave {
+	said, notes := j.h.Laptop().Words()
+	for _, g := range said {
 		if j.laptop[g] {
 			continue
 		}
 		a, err := j.h.Ask(Question{Kind: AskYesNo, Text: "Go on all the same?", Detail: []string{"The laptop: " + g + ". If it dies in motion, the stop is left to the board's timeout.", "Plug it in first, or go on: your answer is kept."}})
 		if err != nil {
-			return nil, err
+			return nil, 0, err
 		}
 		if err := j.h.Keep("event", "laptop", sheet.EventRecord{What: "before arming: " + g, Detail: fmt.Sprintf("go on: %v", a.Yes)}); err != nil {
-			return nil, err
+			return nil, 0, err
 		}
 		if !a.Yes {
-			return nil, ErrDeclined
+			return nil, 0, ErrDeclined
 		}
 		if j.laptop == nil {
 			j.laptop = map[string]bool{}
 		}
 		j.laptop[g] = true
 	}
-	return append(grave, notes...), nil
+	return append(said, notes...), len(said), nil
 }
 
 // tickList has the checklist of the rig file ticked line by line.

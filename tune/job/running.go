@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 	"time"
 
@@ -83,11 +84,12 @@ func (j *Job) runAs(step StepID, asked Run) (Result, error) {
 	if err != nil {
 		return Result{}, err
 	}
-	notes, err := j.before()
+	notes, grave, err := j.before()
 	if err != nil {
 		return Result{}, err
 	}
-	run.View.Notes = append(notes, run.View.Notes...)
+	noted := func(v *PlanView) { v.Notes, v.Grave = slices.Concat(notes[:grave], v.Notes, notes[grave:]), grave }
+	noted(&run.View)
 	if run.Sized != nil {
 		run.Resize = func(by int) (Run, error) {
 			size := math.Round(10*(run.View.Size+sizeStep*float64(by))) / 10
@@ -96,6 +98,7 @@ func (j *Job) runAs(step StepID, asked Run) (Result, error) {
 			}
 			next, q, err := j.prepared(run, size)
 			if err == nil {
+				noted(&next.View)
 				run, quantities = next, q
 			}
 			return run, err

@@ -170,6 +170,7 @@ type PlanView struct {
 	Size     float64  // of the size chosen, 1 = as proposed
 	Resize   bool     // the size can be changed
 	Notes    []string // said before arming: battery, sleep
+	Grave    int      // of them, from the first
 }
 
 // Fact is a quantity with its name, in words ready to show.
