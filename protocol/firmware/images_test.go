@@ -19,9 +19,9 @@ import (
 
 var building sync.Mutex
 
-// needImage builds everything that can be built here and returns the path of one
-// part, or skips with a word.
-func needImage(t *testing.T, programs []string, name string) string {
+// needImage builds a part of what can be built here, once, and returns the path of
+// one file of it, or skips with a word.
+func needImage(t *testing.T, programs []string, part, name string) string {
 	t.Helper()
 	for _, p := range programs {
 		need(t, p)
@@ -31,7 +31,7 @@ func needImage(t *testing.T, programs []string, name string) string {
 	dir := filepath.Join(buildDir, "images")
 	path := filepath.Join(dir, name)
 	if _, err := os.Stat(path); err != nil {
-		if msg, err := exec.Command("sh", "boards/build.sh", dir).CombinedOutput(); err != nil {
+		if msg, err := exec.Command("sh", "boards/build.sh", dir, part).CombinedOutput(); err != nil {
 			t.Fatalf("boards/build.sh: %v\n%s", err, msg)
 		}
 	}
@@ -134,8 +134,8 @@ func TestATmega328P(t *testing.T) {
 	programs := []string{"gcc", "avr-gcc"}
 	for _, image := range []string{"m328-sim.elf", "m328-sim-fixed.elf"} {
 		t.Run(image, func(t *testing.T) {
-			elf := needImage(t, programs, image)
-			runner := needImage(t, programs, "avrrun")
+			elf := needImage(t, programs, "avr", image)
+			runner := needImage(t, programs, "avr", "avrrun")
 			cmd := exec.Command(runner, elf, "--virtual")
 			cmd.Stderr = os.Stderr
 			in, err := cmd.StdinPipe()
@@ -169,7 +169,7 @@ func TestATmega328P(t *testing.T) {
 func TestATmega328PFitsInItsFlash(t *testing.T) {
 	t.Parallel()
 	need(t, "avr-size")
-	elf := needImage(t, []string{"gcc", "avr-gcc"}, "m328.elf")
+	elf := needImage(t, []string{"gcc", "avr-gcc"}, "avr", "m328.elf")
 	out, err := exec.Command("avr-size", elf).Output()
 	if err != nil {
 		t.Fatal(err)
@@ -187,7 +187,7 @@ func TestATmega328PFitsInItsFlash(t *testing.T) {
 // TestCortexM3 runs the 32-bit image under QEMU, in real time, over a socket.
 func TestCortexM3(t *testing.T) {
 	t.Parallel() // it waits most of the time
-	image := needImage(t, []string{"arm-none-eabi-gcc", "qemu-system-arm"}, "an385.elf")
+	image := needImage(t, []string{"arm-none-eabi-gcc", "qemu-system-arm"}, "arm", "an385.elf")
 	path := filepath.Join(buildDir, "uart")
 	cmd := exec.Command("qemu-system-arm", "-M", "mps2-an385", "-kernel", image, "-display", "none", "-monitor", "none", "-nodefaults",
 		"-chardev", "socket,id=u0,path="+path+",server=on,wait=on", "-serial", "chardev:u0")
