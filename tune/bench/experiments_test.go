@@ -87,6 +87,14 @@ func TestOptionalExperimentsFindTheRigsOwnNumbers(t *testing.T) {
 		{job.StepRelay, "time constant", tau, 0.05},
 		{job.StepFrequency, "gain", gain, 0.03},
 		{job.StepFrequency, "time constant", tau, 0.05},
+		{job.StepNoise, "speed step", 2 * math.Pi / float64(cfg.Encoder.PerTurn) / (float64(cfg.Board.Window*cfg.Board.LoopUS) * 1e-6), 1e-6},
+		{job.StepMethods, "lost by the driver, reverse", cfg.Driver.DeadBand, 0.5},
+		{job.StepMotor, "R", m.Ohms, 0.04},
+		{job.StepMotor, "Ke", m.K, 0.01},
+		{job.StepMotor, "J", inertia, 0.05},
+		{job.StepMotor, "Coulomb friction forward", cfg.Friction.Forward.Coulomb, 0.15},
+		{job.StepMotor, "Coulomb friction reverse", rev.Coulomb, 0.15},
+		{job.StepMap, "believed to", 0.7 * 0.8 * cfg.Nameplate.SpeedMax, 0.1},
 	} {
 		if got, sd := found(t, r, c.step, c.name); !(math.Abs(got/c.want-1) <= c.share) {
 			t.Errorf("%s: %s is %.4g ± %.2g, the rig's own is %.4g", c.step, c.name, got, 1.96*sd, c.want)

@@ -84,7 +84,7 @@ func (s *session) Sample(now time.Duration, x protocol.Sample) {
 	// From the count-down on: what the shaft did before the drive belongs to the
 	// record.
 	if ph := s.core.Phase(); r.started || ph == safety.CountDown {
-		r.samples = append(r.samples, job.Sample{At: now, Sample: x})
+		r.samples = append(r.samples, job.Sample{At: now, Bad: s.core.Link().Stats.BadLines, Sample: x})
 	}
 	s.draw(x)
 	s.learn(r, x)

@@ -21,7 +21,7 @@ type ExperimentSettings struct {
 
 // analyses are the pure analyses by their step.
 var analyses = map[StepID]func(ExperimentSettings, []*trace.Trace, *sheet.ExperimentRecord) error{
-	StepCoast: analyseCoast, StepRelay: analyseRelay, StepFrequency: analyseFrequency, StepTiming: analyseTiming,
+	StepNoise: analyseNoise, StepMethods: analyseMethods, StepMotor: analyseMotor, StepMap: analyseMap, StepCoast: analyseCoast, StepRelay: analyseRelay, StepFrequency: analyseFrequency, StepTiming: analyseTiming,
 	StepResistance: analyseResistance, StepReversal: analyseReversal, StepWarmUp: analyseWarmUp,
 }
 
@@ -68,7 +68,7 @@ func paramOf(rec sheet.ExperimentRecord, name string) (v, sd float64, ok bool) {
 // experiment analyses traces that were kept as files, keeps what came out and
 // shows it.
 func (j *Job) experiment(set ExperimentSettings, traces []*trace.Trace, files []string) (result, error) {
-	title := info(set.Experiment).Title
+	title := titleOf(set.Experiment)
 	rec, err := set.Analyse(traces)
 	if err != nil {
 		return "", refuse(770, title, err.Error(), "look at the traces in the record; do it again")
@@ -85,6 +85,12 @@ func (j *Job) experiment(set ExperimentSettings, traces []*trace.Trace, files []
 	}
 	j.Experiments[set.Experiment] = rec
 	j.showExperiments()
+	switch set.Experiment {
+	case StepRelay, StepFrequency, StepCoast:
+		if err := j.methods(); err != nil {
+			return "", err
+		}
+	}
 	words := rec.Finding
 	if len(rec.Reasons) > 0 {
 		words += "; " + rec.Verdict + ": " + rec.Reasons[0]
@@ -92,15 +98,31 @@ func (j *Job) experiment(set ExperimentSettings, traces []*trace.Trace, files []
 	return result(words), nil
 }
 
+// experimentOrder is the order in which they are shown.
+var experimentOrder = []StepID{StepMotor, StepMethods, StepNoise, StepTiming, StepResistance, StepReversal, StepWarmUp, StepCoast, StepRelay, StepFrequency, StepMap}
+
+// titleOf is a step's title, also of what has no step of its own.
+func titleOf(id StepID) string {
+	switch id {
+	case StepNoise:
+		return "Noise"
+	case StepMotor:
+		return "Motor equations"
+	case StepMethods:
+		return "Methods"
+	}
+	return info(id).Title
+}
+
 // showExperiments puts all that was found on the screens, in the order of the path.
 func (j *Job) showExperiments() {
 	var list []ExperimentView
-	for i := range Path {
-		rec, ok := j.Experiments[Path[i].ID]
+	for _, id := range experimentOrder {
+		rec, ok := j.Experiments[id]
 		if !ok {
 			continue
 		}
-		x := ExperimentView{Step: Path[i].ID, Title: Path[i].Title, Verdict: rec.Verdict, Reasons: rec.Reasons, Finding: rec.Finding}
+		x := ExperimentView{Step: id, Title: titleOf(id), Verdict: rec.Verdict, Reasons: rec.Reasons, Finding: rec.Finding}
 		for _, q := range rec.Params {
 			x.Facts = append(x.Facts, Fact{Name: q.Name, Value: quantityWords(q), Why: q.Why})
 		}

@@ -121,7 +121,8 @@ type Capture struct {
 
 // Sample is a telemetry sample with the console time at which it was read.
 type Sample struct {
-	At time.Duration
+	At  time.Duration
+	Bad uint64 // lines dropped so far
 	protocol.Sample
 }
 

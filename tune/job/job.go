@@ -57,6 +57,7 @@ type Known struct {
 	StepFile, SecondFile   string
 	Fit                    *identify.Result
 	FitFile                string // of the chosen fit, in the record
+	fitTold                FitSettings
 
 	FoundMargins *design.Margins
 	foundGains   *design.Gains // while the as-found trace is taken

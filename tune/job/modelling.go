@@ -1,6 +1,7 @@
 package job
 
 import (
+	"errors"
 	"fmt"
 	"math"
 
@@ -72,11 +73,8 @@ func steady(tr *trace.Trace, i, last int, band float64) bool {
 // doFit fits and judges.
 func (j *Job) doFit() (result, error) {
 	j.h.Show(func(v *View) { v.Busy, v.Share = "fitting", 0 })
-	set := fitDefaults
-	if !j.Rig.Drive.SupplySinks {
-		set.Bus = j.Rig.Drive.BusNominal
-	}
-	set.Edges = coarse(j.StepTrace, j.Tau) || j.SecondTrace != nil && coarse(j.SecondTrace, j.Tau)
+	set := j.fitSettings()
+	j.fitTold = set
 	res, err := set.Identify(j.StepTrace, j.SecondTrace)
 	if err != nil {
 		return "", refuse(730, "model", err.Error(), "repeat the step test, larger if the envelope allows it")
@@ -103,7 +101,20 @@ func (j *Job) doFit() (result, error) {
 		return "", refuse(731, "model refused", reasons(f), f.Helps)
 	}
 	j.lookAhead(best)
+	if err := errors.Join(j.methods(), j.motorBox()); err != nil {
+		return "", err
+	}
 	return result(fmt.Sprintf("%s, %s: %s", best.Model.Kind, best.Verdict, paramWords(*best))), nil
+}
+
+// fitSettings are what the fit is told on the records at hand.
+func (j *Job) fitSettings() FitSettings {
+	set := fitDefaults
+	if !j.Rig.Drive.SupplySinks {
+		set.Bus = j.Rig.Drive.BusNominal
+	}
+	set.Edges = coarse(j.StepTrace, j.Tau) || j.SecondTrace != nil && coarse(j.SecondTrace, j.Tau)
+	return set
 }
 
 // lookAhead gives the limiter the model, so that it sees a ceiling coming, and

@@ -51,6 +51,9 @@ func (j *Job) doStaircase() (result, error) {
 		}
 		j.lookMotor()
 		words, err := j.keepStairs(static, runs[0].Result)
+		if bad := j.noise(runs); bad != nil {
+			j.h.Say("noise of the staircase: %v", bad)
+		}
 		return words, errors.Join(err, j.gravity(runs), j.lostMotion())
 	}
 }
