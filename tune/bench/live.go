@@ -29,6 +29,7 @@ type Live struct {
 	mail     chan func(*session)
 	steps    chan func(*job.Job)
 	over     chan struct{}
+	gone     chan struct{} // closed when the session's goroutine has ended
 	overOnce sync.Once
 	done     sync.WaitGroup
 	waiters  []*waiter
@@ -79,7 +80,7 @@ const (
 // NewLive starts a live bench. Nothing is opened yet.
 func NewLive(opt Options) *Live {
 	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), mail: make(chan func(*session), mailMax),
-		steps: make(chan func(*job.Job), 4), over: make(chan struct{}), late: &lateFile{}}
+		steps: make(chan func(*job.Job), 4), over: make(chan struct{}), gone: make(chan struct{}), late: &lateFile{}}
 	l.s = &session{}
 	l.s.core = supervisor.NewCore(liveWire{l}, l.s, uint16(l.start.UnixNano()>>10))
 	l.s.core.Simulated = opt.Simulated
@@ -206,7 +207,7 @@ func (l *Live) do(f func(*session)) {
 	}
 	select {
 	case <-ran:
-	case <-l.over:
+	case <-l.gone: // the session's goroutine has ended: f does not run, and is not running
 	}
 }
 
@@ -239,6 +240,7 @@ func (l *Live) cycle() bool { return false }
 
 // supervise is the goroutine that owns the drive.
 func (l *Live) supervise() {
+	defer close(l.gone)
 	pace := restTickEach
 	tick := time.NewTicker(pace)
 	defer tick.Stop()

@@ -11,7 +11,9 @@ import (
 	"time"
 
 	"gainwright/link"
+	"gainwright/link/tape"
 	"gainwright/protocol"
+	"gainwright/safety"
 	"gainwright/tune/job"
 	"gainwright/tune/sheet"
 )
@@ -21,12 +23,16 @@ import (
 func TestAFaultCutsFirst(t *testing.T) {
 	synctest.Test(t, func(t *testing.T) {
 		near, far := link.Pipe()
+		var mu sync.Mutex
 		var got strings.Builder
+		all := func() string { mu.Lock(); defer mu.Unlock(); return got.String() }
 		go func() {
 			buf := make([]byte, 256)
 			for {
 				n, err := far.Read(buf)
+				mu.Lock()
 				got.Write(buf[:n])
+				mu.Unlock()
 				if err != nil {
 					return
 				}
@@ -35,12 +41,12 @@ func TestAFaultCutsFirst(t *testing.T) {
 		told := ""
 		l := NewLive(Options{
 			Open:    func(string) (Opened, error) { return Opened{Port: near, Baud: 115200}, nil },
-			OnPanic: func(v any, _ []byte) { synctest.Wait(); told = got.String() },
+			OnPanic: func(v any, _ []byte) { synctest.Wait(); told = all() },
 		})
 		l.Connect("memory")
 		time.Sleep(100 * time.Millisecond)
-		if strings.IndexByte(got.String(), protocol.Cut) >= 0 {
-			t.Fatalf("a stop without a reason: %q", got.String())
+		if strings.IndexByte(all(), protocol.Cut) >= 0 {
+			t.Fatalf("a stop without a reason: %q", all())
 		}
 		l.panicked("a fault", nil)
 		if strings.IndexByte(told, protocol.Cut) < 0 {
@@ -143,4 +149,45 @@ func TestAFaultInAnyGoroutineCutsFirst(t *testing.T) {
 			})
 		})
 	}
+}
+
+// A disk that takes nothing any more holds up the tape and nothing else: the stop
+// leaves.
+func TestAStopDoesNotWaitForTheDisk(t *testing.T) {
+	near, far := link.Pipe()
+	cut := make(chan struct{})
+	go func() {
+		buf := make([]byte, 256)
+		for {
+			n, err := far.Read(buf)
+			if strings.IndexByte(string(buf[:n]), protocol.Cut) >= 0 {
+				close(cut)
+				return
+			}
+			if err != nil {
+				return
+			}
+		}
+	}()
+	opened := make(chan struct{})
+	l := NewLive(Options{Open: func(string) (Opened, error) {
+		defer close(opened)
+		return Opened{Port: near, Baud: 115200}, nil
+	}})
+	l.late.mu.Lock() // the disk stalls: whoever writes the tape waits here
+	l.Connect("memory")
+	<-opened
+	for l.line.Load() == nil {
+		runtime.Gosched()
+	}
+	for range 5000 { // more than the tape's goroutine could have written meanwhile
+		l.tape.Record(l.now(), tape.FromBoard, []byte("T00000000000000000000000\n"))
+	}
+	l.Stop(safety.ByStopKey)
+	<-cut // a stop that waited for the disk would never come
+	l.late.mu.Unlock()
+	if _, err := l.Close(); err != nil {
+		t.Error(err)
+	}
+	far.Close()
 }
