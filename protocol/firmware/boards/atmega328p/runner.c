@@ -103,6 +103,8 @@ static void give(const uint8_t *b, size_t n)
 	in_n += n;
 }
 
+static int deepest; /* of the stack, also before the last reset, which paints anew */
+
 /* memory finds the painted gap between static data and stack. */
 static void memory(char *text, size_t n)
 {
@@ -116,7 +118,9 @@ static void memory(char *text, size_t n)
 		}
 	}
 	to = from + best;
-	snprintf(text, n, "static %d stack %d", from - RAM, (int)avr->ramend + 1 - to);
+	if ((int)avr->ramend + 1 - to > deepest)
+		deepest = (int)avr->ramend + 1 - to;
+	snprintf(text, n, "static %d stack %d", from - RAM, deepest);
 }
 
 static int need(void *to, size_t n)
@@ -151,6 +155,7 @@ static int run_virtual(void)
 		} else if (head[0] == 'X') {
 			in_n = in_at = 0;
 			open_in = 1;
+			memory(text, sizeof text);
 			avr_reset(avr); /* RAM and EEPROM stay as they are */
 			reply("", 0);
 		} else if (head[0] == 'H') {
