@@ -204,7 +204,7 @@ func abs64(v int64) int64 {
 
 // doStop has the stop key pressed at creep speed.
 func (j *Job) doStop() (result, error) {
-	r, err := j.run(StepStop, excite.Creep(j.sizing(), safety.CheckStop, 20*time.Second), nil)
+	r, err := j.creepForStop()
 	if err != nil {
 		return "", err
 	}
@@ -236,6 +236,40 @@ func (j *Job) doStop() (result, error) {
 	j.roughModel(r)
 	return result(finding), nil
 }
+
+// creepForStop runs at creep for the stop check. Where only the nameplate says what
+// a volt gives, the shaft may come too near the creep ceiling: then what was seen
+// says how much slower to creep, and it is offered again.
+func (j *Job) creepForStop() (Result, error) {
+	for try := 0; ; try++ {
+		r, err := j.run(StepStop, excite.Creep(j.sizing(), safety.CheckStop, 20*time.Second), nil)
+		quick := r.Reason == safety.EndTripped && (r.Cause.Code == safety.CodeSpeedAhead || r.Cause.Code == safety.CodeSpeed)
+		if err != nil || !quick || try == creepTries {
+			return r, err
+		}
+		w, v := 0.0, 0.0
+		for _, s := range r.Samples {
+			if x := math.Abs(float64(s.Speed)); x > w {
+				w, v = x, float64(s.Volts)
+			}
+		}
+		seen := j.Gain * creepSlower
+		if free := v - 0.85*j.StartForward; free > 0 {
+			seen = math.Max(seen, creepSlower*w/free)
+		}
+		j.Gain = seen
+		if err := j.h.ClearTrip(Question{Kind: AskEnter, Text: "It crept too near its ceiling. Acknowledge the trip, then reset it; it creeps slower then",
+			Detail: []string{"Acknowledging says that it was seen and changes nothing. The reset clears it. Neither starts anything."}}); err != nil {
+			return r, err
+		}
+	}
+}
+
+// How often, and by how much, creep is made slower (our choice).
+const (
+	creepTries  = 3
+	creepSlower = 1.3
+)
 
 func stopFinding(s StopSeen) string {
 	return fmt.Sprintf("key to wire %.2f ms, wire to the board's answer %.2f ms", s.KeyToWire.Seconds()*1000, s.WireToBoard.Seconds()*1000)
