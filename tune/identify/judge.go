@@ -52,6 +52,7 @@ func (f *Fit) judge() {
 	v := &verdicts{worst: Believed}
 	judgeResponse(f, v)
 	judgeWidths(f, v)
+	judgeTwins(f, v)
 	judgeMasks(f, v)
 	judgePrediction(f, v)
 	judgeFindings(f, v)
@@ -136,6 +137,36 @@ func judgeWidths(f *Fit, v *verdicts) {
 		case half > care:
 			v.add(Care, "more repeats or a larger step", "%s is known to ±%.0f %% only", p.Name, 100*half)
 		}
+	}
+}
+
+// twinSigmas is how many standard deviations of its own the squared distance of two
+// time constants must be from nothing for each to be called known (our choice).
+const twinSigmas = 3.5
+
+// judgeTwins says where two time constants are too near to each other to be told
+// apart: T1,2 = s/2 ± √(s²/4 − p) from sum s and product p, which are well known, has no
+// slope at equal ones, so that a small error of either moves both far. A loop cares
+// for s and p.
+func judgeTwins(f *Fit, v *verdicts) {
+	a, b := -1, -1
+	for i, p := range f.Params {
+		switch p.Name {
+		case "tau":
+			a = i
+		case "tau2":
+			b = i
+		}
+	}
+	if a < 0 || b < 0 || len(f.Cov) <= max(a, b) {
+		return
+	}
+	apart := math.Abs(f.Params[a].Value - f.Params[b].Value)
+	spread := f.Cov[a][a] + f.Cov[b][b] - 2*f.Cov[a][b]
+	if spread > 0 && apart < 2*twinSigmas*math.Sqrt(spread) {
+		sum := f.Cov[a][a] + f.Cov[b][b] + 2*f.Cov[a][b]
+		v.add(Care, "more repeats or a larger step", "the two time constants are near to each other and not told apart: their sum, %.3g ± %.1g ms, is known, one by one they are not",
+			1e3*(f.Params[a].Value+f.Params[b].Value), 1.96e3*math.Sqrt(math.Max(sum, 0)))
 	}
 }
 

@@ -67,12 +67,17 @@ func (j *Job) doStep() (result, error) {
 		_, p := j.braked(func(k excite.Known) safety.Plan { return excite.Step(k, j.Bias, size*j.Amplitude, n) })
 		return p
 	}
-	tr, file, size, err := j.record(StepStep, plan, resized)
+	learner := j.stepLearner(n, 0)
+	tr, file, size, err := j.recordLearning(StepStep, plan, resized, learner.sample)
 	if err != nil {
 		return "", err
 	}
 	j.Amplitude *= size
 	j.StepTrace, j.StepFile = tr, file
+	if err := j.stepMore(learner, n); err != nil {
+		return "", err
+	}
+	tr = j.StepTrace
 	return result(fmt.Sprintf("%d samples, steps of ±%.3g V about %.3g V", tr.Len(), j.Amplitude, j.Bias)), nil
 }
 
@@ -139,7 +144,12 @@ const captureLeast = 100
 // drove about its middle.
 // sized makes it in another size; the size that it was run at is returned.
 func (j *Job) record(step StepID, plan safety.Plan, sized func(float64) safety.Plan) (tr *trace.Trace, file string, size float64, err error) {
-	r, size, err := j.runSized(step, sized, Run{Plan: plan, Capture: j.capture(plan)})
+	return j.recordLearning(step, plan, sized, nil)
+}
+
+// recordLearning is record with something that is told of every sample.
+func (j *Job) recordLearning(step StepID, plan safety.Plan, sized func(float64) safety.Plan, learn func(Sample) (string, bool)) (tr *trace.Trace, file string, size float64, err error) {
+	r, size, err := j.runSized(step, sized, Run{Plan: plan, Capture: j.capture(plan), Learn: learn})
 	if err != nil {
 		return nil, "", size, err
 	}
