@@ -4,6 +4,8 @@ import (
 	"errors"
 	"math"
 	"path/filepath"
+	"strconv"
+	"strings"
 	"testing"
 	"time"
 
@@ -109,6 +111,36 @@ func TestOptionalExperimentsFindTheRigsOwnNumbers(t *testing.T) {
 	}
 }
 
+// The rules of the ultimate point stand in the table of rules a second time, with
+// what the relay found, and give nearly the same gains.
+func TestRelayFeedsTheRules(t *testing.T) {
+	v, j := onBench(t, "benchtop", job.StepFit)
+	if err := j.Do(job.StepRelay); err != nil {
+		t.Fatal(err)
+	}
+	if err := j.Do(job.StepDesign); err != nil {
+		t.Fatal(err)
+	}
+	kp := map[string]float64{}
+	pairs := 0
+	for _, r := range v.s.view.Design.Rules {
+		if x, err := strconv.ParseFloat(r.Kp, 64); err == nil {
+			kp[r.Rule] = x
+		}
+	}
+	for rule, x := range kp {
+		if own, ok := kp[strings.TrimSuffix(rule, ", relay")]; ok && strings.HasSuffix(rule, ", relay") {
+			pairs++
+			if math.Abs(x/own-1) > 0.15 {
+				t.Errorf("%s: Kp %.4g, by the fit %.4g", rule, x, own)
+			}
+		}
+	}
+	if pairs < 1 {
+		t.Errorf("%d rules with the relay's numbers: %v", pairs, kp)
+	}
+}
+
 // A board without a current sensor refuses what needs one, in words, and the job
 // goes on.
 func TestExperimentsThatCannotBeDone(t *testing.T) {
@@ -121,5 +153,49 @@ func TestExperimentsThatCannotBeDone(t *testing.T) {
 	}
 	if err := j.Do(job.StepDesign); err != nil {
 		t.Errorf("afterwards: %v", err)
+	}
+}
+
+// Where three repeats leave the time constant too wide the steps are run once more,
+// and that run ends by itself when enough is known; where they do not, it is not.
+func TestStepsEndWhenEnoughIsKnown(t *testing.T) {
+	cfg, err := simrig.Load(rigs + "/benchtop.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, c := range []struct {
+		counts int
+		more   bool
+	}{{2000, false}, {48, true}} {
+		cfg.Encoder.PerTurn, cfg.Board.Capture = c.counts, 0
+		cfg.Board.Window = 10
+		r, text, err := RigOf(cfg)
+		if err != nil {
+			t.Fatal(err)
+		}
+		v := NewVirtual(simrig.New(cfg, 1), time.Date(2026, 1, 2, 8, 0, 0, 0, time.UTC))
+		j := job.New(v.Hands(nil), job.Options{Rig: r, RigText: text, Version: "test"})
+		for _, s := range job.Path {
+			if s.Optional {
+				continue
+			}
+			if err := j.Do(s.ID); err != nil {
+				t.Fatalf("%d counts: %s: %v", c.counts, s.ID, err)
+			}
+			if s.ID == job.StepStep {
+				break
+			}
+		}
+		more, enough := false, false
+		for _, l := range v.s.view.Log {
+			more = more || strings.Contains(l.Text, "is asked for: once more")
+			enough = enough || strings.Contains(l.Text, "enough is known")
+		}
+		if more != c.more || enough != c.more {
+			t.Errorf("%d counts: more %v, ended by what is known %v", c.counts, more, enough)
+		}
+		if l := v.s.view.Live; l == nil || !strings.Contains(l.Learn, "one more") {
+			t.Errorf("%d counts: the screen does not say what one more repeat would buy", c.counts)
+		}
 	}
 }

@@ -156,15 +156,11 @@ func figures(m design.Margins, w *design.Worst) []sheet.Quantity {
 func (j *Job) showDesign() {
 	d := &DesignView{MsMax: j.opt.MsMax, NoChange: j.NoChange, CanBeMoved: true}
 	for i, p := range j.Proposals {
-		row := RuleRow{Rule: p.Rule, Chosen: i == j.Chosen && !j.NoChange, Note: p.Refused}
-		if p.Refused == "" {
-			g, m := p.Gains.Parallel(), p.Margins
-			row.Kp, row.Ki, row.Ms = number(g.Kp), number(g.Ki), fmt.Sprintf("%.2f", float64(m.Ms))
-			row.PM, row.GM = fmt.Sprintf("%.0f°", float64(m.PhaseMargin)), decibels(m.GainMarginDB)
-			row.Overshoot, row.Settling = fmt.Sprintf("%.0f %%", float64(m.Step.Overshoot)), fmt.Sprintf("%.0f ms", float64(m.Step.SettlingTime)*1000)
-		}
+		row := ruleRow(p)
+		row.Chosen = i == j.Chosen && !j.NoChange
 		d.Rules = append(d.Rules, row)
 	}
+	d.Rules = append(d.Rules, j.relayRules()...)
 	if j.FoundMargins != nil {
 		d.Found = marginFacts(*j.FoundMargins)
 	}
