@@ -153,7 +153,9 @@ func (l *Live) Stop(source safety.StopSource) {
 		l.cut()
 		runtime.Gosched() // the writer goes on in this thread, at once, and no other has to wake up for it
 	}
-	l.post(func(s *session) { s.core.Stop(s.notLate(at), source) })
+	if !l.post(func(s *session) { s.core.Stop(s.notLate(at), source) }) {
+		l.cut() // the session hangs: nobody will ask for a ramp
+	}
 }
 
 // Key tells of a key that is not the stop key. In count-down and in motion every

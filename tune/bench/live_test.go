@@ -191,3 +191,31 @@ func TestAStopDoesNotWaitForTheDisk(t *testing.T) {
 	}
 	far.Close()
 }
+
+// Where the stop key asks for a ramp first and the session takes nothing any more,
+// the cut byte leaves instead.
+func TestAStopThatNobodyTakesIsACut(t *testing.T) {
+	near, far := link.Pipe()
+	l := &Live{mail: make(chan func(*session), 1)}
+	l.mail <- func(*session) {} // the mailbox is full, and nobody empties it
+	l.style.Store(1)
+	w := link.NewWriter(near, link.Config{Baud: 115200})
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	go w.Run(ctx)
+	l.line.Store(&liveLine{port: near, writer: w, cancel: cancel})
+	l.Stop(safety.ByStopKey)
+	buf := make([]byte, 16)
+	for {
+		n, err := far.Read(buf)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if n > 0 {
+			if buf[0] != protocol.Cut {
+				t.Errorf("on the wire is %q", buf[:n])
+			}
+			return
+		}
+	}
+}
