@@ -3,9 +3,11 @@
 package main
 
 import (
+	"bufio"
 	"bytes"
 	"encoding/json"
 	"fmt"
+	"io"
 	"math"
 	"os"
 	"path/filepath"
@@ -37,10 +39,22 @@ func TestWatchRecordsForAFit(t *testing.T) {
 		}
 	}()
 	var msg bytes.Buffer
+	said, say := io.Pipe()
 	done := make(chan int)
 	go func() {
-		done <- run([]string{"watch", "--port", path, "--adapter", "../../testdata/adapters/milliseconds.toml", "--out", csv}, &bytes.Buffer{}, &msg)
+		code := run([]string{"watch", "--port", path, "--adapter", "../../testdata/adapters/milliseconds.toml", "--out", csv}, &bytes.Buffer{}, say)
+		say.Close()
+		done <- code
 	}()
+	// Opening a port throws away what came before: wait for its word.
+	lines := bufio.NewReader(said)
+	first, err := lines.ReadString('\n')
+	if err != nil {
+		t.Fatal(err)
+	}
+	msg.WriteString(first)
+	heard := make(chan struct{})
+	go func() { io.Copy(&msg, lines); close(heard) }()
 	// K = 21 rad/s per V, tau = 80 ms, every 5 ms; a pseudo-terminal passes what
 	// is written only as it is read.
 	const k, tau, h = 21.0, 0.08, 0.005
@@ -58,7 +72,9 @@ func TestWatchRecordsForAFit(t *testing.T) {
 		w = k*next + (w-k*next)*math.Exp(-h/tau)
 	}
 	port.Close()
-	if code := <-done; code != exitDone {
+	code := <-done
+	<-heard
+	if code != exitDone {
 		t.Fatalf("exit %d: %s", code, msg.String())
 	}
 	if n := sent.Load(); n != 0 {
