@@ -1,9 +1,11 @@
 package tui
 
 import (
+	"fmt"
 	"strings"
 
 	"gainwright/tui/palette"
+	"gainwright/tune/job"
 )
 
 // scroll draws rows from the one that the person scrolled to, and says how many
@@ -112,6 +114,20 @@ func (p *painter) words(a area) {
 				name = g[0]
 			}
 			rows = append(rows, line{palette.Plain, name + strings.Repeat(" ", max(1, 17-len(name))) + s})
+		}
+	}
+	rows = append(rows, line{palette.Plain, ""}, line{palette.Strong, "What the numbers mean. From 700 on, the job's own: cause and remedy stand beside them."})
+	for _, n := range job.Numbers() {
+		text := n.Words
+		if n.Do != "" {
+			text += ". " + strings.ToUpper(n.Do[:1]) + n.Do[1:]
+		}
+		for k, s := range lines(text, a.w-8) {
+			name := "   "
+			if k == 0 {
+				name = fmt.Sprint(n.Number)
+			}
+			rows = append(rows, line{palette.Plain, name + "  " + s})
 		}
 	}
 	p.scroll(a, 1, rows)

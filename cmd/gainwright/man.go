@@ -9,6 +9,7 @@ import (
 	"github.com/spf13/pflag"
 
 	"gainwright/tui"
+	"gainwright/tune/job"
 )
 
 // manCommand prints the manual page. It is made from the same tables as the help
@@ -57,6 +58,14 @@ func writeMan(w io.Writer, root *cobra.Command) error {
 	b.WriteString(".SH KEYS\n")
 	for _, k := range tui.KeyTable() {
 		fmt.Fprintf(&b, ".TP\n.B %s\n%s (%s)\n", roff(k.Keys), roff(k.Does), roff(k.When))
+	}
+	b.WriteString(".SH NUMBERS\nWhat the limiter says, by its number. From 700 on, the job's own refusals say cause and remedy where they stand.\n")
+	for _, n := range job.Numbers() {
+		fmt.Fprintf(&b, ".TP\n.B %d\n%s", n.Number, roff(n.Words))
+		if n.Do != "" {
+			fmt.Fprintf(&b, ". %s", roff(strings.ToUpper(n.Do[:1])+n.Do[1:]))
+		}
+		b.WriteString(".\n")
 	}
 	b.WriteString(`.SH EXIT STATUS
 .TP
