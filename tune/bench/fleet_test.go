@@ -7,10 +7,12 @@ import (
 	"os"
 	"path/filepath"
 	"slices"
+	"strings"
 	"testing"
 
 	"gainwright/link/simrig"
 	"gainwright/link/simrig/family"
+	"gainwright/tune/identify"
 )
 
 const rigs = "../../testdata/rigs"
@@ -230,5 +232,35 @@ func TestDrawnRigsThatCameOutWrong(t *testing.T) {
 	}
 	if n := judgeFleet(t, f); n != 4 {
 		t.Errorf("%d of 4 came through", n)
+	}
+}
+
+// A motor whose electrical and mechanical time constants are nearly equal, on a
+// supply that takes nothing back: its gain comes out right although the bus moves,
+// and where one time constant by itself is off by more than a tenth the model is
+// not believed, and says why.
+func TestNearlyEqualTimeConstantsAreNotBelieved(t *testing.T) {
+	all := family.Make(267, 100)
+	cfg, err := simrig.Parse("r0266", all[266].Text)
+	if err != nil {
+		t.Fatal(err)
+	}
+	rep, err := DryRun{Config: cfg, Seed: 1, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	f, ok := rep.Model.(*identify.Fit)
+	if !ok || rep.Truth.Errors == nil || rep.Truth.Errors.Tau == nil {
+		t.Fatalf("%s: %s, no model to judge", rep.Outcome, rep.Reason)
+	}
+	e := rep.Truth.Errors
+	if math.Abs(e.Gain) > 1 {
+		t.Errorf("gain is off by %.2f %%", e.Gain)
+	}
+	if f.Verdict == identify.Believed && math.Abs(*e.Tau) > 10 {
+		t.Errorf("believed with a time constant that is off by %.1f %%", *e.Tau)
+	}
+	if f.Verdict == identify.Care && !strings.Contains(strings.Join(f.Reasons, "; "), "near to each other") {
+		t.Errorf("care without the reason: %v", f.Reasons)
 	}
 }

@@ -14,6 +14,7 @@ import (
 
 const (
 	busShare    = 0.6  // of the room between nominal and highest bus that a plan may use
+	busLag      = 0.3  // of a step's size over its volts
 	unseenShare = 0.01 // of the nominal bus, where the bus is not measured
 	dipTau      = 0.06 // s
 	tightShare  = 0.88 // of the current limit
@@ -71,6 +72,13 @@ func (j *Job) braked(of func(excite.Known) safety.Plan) (excite.Known, safety.Pl
 	k := j.sizing()
 	k.BrakeVolts = j.brakeVolts()
 	plan, room := of(k), j.busRoom(true)
+	if loop := j.ID.Loop.Seconds(); j.ID.BusMeasured && loop > 0 && j.Tau > 0 && j.capture(plan) != nil {
+		// The duty is worked out from the bus of the loop before. While the bus moves,
+		// the volts are off by a loop's worth of its change, against a step that acts
+		// for a time constant. Telemetry does not resolve that; there a quick fall is
+		// worth more.
+		room = math.Min(room, unseenShare*j.Rig.Drive.BusNominal*math.Max(1, busLag*j.Tau/loop))
+	}
 	if math.IsInf(room, 1) {
 		return k, plan
 	}
