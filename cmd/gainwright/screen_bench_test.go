@@ -85,7 +85,7 @@ func consoleOn(b *testing.B, bin string) []string {
 	quit := make(chan struct{})
 	b.Cleanup(func() { close(quit); port.Close() })
 	go flood(port, 100, quit)
-	return []string{bin, "console", "--port", path, "--out", filepath.Join(b.TempDir(), "s")}
+	return []string{bin, "console", "--port", path, "--baud", "115200", "--out", filepath.Join(b.TempDir(), "s")}
 }
 
 // answered is the terminal's answer to a floor program's question for colours:

@@ -30,12 +30,13 @@ type probed struct {
 	bad   uint64
 }
 
-// probe asks what is at the other end for its identity, and for nothing else. It
-// is called before any other goroutine has the port.
+// probe asks what is at the other end for its identity, and for nothing else, but
+// for a stop that somebody asks for meanwhile. It is called before any other
+// goroutine has the port.
 func probe(port interface {
 	Read([]byte) (int, error)
 	Write([]byte) (int, error)
-}, number uint16) (p probed, err error) {
+}, number uint16, cutOwed func() bool) (p probed, err error) {
 	start := time.Now()
 	ex := protocol.NewExchange(number)
 	_ = ex.Offer(protocol.Request{Verb: protocol.VerbID, Timeout: probeTry, Tries: probeTries})
@@ -46,6 +47,11 @@ func probe(port interface {
 		line, ended := ex.Tick(now)
 		if ended != nil || now > probeAll || now > probeNothing && p.good == 0 {
 			return p, nil
+		}
+		if cutOwed() {
+			if _, err := port.Write([]byte{protocol.Cut}); err != nil {
+				return p, err
+			}
 		}
 		if line != nil {
 			if _, err := port.Write(line); err != nil {
@@ -82,6 +88,9 @@ func (h *probeHandler) Line(body []byte) {
 	}
 }
 
+// owesCut says once that a stop was asked for while no line was open.
+func (l *Live) owesCut() bool { return l.cutOwed.Swap(false) }
+
 // search looks for the rate of a board that says nothing that can be read. It
 // opens the port once for each rate and leaves it closed.
 func (l *Live) search(path string, not int) (baud int) {
@@ -99,7 +108,7 @@ func (l *Live) search(path string, not int) (baud int) {
 			continue // this system cannot do that rate
 		}
 		tried = append(tried, fmt.Sprint(rate))
-		p, err := probe(o.Port, uint16(rate))
+		p, err := probe(o.Port, uint16(rate), l.owesCut)
 		o.Port.Close()
 		if err == nil && p.good > 0 {
 			l.h.Say("a board answers at %d bit/s", rate)
@@ -135,7 +144,7 @@ func (l *Live) found(path, board string, before []job.PortView) (o Opened, at st
 		if board == "" {
 			return o, at, true // never knew which board it was
 		}
-		p, err := probe(o.Port, 0x7F00)
+		p, err := probe(o.Port, 0x7F00, l.owesCut)
 		if err == nil && p.board == board {
 			return o, at, true
 		}

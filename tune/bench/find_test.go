@@ -181,3 +181,38 @@ func TestABoardIsFoundByItsID(t *testing.T) {
 		}
 	})
 }
+
+// A stop that is asked for while a board is looked for goes out on the port that is
+// looked at.
+func TestAStopGoesOutWhileABoardIsLookedFor(t *testing.T) {
+	near, far := link.Pipe()
+	got := make(chan byte, 64)
+	go func() {
+		b := make([]byte, 64)
+		for {
+			n, err := far.Read(b)
+			for _, c := range b[:n] {
+				got <- c
+			}
+			if err != nil {
+				close(got)
+				return
+			}
+		}
+	}()
+	l := &Live{}
+	l.cut() // no line is open
+	if _, err := probe(near, 9, l.owesCut); err != nil {
+		t.Fatal(err)
+	}
+	near.Close()
+	cuts := 0
+	for c := range got {
+		if c == protocol.Cut {
+			cuts++
+		}
+	}
+	if cuts != 1 {
+		t.Errorf("%d cuts went out", cuts)
+	}
+}

@@ -48,6 +48,7 @@ type Live struct {
 	shownAt  time.Duration
 	path     string
 	opening  atomic.Bool
+	cutOwed  atomic.Bool // a stop was asked for while no line was open
 }
 
 type chunk struct {
@@ -142,7 +143,9 @@ func (l *Live) now() time.Duration { return time.Since(l.start) }
 func (l *Live) cut() {
 	if line := l.line.Load(); line != nil {
 		line.writer.Stop([]byte{protocol.Cut})
+		return
 	}
+	l.cutOwed.Store(true) // whoever is looking for a board sends it
 }
 
 // Stop asks for a stop. It never blocks; the byte is handed to the line before

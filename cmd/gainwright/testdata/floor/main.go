@@ -8,7 +8,14 @@ import (
 	"golang.org/x/term"
 )
 
+var sink float64
+
 func main() {
+	if os.Args[1] == "busy" { // loads a core
+		for x := 1.0; ; x *= 1.0000001 {
+			sink = x
+		}
+	}
 	port, err := os.OpenFile(os.Args[1], os.O_RDWR, 0)
 	if err != nil {
 		panic(err)
