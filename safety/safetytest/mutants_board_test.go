@@ -42,6 +42,15 @@ var coreMutants = []mutant{
 	{"S5", "supervisor/lines.go", "	c.void()\n	c.connected = false\n", "	c.connected = false\n", core, "TestARestartVoidsWhatWasAsked"},
 	{"S6", "supervisor/core.go", "if c.streaming && !c.lost && now-c.lastAt > linkLostAge {", "if false {", core, "TestSilenceIsALostLink"},
 	{"S8", "supervisor/lines.go", "int(s.Slow.Boots) != c.boots {", "int(s.Slow.Boots) < c.boots {", core, "TestARestartVoidsWhatWasAsked"},
+	{"S5", "supervisor/core.go", "		then[i] = c.taken()\n	}\n	for i, a := range voided {\n		then[i](a)", "		_ = i\n	}\n	for i, a := range voided {\n		then[i] = c.taken()\n		then[i](a)", core, "TestVoidsInsideVoidsDoNotMix"},
+	{"S7", "supervisor/core.go", "c.stop == nil || now-c.stop.Asked > safety.StopAnswer {", "c.stop == nil {", core, "TestAStopIsTimedByItsOwnPress"},
+	{"S7", "supervisor/core.go", "	c.lastAt, c.stop = now, nil\n", "	c.lastAt = now\n", core, "TestAStopIsTimedByItsOwnPress"},
+	{"S1", "../tune/bench/urgent.go", "	case l.urgent <- f:\n", "	case l.mail <- func(s *session) { f(s); l.heeded++ }:\n", bench, "TestAStopGoesAheadOfAFullMailbox"},
+	{"S1", "../tune/bench/live.go", "	l.heed()\n", "", bench, "TestAStopGoesAheadOfAFullMailbox"},
+	{"S5", "../tune/bench/line.go", "if w.l.asked.Load() != w.l.heeded {", "if false {", bench, "TestNoLineFollowsAStopThatIsNotHeeded"},
+	{"S13", "../tune/bench/urgent.go", "!l.style.CompareAndSwap(1, 0)", "l.style.Load() == 0", bench, "TestTheSecondPressIsACutWhileTheSessionHangs"},
+	{"S14", "../tune/bench/live.go", "	case <-time.After(2 * closeWait):", "	case <-time.After(200 * closeWait):", bench, "TestClosingDoesNotWaitForASessionThatHangs"},
+	{"S8", "../tune/bench/live.go", "	case drift > clockSlack:\n", "	case drift > clockSlack && s.now-l.monoWas < time.Second:\n", bench, "TestASleepWithAPauseIsSeen"},
 	{"S13", "supervisor/core.go", " && !c.st.Ramping() {", " {", bench, "TestARampIsNotOvertakenByACut"},
 }
 

@@ -178,7 +178,7 @@ func (c *Core) Opened(now time.Duration) {
 	c.advance(now)
 	c.framer.Reset()
 	c.lost, c.lostWhy, c.connected, c.streaming, c.seen, c.boots = false, "", false, false, false, -1
-	c.lastAt = now
+	c.lastAt, c.stop = now, nil
 	c.void()
 }
 
@@ -225,7 +225,7 @@ func (c *Core) Ask(now time.Duration, r protocol.Request, then func(protocol.Ans
 // Stop asks for a stop, now, whatever goes on.
 func (c *Core) Stop(now time.Duration, source safety.StopSource) {
 	c.advance(now)
-	if c.stop == nil {
+	if c.stop == nil || now-c.stop.Asked > safety.StopAnswer { // an answer that has not come by then is lost
 		c.stop = &StopTimes{Source: source, Asked: now}
 	}
 	c.Do(safety.Stop{At: now, Source: source})
@@ -239,7 +239,7 @@ func (c *Core) Stop(now time.Duration, source safety.StopSource) {
 
 // Wrote tells when a line had left.
 func (c *Core) Wrote(t time.Duration, line []byte) {
-	if c.stop != nil && c.stop.Wire == 0 && len(line) > 0 && line[0] == protocol.Cut {
+	if c.stop != nil && c.stop.Wire == 0 && t >= c.stop.Asked && len(line) > 0 && line[0] == protocol.Cut {
 		c.stop.Wire = t
 	}
 }
@@ -379,16 +379,26 @@ func (c *Core) pump() {
 	}
 }
 
-func (c *Core) answered(a protocol.Answer) {
+func (c *Core) answered(a protocol.Answer) { c.taken()(a) }
+
+// taken gives up the oldest request and returns whom to tell.
+func (c *Core) taken() func(protocol.Answer) {
 	id := c.order[0]
 	c.order = c.order[1:]
 	then := c.done[id]
 	delete(c.done, id)
-	then(a)
+	return then
 }
 
 func (c *Core) void() {
-	for _, a := range c.ex.Void(c.now) {
-		c.answered(a)
+	// All are taken out before the first is told: what is told may ask anew, and
+	// stop again.
+	voided := c.ex.Void(c.now)
+	then := make([]func(protocol.Answer), len(voided))
+	for i := range voided {
+		then[i] = c.taken()
+	}
+	for i, a := range voided {
+		then[i](a)
 	}
 }

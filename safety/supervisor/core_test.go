@@ -256,3 +256,67 @@ func TestSilenceIsALostLink(t *testing.T) {
 		t.Error("gains may be written over a lost link")
 	}
 }
+
+// Whoever is told that a request is void may ask again and stop again; everybody
+// is still told of their own request, and once.
+func TestVoidsInsideVoidsDoNotMix(t *testing.T) {
+	r := newRig()
+	r.connect()
+	told := map[string][]string{}
+	ask := func(arg string, also func()) {
+		r.Ask(r.at, protocol.Request{Verb: protocol.VerbLimit, Args: arg}, func(a protocol.Answer) {
+			told[arg] = append(told[arg], a.Request.Args)
+			if also != nil {
+				also()
+			}
+		})
+	}
+	ask("a", func() { ask("c", nil); r.Stop(r.at, safety.BySignal) })
+	ask("b", nil)
+	r.Stop(r.at, safety.ByStopKey)
+	for _, arg := range []string{"a", "b", "c"} {
+		if len(told[arg]) != 1 || told[arg][0] != arg {
+			t.Errorf("who asked %q was told of %q", arg, told[arg])
+		}
+	}
+	if len(r.order) != 0 || len(r.done) != 0 {
+		t.Errorf("%d, %d are held", len(r.order), len(r.done))
+	}
+}
+
+// An answer to a stop is never counted for one that was asked for on a line that
+// is gone, or so long ago that its own answer is lost: the stop check would be told
+// of minutes.
+func TestAStopIsTimedByItsOwnPress(t *testing.T) {
+	for name, between := range map[string]func(r *rig){
+		"another connection": func(r *rig) {
+			r.LinkLost(r.at, "unplugged")
+			r.Opened(r.at)
+			r.connect()
+		},
+		"no answer in time": func(r *rig) {
+			for range 150 {
+				r.sample(protocol.Off)
+			}
+		},
+	} {
+		t.Run(name, func(t *testing.T) {
+			r := newRig()
+			r.connect()
+			r.sample(protocol.Off)
+			r.Stop(r.at, safety.ByStopKey)
+			r.Wrote(r.at, []byte{protocol.Cut})
+			between(r)
+			r.Wrote(r.at-1, []byte{protocol.Cut}) // a repeat of before
+			asked := r.at
+			r.Stop(r.at, safety.ByStopKey)
+			r.Wrote(r.at-1, []byte{protocol.Cut})
+			r.Wrote(r.at+1*ms, []byte{protocol.Cut})
+			r.at += 4 * ms
+			r.says("cut 1 5")
+			if len(r.sink.stops) != 1 || r.sink.stops[0].Asked != asked || r.sink.stops[0].Wire != asked+1*ms {
+				t.Errorf("pressed at %v: %+v", asked, r.sink.stops)
+			}
+		})
+	}
+}

@@ -115,16 +115,20 @@ func (w liveWire) Stop(b []byte) uint64 {
 
 var errNoLine = errors.New("bench: no port is open")
 
-func (w liveWire) Motion(b []byte) error {
-	if line := w.l.line.Load(); line != nil {
-		return line.writer.Motion(b)
-	}
-	return errNoLine
-}
+func (w liveWire) Motion(b []byte) error { return w.put(b, (*link.Writer).MotionAt) }
 
-func (w liveWire) Request(b []byte) error {
-	if line := w.l.line.Load(); line != nil {
-		return line.writer.Request(b)
+func (w liveWire) Request(b []byte) error { return w.put(b, (*link.Writer).RequestAt) }
+
+// put refuses a line that the session decided on before it knew of a stop whose
+// byte may have left already: the line would come after it.
+func (w liveWire) put(b []byte, at func(*link.Writer, uint64, []byte) error) error {
+	line := w.l.line.Load()
+	if line == nil {
+		return errNoLine
 	}
-	return errNoLine
+	stamp := line.writer.Stamp()
+	if w.l.asked.Load() != w.l.heeded {
+		return link.ErrVoided
+	}
+	return at(line.writer, stamp, b)
 }

@@ -2,7 +2,6 @@ package bench
 
 import (
 	"context"
-	"runtime"
 	"sync"
 	"sync/atomic"
 	"time"
@@ -27,6 +26,7 @@ type Live struct {
 
 	rx       chan chunk
 	mail     chan func(*session)
+	urgent   chan func(*session) // what stops: it goes ahead of mail and of what the board says
 	steps    chan func(*job.Job)
 	over     chan struct{}
 	gone     chan struct{} // closed when the session's goroutine has ended
@@ -48,7 +48,9 @@ type Live struct {
 	shownAt  time.Duration
 	path     string
 	opening  atomic.Bool
-	cutOwed  atomic.Bool // a stop was asked for while no line was open
+	cutOwed  atomic.Bool  // a stop was asked for while no line was open
+	asked    atomic.Int64 // what was ever put into urgent
+	heeded   int64        // what the session has taken from it
 }
 
 type chunk struct {
@@ -74,13 +76,14 @@ type liveLine struct {
 // Bounds of the mailboxes. A full one means that the session's goroutine has not
 // run for long: bytes are counted as lost, which telemetry's age then shows.
 const (
-	rxMax   = 1024
-	mailMax = 256
+	rxMax     = 1024
+	mailMax   = 256
+	urgentMax = 64
 )
 
 // NewLive starts a live bench. Nothing is opened yet.
 func NewLive(opt Options) *Live {
-	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), mail: make(chan func(*session), mailMax),
+	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), mail: make(chan func(*session), mailMax), urgent: make(chan func(*session), urgentMax),
 		steps: make(chan func(*job.Job), 4), over: make(chan struct{}), gone: make(chan struct{}), late: &lateFile{}}
 	l.s = &session{}
 	l.s.core = supervisor.NewCore(liveWire{l}, l.s, uint16(l.start.UnixNano()>>10))
@@ -138,53 +141,6 @@ func (l *Live) panicked(v any, stack []byte) {
 }
 
 func (l *Live) now() time.Duration { return time.Since(l.start) }
-
-// cut puts the cut byte on the wire from whatever goroutine asks.
-func (l *Live) cut() {
-	if line := l.line.Load(); line != nil {
-		line.writer.Stop([]byte{protocol.Cut})
-		return
-	}
-	l.cutOwed.Store(true) // whoever is looking for a board sends it
-}
-
-// Stop asks for a stop. It never blocks; the byte is handed to the line before
-// anything else is done.
-func (l *Live) Stop(source safety.StopSource) {
-	at := l.now()
-	if source != safety.ByStopKey || l.style.Load() == 0 {
-		l.cut()
-		runtime.Gosched() // the writer goes on in this thread, at once, and no other has to wake up for it
-	}
-	if !l.post(func(s *session) { s.core.Stop(s.notLate(at), source) }) {
-		l.cut() // the session hangs: nobody will ask for a ramp
-	}
-}
-
-// Key tells of a key that is not the stop key. In count-down and in motion every
-// key but mark stops.
-func (l *Live) Key(mark bool) {
-	switch safety.Phase(l.phase.Load()) {
-	case safety.CountDown, safety.Running, safety.Stopping:
-	default:
-		return
-	}
-	at := l.now()
-	if mark && safety.Phase(l.phase.Load()) == safety.Running {
-		return // comes as an intent
-	}
-	l.cut()
-	l.post(func(s *session) { s.core.Do(safety.Key{At: s.notLate(at)}) })
-}
-
-// Paste tells of many keys at once.
-func (l *Live) Paste() {
-	at := l.now()
-	if safety.Phase(l.phase.Load()).ArmHeld() {
-		l.cut()
-	}
-	l.post(func(s *session) { s.core.Do(safety.Paste{At: s.notLate(at)}) })
-}
 
 // Alive renews the lease of the screen.
 func (l *Live) Alive() { l.leaseAt.Store(int64(l.now())) }
@@ -266,6 +222,11 @@ func (l *Live) supervise() {
 		case <-tick.C:
 			l.enter()
 			l.tick()
+		case f := <-l.urgent:
+			l.s.now = l.now()
+			f(l.s)
+			l.heeded++
+			l.enter() // after it, so that the byte's instant finds its stop
 		}
 		l.leave()
 	}
@@ -284,6 +245,7 @@ func (l *Live) tickEach() time.Duration {
 
 func (l *Live) enter() {
 	l.s.now = l.now()
+	l.heed()
 	if t := l.cutWrote.Swap(0); t != 0 {
 		l.s.core.Wrote(time.Duration(t), []byte{protocol.Cut})
 	}
@@ -337,7 +299,7 @@ func (l *Live) tick() {
 	s := l.s
 	wall := time.Now().Round(0)
 	switch drift := wall.Sub(l.wallWas) - (s.now - l.monoWas); {
-	case drift > clockSlack && s.now-l.monoWas < time.Second:
+	case drift > clockSlack:
 		s.core.Do(safety.Wake{At: s.now})
 	case drift < -clockSlack:
 		s.core.Do(safety.ClockJump{At: s.now})
@@ -387,9 +349,17 @@ const closeWait = time.Second
 // session. It returns the folder of the record and its first error.
 func (l *Live) Close() (dir string, err error) {
 	l.Stop(safety.ByQuit)
-	_ = l.until(closeWait, func(s *session) bool {
-		return s.core.Link().Lost || !s.core.Link().Connected || s.core.State().BoardOff() && !s.core.State().Phase.ArmHeld()
-	})
+	off := make(chan struct{})
+	go func() {
+		defer close(off)
+		_ = l.until(closeWait, func(s *session) bool {
+			return s.core.Link().Lost || !s.core.Link().Connected || s.core.State().BoardOff() && !s.core.State().Phase.ArmHeld()
+		})
+	}()
+	select {
+	case <-off:
+	case <-time.After(2 * closeWait): // the session hangs: the program ends all the same, and the board's timeout acts
+	}
 	l.overOnce.Do(func() { close(l.over) })
 	if line := l.line.Swap(nil); line != nil {
 		line.cancel()

@@ -196,8 +196,8 @@ func TestAStopDoesNotWaitForTheDisk(t *testing.T) {
 // the cut byte leaves instead.
 func TestAStopThatNobodyTakesIsACut(t *testing.T) {
 	near, far := link.Pipe()
-	l := &Live{mail: make(chan func(*session), 1)}
-	l.mail <- func(*session) {} // the mailbox is full, and nobody empties it
+	l := &Live{urgent: make(chan func(*session), 1)}
+	l.urgent <- func(*session) {} // no room is left, and nobody makes any
 	l.style.Store(1)
 	w := link.NewWriter(near, link.Config{Baud: 115200})
 	ctx, cancel := context.WithCancel(context.Background())
