@@ -27,7 +27,6 @@ func TestAPressMovesOneInch(t *testing.T) {
 	d, p := inching(t)
 	d.env.StallVolts = 10 // the drill's shaft stands still
 	d.run(admit(t, d.env, p))
-	armed := d.s.ArmedAt
 	d.wait(900*ms + safety.InchRest + 20*ms)
 	if d.s.Phase != safety.Armed || d.s.Inches != 1 || d.s.Value != 0 {
 		t.Fatalf("after one inch: %v, %d, %v V", d.s.Phase, d.s.Inches, d.s.Value)
@@ -54,7 +53,7 @@ func TestAPressMovesOneInch(t *testing.T) {
 	d, p = inching(t)
 	d.env.StallVolts = 10
 	d.run(admit(t, d.env, p))
-	armed = d.s.ArmedAt
+	armed := d.s.ArmedAt
 	d.wait(900*ms + safety.InchRest + 20*ms)
 	d.board.State = protocol.Driving
 	d.wait(armed + d.env.ArmLapse - d.now - 30*ms)

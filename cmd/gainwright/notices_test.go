@@ -7,7 +7,6 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
-	"runtime"
 	"slices"
 	"strings"
 	"testing"
@@ -83,7 +82,11 @@ func collectNotices(t *testing.T) string {
 			fmt.Fprintf(&w, "\n== %s: README.md, section License\n\n%s\n", name, strings.TrimSpace(says))
 		}
 	}
-	section("The Go runtime and standard library", runtime.GOROOT())
+	root, err := exec.Command("go", "env", "GOROOT").Output()
+	if err != nil {
+		t.Skipf("the go command does not say where it is: %v", err)
+	}
+	section("The Go runtime and standard library", strings.TrimSpace(string(root)))
 	for _, n := range names {
 		section(n, dirs[n])
 	}

@@ -22,14 +22,14 @@ const (
 // topSpeed drives a plan past the ceiling on a board and returns the highest speed
 // that its telemetry shows. The board judges where its limit is the ceiling, the
 // console where its envelope has it; where one does not, its limit is far away.
-func topSpeed(t *testing.T, v *Virtual, r rig.Rig, text []byte, l Layers) (top float64, end safety.RunEnded) {
+func topSpeed(t *testing.T, v *Virtual, r rig.Rig, l Layers) (top float64, end safety.RunEnded) {
 	t.Helper()
 	r.Limits.Speed = 0
 	r.Motor.SpeedMax = 3800
 	if l.Board {
 		r.Motor.SpeedMax = layerCeiling * 60 / (2 * math.Pi)
 	}
-	text = job.NameplateText(r)
+	text := job.NameplateText(r)
 	r, err := rig.Parse("layers (nameplate)", text)
 	if err != nil {
 		t.Fatal(err)
@@ -70,10 +70,10 @@ func topSpeed(t *testing.T, v *Virtual, r rig.Rig, text []byte, l Layers) (top f
 // keepLayers runs the four cases on boards that far makes.
 func keepLayers(t *testing.T, baud int, far func() FarEnd) {
 	t.Helper()
-	r, text := firmwareRig(t)
+	r, _ := firmwareRig(t)
 	for _, l := range []Layers{BothLayers, {Board: true}, {Console: true}, {}} {
 		v := NewHosted(far(), baud, time.Date(2026, 1, 2, 8, 0, 0, 0, time.UTC))
-		top, end := topSpeed(t, v, r, text, l)
+		top, end := topSpeed(t, v, r, l)
 		t.Logf("%-22s top %.1f of %.0f rad/s, %v %v", l, top, layerCeiling, end.Reason, end.Cause)
 		if kept := top <= layerCeiling*(1+SlackAlone); kept != (l.Board || l.Console) {
 			t.Errorf("%v: top %.1f rad/s, ceiling %.0f", l, top, layerCeiling)
@@ -99,10 +99,10 @@ func TestLayersOnATmega328P(t *testing.T) {
 
 func TestLayersOnASimulatedRig(t *testing.T) {
 	cfg := trialRig(t)
-	r, text := firmwareRig(t)
+	r, _ := firmwareRig(t)
 	for _, l := range []Layers{BothLayers, {Board: true}, {Console: true}, {}} {
 		v := NewVirtual(simrig.New(cfg, 1), time.Date(2026, 1, 2, 8, 0, 0, 0, time.UTC))
-		top, end := topSpeed(t, v, r, text, l)
+		top, end := topSpeed(t, v, r, l)
 		t.Logf("%-22s top %.1f of %.0f rad/s, %v %v", l, top, layerCeiling, end.Reason, end.Cause)
 		if kept := top <= layerCeiling*(1+SlackAlone); kept != (l.Board || l.Console) {
 			t.Errorf("%v: top %.1f rad/s, ceiling %.0f", l, top, layerCeiling)

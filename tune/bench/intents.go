@@ -89,7 +89,7 @@ func (l *Live) pick(path string) {
 			return
 		}
 		l.connect(o, path)
-		err = l.job.Do(job.StepIdentity)
+		_ = l.job.Do(job.StepIdentity) // what came of it is on the step
 	}
 	if id := l.job.ID.Board; id != "" && l.opt.Seen != nil {
 		l.opt.Seen(path, id)

@@ -4,7 +4,6 @@ import (
 	"fmt"
 	"math"
 
-	"gainwright/protocol"
 	"gainwright/tune/identify"
 	"gainwright/tune/model"
 	"gainwright/tune/sheet"
@@ -200,8 +199,3 @@ func follow(run, rest []Sample) []Sample {
 
 // hasCurrent reports whether the board measures the current.
 func (j *Job) hasCurrent() bool { return j.ID.Scales.CurrentLSB > 0 }
-
-// currentOf tells whether a sample carries a current.
-func currentOf(s protocol.Sample) (float64, bool) {
-	return float64(s.Current), s.Has&protocol.HasCurrent != 0
-}

@@ -53,7 +53,7 @@ func (j *Job) doFound() (result, error) {
 	if r.Reason != safety.EndDone {
 		return "", j.notDone(r)
 	}
-	return j.keepFound(r, levels, hold, slope)
+	return j.keepFound(r, levels, hold, slope, &margins)
 }
 
 // foundLoop is the law as found with its margins on the fitted model, or why it
@@ -86,7 +86,7 @@ func (j *Job) foundLoop() (*design.Gains, design.Margins, string) {
 }
 
 // keepFound measures the step and keeps it.
-func (j *Job) keepFound(r Result, levels []float64, hold time.Duration, slope float64) (result, error) {
+func (j *Job) keepFound(r Result, levels []float64, hold time.Duration, slope float64, margins *design.Margins) (result, error) {
 	from, to := levels[0], levels[1]
 	seg := window(r, hold, 2*hold)
 	ripple := rippleOf(window(r, hold+hold*2/3, 2*hold))
@@ -103,9 +103,11 @@ func (j *Job) keepFound(r Result, levels []float64, hold time.Duration, slope fl
 		rec.Forecast = &sheet.StepResult{StepRadS: ptr(to - from), OvershootPercent: &f.Overshoot, SettlingTimeS: &f.Settling, SettlingBandRadS: &band}
 	}
 	addCurve(rec.Curve, seg, r.Begun, hold, line, to)
+	hunts := j.hunting(window(r, hold+hold/2, 2*hold), to, margins)
+	rec.Hunting = huntingRecord(hunts)
 	j.FoundStep = rec
 	if err := j.h.Keep("event", sheet.NameAsFoundStep, rec); err != nil {
 		return "", err
 	}
-	return result(fmt.Sprintf("as found: overshoot %.1f %%, settling %.0f ms, steady ripple ± %s", m.Overshoot, m.Settling*1000, rpm(2*ripple))), nil
+	return result(fmt.Sprintf("as found: overshoot %.1f %%, settling %.0f ms, steady ripple ± %s%s", m.Overshoot, m.Settling*1000, rpm(2*ripple), huntingWords(hunts))), nil
 }

@@ -8,6 +8,7 @@ import (
 	"gainwright/protocol"
 	"gainwright/safety"
 	"gainwright/tune/excite"
+	"gainwright/tune/identify"
 	"gainwright/tune/sheet"
 )
 
@@ -60,12 +61,13 @@ func (j *Job) doFirstLoop() (result, error) {
 		v[i] = float64(s[i].Speed)
 	}
 	off, ripple := mean(v)-w, spread(v)
+	hunts := j.hunting(s, w, j.Margins)
 	allowed := math.Max(0.1*w, 2*j.sizing().SpeedStep)
 	if math.Abs(off) > allowed || ripple > allowed {
 		return "", refuse(751, "first closed loop", fmt.Sprintf("asked %s, got %s ± %s", rpm(w), rpm(mean(v)), rpm(2*ripple)),
-			"push the as-found gains back, then look at the model: does it hold at this speed?")
+			"push the as-found gains back, then look at the model: does it hold at this speed?"+huntingWords(hunts))
 	}
-	return result(fmt.Sprintf("holds %s within %s, ripple ± %s", rpm(w), rpm(math.Abs(off)), rpm(2*ripple))), nil
+	return result(fmt.Sprintf("holds %s within %s, ripple ± %s%s", rpm(w), rpm(math.Abs(off)), rpm(2*ripple), huntingWords(hunts))), nil
 }
 
 // StepMetrics is what one step of the closed loop did, measured or forecast.
@@ -144,6 +146,7 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope 
 	band := 0.0
 	at := time.Duration(0)
 	var curve sheet.VerifyCurve
+	var hunts *identify.Hunting
 	for i, to := range levels {
 		from := 0.0
 		if i > 0 {
@@ -153,6 +156,7 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope 
 			seg := window(r, at, at+hold)
 			// Ripple may be another at each level: that of this one, at its end.
 			ripple = math.Max(ripple, rippleOf(window(r, at+hold*2/3, at+hold)))
+			hunts = larger(hunts, j.hunting(window(r, at+hold/2, at+hold), to, j.Margins))
 			band = math.Max(math.Max(0.02*math.Abs(to-from), j.sizing().SpeedStep), 3*ripple)
 			m, ok := measureStep(seg, from, to, band)
 			if ok {
@@ -171,6 +175,8 @@ func (j *Job) judgeVerify(r Result, levels []float64, hold time.Duration, slope 
 	}
 	m, f := worst(measured), worst(forecast)
 	rec := j.verifyRecord(r, m, f, band, ripple, curve)
+	rec.Hunting = huntingRecord(hunts)
+	rec.Finding += huntingWords(hunts)
 	j.Verified, j.forecastOf = rec, f
 	if err := j.h.Keep("verify", "steps", rec); err != nil {
 		return "", err
@@ -316,6 +322,9 @@ func (j *Job) verifyRecord(r Result, m, f StepMetrics, band, ripple float64, cur
 
 func (j *Job) showVerify(rec *sheet.VerifyRecord) {
 	v := &VerifyView{Passed: *rec.Passed}
+	if h := rec.Hunting; h != nil {
+		v.Hunting = fmt.Sprintf("hunts at %.3g Hz, ± %s: likely %s", *h.FrequencyHz, rpm(*h.AmplitudeRadS), h.Cause)
+	}
 	for _, t := range rec.Targets {
 		verdict := "pass"
 		if !*t.Passed {

@@ -69,6 +69,15 @@ type StepResult struct {
 	RippleRadS       *float64 `json:"ripple_rad_s"` // half of peak to peak, at steady speed
 }
 
+// HuntingRecord is a sustained oscillation of the closed loop at a setpoint that
+// stands.
+type HuntingRecord struct {
+	FrequencyHz   *float64 `json:"frequency_hz"`
+	AmplitudeRadS *float64 `json:"amplitude_rad_s"`
+	Cause         string   `json:"likely_cause"`
+	Remedy        string   `json:"remedy"`
+}
+
 // AsFoundStepRecord is a step of the closed loop as it was found, or why none was
 // taken. Kind event, NameAsFoundStep.
 type AsFoundStepRecord struct {
@@ -78,6 +87,8 @@ type AsFoundStepRecord struct {
 	LoadState string       `json:"load_state"`
 	Curve     *VerifyCurve `json:"curve,omitempty"`
 	NotTaken  string       `json:"not_taken,omitempty"`
+
+	Hunting *HuntingRecord `json:"hunting,omitempty"`
 }
 
 // CheckRecord is one check of the session. Kind check.
@@ -289,6 +300,8 @@ type VerifyRecord struct {
 	LoadState  string       `json:"load_state"`
 	Finding    string       `json:"finding"`
 	Curve      *VerifyCurve `json:"curve,omitempty"`
+
+	Hunting *HuntingRecord `json:"hunting,omitempty"`
 }
 
 // StoreRecord is the storing of the gains and what a power-cycle left of them.

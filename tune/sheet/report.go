@@ -136,6 +136,9 @@ func (p *reportPage) foundStep() {
 				{"settling time", with(s.Step.SettlingTimeS, "s"), with(f.SettlingTimeS, "s"), "to the last sample outside the band, " + s.TraceFile},
 				{"steady ripple ±", with(rpm(s.Step.RippleRadS), "rpm"), "", "twice the RMS about the mean at the end of the step"},
 			})
+			if h := s.Hunting; h != nil {
+				p.para(fmt.Sprintf("hunts at %s, ± %s: likely %s. Remedy: %s", with(h.FrequencyHz, "Hz"), with(rpm(h.AmplitudeRadS), "rpm"), h.Cause, h.Remedy))
+			}
 			if s.Curve != nil {
 				plot := verifyPlot(*s.Curve)
 				plot.title = "as found"
