@@ -103,7 +103,7 @@ func (r *Rig) doRamp(args []string, a *answer) {
 			if m.loop {
 				m.value = b.run.setpoint
 			}
-			b.run.ramp, b.state = m, protocol.Ramping
+			b.run.ramp, b.run.exper, b.state = m, exper{}, protocol.Ramping
 		}
 		a.ok("ramping")
 	}
@@ -190,7 +190,12 @@ func (r *Rig) follow(closed bool, value float32) {
 	if closed {
 		slot, cause = limSpeed, protocol.CauseSpeed
 	}
-	if limit := b.limits.value(slot); value > limit || value < -limit {
+	around := float32(0) // what an experiment adds and takes away
+	if !closed {
+		around = b.run.exper.amp
+	}
+	if limit := b.limits.value(slot); value+around > limit || value-around < -limit ||
+		around > 0 && r.cfg.Driver.Quadrants != 4 && value < around {
 		r.halt(cause, r.now)
 		return
 	}

@@ -62,6 +62,9 @@ func (r *Rig) identityLines(a *answer) {
 	if b.Ramp {
 		can = append(can, "ramp")
 	}
+	if b.Exper {
+		can = append(can, "exper")
+	}
 	if len(can) > 0 {
 		lines = append(lines, "can "+strings.Join(can, " "))
 	}

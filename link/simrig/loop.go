@@ -66,6 +66,7 @@ type run struct {
 	duty     float64
 	ramp     ramp
 	judge    judge
+	exper    exper
 }
 
 // onTick is one loop period: latch, judge, control, report.
@@ -146,7 +147,7 @@ func (r *Rig) openLoop() {
 	if s := b.limits.value(limSlew); s > 0 {
 		step = s * float32(r.loop) * 1e-9
 	}
-	d := b.run.target - b.run.drive
+	d := b.run.exper.step(b.run.target, b.speed) - b.run.drive
 	b.run.drive += min(max(d, -step), step)
 	r.order(b.run.drive)
 }

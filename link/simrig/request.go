@@ -76,6 +76,7 @@ var verbs = map[string]func(*Rig, []string, *answer){
 	protocol.VerbCap:    (*Rig).doCapture,
 	protocol.VerbLog:    (*Rig).doLog,
 	protocol.VerbInput:  (*Rig).doInput,
+	protocol.VerbExper:  (*Rig).doExper,
 }
 
 func (r *Rig) dispatch(c protocol.Command, a *answer) {

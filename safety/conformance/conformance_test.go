@@ -83,7 +83,7 @@ var full = Options{Permit: permitted, Restart: func() error { return nil }}
 
 // Boards of different loops, lines, laws and powers.
 func TestHealthyBoardsConform(t *testing.T) {
-	for _, name := range []string{"benchtop", "fine10k", "pidboard", "velocityform", "servo48", "coreless"} {
+	for _, name := range []string{"benchtop", "fine10k", "pidboard", "velocityform", "servo48", "coreless", "integers"} {
 		t.Run(name, func(t *testing.T) {
 			r := runRig(t, name, full)
 			if !r.Conforms || r.Failed != 0 || r.Use != UseDrive || r.Protocol != "1.0" {

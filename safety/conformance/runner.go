@@ -282,7 +282,7 @@ func (r *runner) report() Report {
 // list is every check, in the order in which they run.
 func list() []check {
 	return slices.Concat(identityChecks, foundChecks, lineChecks, requestChecks, cutChecks, telemetryChecks, limitChecks, armingChecks,
-		motionChecks, gainChecks, captureChecks, startChecks, moveChecks, closingChecks)
+		motionChecks, gainChecks, captureChecks, startChecks, moveChecks, experChecks, closingChecks)
 }
 
 // errorf makes the detail of a failed check.

@@ -43,13 +43,16 @@ static const char text[] GW_FLASH =
 	"scale %f %f %f %f\n"
 	"max %f %f %f\n"
 	"beat " TEXT(GW_BEAT_MIN_MS) " " TEXT(GW_BEAT_MAX_MS) "\n"
-#if GW_CAPTURE || GW_RAMP
+#if GW_CAPTURE || GW_RAMP || GW_EXPER
 	"can"
 #if GW_CAPTURE
 	" capture"
 #endif
 #if GW_RAMP
 	" ramp"
+#endif
+#if GW_EXPER
+	" exper"
 #endif
 	"\n"
 #endif

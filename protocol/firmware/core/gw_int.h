@@ -159,7 +159,11 @@ void gw_blank(void);
 
 /* The words of requests, in the order of the list in gw_text.c. */
 enum { W_NONE, W_ID, W_TEL, W_STOP, W_RATE, W_NONCE, W_ARM, W_DIS, W_RAMP, W_RESET, W_LIM, W_GAIN, W_LOG, W_IN, W_CAP,
-	W_DV, W_DS, W_HB, W_GET, W_SET, W_USE, W_CRC, W_STORE, W_RUN, W_STATE, W_NOW };
+	W_DV, W_DS, W_HB, W_GET, W_SET, W_USE, W_CRC, W_STORE, W_RUN, W_STATE, W_NOW,
+#if GW_EXPER
+	W_EXP, W_RELAY, W_PRBS,
+#endif
+};
 
 /* gw_scale.c */
 #if GW_FIXED
@@ -219,6 +223,14 @@ void gw_rate(uint16_t n, char **f, uint8_t nf);
 void gw_id_poll(void);
 void gw_put_boot(void);
 extern const float gw_speed_lsb_mrad[], gw_lsb_a_mrad[];
+
+/* gw_exper.c */
+#if GW_EXPER
+void gw_exper(uint16_t n, char **f, uint8_t nf);
+int32_t gw_exper_loop(int32_t mv);
+int32_t gw_exper_size(void); /* mV that the experiment adds and takes away */
+void gw_exper_end(void);
+#endif
 
 /* gw_capture.c */
 #if GW_CAPTURE

@@ -181,6 +181,11 @@ static void request(uint8_t verb, uint16_t n, uint16_t crc, char **f, uint8_t nf
 		gw_no(n, REF_ABSENT);
 #endif
 		break;
+#if GW_EXPER
+	case W_EXP:
+		gw_exper(n, f, nf);
+		break;
+#endif
 	default:
 		gw_no(n, REF_VERB);
 		break;
@@ -343,6 +348,9 @@ void gw_init(void)
 	gw_loop_init();
 #if GW_CAPTURE
 	gw_cap_init();
+#endif
+#if GW_EXPER
+	gw_exper_end();
 #endif
 	g.reset_cause = cause;
 	g.ev_due = 2; /* ev boot */

@@ -298,6 +298,10 @@ void gw_loop(void)
 	if (state == GW_RAMPING && cause == GW_NONE)
 		cause = ramp(&target);
 #endif
+#if GW_EXPER
+	if (state == GW_DRIVING)
+		target = gw_exper_loop(target);
+#endif
 	if (state == GW_DRIVING || state == GW_LOOPING || state == GW_RAMPING)
 		mv = drive(state == GW_RAMPING ? g.ramp_from : state, target);
 	GW_LOCK();

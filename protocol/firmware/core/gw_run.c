@@ -49,6 +49,9 @@ void gw_stop_locked(uint8_t cause, uint32_t seen)
 	g.u2 = 0;
 	g.uv = 0;
 	g.target = 0;
+#if GW_EXPER
+	gw_exper_end();
+#endif
 	if (!on(g.state))
 		return;
 	s = &kept.stop[kept.total % GW_LOG];
@@ -191,10 +194,17 @@ static void accept_locked(uint16_t k, uint32_t now, uint8_t drive)
 		g.lapse_us = now;
 }
 
+#if GW_EXPER
+#define EXPER_SIZE gw_exper_size()
+#else
+#define EXPER_SIZE 0
+#endif
+
 static void drive_locked(uint8_t state, int32_t value, uint16_t k, uint32_t now)
 {
 	uint32_t size = (uint32_t)(value < 0 ? -value : value);
 	uint8_t volts = state == GW_DRIVING;
+	int32_t low = value; /* the least that the output is asked for */
 
 	if (g.state == GW_RAMPING) {
 		accept_locked(k, now, 1); /* it comes to rest whatever is asked */
@@ -203,7 +213,11 @@ static void drive_locked(uint8_t state, int32_t value, uint16_t k, uint32_t now)
 	if (g.state != GW_ARMED && g.state != state)
 		return; /* P6.5 */
 	accept_locked(k, now, 1);
-	if (size > g.lim[volts ? LIM_V : LIM_W] || (GW_QUADRANTS < 4 && value < 0)) {
+	if (volts) {
+		size += (uint32_t)EXPER_SIZE;
+		low -= EXPER_SIZE;
+	}
+	if (size > g.lim[volts ? LIM_V : LIM_W] || (GW_QUADRANTS < 4 && low < 0)) {
 		gw_stop_locked(volts ? GW_VOLTS : GW_SPEED, now);
 		return;
 	}
@@ -278,6 +292,9 @@ void gw_ramp(uint16_t n, char **f, uint8_t nf)
 	} else if (token != g.token) {
 		no = REF_TOKEN;
 	} else {
+#if GW_EXPER
+		gw_exper_end();
+#endif
 		g.ramp_from = g.state;
 		g.ramp_us = 0;
 		g.state = GW_RAMPING;

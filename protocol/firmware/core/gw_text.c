@@ -88,7 +88,11 @@ uint8_t gw_hex(const char *s, uint8_t digits, uint32_t *v)
 }
 
 static const char words[] GW_FLASH = "id|tel|stop|rate|nonce|arm|dis|ramp|reset|lim|gain|log|in|cap|dv|ds|hb|"
-	"get|set|use|crc|store|run|state|now|";
+	"get|set|use|crc|store|run|state|now|"
+#if GW_EXPER
+	"exp|relay|prbs|"
+#endif
+	;
 
 /* gw_word is the number of a word in that list, W_NONE where it is not there. */
 uint8_t gw_word(const char *s)

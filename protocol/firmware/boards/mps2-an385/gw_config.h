@@ -17,6 +17,7 @@
 #define GW_IMAX 10.0f
 #define GW_BUS_HARD_MAX 40.0f
 #define GW_CAPTURE 2000
+#define GW_EXPER 1
 #define GW_INPUT_NAMES " estop guard"
 #define GW_ESTOP_MASK 1u
 #define GW_GUARD_MASK 2u
