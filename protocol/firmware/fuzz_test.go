@@ -47,6 +47,7 @@ func seeds(t *testing.T, dir string) {
 		line("gain 1 get run 0") + line("gain 2 set 0 3F800000") + line("gain 3 use 0000") + line("gain 4 store 0000") + line("gain 5 crc store"),
 		line("cap 1 now 1 20") + "\xd0" + line("cap 2 get 0") + line("cap 3 crc") + line("cap 4 arm 2 5 20") + line("cap 5 state"),
 		line("rate 1 200 x tu") + "\xe0" + line("rate 2 50 d tu") + "\xe0" + line("nonce 3") + line("dis 4") + line("reset 5") + line("in 6"),
+		"\xfd\xfe\x10\x05\xc8" + line("exp 1 state") + "\xc8\xfe\x30\x05\xd0" + line("exp 2 prbs 0000 500 5 3 7"),
 	} {
 		if err := os.WriteFile(filepath.Join(dir, fmt.Sprint("seed", i)), []byte(s), 0o644); err != nil {
 			t.Fatal(err)

@@ -167,6 +167,23 @@ static void arm(void)
 	beats = 0;
 }
 
+/* experiment asks for one that the token allows, with a request number of its own. */
+static void experiment(uint8_t which)
+{
+	static const char relay[] = "exp 30000 relay 0000 900 9 9 3", prbs[] = "exp 30000 prbs 0000 900 4 2 9";
+	char s[40];
+	uint8_t n = 0, at = which & 32 ? 16 : 15;
+
+	for (const char *from = which & 32 ? relay : prbs; *from != 0; from++)
+		s[n++] = *from;
+	s[n] = 0;
+	for (uint8_t i = 0; i < 4; i++)
+		s[at + i] = token[i];
+	s[7] = (char)('0' + beats / 10 % 10);
+	s[8] = (char)('0' + beats % 10);
+	say(s);
+}
+
 static void drive(uint8_t which, uint8_t value)
 {
 	char s[24] = "dv ";
@@ -191,6 +208,8 @@ static void drive(uint8_t which, uint8_t value)
 	}
 	s[n] = 0;
 	say(s);
+	if (which & 16)
+		experiment(which);
 }
 
 int LLVMFuzzerTestOneInput(const uint8_t *p, size_t n);
@@ -258,7 +277,8 @@ static uint32_t next(void)
 
 static const char *const words[] = {"id 1", "tel 2", "stop 3", "nonce 4", "dis 5", "reset 6", "lim 7 crc", "lim 8 set 0 41200000", "lim 9 use 0000",
 	"gain 10 crc run", "gain 11 set 0 3F800000", "gain 12 store 0000", "cap 13 now 1 20", "cap 14 get 0", "cap 15 state", "log 16 0", "in 17", "rate 18 200 x t",
-	"rate 19 50 d tu", "arm 20 00000000 0000", "dv 1 0000 1000", "ds 2 0000 1000", "hb 3 0000", "ramp 21 0000", "cap 22 arm 1 5 20", "cap 23 crc"};
+	"rate 19 50 d tu", "arm 20 00000000 0000", "dv 1 0000 1000", "ds 2 0000 1000", "hb 3 0000", "ramp 21 0000", "cap 22 arm 1 5 20", "cap 23 crc",
+	"exp 24 state", "exp 25 relay 0000 500 100 0 3", "exp 26 prbs 0000 500 5 3 7"};
 
 int main(int argc, char **argv)
 {
