@@ -224,7 +224,7 @@ func (m *machine) world(e Event) {
 // tick sends what has to be sent again and again.
 func (m *machine) tick() {
 	switch m.Phase {
-	case Arming, Armed, CountDown:
+	case Armed, CountDown: // while arming there is no token yet that a heartbeat could carry
 		m.beat()
 	case Running:
 		m.drive()

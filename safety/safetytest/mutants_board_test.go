@@ -51,6 +51,8 @@ var coreMutants = []mutant{
 	{"S13", "../tune/bench/urgent.go", "!l.style.CompareAndSwap(1, 0)", "l.style.Load() == 0", bench, "TestTheSecondPressIsACutWhileTheSessionHangs"},
 	{"S14", "../tune/bench/live.go", "	case <-time.After(2 * closeWait):", "	case <-time.After(200 * closeWait):", bench, "TestClosingDoesNotWaitForASessionThatHangs"},
 	{"S8", "../tune/bench/live.go", "	case drift > clockSlack:\n", "	case drift > clockSlack && s.now-l.monoWas < time.Second:\n", bench, "TestASleepWithAPauseIsSeen"},
+	{"S3", "step.go", "	case Armed, CountDown: // while", "	case Arming, Armed, CountDown: // while", core, "TestRandomHistoriesOnTheWire"},
+	{"S3", "supervisor/core.go", "c.token, c.beat = token, 0", "c.token = token", core, "TestRandomHistoriesOnTheWire"},
 	{"S13", "supervisor/core.go", " && !c.st.Ramping() {", " {", bench, "TestARampIsNotOvertakenByACut"},
 }
 

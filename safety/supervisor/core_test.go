@@ -77,7 +77,7 @@ func (r *rig) sample(s protocol.State) {
 }
 
 func (r *rig) connect() {
-	r.Connected(r.at, protocol.Identity{Board: "b", Boots: 7, ProtoMajor: protocol.Major, Baud: 115200, Input: "V"}, "")
+	r.Connected(r.at, protocol.Identity{Board: "b", Boots: 7, ProtoMajor: protocol.Major, Baud: 115200, Input: "V", Loop: ms, LimitNames: []string{"vmax"}, Scales: protocol.Scales{SpeedLSB: 0.1, VoltsLSB: 0.001, BusLSB: 0.001}}, "")
 	r.Streaming(r.at, true)
 }
 
