@@ -168,7 +168,7 @@ func (j *Job) showDesign() {
 		g := j.Gains.Parallel()
 		d.Gains = []Fact{{Name: "Kp", Value: number(g.Kp) + " V/(rad/s)", Why: "largest integral gain with Ms under the bound, on the sampled loop with its exact dead time; rounded to binary32 as the board holds it"},
 			{Name: "Ki", Value: number(g.Ki) + " V/rad", Why: "as Kp"}, {Name: "setpoint weight", Value: number(g.SetpointWeight), Why: "lowered from 1 until the forecast overshoot keeps 0.8 of the target"}}
-		d.Margins = marginFacts(*j.Margins)
+		d.Margins = append(marginFacts(*j.Margins), j.delayFact(*j.Margins, *j.Gains)...)
 		d.Notes = append(d.Notes, "feed-forward declined: the integral takes up friction; a feed-forward would be judged by verify only")
 		if !j.NoChange {
 			d.Notes = append(d.Notes, j.Proposals[j.Chosen].Notes...)
@@ -191,7 +191,7 @@ func (j *Job) showDesign() {
 	t := j.Rig.Targets
 	d.Targets = []Fact{{Name: "overshoot", Value: fmt.Sprintf("<= %.3g %%", t.Overshoot)}}
 	if t.Settling > 0 {
-		d.Targets = append(d.Targets, Fact{Name: "settling", Value: fmt.Sprintf("<= %.3g s", t.Settling)})
+		d.Targets = append(d.Targets, Fact{Name: nameSettling, Value: fmt.Sprintf("<= %.3g s", t.Settling)})
 	}
 	j.h.Show(func(v *View) { v.Design = d })
 }
@@ -203,14 +203,17 @@ func decibels(v design.Value) string {
 	return fmt.Sprintf("%.1f dB", float64(v))
 }
 
+// nameSettling joins margins and targets into one row of the screen.
+const nameSettling = "settling 2 %"
+
 func marginFacts(m design.Margins) []Fact {
 	if !m.Stable {
 		return []Fact{{Name: "loop", Value: "NOT STABLE", Verdict: "impossible"}}
 	}
 	return []Fact{{Name: "Ms", Value: fmt.Sprintf("%.2f", float64(m.Ms)), Why: "largest |1/(1+L)| over all frequencies of the sampled loop"},
 		{Name: "phase margin", Value: fmt.Sprintf("%.0f°", float64(m.PhaseMargin))}, {Name: "gain margin", Value: decibels(m.GainMarginDB)},
-		{Name: "delay margin", Value: fmt.Sprintf("%.1f ms", float64(m.DelayMargin)*1000)}, {Name: "crossover", Value: fmt.Sprintf("%.1f rad/s", float64(m.Crossover))},
 		{Name: "overshoot", Value: fmt.Sprintf("%.1f %%", float64(m.Step.Overshoot)), Why: "unit step of the setpoint, exact discrete simulation, drive not limited"},
-		{Name: "settling 2 %", Value: fmt.Sprintf("%.0f ms", float64(m.Step.SettlingTime)*1000)},
+		{Name: nameSettling, Value: fmt.Sprintf("%.0f ms", float64(m.Step.SettlingTime)*1000)},
+		{Name: "delay margin", Value: fmt.Sprintf("%.1f ms", float64(m.DelayMargin)*1000)}, {Name: "crossover", Value: fmt.Sprintf("%.1f rad/s", float64(m.Crossover))},
 		{Name: "load step", Value: fmt.Sprintf("%.3g rad/s per V", float64(m.LoadStep.Peak))}}
 }
