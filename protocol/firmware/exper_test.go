@@ -7,7 +7,7 @@ import (
 )
 
 // bits of a maximal-length sequence by its recurrence, from the stages that P.
-// Alfke, Xilinx application note 052 (1996), table 3, gives: the stage that goes
+// Alfke, Xilinx application note 052 (1996), table 3 (from memory), gives: the stage that goes
 // out is the last, the sum of the tapped ones modulo 2 comes in at the first.
 func sequence(stages []int, seed, n int) (a []int) {
 	last := stages[0]

@@ -20,7 +20,7 @@ static struct {
 } x;
 
 /* Taps of maximal-length registers of 3 to 16 stages, bit 0 the stage that goes
- * out: P. Alfke, Xilinx application note 052 (1996), table 3, stage k of n as
+ * out: P. Alfke, Xilinx application note 052 (1996), table 3 (from memory), stage k of n as
  * bit n-k. */
 static const uint16_t taps[] = { 0x3, 0x3, 0x5, 0x3, 0x3, 0x1D, 0x11, 0x9, 0x5, 0x941, 0x1601, 0x2A01, 0x3, 0x100B };
 
