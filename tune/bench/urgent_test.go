@@ -35,26 +35,28 @@ func onAWire(t *testing.T) (l *Live, wire *linktest.Wire) {
 func TestAStopGoesAheadOfAFullMailbox(t *testing.T) {
 	synctest.Test(t, func(t *testing.T) {
 		l, _ := onAWire(t)
-		before := l.stopsSeen()
-		busy := make(chan struct{})
-		l.post(func(*session) { <-busy })
-		synctest.Wait()
-		waited, unheeded := 0, 0
-		for l.post(func(s *session) {
-			waited++
-			if s.core.State().Stops == before {
-				unheeded++
+		for range 20 { // what waits in two channels is taken from either by lot
+			before := l.stopsSeen()
+			busy := make(chan struct{})
+			l.post(func(*session) { <-busy })
+			synctest.Wait()
+			waited, unheeded := 0, 0
+			for l.post(func(s *session) {
+				waited++
+				if s.core.State().Stops == before {
+					unheeded++
+				}
+			}) {
 			}
-		}) {
-		}
-		l.Stop(safety.ByStopKey)
-		close(busy)
-		after := l.stopsSeen()
-		if waited < mailMax || unheeded > 0 {
-			t.Errorf("%d of %d were done before the stop was heeded", unheeded, waited)
-		}
-		if after == before {
-			t.Error("the stop was lost")
+			l.Stop(safety.ByStopKey)
+			close(busy)
+			after := l.stopsSeen()
+			if waited < mailMax/2 || unheeded > 0 { // the job may have put something between
+				t.Errorf("%d of %d were done before the stop was heeded", unheeded, waited)
+			}
+			if after == before {
+				t.Error("the stop was lost")
+			}
 		}
 		_, _ = l.Close()
 		time.Sleep(5 * time.Second)
