@@ -87,3 +87,44 @@ func TestMeanOfRepeats(t *testing.T) {
 		t.Errorf("%+v, want the well known one", m)
 	}
 }
+
+// The derivative behind the standard deviations is that of the function itself, on
+// both sides of the switch to its series.
+func TestCoastTermsHaveTheirDerivative(t *testing.T) {
+	for _, c := range []float64{-0.3, 1e-5, 9e-4, 2e-3, 0.5, 4} {
+		for _, at := range []float64{0.1, 1, 3} {
+			const d = 1e-4
+			_, lo, _ := coastTerms(at, c-d)
+			_, hi, _ := coastTerms(at, c+d)
+			_, _, slope := coastTerms(at, c)
+			if want := (hi - lo) / (2 * d); math.Abs(slope-want) > 1e-4*math.Abs(want) {
+				t.Errorf("c %g, t %g: %.8g, want %.8g", c, at, slope, want)
+			}
+		}
+	}
+}
+
+// Friction that rises again towards standstill (Stribeck) stays out of the fit:
+// T0 is that of the sliding shaft.
+func TestCoastLeavesTheSlowEndOut(t *testing.T) {
+	const h, dry = 0.002, 60.0
+	tr := &trace.Trace{Window: h}
+	w := 100.0
+	for i := 0; w > 0 && i < 3000; i++ {
+		v := 12.0
+		if i >= 100 {
+			v = 0
+			for range 50 {
+				w = math.Max(0, w-h/50*dry*(1+3*math.Exp(-w*w/25)))
+			}
+		}
+		tr.Time, tr.Voltage, tr.Speed = append(tr.Time, float64(i)*h), append(tr.Voltage, v), append(tr.Speed, w)
+	}
+	f, err := FitCoast(tr)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if math.Abs(f.Dry/dry-1) > 0.02 || math.Abs(f.Viscous) > 0.02 {
+		t.Errorf("dry %.4g, viscous %.3g; the sliding shaft has %g and none", f.Dry, f.Viscous, dry)
+	}
+}
