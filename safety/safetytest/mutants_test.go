@@ -41,7 +41,7 @@ var mutants = []mutant{
 	{"S1", "effect.go", "func (SendDrive) rank() int     { return 4 }", "func (SendDrive) rank() int     { return -1 }", step, "TestAStopComesFirst"},
 	{"S2", "stop.go", "moving := m.Phase == CountDown || m.Phase == Running", "moving := m.Phase == Running", step, "TestEveryUnlistedKeyStops"},
 	{"S2", "step.go", "if m.Phase.ArmHeld() || m.Phase == Stopping {\n			m.stop(cause(CodePaste", "if m.Phase == Running {\n			m.stop(cause(CodePaste", step, "TestEveryUnlistedKeyStops"},
-	{"S2", "step.go", "		if m.Phase != Running {\n			m.keyStops()", "		if m.Phase == Disarmed {\n			m.keyStops()", drawn, drawnTest},
+	{"S2", "step.go", "		if m.Phase != Running {\n			m.keyStops()", "		if m.Phase == Disarmed {\n			m.keyStops()", step, "TestEveryUnlistedKeyStops"},
 	{"S3", "arm.go", "m.env.Admit(e.Plan.plan); err != nil {", "m.env.Admit(e.Plan.plan); err != nil && !e.Plan.valid {", step, "TestTheEnvelopeIsAskedAgainAtArming"},
 	{"S3", "arm.go", "	case !m.Clear:\n", "	case false:\n", step, "TestNothingDrivesWithoutTheWholeWay"},
 	{"S3", "arm.go", "if m.Now-m.ArmedAt < ClearWait {", "if m.Now-m.ArmedAt < ClearWait/2 {", step, "TestNothingDrivesWithoutTheWholeWay"},
