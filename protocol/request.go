@@ -21,7 +21,7 @@ const (
 	VerbCap    = "cap"
 	VerbLog    = "log"
 	VerbInput  = "in"
-	VerbExper  = "exp" // exp relay|prbs <token> … → ok, experiments that the board's loop drives (P13)
+	VerbExper  = "exp" // exp relay|prbs|steps <token> … → ok, experiments that the board's loop drives (P13)
 )
 
 // Motion verbs carry a heartbeat number instead of a request number, have no

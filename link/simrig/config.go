@@ -136,7 +136,7 @@ type BoardSpec struct {
 	BeatMax  int      `toml:"timeout_max_ms" unit:"ms" range:"20..10000" default:"1000" doc:"longest heartbeat timeout that can be set"`
 	Capture  int      `toml:"capture_samples" unit:"samples" range:"0..100000" default:"2000" doc:"capture memory; 0: no capture"`
 	Ramp     bool     `toml:"ramp" default:"true" doc:"has ramp and cut"`
-	Exper    bool     `toml:"experiments" default:"false" doc:"runs relay and binary sequence in its own loop"`
+	Exper    bool     `toml:"experiments" default:"false" doc:"runs relay, binary sequence and square wave in its own loop"`
 	BootMS   int      `toml:"boot_ms" unit:"ms" range:"0..5000" default:"50" doc:"from power or reset to the first line"`
 	Inputs   []string `toml:"inputs" default:"" doc:"names of the input bits from bit 0, such as estop and guard; all in their working position at the start"`
 }

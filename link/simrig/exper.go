@@ -10,7 +10,7 @@ import (
 // exper is an experiment that the loop itself drives about the drive line's volts
 // (P13). It goes with the run that it is part of.
 type exper struct {
-	kind     string  // "relay", "prbs"; "": none
+	kind     string  // "relay", "prbs", "steps"; "": none
 	amp      float32 // V; 0 once it is over
 	over     bool
 	fresh    bool
@@ -40,7 +40,7 @@ func (x *exper) step(bias, speed float32) float32 {
 	if x.kind == "relay" {
 		x.relay(speed)
 	} else {
-		x.prbs()
+		x.levels()
 	}
 	x.fresh = false
 	if !first && x.high != was {
@@ -68,7 +68,8 @@ func (x *exper) relay(speed float32) {
 	}
 }
 
-func (x *exper) prbs() {
+// levels goes on with the sequence or the square wave.
+func (x *exper) levels() {
 	if x.tick > 0 {
 		x.tick--
 		return
@@ -79,6 +80,10 @@ func (x *exper) prbs() {
 	}
 	x.left--
 	x.tick = x.every - 1
+	if x.kind == "steps" {
+		x.high = x.fresh || !x.high
+		return
+	}
 	x.high = x.shift&1 == 1
 	odd := uint16(bits.OnesCount16(x.shift&x.taps) & 1)
 	x.shift = x.shift>>1 | odd<<(x.stages-1)
@@ -86,13 +91,17 @@ func (x *exper) prbs() {
 
 // parseExper reads the arguments behind the token.
 func parseExper(kind string, args []string) (x exper, ok bool) {
-	if len(args) != 4 {
-		return x, false
-	}
 	least := [4]int64{1, 1, -100_000_000, 1}
 	most := [4]int64{100_000, 100_000_000, 100_000_000, 10_000}
 	if kind == "prbs" {
 		least, most = [4]int64{1, 3, 1, 1}, [4]int64{100_000, 16, 10_000, 65535}
+	}
+	n := 4
+	if kind == "steps" {
+		least, most, n = [4]int64{1, 1, 1}, [4]int64{100_000, 10_000, 10_000}, 3
+	}
+	if len(args) != n {
+		return x, false
 	}
 	var v [4]int64
 	for i, s := range args {
@@ -108,13 +117,15 @@ func parseExper(kind string, args []string) (x exper, ok bool) {
 		x.stages, x.every, x.shift = int(v[1]), int(v[2]), uint16(v[3])
 		x.taps, x.left = registerTaps[x.stages], 1<<x.stages-1
 		ok = int64(x.left) >= v[3]
+	case "steps":
+		x.every, x.left = int(v[1]), int(v[2])
 	default:
 		ok = false
 	}
 	return x, ok
 }
 
-// doExper: exp relay|prbs <token> … and exp state → none|run|done <switchings>.
+// doExper: exp relay|prbs|steps <token> … and exp state → none|run|done <switchings>.
 func (r *Rig) doExper(args []string, a *answer) {
 	b := &r.board
 	kind := argument(args, 0)

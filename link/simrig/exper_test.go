@@ -84,6 +84,26 @@ func TestRelayInTheLoop(t *testing.T) { // P13.1, P13.2, P13.4
 	}
 }
 
+func TestSquareWaveInTheLoop(t *testing.T) { // P13.5
+	x, ok := parseExper("steps", []string{"1500", "3", "4"})
+	if !ok {
+		t.Fatal("refused")
+	}
+	for i, want := range []float32{6.5, 6.5, 6.5, 3.5, 3.5, 3.5, 6.5, 6.5, 6.5, 3.5, 3.5, 3.5, 5, 5} {
+		if v := x.step(5, 0); v != want {
+			t.Errorf("loop %d: %g V, want %g", i, v, want)
+		}
+	}
+	if x.phase() != "done" || x.switched != 3 {
+		t.Errorf("%s after %d switchings", x.phase(), x.switched)
+	}
+	for _, bad := range [][]string{{"0", "3", "4"}, {"1500", "10001", "4"}, {"1500", "3", "0"}, {"1500", "3"}, {"1500", "3", "4", "1"}} {
+		if _, ok := parseExper("steps", bad); ok {
+			t.Errorf("%q is taken", bad)
+		}
+	}
+}
+
 // What ends a run ends its experiment; nothing of it is left for the next.
 func TestExperimentsEndWithTheRun(t *testing.T) { // P13.1, P13.4
 	for name, end := range map[string]func(c *console){

@@ -64,6 +64,35 @@ func TestSequenceIsThatOfTheTable(t *testing.T) { // P13.3
 	}
 }
 
+func TestSquareWaveOnTheBoard(t *testing.T) { // P13.5
+	const bias, amp, loops, steps = 6.0, 1.5, 7, 9
+	b := ready(t, map[string]float64{"slew": 0, "amax": 0})
+	for _, bad := range []string{"1500 7 0", "0 7 9", "1500 10001 9", "1500 7", "1500 7 9 1"} {
+		b.must("no 4", "exp", fmt.Sprintf("steps %04X %s", b.token, bad))
+	}
+	b.keep(400, bias)
+	b.must("ok", "cap", fmt.Sprintf("now 1 %d", steps*loops+120))
+	b.must("ok", "exp", fmt.Sprintf("steps %04X %d %d %d", b.token, int(amp*1000), loops, steps))
+	b.keep(steps*loops+160, bias)
+	b.must(fmt.Sprintf("ok done %d", steps-1), "exp", "state")
+	all, _, _ := b.capture()
+	at := 0
+	for math.Abs(all[at].volts-bias) < 0.01 {
+		at++
+	}
+	for i := range steps {
+		want := bias + amp*float64(1-2*(i%2))
+		for j := 1; j < loops; j++ {
+			if got := all[at+loops*i+j].volts; math.Abs(got-want) > 0.011 {
+				t.Fatalf("step %d: %g V, want %g V", i, got, want)
+			}
+		}
+	}
+	if got := all[at+loops*steps+1].volts; math.Abs(got-bias) > 0.011 {
+		t.Errorf("%g V after the last step", got)
+	}
+}
+
 func TestRelayOnTheBoard(t *testing.T) { // P13.1, P13.2, P13.4
 	b := ready(t, map[string]float64{"vmax": 9, "slew": 0, "amax": 0})
 	relay := func(token uint16, amp, hyst, middle int) string {

@@ -2,6 +2,7 @@ package conformance
 
 import (
 	"fmt"
+	"math"
 	"time"
 
 	"gainwright/protocol"
@@ -29,6 +30,19 @@ func (s *session) experState(phase string, switched int) error {
 	a, err := s.must(protocol.VerbExper, "state")
 	if err == nil && (len(a.fields) < 2 || a.field(0) != phase || switched >= 0 && a.field(1) != fmt.Sprint(switched)) {
 		err = errorf("exp state: %v, wanted %s and %d switchings", a, phase, switched)
+	}
+	return err
+}
+
+// applied wants telemetry to say that so many volts are applied. The first sample
+// has the volts since the one before it, which may be long ago.
+func (s *session) applied(want float64) error {
+	if _, err := s.tel(); err != nil {
+		return err
+	}
+	t, err := s.tel()
+	if got := float64(t.millivs) / 1000; err == nil && math.Abs(got-want) > 0.05*want+0.02 {
+		err = errorf("%.3f V are applied, wanted %.3f V", got, want)
 	}
 	return err
 }
@@ -73,6 +87,32 @@ var experChecks = []check{
 			func() error { return s.drive(s.small(), s.sequenceTime()) },
 			func() error { return s.experState("done", 8) },
 			func() error { return s.inState(protocol.Driving) })
+	}))},
+	{id: "P13.5a", what: "the square wave has its steps and ends by itself", arms: true, moves: true, run: moving(experimenting(func(s *session) error {
+		start := func() error {
+			_, err := s.must(protocol.VerbExper, fmt.Sprintf("steps %04X %d 10 6", s.token, int(s.small()*250)))
+			return err
+		}
+		return first(s.arm, func() error { return s.volts(s.small()) }, start,
+			func() error { return s.drive(s.small(), s.sequenceTime()) },
+			func() error { return s.experState("done", 5) },
+			func() error { return s.inState(protocol.Driving) })
+	}))},
+	{id: "P13.2a", what: "the relay is up below its middle, goes down with the speed at it, and a switching ends it", arms: true, moves: true, run: moving(experimenting(func(s *session) error {
+		// The middle is far above the speed of volts so small, and then far below.
+		relay := func(middle int) error {
+			_, err := s.must(protocol.VerbExper, fmt.Sprintf("relay %04X %d 1 %d 1", s.token, int(s.small()*250), middle))
+			return err
+		}
+		return first(s.arm, func() error { return s.volts(s.small()) },
+			func() error { return relay(100_000_000) },
+			func() error { return s.drive(s.small(), s.sequenceTime()) },
+			func() error { return s.experState("run", 0) },
+			func() error { return s.applied(s.small() * 1.25) },
+			func() error { return relay(-100_000_000) },
+			func() error { return s.drive(s.small(), s.sequenceTime()) },
+			func() error { return s.experState("run", 0) },
+			func() error { return s.applied(s.small() * 0.75) })
 	}))},
 	{id: "P13.4b", what: "a cut ends the experiment with the output", arms: true, moves: true, run: moving(experimenting(func(s *session) error {
 		start := func() error { _, err := s.must(protocol.VerbExper, s.sequence(s.small()/4)); return err }

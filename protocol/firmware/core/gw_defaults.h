@@ -62,7 +62,7 @@
 #define GW_CAPTURE 0
 #endif
 #ifndef GW_EXPER
-#define GW_EXPER 0 /* 1: relay and binary sequence run in the loop */
+#define GW_EXPER 0 /* 1: relay, binary sequence and square wave run in the loop */
 #endif
 #ifndef GW_INPUT_NAMES /* names of the input bits, each with a space before it */
 #define GW_INPUT_NAMES ""

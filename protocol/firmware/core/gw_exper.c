@@ -1,12 +1,12 @@
 /* Experiments that the loop drives itself (power exper, P13): a relay with
- * hysteresis and a maximal-length binary sequence, both about the drive line's
- * volts. They only change what the output is asked for: limits, heartbeat, cut
+ * hysteresis, a maximal-length binary sequence and a square wave, all about the drive
+ * line's volts. They only change what the output is asked for: limits, heartbeat, cut
  * and arming are those of any run. */
 #include "gw_int.h"
 
 #if GW_EXPER
 
-enum { PHASE_NONE, PHASE_RELAY, PHASE_PRBS, PHASE_DONE };
+enum { PHASE_NONE, PHASE_RELAY, PHASE_PRBS, PHASE_STEPS, PHASE_DONE };
 
 static struct {
 	uint8_t phase, fresh, high;
@@ -14,8 +14,8 @@ static struct {
 	int32_t middle, hyst; /* mrad/s */
 	uint16_t todo, count; /* switchings wanted and made */
 	uint16_t taps, shift; /* register */
-	uint32_t left;        /* bits that are still to come */
-	uint16_t every, tick; /* loops a bit */
+	uint32_t left;        /* bits or steps that are still to come */
+	uint16_t every, tick; /* loops each */
 	uint8_t stages;
 } x;
 
@@ -60,10 +60,22 @@ static void relay(void)
 	x.high = high;
 }
 
-static void prbs(void)
+/* next_bit is the bit that the register has out, which it shifts. */
+static uint8_t next_bit(void)
 {
 	uint16_t v;
-	uint8_t odd = 0;
+	uint8_t odd = 0, out = x.shift & 1u;
+
+	for (v = x.shift & x.taps; v != 0; v &= (uint16_t)(v - 1u))
+		odd ^= 1u;
+	x.shift = (uint16_t)((x.shift >> 1) | ((uint32_t)odd << (x.stages - 1u)));
+	return out;
+}
+
+/* levels goes on with the sequence or the square wave. */
+static void levels(void)
+{
+	uint8_t high;
 
 	if (x.tick != 0) {
 		x.tick--;
@@ -75,13 +87,11 @@ static void prbs(void)
 	}
 	x.left--;
 	x.tick = (uint16_t)(x.every - 1u);
-	if (!x.fresh && (uint8_t)(x.shift & 1u) != x.high)
+	high = x.phase == PHASE_PRBS ? next_bit() : (uint8_t)(x.fresh || !x.high);
+	if (!x.fresh && high != x.high)
 		x.count++;
 	x.fresh = 0;
-	x.high = x.shift & 1u;
-	for (v = x.shift & x.taps; v != 0; v &= (uint16_t)(v - 1u))
-		odd ^= 1u;
-	x.shift = (uint16_t)((x.shift >> 1) | ((uint32_t)odd << (x.stages - 1u)));
+	x.high = high;
 }
 
 /* gw_exper_loop is called once a loop period of an open-loop run and returns what
@@ -90,8 +100,8 @@ int32_t gw_exper_loop(int32_t mv)
 {
 	if (x.phase == PHASE_RELAY)
 		relay();
-	else if (x.phase == PHASE_PRBS)
-		prbs();
+	else if (x.phase == PHASE_PRBS || x.phase == PHASE_STEPS)
+		levels();
 	return x.high ? mv + x.amp : mv - x.amp;
 }
 
@@ -163,7 +173,27 @@ static uint8_t start_prbs(char **f, uint8_t nf)
 	return no;
 }
 
-static const char phases[] GW_FLASH = "none|run|run|done";
+static uint8_t start_steps(char **f, uint8_t nf)
+{
+	int32_t amp, every, steps;
+	uint32_t token;
+	uint8_t no;
+
+	if (nf != 7 || !gw_hex(f[3], 4, &token) || !positive(f[4], 100000, &amp) || !positive(f[5], 10000, &every) ||
+	    !positive(f[6], 10000, &steps))
+		return REF_ARG;
+	GW_LOCK();
+	no = begin_locked(token, amp);
+	if (no == 0) {
+		x.left = (uint32_t)steps;
+		x.every = (uint16_t)every;
+		x.phase = PHASE_STEPS;
+	}
+	GW_UNLOCK();
+	return no;
+}
+
+static const char phases[] GW_FLASH = "none|run|run|run|done";
 
 static void tell_state(uint16_t n)
 {
@@ -193,6 +223,8 @@ void gw_exper(uint16_t n, char **f, uint8_t nf)
 		no = start_relay(f, nf);
 	else if (what == W_PRBS)
 		no = start_prbs(f, nf);
+	else if (what == W_STEPS)
+		no = start_steps(f, nf);
 	if (no != 0) {
 		gw_no(n, no);
 		return;

@@ -161,7 +161,7 @@ void gw_blank(void);
 enum { W_NONE, W_ID, W_TEL, W_STOP, W_RATE, W_NONCE, W_ARM, W_DIS, W_RAMP, W_RESET, W_LIM, W_GAIN, W_LOG, W_IN, W_CAP,
 	W_DV, W_DS, W_HB, W_GET, W_SET, W_USE, W_CRC, W_STORE, W_RUN, W_STATE, W_NOW,
 #if GW_EXPER
-	W_EXP, W_RELAY, W_PRBS,
+	W_EXP, W_RELAY, W_PRBS, W_STEPS,
 #endif
 };
 

@@ -90,7 +90,7 @@ uint8_t gw_hex(const char *s, uint8_t digits, uint32_t *v)
 static const char words[] GW_FLASH = "id|tel|stop|rate|nonce|arm|dis|ramp|reset|lim|gain|log|in|cap|dv|ds|hb|"
 	"get|set|use|crc|store|run|state|now|"
 #if GW_EXPER
-	"exp|relay|prbs|"
+	"exp|relay|prbs|steps|"
 #endif
 	;
 
