@@ -158,7 +158,10 @@ func (env Envelope) admitSegment(p Plan, i int, s Segment) error {
 	if s.Mode != p.Segments[0].Mode {
 		return refused(n, "it changes between volts and closed loop", "make it a run of its own")
 	}
-	top := math.Max(math.Abs(s.From), math.Abs(s.To))
+	if err := env.admitPattern(p, i, s); err != nil {
+		return err
+	}
+	top := s.reach()
 	slope := math.Abs(s.To-s.From) / s.Duration.Seconds()
 	switch s.Mode {
 	case ModeVolts:

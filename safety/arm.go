@@ -17,7 +17,7 @@ func (m *machine) arm(e ArmRequest) {
 	m.unattended = e.Unattended
 	m.arming = m.Now
 	m.beatAt = m.Now
-	m.Clear, m.Silent, m.driven = false, false, false
+	m.Clear, m.Silent, m.driven, m.patterned = false, false, false, false
 	m.silenceOpen, m.whichInput = false, false
 	m.Inches = 0
 	m.resetOwed = false
@@ -61,6 +61,8 @@ func (m *machine) mayArm(e ArmRequest) (c Cause, ok bool) {
 		return no(CodeTripHeld, "on the board")
 	case !m.fresh():
 		return no(CodeStale, m.ageWords())
+	case e.Plan.plan.HasPattern() && !m.Patterns:
+		return no(CodePatternHere, "")
 	case !m.LimitsHeld:
 		return no(CodeLimits, "")
 	case !m.standstill():

@@ -17,7 +17,7 @@ func (m *machine) connected(e Connected) {
 		m.Checks = 0
 	}
 	m.forget()
-	m.Connected, m.LookOnly, m.Simulated = true, e.LookOnly, e.Simulated
+	m.Connected, m.LookOnly, m.Simulated, m.Patterns = true, e.LookOnly, e.Simulated, e.Patterns
 	m.Board, m.BootCount = e.Board, e.BootCount
 	m.LimitsHeld, m.Writing = false, false
 	m.boardOff, m.boardTrip, m.resetOwed, m.silenceOpen = false, false, false, false
@@ -63,6 +63,8 @@ func (m *machine) board(e Event) {
 		if m.Phase == Arming {
 			m.stopping(EndRefused, cause(CodeBoardRefused, fmt.Sprintf("%s (%s)", e.Words, e.Code)))
 		}
+	case PatternRefused:
+		m.patternRefused(e.Words)
 	case BoardTripped:
 		m.boardTripped(e.Cause)
 	case OutputOff:

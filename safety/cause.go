@@ -22,6 +22,7 @@ const (
 	CodeBoardNoAnswer Code = 110
 	CodeBoardRefused  Code = 111
 	CodeNotNumber     Code = 112
+	CodeNoPattern     Code = 113
 
 	CodeLease   Code = 201
 	CodePort    Code = 202
@@ -76,6 +77,7 @@ const (
 	CodeWriting      Code = 513
 	CodeNoReason     Code = 514
 	CodeNoLease      Code = 515
+	CodePatternHere  Code = 516
 )
 
 // Cause is why something stopped or was refused, in words, with what to do.
@@ -109,6 +111,7 @@ var causes = map[Code]text{
 	CodeBoardNoTime:   {"the board did not stop by itself when it heard nothing", "this board is look-only until its timeout has been seen working"},
 	CodeBoardNoAnswer: {"the board did not answer the arm", "look at the link and arm again"},
 	CodeBoardRefused:  {"the board refused to arm", "do what it says and arm again"},
+	CodeNoPattern:     {"the board did not begin the pattern", "look at the link, and at what the board says of exp"},
 	CodeNotNumber:     {"telemetry is not a number", "look at encoder and sensors; do not trust the screen"},
 
 	CodeLease:   {"the screen is frozen", "free the terminal; nothing moves while nobody can see"},
@@ -164,6 +167,7 @@ var causes = map[Code]text{
 	CodeWriting:      {"a write to the board is under way or has failed", "write again and read back"},
 	CodeNoReason:     {"limits are loosened only with a typed reason", "type one"},
 	CodeNoLease:      {"no live screen", "wait for a frame"},
+	CodePatternHere:  {"the board's loop runs no patterns", "run it from the console: a pattern needs the power exper and the limit slew"},
 }
 
 // cause makes a Cause; detail, if any, follows the words.

@@ -39,6 +39,11 @@ type (
 		Mode  Mode
 		Value float64
 	}
+	// SendPattern has the board's loop add a pattern to the volts last sent.
+	SendPattern struct {
+		Volts   float64
+		Pattern Pattern
+	}
 	// SendHeartbeat keeps an armed board alive.
 	SendHeartbeat struct{}
 	// SendReset asks the board to clear its latched trip.
@@ -86,6 +91,7 @@ func (SendRampStop) rank() int  { return 1 }
 func (SendDisarm) rank() int    { return 2 }
 func (SendArm) rank() int       { return 3 }
 func (SendDrive) rank() int     { return 4 }
+func (SendPattern) rank() int   { return 5 }
 func (SendHeartbeat) rank() int { return 5 }
 func (SendReset) rank() int     { return 6 }
 func (ArmRefused) rank() int    { return 7 }

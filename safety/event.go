@@ -44,6 +44,7 @@ type (
 		BootCount uint16
 		LookOnly  bool
 		Simulated bool // nothing real moves
+		Patterns  bool // its loop runs patterns, under a limit of the rate of change of volts
 	}
 	// LinkLost is a port that went away or was closed.
 	LinkLost struct{ At time.Duration }
@@ -82,6 +83,12 @@ type (
 	BoardRefused struct {
 		At    time.Duration
 		Code  protocol.Refusal
+		Words string
+	}
+	// PatternRefused is the board's word that it does not begin a pattern, or its
+	// silence about it.
+	PatternRefused struct {
+		At    time.Duration
 		Words string
 	}
 	// ClearArea is the answer that nobody is near.
@@ -182,6 +189,7 @@ func (e CheckFailed) When() time.Duration    { return e.At }
 func (e ArmRequest) When() time.Duration     { return e.At }
 func (e BoardArmed) When() time.Duration     { return e.At }
 func (e BoardRefused) When() time.Duration   { return e.At }
+func (e PatternRefused) When() time.Duration { return e.At }
 func (e ClearArea) When() time.Duration      { return e.At }
 func (e Start) When() time.Duration          { return e.At }
 func (e Key) When() time.Duration            { return e.At }

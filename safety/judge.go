@@ -200,7 +200,7 @@ func (m *machine) ahead(s protocol.Sample) float64 {
 	var then float64
 	switch {
 	case l.Gain > 0 && l.Tau > 0:
-		end := l.Gain * float64(s.Volts)
+		end := l.Gain * m.volts(float64(s.Volts))
 		then = end + (w-end)*math.Exp(-d/l.Tau.Seconds())
 	case m.judge.sloped:
 		then = w + m.judge.slope*d
@@ -368,11 +368,11 @@ func (m *machine) judgeLoose(s protocol.Sample) bool {
 // driveRange is what may have been applied of late; in closed loop anything up to
 // the envelope's limit.
 func (m *machine) driveRange(applied float64) (lo, hi float64) {
-	asked := m.Value
+	asked, more := m.Value, m.pattern()
 	if m.Plan.plan.Segments[0].Mode == ModeSpeed {
 		return -float64(m.env.VoltsMax), float64(m.env.VoltsMax)
 	}
-	return math.Min(0, math.Min(applied, asked)), math.Max(0, math.Max(applied, asked))
+	return math.Min(0, math.Min(applied, asked-more)), math.Max(0, math.Max(applied, asked+more))
 }
 
 func (m *machine) judgeInputs() {

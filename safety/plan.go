@@ -113,6 +113,7 @@ type Segment struct {
 	Duration time.Duration
 	Until    Until
 	Note     string
+	Pattern  Pattern `json:",omitzero"` // run by the board's own loop
 }
 
 // Plan is a list of segments with an end. Limits given here only tighten the

@@ -15,7 +15,7 @@ func (m *machine) begin() {
 	}
 	m.valueAt = m.Now
 	m.Value = 0
-	m.driven, m.Silent = false, false
+	m.driven, m.Silent, m.patterned = false, false, false
 	m.runPos = m.pos
 	m.judge.start()
 	m.Segment = 0
@@ -68,6 +68,7 @@ func (m *machine) drive() {
 	m.Value, m.driven = v, true
 	m.drivenAt, m.beatAt = m.Now, m.Now
 	m.do(SendDrive{Mode: p.Segments[0].Mode, Value: v})
+	m.askPattern(v)
 }
 
 // next goes on to the next segment, or ends the run.

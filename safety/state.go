@@ -47,6 +47,7 @@ type State struct {
 	Simulated  bool
 	Board      string
 	BootCount  uint16
+	Patterns   bool // the board's loop runs patterns
 	LimitsHeld bool
 	Checks     Checks
 	RecordBad  bool
@@ -80,6 +81,7 @@ type State struct {
 	beatAt      time.Duration
 	drivenAt    time.Duration
 	driven      bool // a drive value was sent in this run
+	patterned   bool // the board was asked to begin the pattern of this run
 	valueAt     time.Duration
 	silentAt    time.Duration
 	stopped     bool // a stop was asked for at some time

@@ -212,7 +212,7 @@ func (m *machine) world(e Event) {
 		}
 	case CheckPassed, CheckFailed:
 		m.checked(e)
-	case BoardArmed, BoardRefused, BoardTripped, OutputOff, Ramping:
+	case BoardArmed, BoardRefused, PatternRefused, BoardTripped, OutputOff, Ramping:
 		m.board(e)
 	case GainWrite, LimitWrite, WriteDone:
 		m.write(e)

@@ -148,7 +148,7 @@ func (m *machine) tripIfHeld(code Code, detail string) {
 // still puts away everything that belongs to an arm or a run.
 func (m *machine) still() {
 	m.Plan = Admitted{}
-	m.Clear, m.Silent, m.driven, m.unattended = false, false, false, false
+	m.Clear, m.Silent, m.driven, m.unattended, m.patterned = false, false, false, false, false
 	m.Value = 0
 	m.ramp = rampState{}
 	m.end = ending{}

@@ -31,6 +31,11 @@ func (r *Referee) effects(e safety.Event, out []safety.Effect) (did done) {
 				r.blame("S1", "a drive value behind a stop")
 			}
 			r.drive(x)
+		case safety.SendPattern:
+			if stopped {
+				r.blame("S1", "a pattern behind a stop")
+			}
+			r.patternSent(x)
 		case safety.SendHeartbeat:
 			if r.stage == idle && !r.ramping || stopped && !did.ramp {
 				r.blame("S3", "a heartbeat for a board that is not armed")
@@ -99,6 +104,21 @@ func (r *Referee) drive(x safety.SendDrive) {
 	}
 }
 
+// patternSent judges what the board's loop is asked to add to the last drive value.
+// (S3, S4)
+func (r *Referee) patternSent(x safety.SendPattern) {
+	last := r.plan.Segments[max(0, len(r.plan.Segments)-1):]
+	if r.stage != going || !r.drives || len(last) == 0 || x.Pattern != last[0].Pattern || r.patterns > 0 {
+		r.blame("S3", "a pattern without a run that has it, or a second time")
+		return
+	}
+	r.patterns++
+	top := least(r.plan.VoltsMax, float64(r.env.VoltsMax))
+	if lo, hi := x.Volts-x.Pattern.Amplitude, x.Volts+x.Pattern.Amplitude; x.Volts != r.asked0 || !(lo >= -top && hi <= top) || lo < 0 && !r.env.Reverse {
+		r.blame("S4", "a pattern of %v V about %v V is outside", x.Pattern.Amplitude, x.Volts)
+	}
+}
+
 func reach(p safety.Plan) (lo, hi float64) {
 	lo, hi = math.Inf(1), math.Inf(-1)
 	for _, s := range p.Segments {
@@ -161,7 +181,7 @@ func (r *Referee) arm(e safety.Event) {
 			r.blame("S7", "armed for %q without the %v", p.Name, c)
 		}
 	}
-	r.stage, r.plan, r.lone, r.drives = armSent, p, q.Unattended, false
+	r.stage, r.plan, r.lone, r.drives, r.patterns = armSent, p, q.Unattended, false, 0
 	r.silentRun = false
 }
 

@@ -61,6 +61,8 @@ func plans(env safety.Envelope) (l []safety.Admitted) {
 		{Name: "step", Segments: []safety.Segment{{Mode: safety.ModeVolts, From: 3, To: 3, Duration: 2 * time.Second}}},
 		{Name: "silence", Check: safety.CheckSilence, SpeedMax: 50, SilenceAt: 100 * ms, Segments: []safety.Segment{{Mode: safety.ModeVolts, From: 2, To: 2, Duration: 2 * time.Second}}},
 		{Name: "loop", Segments: []safety.Segment{{Mode: safety.ModeSpeed, From: 50, To: 60, Duration: 3 * time.Second}}},
+		{Name: "relay", Segments: []safety.Segment{{Mode: safety.ModeVolts, From: 0, To: 6, Duration: 500 * ms},
+			{Mode: safety.ModeVolts, From: 6, To: 6, Duration: 2 * time.Second, Pattern: safety.Pattern{Kind: safety.PatternRelay, Amplitude: 2, Middle: 50, Hysteresis: 3, Switchings: 40}}}},
 	} {
 		a, err := env.Admit(p)
 		if err != nil {
@@ -91,7 +93,7 @@ func (h *history) do(e safety.Event) {
 
 // begin makes the checks, so that most histories have somewhere to go.
 func (h *history) begin() {
-	h.do(safety.Connected{At: h.now, Board: "b", BootCount: 1, Simulated: true})
+	h.do(safety.Connected{At: h.now, Board: "b", BootCount: 1, Simulated: true, Patterns: true})
 	h.wait(300 * ms)
 	h.do(safety.LimitsHeld{At: h.now, OK: true})
 	for _, c := range []safety.Check{safety.CheckStopKey, safety.CheckCount, safety.CheckSign, safety.CheckStop} {
@@ -126,7 +128,7 @@ func (h *history) onward() {
 	case safety.Disarmed:
 		plan := h.plans[1]
 		if h.s.Checks.Has(safety.CheckSilence) {
-			plan = h.plans[rapid.IntRange(0, 2).Draw(h.rt, "plan")]
+			plan = h.plans[rapid.IntRange(0, len(h.plans)-1).Draw(h.rt, "plan")]
 		}
 		if !h.s.LimitsHeld {
 			h.do(safety.LimitsHeld{At: h.now, OK: true})
@@ -161,8 +163,8 @@ func (h *history) onward() {
 // anything is one event of any kind.
 func (h *history) anything() {
 	at := h.now
-	i := rapid.IntRange(0, 33).Draw(h.rt, "event")
-	plan := h.plans[rapid.IntRange(0, 2).Draw(h.rt, "any plan")]
+	i := rapid.IntRange(0, 34).Draw(h.rt, "event")
+	plan := h.plans[rapid.IntRange(0, len(h.plans)-1).Draw(h.rt, "any plan")]
 	events := []safety.Event{
 		safety.Key{At: at}, safety.Mark{At: at}, safety.Stop{At: at, Source: safety.ByStopKey}, safety.Stop{At: at, Source: safety.BySignal},
 		safety.Start{At: at}, safety.ClearArea{At: at}, safety.Disarm{At: at}, safety.Acknowledge{At: at}, safety.Reset{At: at},
@@ -174,7 +176,7 @@ func (h *history) anything() {
 		safety.ArmRequest{At: at, Plan: plan, Stops: h.s.Stops, Unattended: true},
 		safety.LinkLost{At: at}, safety.Connected{At: at, Board: "b", BootCount: 1}, safety.BoardRestarted{At: at},
 		safety.Wake{At: at}, safety.ClockJump{At: at}, safety.RigChanged{At: at}, safety.TapeFailed{At: at}, safety.TapeBack{At: at},
-		safety.Enough{At: at},
+		safety.Enough{At: at}, safety.PatternRefused{At: at, Words: "code 8"},
 	}
 	h.do(events[i])
 	if rapid.IntRange(0, 7).Draw(h.rt, "bend") == 0 {

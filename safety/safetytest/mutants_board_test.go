@@ -27,6 +27,9 @@ var boardMutants = []mutant{
 	{"S4", "../protocol/firmware/core/gw_loop.c", "	if (held(&g.run_us, 1, g.lim[LIM_RUN]))", "	if (held(&g.run_us, 0, g.lim[LIM_RUN]))", board, "TestTrips"},
 	{"S4", "../protocol/firmware/core/gw_loop.c", "uv = g.uv + step;", "uv = g.uv + 2 * step;", board, "TestSlewLimit"},
 	{"S4", "../protocol/firmware/core/gw_run.c", "	if (size > g.lim[volts ? LIM_V : LIM_W] ||", "	if (size > 2u * g.lim[volts ? LIM_V : LIM_W] ||", board, "TestTrips"},
+	{"S4", "../protocol/firmware/core/gw_exper.c", "	if ((uint32_t)(size + amp) > g.lim[LIM_V] ||", "	if ((uint32_t)size > g.lim[LIM_V] ||", board, "TestRelayOnTheBoard"},
+	{"S4", "../protocol/firmware/core/gw_run.c", "		size += (uint32_t)EXPER_SIZE;\n", "", board, "TestDriveLineThatAnExperimentWouldCarryOver"},
+	{"S3", "../protocol/firmware/core/gw_exper.c", "	if (token != g.token)\n		return REF_TOKEN;", "	if (token == 0)\n		return REF_TOKEN;", board, "TestRelayOnTheBoard"},
 	{"S8", "../protocol/firmware/core/gw_loop.c", "	if (now - g.beat_us > g.lim[LIM_BEAT])", "	if (now - g.beat_us > 2u * g.lim[LIM_BEAT])", board, "TestHeartbeatTimeout"},
 	{"S8", "../protocol/firmware/core/gw_loop.c", "now - g.lapse_us > 60000000u)", "now - g.lapse_us > 600000000u)", board, "TestArmLapses"},
 	{"S8", "../protocol/firmware/core/gw_run.c", "	if ((in & GW_GUARD_MASK) != GW_GUARD_MASK)", "	if ((in & GW_GUARD_MASK) != GW_GUARD_MASK && in == 0)", board, "TestTrips"},
@@ -38,6 +41,8 @@ var boardMutants = []mutant{
 
 // coreMutants break what joins the limiter with the wire.
 var coreMutants = []mutant{
+	{"S3", "supervisor/core.go", "if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {\n			c.Do(safety.PatternRefused", "if err := a.AsError(); err == protocol.ErrVoid {\n			c.Do(safety.PatternRefused", core, "TestPatternsOnTheWire"},
+	{"S3", "supervisor/lines.go", "return fmt.Sprintf(\"prbs %04X %d %d %d %d\", token, amp,", "return fmt.Sprintf(\"prbs %04X %d %d %d %d\", token, amp+500,", core, "TestPatternsOnTheWire"},
 	{"S5", "supervisor/core.go", "		c.void() // a stop voids what was asked before it\n", "", core, "TestAStopVoidsRequests"},
 	{"S5", "supervisor/lines.go", "	c.void()\n	c.connected = false\n", "	c.connected = false\n", core, "TestARestartVoidsWhatWasAsked"},
 	{"S6", "supervisor/core.go", "if c.streaming && !c.lost && now-c.lastAt > linkLostAge {", "if false {", core, "TestSilenceIsALostLink"},

@@ -57,7 +57,7 @@ var mutants = []mutant{
 	{"S4", "judge.go", "case i < 0.25*locked:\n			code = CodeNoCounts", "case i < 0.25*locked:\n			code = CodeStalled", step, "TestEveryLimitTrips"},
 	{"S4", "judge.go", "math.Abs(w) < 0.97*j.wrongWas {", "math.Abs(w) > 0.97*j.wrongWas {", step, "TestEveryLimitTrips"},
 	{"S4", "judge.go", "m.Heat*math.Exp(-h/m.env.HeatTau.Seconds())+i*i*h", "m.Heat*math.Exp(-h/m.env.HeatTau.Seconds())+i*h", step, "TestHeatFollowsTheThermalRelayCurve"},
-	{"S4", "judge.go", "end := l.Gain * float64(s.Volts)", "end := l.Gain * 0", step, "TestEveryLimitTrips"},
+	{"S4", "judge.go", "end := l.Gain * m.volts(float64(s.Volts))", "end := l.Gain * 0", step, "TestEveryLimitTrips"},
 	{"S4", "run.go", "case m.Now-m.RunAt > m.env.RunTimeMax:", "case m.Now-m.RunAt > 2*m.env.RunTimeMax:", step, "TestRunTimeTrips"},
 	{"S4", "judge.go", "if v := math.Abs(float64(s.Speed)); v > float64(m.env.CreepMax) {", "if v := math.Abs(float64(s.Speed)); v > float64(m.env.SpeedMax) {", step, "TestAShaftThatTurnsUndrivenTrips"},
 	{"S5", "arm.go", "case e.Stops != m.Stops:", "case e.Stops > m.Stops:", step, "TestAStopVoidsWhatWasAskedBefore"},
@@ -98,6 +98,12 @@ var mutants = []mutant{
 	{"S16", "inch.go", "if driven > env.InchTime {", "if driven > 2*env.InchTime {", step, "TestInchIsAdmittedInsideItsBounds"},
 	{"S16", "inch.go", "func (m *machine) betweenInches() bool { return m.Phase == Armed && m.Inches > 0 }", "func (m *machine) betweenInches() bool { return false }", world, worlds},
 	{"S16", "step.go", "if m.Phase == Running && !m.Silent && !m.Plan.plan.Inch {", "if m.Phase == Running && !m.Silent {", world, worlds},
+	{"S4", "admit.go", "top := s.reach()", "top := math.Max(math.Abs(s.From), math.Abs(s.To))", step, "TestAPatternIsAdmittedWithItsReach"},
+	{"S4", "pattern.go", "case !env.Reverse && s.From < x.Amplitude:", "case false:", step, "TestAPatternIsAdmittedWithItsReach"},
+	{"S3", "pattern.go", "case i != len(p.Segments)-1:", "case false:", step, "TestAPatternIsAdmittedWithItsReach"},
+	{"S3", "pattern.go", "m.patterned || math.Abs(value-s.From) >= 1e-3 {", "m.patterned {", step, "TestAPatternIsAskedForOnce"},
+	{"S3", "arm.go", "case e.Plan.plan.HasPattern() && !m.Patterns:", "case false:", step, "TestAPatternIsAskedForOnce"},
+	{"S4", "judge.go", "end := l.Gain * m.volts(float64(s.Volts))", "end := l.Gain * float64(s.Volts)", step, "TestAPatternIsLookedAheadTo"},
 	{"S16", "arm.go", "		return ticked | SetOf(CheckStopKey)\n", "		return SetOf(CheckStopKey)\n", step, "TestChecklistComesBeforeAnythingMoves"},
 }
 

@@ -39,19 +39,20 @@ type Referee struct {
 	env  safety.Envelope
 	list []Violation
 
-	now     time.Duration
-	stage   stage
-	plan    safety.Plan
-	lone    bool // the run was asked for unattended
-	armedAt time.Duration
-	startAt time.Duration
-	drives  bool // a drive value was sent in this run
-	driveAt time.Duration
-	asked0  float64 // newest drive value
-	counts0 int64
-	counted bool
-	endedAt time.Duration // on the world's clock
-	world   time.Duration // of the last look at the shaft
+	now      time.Duration
+	stage    stage
+	plan     safety.Plan
+	lone     bool // the run was asked for unattended
+	armedAt  time.Duration
+	startAt  time.Duration
+	drives   bool // a drive value was sent in this run
+	driveAt  time.Duration
+	asked0   float64 // newest drive value
+	patterns int     // asked for in this run
+	counts0  int64
+	counted  bool
+	endedAt  time.Duration // on the world's clock
+	world    time.Duration // of the last look at the shaft
 
 	stopDue bool
 	stopAt  time.Duration

@@ -16,6 +16,7 @@ type message struct {
 	k     int // counts drive values and heartbeats
 	mode  safety.Mode
 	value float64
+	relay float64 // rad/s, of a pattern
 }
 
 type msgKind uint8
@@ -28,6 +29,7 @@ const (
 	msgBeat
 	msgDisarm
 	msgReset
+	msgPattern
 )
 
 // motor is a one-pole shaft in closed form: between two looks at it the drive is
@@ -70,6 +72,8 @@ type board struct {
 	trip    protocol.Cause
 	mode    safety.Mode
 	target  float64
+	swing   float64 // V about target, of a pattern
+	relay   float64 // rad/s at which it switches
 	volts   float64
 	token   int // id of the arm that is good
 	used    int // newest arm id seen
@@ -118,6 +122,9 @@ func (b *board) control(f Fault) {
 	switch b.state {
 	case protocol.Driving:
 		b.volts = b.target
+		if b.swing > 0 {
+			b.volts += math.Copysign(b.swing, b.relay-b.seen(f))
+		}
 	case protocol.Looping, protocol.Ramping:
 		want := b.target
 		if b.state == protocol.Ramping && f != RampStuck {
@@ -148,7 +155,7 @@ func (b *board) off(now time.Duration, why protocol.Cause) {
 	if why.Trip() {
 		b.state, b.trip = protocol.Tripped, why
 	}
-	b.volts, b.target, b.token = 0, 0, 0
+	b.volts, b.target, b.token, b.swing = 0, 0, 0, 0
 	b.offWhy, b.since = why, now-b.beat
 }
 
@@ -176,6 +183,11 @@ func (b *board) receive(now time.Duration, m message, f Fault) (answer safety.Ev
 		}
 	case msgDrive, msgBeat:
 		b.drive(now, m)
+	case msgPattern:
+		if b.state != protocol.Driving || m.id != b.token {
+			return safety.PatternRefused{Words: "wrong state"}
+		}
+		b.swing, b.relay = m.value, m.relay
 	case msgReset:
 		if b.state == protocol.Tripped && b.speed == 0 {
 			b.state, b.trip = protocol.Off, 0
@@ -258,7 +270,7 @@ func (b *board) sample(now time.Duration, f Fault) protocol.Sample {
 // restart is a dip of the board's supply.
 func (b *board) restart(now time.Duration) {
 	b.state, b.trip = protocol.Off, 0
-	b.volts, b.target, b.token, b.k = 0, 0, 0, 0
+	b.volts, b.target, b.token, b.k, b.swing = 0, 0, 0, 0, 0
 	b.boots++
 	b.born = now
 }

@@ -248,6 +248,9 @@ func stamp(e safety.Event, at time.Duration) safety.Event {
 	case safety.BoardRefused:
 		e.At = at
 		return e
+	case safety.PatternRefused:
+		e.At = at
+		return e
 	case safety.BoardArmed:
 		return safety.BoardArmed{At: at}
 	case safety.BoardRestarted:

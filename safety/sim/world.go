@@ -223,6 +223,8 @@ func (w *World) carry(x safety.Effect) {
 	case safety.SendHeartbeat:
 		w.k++
 		w.toTheBoard(message{kind: msgBeat, id: w.armID, k: w.k})
+	case safety.SendPattern:
+		w.toTheBoard(message{kind: msgPattern, id: w.armID, value: x.Pattern.Amplitude, relay: x.Pattern.Middle})
 	case safety.SendReset:
 		w.toTheBoard(message{kind: msgReset})
 	case safety.RunEnded:
@@ -293,7 +295,7 @@ func (w *World) toLaptop(it item) {
 // plug connects, and does for the session what the job does first.
 func (w *World) plug() {
 	w.plugged = true
-	w.deliver(safety.Connected{At: w.clock(), Board: "7A31", BootCount: w.b.boots, Simulated: true})
+	w.deliver(safety.Connected{At: w.clock(), Board: "7A31", BootCount: w.b.boots, Simulated: true, Patterns: true})
 }
 
 func (w *World) hash(e safety.Event, out []safety.Effect) {
@@ -335,6 +337,8 @@ func plans(env safety.Envelope) []safety.Admitted {
 	back.Until = motion.Until
 	inch := volts(0, 7, 900*ms)
 	inch.Until = safety.Until{Kind: safety.UntilMotion, Counts: 20}
+	relay := volts(8, 8, 3*sec)
+	relay.Pattern = safety.Pattern{Kind: safety.PatternRelay, Amplitude: 2, Middle: 60, Hysteresis: 2, Switchings: 200}
 	rest := volts(0, 0, sec)
 	rest.Until.Kind = safety.UntilRest
 	var l []safety.Admitted
@@ -347,6 +351,7 @@ func plans(env safety.Envelope) []safety.Admitted {
 		{Name: "sign", Check: safety.CheckSign, TurnsMax: 2, Segments: []safety.Segment{motion, rest, back}},
 		{Name: "creep", Check: safety.CheckStop, SpeedMax: 80, Segments: []safety.Segment{volts(0, 5, sec), volts(5, 5, 2*sec)}},
 		{Name: "short", TurnsMax: 0.5, Segments: []safety.Segment{volts(3, 3, 2*sec)}},
+		{Name: "relay", Segments: []safety.Segment{volts(0, 8, sec), relay}},
 		{Name: "inch", Inch: true, SpeedMax: 80, TurnsMax: 0.6, Segments: []safety.Segment{inch, volts(0, 0, 300*ms)}},
 	} {
 		a, err := env.Admit(p)

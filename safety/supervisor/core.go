@@ -8,6 +8,7 @@ package supervisor
 import (
 	"errors"
 	"fmt"
+	"slices"
 	"strconv"
 	"time"
 
@@ -170,7 +171,7 @@ func (c *Core) Connected(now time.Duration, id protocol.Identity, why string) {
 		c.lookOnly = why
 	}
 	c.Do(safety.Connected{At: now, Board: id.Board, LookOnly: c.lookOnly != "", Simulated: c.Simulated,
-		BootCount: id.Boots})
+		Patterns: id.Can("exper") && slices.Contains(id.LimitNames, protocol.LimSlew), BootCount: id.Boots})
 }
 
 // Opened says that a port was opened: what came before it counts no more.
@@ -316,6 +317,8 @@ func (c *Core) carryOut(x safety.Effect) {
 	case safety.SendDrive:
 		c.beat++
 		c.wire.Motion(c.driveLine(x))
+	case safety.SendPattern:
+		c.pattern(x)
 	case safety.SendHeartbeat:
 		c.beat++
 		c.wire.Motion(protocol.AppendBeat(nil, c.beat, c.token))
@@ -362,6 +365,16 @@ func (c *Core) arm() {
 			c.token, c.beat = token, 0
 			c.Do(safety.BoardArmed{At: c.now})
 		})
+	})
+}
+
+// pattern asks the board's loop to begin one, once: a line that is lost ends the run.
+func (c *Core) pattern(x safety.SendPattern) {
+	ask := protocol.Request{Verb: protocol.VerbExper, Args: patternArgs(c.token, x.Pattern), Tries: 1}
+	c.Ask(c.now, ask, func(a protocol.Answer) {
+		if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {
+			c.Do(safety.PatternRefused{At: c.now, Words: err.Error()})
+		}
 	})
 }
 

@@ -2,6 +2,7 @@ package supervisor
 
 import (
 	"fmt"
+	"math"
 	"strconv"
 	"strings"
 	"time"
@@ -79,6 +80,20 @@ func (c *Core) restarted(boots int, why string) {
 	c.connected = false
 	c.Do(safety.BoardRestarted{At: c.now})
 	c.sink.Restarted(c.now, boots, why)
+}
+
+// patternArgs are the arguments of exp (P13). The amplitude is rounded towards zero,
+// so that rounding never raises it.
+func patternArgs(token uint16, x safety.Pattern) string {
+	milli := func(v float64) int64 { return int64(math.Trunc(v * 1000)) }
+	switch amp := milli(x.Amplitude + 1e-9); x.Kind {
+	case safety.PatternRelay:
+		return fmt.Sprintf("relay %04X %d %d %d %d", token, amp, milli(x.Hysteresis), milli(x.Middle), x.Switchings)
+	case safety.PatternSequence:
+		return fmt.Sprintf("prbs %04X %d %d %d %d", token, amp, x.Stages, x.Loops, x.Seed)
+	default:
+		return fmt.Sprintf("steps %04X %d %d %d", token, amp, x.Loops, x.Steps)
+	}
 }
 
 // askLog reads the newest stop of the board: its cause and how long after the
