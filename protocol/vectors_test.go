@@ -164,6 +164,20 @@ func arithmetic(t *testing.T, takes, line string) (got, want string) {
 			set = append(set, v)
 		}
 		return fmt.Sprintf("%04X", SetCRC(set)), words[0]
+	case "sequence":
+		var stages int
+		var seed uint16
+		if _, err := fmt.Sscan(line, &stages, &seed, &want); err != nil {
+			t.Fatalf("%q: %v", line, err)
+		}
+		for _, up := range Sequence(stages, seed)[:len(want)] {
+			if up {
+				got += "1"
+			} else {
+				got += "0"
+			}
+		}
+		return got, want
 	case "newer":
 		var k, last uint16
 		if _, err := fmt.Sscan(line, &k, &last, &want); err != nil {
@@ -180,7 +194,7 @@ func arithmetic(t *testing.T, takes, line string) (got, want string) {
 
 func TestVectors(t *testing.T) {
 	files, err := filepath.Glob("testdata/vectors/*.txt")
-	if err != nil || len(files) < 11 {
+	if err != nil || len(files) < 13 {
 		t.Fatalf("%d vectors: %v", len(files), err)
 	}
 	for _, path := range files {

@@ -54,6 +54,7 @@ const (
 	CodeNotHeld     Code = 319
 	CodeLoose       Code = 320
 	CodeForecast    Code = 321
+	CodePushed      Code = 322
 
 	CodeAsked    Code = 401
 	CodeOtherKey Code = 402
@@ -140,6 +141,7 @@ var causes = map[Code]text{
 	CodeHeat:        {"heat budget used up", "wait until it has cooled"},
 	CodeRunTime:     {"run time over the limit", "shorten the plan"},
 	CodeInterlock:   {"interlock open", "close it; then arm again"},
+	CodePushed:      {"the shaft speeds up beyond what the drive can do", watch + ". Look for what drives it: a load that pulls, another motor"},
 	CodeUndriven:    {"the shaft turns without drive", watch},
 	CodeNotHeld:     {"the shaft turned and was to be held", "fasten it before the next run"},
 	CodeLoose:       {"far more acceleration than the model allows: load coming loose", "power off, look at couplings, keys and screws"},

@@ -18,7 +18,8 @@ const (
 	runawayTime = 40 * time.Millisecond  // for this long: a loop that sees too little speed runs away
 	unseenTime  = 40 * time.Millisecond  // without a count, beside a speed by volts: none comes
 	looseRatio  = 2.5                    // acceleration against the model's
-	looseTime   = 30 * time.Millisecond
+	looseTime   = 6 * time.Millisecond
+	looseGoes   = 0.25                  // share of the slope with which the newest sample has to go on
 	aheadFrom   = 0.7                   // share of the ceiling from which to look ahead
 	aheadStop   = 20 * time.Millisecond // console and wire, from sample to output off
 	voltsSlack  = 0.03                  // share by which applied volts may be over what was asked
@@ -37,6 +38,8 @@ type judgeState struct {
 	looks        int
 	slope        float64 // rad/s²
 	sloped       bool
+	last         speedAt
+	newest       float64 // rad/s², from the sample before to the newest
 
 	stallFrom time.Duration
 	stalling  bool
@@ -52,8 +55,9 @@ type judgeState struct {
 }
 
 type speedAt struct {
-	at    time.Duration
-	speed float64
+	at     time.Duration
+	speed  float64
+	lo, hi float64 // V applied from then on
 }
 
 // look takes counts and slope from one sample.
@@ -67,10 +71,18 @@ func (j *judgeState) look(s protocol.Sample, dt time.Duration) {
 	} else if s.Speed != 0 {
 		j.changedAt = j.clock
 	}
-	now := speedAt{j.clock, float64(s.Speed)}
+	v := float64(s.Volts)
+	for _, p := range []*speedAt{&j.older, &j.newer} {
+		p.lo, p.hi = math.Min(p.lo, v), math.Max(p.hi, v)
+	}
+	now := speedAt{j.clock, float64(s.Speed), v, v}
 	if j.looks == 0 {
-		j.older, j.newer, j.looks = now, now, 1
+		j.older, j.newer, j.last, j.looks = now, now, now, 1
 		return
+	}
+	if h := (now.at - j.last.at).Seconds(); h > 0 {
+		j.newest = (now.speed - j.last.speed) / h
+		j.last = now
 	}
 	if now.at-j.older.at >= slopeSpan {
 		j.slope = (now.speed - j.older.speed) / (now.at - j.older.at).Seconds()
@@ -338,41 +350,6 @@ func (m *machine) judgeSlip(s protocol.Sample) bool {
 // faster than its volts: then they say nothing of its speed.
 func (m *machine) freewheels(s protocol.Sample, ke float64) bool {
 	return !m.env.Brake && math.Abs(float64(s.Speed))*ke > math.Abs(float64(s.Volts))
-}
-
-// judgeLoose compares the acceleration with what the model allows for the volts
-// applied, (K·V − ω)/τ: much more means that inertia has come off.
-func (m *machine) judgeLoose(s protocol.Sample) bool {
-	j, l := &m.judge, m.env.Look
-	if l.Gain <= 0 || l.Tau <= 0 || !j.sloped {
-		return false
-	}
-	// The volts of the slope's span are not known one by one, so the drive asked
-	// for and none at all stand beside those applied.
-	k, w := l.Gain, float64(s.Speed)
-	lo, hi := m.driveRange(float64(s.Volts))
-	most := (k*hi - w) / l.Tau.Seconds()
-	if j.slope < 0 {
-		most = (w - k*lo) / l.Tau.Seconds()
-	}
-	span := slopeSpan.Seconds()
-	grain := 4*float64(m.env.RestSpeed)/span + 4*m.env.RadPerCount/(span*span) // of encoder and window
-	far := math.Abs(j.slope) > looseRatio*math.Max(most, 0)+grain
-	if !j.lasts(far, &j.loose, &j.looseFrom, looseTime) {
-		return false
-	}
-	m.trip(CodeLoose, fmt.Sprintf("%.4g rad/s², the model allows %.4g", math.Abs(j.slope), most))
-	return true
-}
-
-// driveRange is what may have been applied of late; in closed loop anything up to
-// the envelope's limit.
-func (m *machine) driveRange(applied float64) (lo, hi float64) {
-	asked, more := m.Value, m.pattern()
-	if m.Plan.plan.Segments[0].Mode == ModeSpeed {
-		return -float64(m.env.VoltsMax), float64(m.env.VoltsMax)
-	}
-	return math.Min(0, math.Min(applied, asked-more)), math.Max(0, math.Max(applied, asked+more))
 }
 
 func (m *machine) judgeInputs() {

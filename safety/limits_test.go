@@ -110,6 +110,18 @@ func TestEveryLimitTrips(t *testing.T) {
 		{"not a number", safety.Plan{}, safety.CodeNotNumber, 20 * ms,
 			func(d *drill, in time.Duration) { d.board.Speed = si.RadPerSec(math.NaN()) }, nil},
 		{"loose", safety.Plan{}, safety.CodeLoose, 300 * ms,
+			func(d *drill, in time.Duration) { // a fifteenth of the inertia is left
+				d.board.Volts, d.board.Speed, d.board.Current = 3, si.RadPerSec(36*(1-math.Exp(-in.Seconds()/0.01))), 0
+				d.board.Counts++
+			},
+			func(d *drill, in time.Duration) { // one wild sample
+				d.board.Volts, d.board.Speed, d.board.Current = 3, si.RadPerSec(36*(1-math.Exp(-in.Seconds()/0.15))), 0
+				if in > 140*ms && in < 155*ms {
+					d.board.Speed += 25
+				}
+				d.board.Counts++
+			}},
+		{"pushed", safety.Plan{}, safety.CodePushed, 300 * ms,
 			func(d *drill, in time.Duration) {
 				d.board.Volts, d.board.Speed, d.board.Current = 2, si.RadPerSec(1000*math.Min(in.Seconds(), 0.15)), 0
 				d.board.Counts++
@@ -144,7 +156,10 @@ func TestEveryLimitTrips(t *testing.T) {
 				case "heat":
 					d.env.Ke = 0 // the made-up current fits no speed
 				}
-				if c.name == "loose" || c.name == "wrong way" || c.name == "slip" {
+				if c.name == "acceleration" {
+					d.env.Look = safety.LookAhead{} // its own limit, without a model
+				}
+				if c.name == "loose" || c.name == "pushed" || c.name == "wrong way" || c.name == "slip" {
 					d.env.StallTime = 3 * time.Second
 				}
 				d.get(safety.Running, admit(t, d.env, plan))

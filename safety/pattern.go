@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"time"
+
+	"gainwright/protocol"
 )
 
 // PatternKind says what the board's own loop makes of a segment.
@@ -130,6 +132,22 @@ func (m *machine) patternRefused(words string) {
 	if m.Phase == Running && m.patterned {
 		m.stopping(EndStopped, cause(CodeNoPattern, words))
 	}
+}
+
+// Levels are the bits of a sequence or the steps of a square wave in order, true is
+// up; nil for a relay, whose course the motor decides.
+func (x Pattern) Levels() []bool {
+	switch x.Kind {
+	case PatternSequence:
+		return protocol.Sequence(x.Stages, x.Seed)
+	case PatternSquare:
+		l := make([]bool, x.Steps)
+		for i := range l {
+			l[i] = i%2 == 0
+		}
+		return l
+	}
+	return nil
 }
 
 // Lasts is how long a pattern lasts at a loop period, 0 where that is not

@@ -146,3 +146,36 @@ func TestAPatternIsLookedAheadTo(t *testing.T) {
 		}
 	}
 }
+
+// A register of n stages shows every n bits but all zeros once in a period: that is
+// what maximal length means (Golomb, Shift Register Sequences, 1967).
+func TestSequencesAreOfMaximalLength(t *testing.T) {
+	for n := 3; n <= 16; n++ {
+		for _, seed := range []uint16{1, 1<<n - 1} {
+			l := protocol.Sequence(n, seed)
+			seen := make([]bool, 1<<n)
+			for i := range l {
+				w := 0
+				for j := range n {
+					w *= 2
+					if l[(i+j)%len(l)] {
+						w++
+					}
+				}
+				if w == 0 || seen[w] {
+					t.Fatalf("%d stages from %d: bits %b again after %d", n, seed, w, i)
+				}
+				seen[w] = true
+			}
+			for i := range n {
+				if l[i] != (seed>>i&1 == 1) {
+					t.Errorf("%d stages: bit %d is not that of the seed", n, i)
+				}
+			}
+		}
+	}
+	x := safety.Pattern{Kind: safety.PatternSquare, Steps: 5, Loops: 20}
+	if l := x.Levels(); len(l) != 5 || !l[0] || l[1] || x.Lasts(ms) != 100*ms {
+		t.Errorf("%v, %v", l, x.Lasts(ms))
+	}
+}

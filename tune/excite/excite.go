@@ -21,6 +21,7 @@ type Known struct {
 	SpeedStep    float64 // rad/s, smallest step of the reported speed
 	Noise        float64 // rad/s, standard deviation of the speed at rest
 	Loop         float64 // s
+	Patterns     bool    // the board's loop makes relay, sequence and steps itself
 	FallSlope    float64 // V/s at which the drive may fall towards zero, for what braking gives back; 0: at once
 	Dips         bool    // the drive falls by way of zero, where a shorted winding brakes and gives nothing back
 	BrakeVolts   float64 // V of back-EMF up to which the drive may go to zero at once and brake; above it a run ends with the output off
@@ -272,6 +273,9 @@ func Relay(k Known, r RelaySpec) safety.Plan {
 	ramp, settle := leadIn(k)
 	b.ramp(r.Bias, seconds(ramp), safety.Until{}, "to the middle")
 	b.hold(r.Bias, seconds(settle), "settle")
+	if k.patterns() {
+		return b.relayOnBoard(k, r)
+	}
 	longest := seconds(math.Max(0.3, 6*k.Tau))
 	half := func(v float64, until safety.Until, note string) {
 		j := b.jumpTime(v)
@@ -312,6 +316,10 @@ func Step(k Known, bias, amplitude float64, n int) safety.Plan {
 	ramp, settle := leadIn(k)
 	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
 	b.hold(bias, seconds(settle), "settle")
+	if k.patterns() {
+		b.pattern(k, safety.Pattern{Kind: safety.PatternSquare, Amplitude: amplitude, Loops: k.loops(hold), Steps: 2 * n}, hold, "steps in the board's loop")
+		return safety.Plan{Name: "step test", Purpose: "time constant and dead time about one operating point", Segments: b.segs}
+	}
 	for range n {
 		b.hold(bias+amplitude, hold, "up")
 		b.fallTo(k, bias-amplitude, hold, "down")
@@ -329,11 +337,13 @@ func Heights(k Known, bias, amplitude float64, n int, seed uint32) safety.Plan {
 	ramp, settle := leadIn(k)
 	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
 	b.hold(bias, seconds(settle), "settle")
-	bits := PRBSBits(9, seed)
+	bits := sequence(9, seed)
 	share := func(i int) float64 { // 0.3 to 1 from three bits
 		s := 0.0
-		for _, x := range bits[3*i%len(bits):][:3] {
-			s = 2*s + (x+1)/2
+		for _, up := range bits[3*i%len(bits):][:3] {
+			if s *= 2; up {
+				s++
+			}
 		}
 		return 0.3 + 0.1*s
 	}
@@ -346,25 +356,14 @@ func Heights(k Known, bias, amplitude float64, n int, seed uint32) safety.Plan {
 	return safety.Plan{Name: "heights", Purpose: "a record that the model has not seen", Segments: b.segs}
 }
 
-// prbsTaps are feedback taps of maximum-length shift registers (a standard
-// table of primitive polynomials over GF(2)).
-var prbsTaps = map[int][2]int{5: {5, 3}, 6: {6, 5}, 7: {7, 6}, 9: {9, 5}, 10: {10, 7}}
+// register is a seed of a register of so many stages, made from one of any size.
+func register(stages int, seed uint32) uint16 {
+	return max(1, uint16(seed&(1<<stages-1)))
+}
 
-// PRBSBits returns one period of a maximum-length sequence of ±1 from a register
-// of n bits (5, 6, 7, 9 or 10) that starts at seed.
-func PRBSBits(n int, seed uint32) []float64 {
-	taps := prbsTaps[n]
-	mask := uint32(1)<<n - 1
-	if seed &= mask; seed == 0 {
-		seed = 1
-	}
-	out := make([]float64, 1<<n-1)
-	for i := range out {
-		bit := (seed>>(taps[0]-1) ^ seed>>(taps[1]-1)) & 1
-		seed = (seed<<1 | bit) & mask
-		out[i] = 2*float64(bit) - 1
-	}
-	return out
+// sequence is one period of a register of so many stages.
+func sequence(stages int, seed uint32) []bool {
+	return safety.Pattern{Kind: safety.PatternSequence, Stages: stages, Seed: register(stages, seed)}.Levels()
 }
 
 // PRBS makes a pseudo-random binary sequence of amplitude about bias: clock is
@@ -375,15 +374,28 @@ func PRBS(k Known, bias, amplitude float64, clock time.Duration, bits int, seed 
 	ramp, settle := leadIn(k)
 	b.ramp(bias, seconds(ramp), safety.Until{}, "to the middle")
 	b.hold(bias, seconds(settle), "settle")
+	p := safety.Plan{Name: "prbs", Purpose: "a record that the model has not seen"}
+	if k.patterns() {
+		for bits > 3 && time.Duration(1<<bits-1)*clock > longest {
+			bits--
+		}
+		p.Segments = b.pattern(k, safety.Pattern{Kind: safety.PatternSequence, Amplitude: amplitude, Stages: bits, Loops: k.loops(clock), Seed: register(bits, seed)}, 0, "prbs in the board's loop")
+		return p
+	}
 	var total time.Duration
-	for _, s := range PRBSBits(bits, seed) {
+	for _, up := range sequence(bits, seed) {
 		if total += clock; total > longest {
 			break
 		}
-		b.hold(bias+s*amplitude, clock, "prbs")
+		v := bias - amplitude
+		if up {
+			v = bias + amplitude
+		}
+		b.hold(v, clock, "prbs")
 	}
 	b.end(k, bias)
-	return safety.Plan{Name: "prbs", Purpose: "a record that the model has not seen", Segments: b.segs}
+	p.Segments = b.segs
+	return p
 }
 
 // Setpoint is a closed-loop profile: levels in rad/s, each held for hold, the

@@ -45,6 +45,7 @@ type Known struct {
 	SupplyCanSink  bool    // the supply takes energy back
 	CanBrake       bool    // the drive brakes (two or four quadrants)
 	RadPerCount    float64 // rad
+	Loop           float64 // s, period of the board's loop, which makes the patterns
 
 	// The closed loop on the board, for plans in speed.
 	LoopTau       float64 // s, its time constant

@@ -96,8 +96,9 @@ func (r *runner) openLoop(seg safety.Segment, n int, h float64) {
 	e, g := r.ss.Hold(h)
 	from := r.angle
 	r.rested = 0
+	more := r.pattern(seg, h)
 	for i := range n {
-		drive := seg.From + (seg.To-seg.From)*(float64(i)+0.5)/float64(n)
+		drive := seg.From + (seg.To-seg.From)*(float64(i)+0.5)/float64(n) + more(i)
 		before := r.speed
 		r.advance(e, g, drive)
 		r.power(drive, before, h)

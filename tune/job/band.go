@@ -23,17 +23,19 @@ type Band struct {
 // Widths of the band (our choice). The forecast's own is for what is likely; this
 // one is for what is wrong.
 const (
-	bandTimes = 3.0  // of the forecast's band
-	bandShare = 0.15 // of the top speed, at least
-	bandLoop  = 0.35 // the same in closed loop
-	bandSlack = 0.03 // s, and a third of the time constant
-	bandFor   = 0.06 // s
+	bandTimes   = 3.0  // of the forecast's band
+	bandShare   = 0.15 // of the top speed, at least
+	bandLoop    = 0.35 // the same in closed loop
+	bandSlack   = 0.03 // s, and a third of the time constant
+	bandFor     = 0.06 // s
+	bandPattern = 0.05 // s, for the request that begins a pattern in the board's loop
 )
 
 // band makes the band of a plan, nil where the forecast does not rest on a model
 // or the run may end its segments early.
 func (j *Job) band(p safety.Plan, line []Point, own float64) *Band {
-	if p.Check != safety.CheckNone || p.Locked || len(line) < 2 || j.Fit == nil || j.Fit.Best() == nil {
+	last := p.Segments[len(p.Segments)-1].Pattern
+	if p.Check != safety.CheckNone || p.Locked || last.Kind == safety.PatternRelay || len(line) < 2 || j.Fit == nil || j.Fit.Best() == nil {
 		return nil
 	}
 	end := 0.0
@@ -55,6 +57,9 @@ func (j *Job) band(p safety.Plan, line []Point, own float64) *Band {
 		share = bandLoop
 	}
 	b := &Band{Width: math.Max(math.Max(bandTimes*own, share)*top, 6*math.Max(j.Noise, j.sizing().SpeedStep)), Slack: bandSlack + j.Tau/3, For: bandFor}
+	if p.HasPattern() {
+		b.Slack += bandPattern
+	}
 	for _, q := range line {
 		if q.T <= end {
 			b.Line = append(b.Line, q)

@@ -16,7 +16,7 @@ func (j *Job) known() forecast.Known {
 	m, env := j.Rig.Motor, j.Env
 	k := forecast.Known{VoltsRated: m.VoltageRated, SpeedMax: float64(env.SpeedMax), Resistance: m.Resistance, Ke: m.Ke, Inertia: m.Inertia,
 		BusNominal: j.Rig.Drive.BusNominal, BusCapacitance: j.Rig.Drive.BusCapacitance * 1e-6, SupplyCanSink: j.Rig.Drive.SupplySinks,
-		CanBrake: env.Brake, RadPerCount: env.RadPerCount}
+		CanBrake: env.Brake, RadPerCount: env.RadPerCount, Loop: j.ID.Loop.Seconds()}
 	if j.Margins != nil && j.Margins.Crossover.Known() && j.Pushed {
 		k.LoopTau, k.LoopOvershoot = 1/float64(j.Margins.Crossover), orZero(float64(j.Margins.Step.Overshoot))/100
 	}
@@ -93,6 +93,9 @@ func (j *Job) forecast(p safety.Plan) (PlanView, []sheet.Quantity, error) {
 	add("bus when stopping", "V", model.Value(bus), fmt.Sprintf("%.1f V", bus), fmt.Sprintf("%.3g V", float64(j.Env.BusMax)), bus > float64(j.Env.BusMax) && j.Env.BusMax > 0)
 	add("turns", "1", f.Turns, fmt.Sprintf("%.3g", float64(f.Turns)), fmt.Sprintf("%.3g", j.Env.TurnsMax), float64(f.Turns) > j.Env.TurnsMax)
 	v.Facts = append(v.Facts, Fact{Name: "time at most", Value: fmt.Sprintf("%.1f s", p.Duration().Seconds())})
+	if x := p.Segments[len(p.Segments)-1].Pattern; p.HasPattern() {
+		v.Facts = append(v.Facts, Fact{Name: "in the board's loop", Value: fmt.Sprintf("%s ±%.3g V", x.Kind, x.Amplitude)})
+	}
 	return v, q, j.overForecast(p, v)
 }
 

@@ -3,6 +3,7 @@ package job
 import (
 	"errors"
 	"fmt"
+	"slices"
 
 	"gainwright/protocol"
 	"gainwright/safety"
@@ -294,9 +295,15 @@ func (j *Job) procedure(id StepID) func() (result, error) {
 }
 
 // sizing is what the experiments are sized from.
+// patterns reports whether the board's loop makes relay, sequence and steps itself,
+// under its own limit of the rate of change of volts, with a capture that shows them.
+func (j *Job) patterns() bool {
+	return j.ID.Can("exper") && j.ID.Can("capture") && slices.Contains(j.ID.LimitNames, protocol.LimSlew)
+}
+
 func (j *Job) sizing() excite.Known {
 	k := excite.Known{Env: j.Env, StartForward: j.StartForward, StartReverse: j.StartReverse, Gain: j.Gain, Tau: j.Tau,
-		Noise: j.Noise, Loop: j.ID.Loop.Seconds()}
+		Noise: j.Noise, Loop: j.ID.Loop.Seconds(), Patterns: j.patterns()}
 	if w := j.ID.Window().Seconds(); w > 0 {
 		k.SpeedStep = j.ID.RadPerCount() / w
 	}

@@ -42,7 +42,12 @@ func (j *Job) doRelay() (result, error) {
 			Upper: centre + hyst, Lower: centre - hyst, Cycles: relayCycles}
 		plan := excite.Relay(k, spec)
 		plan.Name = fmt.Sprintf("relay %d", i+1)
-		r, err := j.runLearning(StepRelay, plan, j.capture(plan), relayLearner(bias, relayApart*j.Amplitude))
+		learner := relayLearner(bias, relayApart*j.Amplitude)
+		if plan.HasPattern() {
+			learner = patternOver(plan, j.Hz)
+			set.Numbers["relay_delay"] = j.loopDelay() // the board sees its window late, as its own loop does
+		}
+		r, err := j.runLearning(StepRelay, plan, j.capture(plan), learner)
 		if err != nil {
 			return "", err
 		}
@@ -74,6 +79,25 @@ func (j *Job) loopDelay() float64 {
 	return j.ID.Loop.Seconds()/2 + j.ID.ComputeDelay.Seconds() + j.ID.Window().Seconds()/2
 }
 
+// patternOver ends a run once the board's pattern is over: the drive has been off its
+// middle and is on it again for longer than a cycle could make it look so.
+func patternOver(plan safety.Plan, hz int) func(Sample) (string, bool) {
+	s := plan.Segments[len(plan.Segments)-1]
+	settled, begun, quiet := false, false, 0
+	return func(x Sample) (string, bool) {
+		off := math.Abs(float64(x.Volts) - s.From)
+		if quiet++; off > 0.05*s.Pattern.Amplitude {
+			quiet = 0
+		}
+		settled = settled || quiet > 0
+		begun = begun || settled && off > s.Pattern.Amplitude/2
+		if !begun {
+			return "", false
+		}
+		return "the board's loop drives: " + s.Pattern.Kind.String(), quiet > max(12, hz/10)
+	}
+}
+
 // relayLearner counts the cycles and ends the run when their length is known.
 func relayLearner(mid, apart float64) func(Sample) (string, bool) {
 	var rises, periods []float64
@@ -100,7 +124,7 @@ func relayLearner(mid, apart float64) func(Sample) (string, bool) {
 
 // analyseRelay takes gain, poles, dead time and the ultimate point from two relay
 // runs. Numbers: middle_1 and middle_2 in V, upper_ and lower_ in rad/s, loop_delay
-// in s.
+// in s; relay_delay in s where the board's loop was the relay.
 func analyseRelay(set ExperimentSettings, traces []*trace.Trace, rec *sheet.ExperimentRecord) error {
 	if len(traces) != 2 {
 		return fmt.Errorf("%w: %d relay runs, two are needed", identify.ErrData, len(traces))
@@ -111,6 +135,9 @@ func analyseRelay(set ExperimentSettings, traces []*trace.Trace, rec *sheet.Expe
 		r, err := identify.FitRelay(tr, set.Numbers["middle_"+n], set.Numbers["apart_"+n], set.Numbers["upper_"+n], set.Numbers["lower_"+n])
 		if err != nil {
 			return fmt.Errorf("run %d: %w", i+1, err)
+		}
+		if d, known := set.Numbers["relay_delay"]; known {
+			r.Delay = d
 		}
 		runs[i] = r
 	}
@@ -126,14 +153,14 @@ func analyseRelay(set ExperimentSettings, traces []*trace.Trace, rec *sheet.Expe
 	quantity(rec, "dead time", "s", f.Dead, f.DeadSD, "phase of Y/U at the harmonics; the speed window is taken out")
 	for i, r := range runs {
 		n := fmt.Sprint(i + 1)
-		quantity(rec, "period "+n, "s", r.Period(), r.PeriodSD, fmt.Sprintf("%d cycles, %.4g to %.4g s of the trace; with the console's own delay of %.3g s", r.Cycles, r.From, r.To, r.Delay))
+		quantity(rec, "period "+n, "s", r.Period(), r.PeriodSD, fmt.Sprintf("%d cycles, %.4g to %.4g s of the trace; with a delay of %.3g s from threshold to drive", r.Cycles, r.From, r.To, r.Delay))
 		quantity(rec, "swing "+n, "rad/s", r.Amplitude, 0, "half of largest less smallest, mean of the cycles")
 	}
 	m := f.Model()
 	if ku, pu, ok := m.Ultimate(set.Numbers["loop_delay"]); ok {
 		quantity(rec, "ultimate gain", "V/(rad/s)", ku, 0, "1/|G| where the phase of the model with the delays of the board's loop is −180°")
 		quantity(rec, "ultimate period", "s", pu, 0, "of the same point")
-		quantity(rec, "4d/(π·a) of the describing function", "V/(rad/s)", runs[0].DescribingKu, 0, "for comparison: at the period of the limit cycle, the console's delay inside; off by what it neglects")
+		quantity(rec, "4d/(π·a) of the describing function", "V/(rad/s)", runs[0].DescribingKu, 0, "for comparison: at the period of the limit cycle, that delay inside; off by what it neglects")
 	}
 	quantity(rec, "forecast period over measured", "1", f.Period, 0, "exact equations of the limit cycle, solved for the plant found")
 	quantity(rec, "forecast swing over measured", "1", f.Swing, 0, "the same; the speed window rounds the peaks off")

@@ -262,9 +262,30 @@ func profile(p safety.Plan) []Point {
 	var pts []Point
 	t := 0.0
 	for _, s := range p.Segments {
+		if s.Pattern.Kind != safety.PatternNone {
+			return append(pts, patternProfile(s, t)...)
+		}
 		pts = append(pts, Point{t, s.From})
 		t += s.Duration.Seconds()
 		pts = append(pts, Point{t, s.To})
+	}
+	return pts
+}
+
+// patternProfile is the drive of a segment that the board's loop adds to. When a
+// relay will switch is not known beforehand: it is drawn at even times.
+func patternProfile(s safety.Segment, from float64) (pts []Point) {
+	levels := s.Pattern.Levels()
+	if levels == nil {
+		levels = safety.Pattern{Kind: safety.PatternSquare, Steps: s.Pattern.Switchings}.Levels()
+	}
+	each := s.Duration.Seconds() / float64(len(levels))
+	for i, up := range levels {
+		v := s.From - s.Pattern.Amplitude
+		if up {
+			v = s.From + s.Pattern.Amplitude
+		}
+		pts = append(pts, Point{from + float64(i)*each, v}, Point{from + float64(i+1)*each, v})
 	}
 	return pts
 }
