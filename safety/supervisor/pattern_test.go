@@ -77,11 +77,9 @@ func TestPatternsOnTheWire(t *testing.T) {
 		r.pass(500 * ms)
 		r.onward() // clear area and start
 		r.pass(env.CountDown + 100*ms)
-		stopAt := r.at + 900*ms
 		stops := rng.IntN(3) == 0
 		if stops {
-			stopAt = r.at + time.Duration(rng.IntN(1500))*ms
-			r.pass(stopAt - r.at)
+			r.pass(time.Duration(rng.IntN(1500)) * ms)
 			r.Stop(r.at, safety.ByStopKey)
 		}
 		r.pass(3 * time.Second)
