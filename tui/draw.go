@@ -191,8 +191,12 @@ func (p *painter) next(a area) {
 	}
 	x := a.put(1, 0, palette.Strong, word)
 	x = a.put(x+2, 0, palette.Strong, st.Title)
-	if st.For != "" {
-		a.put(x, 0, palette.Plain, ": "+st.For)
+	why := st.For
+	if st.Note != "" {
+		why = st.Note // the job file's own word
+	}
+	if why != "" {
+		a.put(x, 0, palette.Plain, ": "+why)
 	}
 }
 

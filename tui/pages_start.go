@@ -65,6 +65,7 @@ func (p *painter) stepDetail(a area, st job.StepView) {
 		y = a.sub(9, 0, a.w-10, a.h).wrap(y, palette.Plain, text)
 	}
 	row("For", st.For)
+	row("Job", st.Note)
 	row("Needs", st.Needs)
 	row("Motor", st.Moves)
 	row("Takes", st.Takes)

@@ -40,6 +40,7 @@ var rooms = map[string]struct{ ours, forbidden []string }{
 	"tune/excite":               {[]string{"safety", "protocol/si"}, []string{"os"}},
 	"tune/identify":             {[]string{"tune/trace", "tune/model", "protocol/si"}, []string{"os"}},
 	"tune/design":               {[]string{"tune/model", "protocol/si"}, []string{"os"}},
+	"tune/jobfile":              {[]string{"tune/job", "safety/rig"}, []string{"os"}},
 	"tune/forecast":             {[]string{"tune/model", "safety", "protocol/si"}, []string{"os"}},
 	"tune/sheet":                {[]string{"tune/sheet/plain", "tune/trace", "tune/model", "tune/identify", "tune/design", "safety", "safety/rig", "protocol/si"}, nil},
 	"tune/sheet/plain":          {nil, []string{"os"}},

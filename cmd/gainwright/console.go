@@ -32,8 +32,8 @@ const demoTiming = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\n
 
 // consoleFlags are what console and demo share.
 type consoleFlags struct {
-	port, rigFile, out, operator string
-	baud                         int
+	port, rigFile, out, operator, jobFile string
+	baud                                  int
 }
 
 // consoleCommand opens the console. No script arms a real board: it insists on a
@@ -55,12 +55,17 @@ func consoleCommand() *cobra.Command {
 				}
 				o.Job.Rig, o.Job.RigText = r, text
 			}
+			var err error
+			if o.Job.Order, err = readOrder(f.jobFile); err != nil {
+				return err
+			}
 			return console(f, o)
 		},
 	}
 	c.Flags().StringVar(&f.port, "port", "", "serial port or pseudo-terminal; without it the console lists the ports")
 	c.Flags().StringVar(&f.rigFile, "rig", "", "rig file; without it the console asks for the nameplate")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it one in the data directory")
+	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order; every arm still needs its keys")
 	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
 	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s; without it the usual ones are tried where nothing that can be read comes")
 	return c
@@ -115,6 +120,9 @@ func demoCommand() *cobra.Command {
 				return []job.PortView{{Path: sim.Path, Name: cfg.Name, Product: "simulated board " + cfg.Board.ID, Note: "built in, nothing real moves"}}
 			}
 			o.Hand, o.Cycle, o.Work = sim.Hand, sim.Cycle, sim.Work
+			if o.Job.Order, err = readOrder(f.jobFile); err != nil {
+				return err
+			}
 			if f.out == "" {
 				if f.out, err = os.MkdirTemp("", "gainwright-demo-"); err != nil {
 					return err
@@ -126,6 +134,7 @@ func demoCommand() *cobra.Command {
 	c.Flags().StringVar(&simFile, "sim", "", "another simulated board (TOML)")
 	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
+	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order")
 	return c
 }
 

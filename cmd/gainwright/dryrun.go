@@ -15,7 +15,7 @@ import (
 
 // dryrunCommand does the whole job unattended on a simulated rig in virtual time.
 func dryrunCommand() *cobra.Command {
-	var simFile, rigFile, out string
+	var simFile, rigFile, out, jobFile string
 	var also []string
 	var seed uint64
 	var asJSON bool
@@ -29,6 +29,9 @@ func dryrunCommand() *cobra.Command {
 			o := bench.DryRun{Config: cfg, Seed: seed, Dir: out, Program: "gainwright " + versionWords(), Start: time.Now()}
 			if o.Also, err = optionalSteps(also); err != nil {
 				return usage(err)
+			}
+			if o.Order, err = readOrder(jobFile); err != nil {
+				return err
 			}
 			if rigFile != "" {
 				if o.Rig, o.RigText, err = readRig(rigFile); err != nil {
@@ -60,6 +63,7 @@ func dryrunCommand() *cobra.Command {
 	f.StringVar(&simFile, "sim", "", "simulated board (TOML)")
 	f.StringVar(&rigFile, "rig", "", "rig file; without it the nameplate of the simulated board is the envelope")
 	f.StringVar(&out, "out", "", "folder for the record; it must not exist or be empty")
+	f.StringVar(&jobFile, "job", "", "job file: which steps in which order; without it the whole path")
 	f.StringSliceVar(&also, "also", nil, "optional steps to be done as well, by their ids; all does every one")
 	f.Uint64Var(&seed, "seed", 1, "start of all random numbers")
 	f.BoolVar(&asJSON, "json", false, "print one JSON object")

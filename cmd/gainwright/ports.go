@@ -100,11 +100,19 @@ func readRig(path string) (rig.Rig, []byte, error) {
 
 func checkCommand() *cobra.Command {
 	var asJSON bool
-	c := &cobra.Command{Use: "check RIG.toml", Short: "check a rig file", Args: cobra.ExactArgs(1),
+	var jobFile string
+	c := &cobra.Command{Use: "check RIG.toml [--job JOB.toml]", Short: "check a rig file, and a job file for it", Args: cobra.ExactArgs(1),
 		RunE: func(c *cobra.Command, args []string) error {
 			r, _, err := readRig(args[0])
 			if err != nil {
 				return err
+			}
+			order, err := readOrder(jobFile)
+			if err != nil {
+				return err
+			}
+			if order != nil && order.Rig != "" && order.Rig != r.Name {
+				return usage(fmt.Errorf("%s is for rig %q, %s is of %q", jobFile, order.Rig, args[0], r.Name))
 			}
 			e := r.Envelope()
 			if asJSON {
@@ -115,11 +123,15 @@ func checkCommand() *cobra.Command {
 			if j := r.Energy(); j > 0 {
 				fmt.Fprintf(c.OutOrStdout(), "stored motion at the speed limit: %.3g J\n", j)
 			}
+			if order != nil {
+				fmt.Fprintf(c.OutOrStdout(), "%s: job %q, %d steps\n", jobFile, order.Name, len(order.Steps))
+			}
 			if e.BusMax > 60 {
 				fmt.Fprintln(c.OutOrStdout(), "the bus may pass 60 V: treat it as hazardous by touch; qualified persons and local codes apply")
 			}
 			return nil
 		}}
 	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object")
+	c.Flags().StringVar(&jobFile, "job", "", "job file to be checked as well")
 	return c
 }

@@ -48,7 +48,7 @@ func sitDown(t *testing.T, cfg simrig.Config, withRig bool) *person {
 }
 
 // sitAt sits down at a rig with a rig file; without text the console asks for it.
-func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte) *person {
+func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte, also ...func(*bench.Options)) *person {
 	t.Helper()
 	p := &person{t: t, sim: bench.ServePipe(simrig.New(cfg, 1)), screen: tui.New(tui.Look{})}
 	dir := t.TempDir() + "/sheet"
@@ -64,6 +64,9 @@ func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte) *person {
 	}
 	if text != nil {
 		o.Job.Rig, o.Job.RigText = r, text
+	}
+	for _, f := range also {
+		f(&o)
 	}
 	p.live = bench.NewLive(o)
 	p.wait(500 * time.Millisecond)

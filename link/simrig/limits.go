@@ -107,3 +107,6 @@ func (r *Rig) useLimits(digits string) protocol.Refusal {
 	}
 	return 0
 }
+
+// LimitsInUse reports whether a set of limits was put in use since the board's start.
+func (r *Rig) LimitsInUse() bool { return r.board.limits.inUse }

@@ -67,7 +67,7 @@ func Parse(file string, data []byte) (Rig, error) {
 	if err := dec.Decode(&r); err != nil {
 		return Rig{}, tomlErrors(file, err)
 	}
-	c := checker{file: file, r: &r, at: places(data)}
+	c := checker{file: file, r: &r, at: Places(data)}
 	c.run()
 	if len(c.errs) > 0 {
 		sort.SliceStable(c.errs, func(i, j int) bool { return c.errs[i].Line < c.errs[j].Line })
@@ -140,13 +140,13 @@ func common(a, b string) int {
 type checker struct {
 	file string
 	r    *Rig
-	at   map[string]place
+	at   map[string]Place
 	errs []*Error
 }
 
 func (c *checker) bad(path string, kind error, format string, args ...any) {
 	p := c.at[path]
-	c.errs = append(c.errs, &Error{File: c.file, Line: p.line, Column: p.column, Key: path, Err: kind, Message: fmt.Sprintf(format, args...)})
+	c.errs = append(c.errs, &Error{File: c.file, Line: p.Line, Column: p.Column, Key: path, Err: kind, Message: fmt.Sprintf(format, args...)})
 }
 
 func (c *checker) run() {

@@ -6,13 +6,13 @@ import (
 	"github.com/pelletier/go-toml/v2/unstable"
 )
 
-// place is where a value stands in the file, from 1.
-type place struct{ line, column int }
+// Place is where a value stands in a file, from 1.
+type Place struct{ Line, Column int }
 
-// places maps the dotted path of every key to the place of its value. Tables
+// Places maps the dotted path of every key to the place of its value. Tables
 // of an array get their index in the path. The data is known to be valid TOML.
-func places(data []byte) map[string]place {
-	w := walker{at: map[string]place{}, seen: map[string]int{}}
+func Places(data []byte) map[string]Place {
+	w := walker{at: map[string]Place{}, seen: map[string]int{}}
 	w.p.Reset(data)
 	for w.p.NextExpression() {
 		e := w.p.Expression()
@@ -34,7 +34,7 @@ func places(data []byte) map[string]place {
 
 type walker struct {
 	p     unstable.Parser
-	at    map[string]place
+	at    map[string]Place
 	seen  map[string]int
 	table string
 }
@@ -57,7 +57,7 @@ func (w *walker) note(path string, k unstable.Iterator) {
 
 func (w *walker) put(path string, r unstable.Range) {
 	s := w.p.Shape(r).Start
-	w.at[path] = place{s.Line, s.Column}
+	w.at[path] = Place{s.Line, s.Column}
 }
 
 func (w *walker) value(base string, kv *unstable.Node) {

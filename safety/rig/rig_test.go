@@ -116,7 +116,7 @@ func TestEveryNumberIsHeldToItsRange(t *testing.T) {
 				continue
 			}
 			*p = v
-			c := checker{file: "x", r: &r, at: map[string]place{k.path: {1, 1}}}
+			c := checker{file: "x", r: &r, at: map[string]Place{k.path: {1, 1}}}
 			c.key(k)
 			if len(c.errs) != 1 || !errors.Is(c.errs[0], ErrRange) {
 				t.Errorf("%s = %v: errors %v", k.path, v, c.errs)

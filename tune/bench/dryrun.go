@@ -36,6 +36,7 @@ type DryRun struct {
 	Start    time.Time
 	Rules    bool         // judge other rules on the rig's own physics as well
 	Also     []job.StepID // optional steps to be done as well
+	Order    *job.Order   // a job file; nil: the whole path
 	Progress func(at time.Duration, step job.StepID, words string)
 }
 
@@ -58,6 +59,8 @@ type Report struct {
 	Motor      float64         `json:"motor_seconds"`
 	Simulated  float64         `json:"simulated_seconds"`
 	Sheet      string          `json:"sheet"`
+	// JobFile says how far a job file was carried out; nil without one.
+	JobFile *sheet.OrderRecord `json:"job_file,omitempty"`
 }
 
 // FrictionReport is breakaway as measured.
@@ -109,10 +112,13 @@ func (d DryRun) Do() (Report, error) {
 		endTape = v.Tape(out)
 	}
 	h := v.Hands(record)
-	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1)})
+	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1), Order: d.Order})
 	outcome, reason, stepErr := d.steps(v, j)
 	rep := report(v, j, outcome, reason, d.Rules)
 	rep.Cause = causeOf(stepErr)
+	if rec, ok := j.OrderOutcome(); ok {
+		rep.JobFile = &rec
+	}
 	if record != nil {
 		rep.Sheet = d.Dir
 		if err := endTape(); err != nil {
@@ -127,8 +133,10 @@ func (d DryRun) Do() (Report, error) {
 
 // steps goes down the path and says what came of it.
 func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
-	for _, p := range job.Path {
-		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" || j.StatusOf(p.ID) == job.Skipped || p.Optional && !slices.Contains(d.Also, p.ID) {
+	for _, id := range d.way() {
+		p, _ := job.Lookup(id)
+		goesOn := d.goesOn(id)
+		if j.NoChange && afterPush[p.ID] || p.ID == job.StepCard && d.Dir == "" || j.StatusOf(p.ID) == job.Skipped || d.Order == nil && p.Optional && !slices.Contains(d.Also, p.ID) {
 			continue
 		}
 		err := j.Do(p.ID)
@@ -140,7 +148,7 @@ func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 			d.Progress(v.Now(), p.ID, words)
 		}
 		var no *job.RefusedError
-		if p.Optional && errors.As(err, &no) && v.s.core.State().Phase != safety.Tripped {
+		if (p.Optional && d.Order == nil || goesOn) && errors.As(err, &no) && v.s.core.State().Phase != safety.Tripped {
 			continue // said and kept; nothing else needs it
 		}
 		if err != nil {
@@ -155,7 +163,31 @@ func (d DryRun) steps(v *Virtual, j *job.Job) (Outcome, string, error) {
 	case j.Verified != nil && j.Verified.Passed != nil && !*j.Verified.Passed:
 		return Failed, "verify: " + j.Verified.Finding, nil
 	}
+	if d.Order != nil && j.StatusOf(job.StepVerify) != job.Done {
+		return Accepted, "the job file is carried out; it has no verify", nil
+	}
 	return Accepted, "verified, stored and read back equal", nil
+}
+
+// way are the steps in the order in which they are done.
+func (d DryRun) way() (ids []job.StepID) {
+	if d.Order != nil {
+		ids = append(ids, job.StepPort)
+		for _, s := range d.Order.Steps {
+			if s.Step != job.StepPort {
+				ids = append(ids, s.Step)
+			}
+		}
+		return ids
+	}
+	for _, p := range job.Path {
+		ids = append(ids, p.ID)
+	}
+	return ids
+}
+
+func (d DryRun) goesOn(id job.StepID) bool {
+	return d.Order != nil && slices.ContainsFunc(d.Order.Steps, func(s job.Ordered) bool { return s.Step == id && s.GoOn })
 }
 
 // afterPush are the steps that have no work when nothing is changed.

@@ -35,6 +35,9 @@ func (j *Job) doIdentity() (result, error) {
 		}
 	}
 	j.showFound()
+	if why := j.lookOnly(); why != "" {
+		return result(fmt.Sprintf("board %s, as-found saved; look-only", j.ID.Board)), nil
+	}
 	if why := j.ID.LookOnly(); why != "" {
 		return "", refuse(701, "look-only", why, "this board can be looked at, not driven")
 	}
@@ -60,11 +63,14 @@ func (j *Job) takeRig() error {
 			return err
 		}
 	}
+	if err := j.takeOrder(); err != nil {
+		return err
+	}
 	j.Env = j.Rig.Envelope()
 	j.inputsNamed()
 	j.ticked = false // the limiter forgets it with the rig file before
 	j.h.Rig(j.Env)
-	j.h.Connected(j.ID, "")
+	j.h.Connected(j.ID, j.lookOnly())
 	if j.FoundRec != nil {
 		return nil
 	}
@@ -78,6 +84,11 @@ func (j *Job) takeRig() error {
 	}
 	if err := j.h.KeepText("rig", j.Rig.Name, string(j.RigText)); err != nil {
 		return err
+	}
+	if o := j.opt.Order; o != nil {
+		if err := j.h.KeepText("job", o.Name, string(o.Text)); err != nil {
+			return err
+		}
 	}
 	r := j.Rig
 	return j.h.Keep("rig", "nameplate", sheet.NameplateRecord{RigFile: r.Name, MotorSerial: r.Motor.Serial, NominalV: sheet.Known(r.Motor.VoltageRated),
@@ -101,7 +112,7 @@ func (j *Job) readIdentity() error {
 		return refuse(703, "identity not understood", err.Error(), "the board's firmware has to be mended; until then it is look-only")
 	}
 	j.ID, j.IDLines = id, a.Lines
-	j.h.Connected(id, "")
+	j.h.Connected(id, j.lookOnly())
 	return j.startTelemetry()
 }
 

@@ -23,6 +23,7 @@ type Options struct {
 	Version  string // of the program
 	Seed     uint32 // of the pseudo-random test
 	MsMax    float64
+	Order    *Order // a job file; nil: the whole path
 }
 
 // Known is all that the job knows so far. Steps add to it; nothing is lost by
@@ -88,9 +89,12 @@ type Job struct {
 	h     Hands
 	opt   Options
 	steps map[StepID]*StepView
+	way   []StepID // the order of work: that of Path, or of a job file
 
-	ticked bool            // the checklist, this session
-	laptop map[string]bool // what of the laptop was said and answered
+	ticked     bool              // the checklist, this session
+	orderTaken bool              // the job file was held against the rig file
+	carriedOut map[StepID]string // steps that were done once, with what they reported
+	laptop     map[string]bool   // what of the laptop was said and answered
 }
 
 // New returns a job at its beginning.
@@ -101,12 +105,16 @@ func New(h Hands, opt Options) *Job {
 	if opt.Seed == 0 {
 		opt.Seed = 0x5A
 	}
-	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}}
+	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}, carriedOut: map[StepID]string{}}
 	j.Rig, j.RigText = opt.Rig, opt.RigText
 	for i := range Path {
 		p := &Path[i]
 		j.steps[p.ID] = &StepView{ID: p.ID, Title: p.Title, For: p.For, Needs: p.Needs, Moves: p.Moves, Takes: p.Takes,
 			Gives: p.Gives, Status: ToDo, Optional: p.Optional}
+		j.way = append(j.way, p.ID)
+	}
+	if opt.Order != nil {
+		j.ordered(opt.Order)
 	}
 	j.inputsNamed()
 	j.publish()
@@ -154,6 +162,7 @@ func (j *Job) Do(id StepID) error {
 	}
 	s.Status, s.Result = Done, string(words)
 	j.h.Say("%s: %s", s.Title, words)
+	j.keepOrder(id)
 	j.publish()
 	j.h.Show(func(v *View) { v.Current = j.Next() })
 	return nil
@@ -195,6 +204,7 @@ func (j *Job) refused(id StepID, err error) error {
 	}
 	j.h.Say("%s: %v", s.Title, err)
 	_ = j.h.Keep("event", string(id), sheet.EventRecord{What: s.Title + " not done", Detail: err.Error()})
+	j.keepOrder(id)
 	j.publish()
 	return err
 }
@@ -205,6 +215,7 @@ func (j *Job) Skip(id StepID, reason string) {
 	s := j.steps[id]
 	s.Status, s.Reason = Skipped, reason
 	_ = j.h.Keep("event", string(id), sheet.EventRecord{What: s.Title + " skipped", Detail: reason})
+	j.keepOrder(id)
 	j.publish()
 }
 
@@ -241,15 +252,14 @@ func (j *Job) Next() StepID {
 		return StepCard // the job is over; a person may still go anywhere
 	}
 	last := -1
-	for i := range Path {
-		if j.steps[Path[i].ID].Status == Done {
+	for i, id := range j.way {
+		if s := j.steps[id]; s.Status == Done || s.Status == Refused && j.goesOn(id) {
 			last = i
 		}
 	}
-	for _, part := range [][]Info{Path[last+1:], Path} {
-		for i := range part {
-			id := part[i].ID
-			if st := j.steps[id].Status; !part[i].Optional && (st == ToDo || st == Refused) && j.missing(id) == "" {
+	for _, part := range [][]StepID{j.way[last+1:], j.way} {
+		for _, id := range part {
+			if st := j.steps[id].Status; !j.steps[id].Optional && (st == ToDo || st == Refused) && j.missing(id) == "" {
 				return id
 			}
 		}
@@ -274,10 +284,10 @@ func (j *Job) missing(id StepID) string {
 var canSkip = map[StepID]bool{StepLimits: true, StepInterlocks: true, StepSecond: true, StepVerify: true}
 
 func (j *Job) publish() {
-	steps := make([]StepView, len(Path))
-	for i := range Path {
-		steps[i] = *j.steps[Path[i].ID]
-		steps[i].Ready = j.missing(Path[i].ID) == ""
+	steps := make([]StepView, len(j.way))
+	for i, id := range j.way {
+		steps[i] = *j.steps[id]
+		steps[i].Ready = j.missing(id) == ""
 	}
 	j.h.Show(func(v *View) { v.Steps = steps })
 }
@@ -294,13 +304,13 @@ func (j *Job) procedure(id StepID) func() (result, error) {
 	}[id]
 }
 
-// sizing is what the experiments are sized from.
 // patterns reports whether the board's loop makes relay, sequence and steps itself,
 // under its own limit of the rate of change of volts, with a capture that shows them.
 func (j *Job) patterns() bool {
 	return j.ID.Can("exper") && j.ID.Can("capture") && slices.Contains(j.ID.LimitNames, protocol.LimSlew)
 }
 
+// sizing is what the experiments are sized from.
 func (j *Job) sizing() excite.Known {
 	k := excite.Known{Env: j.Env, StartForward: j.StartForward, StartReverse: j.StartReverse, Gain: j.Gain, Tau: j.Tau,
 		Noise: j.Noise, Loop: j.ID.Loop.Seconds(), Patterns: j.patterns()}

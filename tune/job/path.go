@@ -9,6 +9,8 @@ type Info struct {
 	// Optional steps stand at their place and are done by going there, or because
 	// a job file lists them; nothing else needs them and the way onward passes them.
 	Optional bool
+	// Sized steps have a size that a person may change before the arm.
+	Sized bool
 }
 
 // Path is the order of work. A person may go straight to any step whose needs
@@ -61,10 +63,10 @@ var Path = []Info{
 	{ID: StepCoast, Title: "Coast-down", For: "friction by itself: how the shaft slows down with the output off",
 		Needs: "staircase, area clear", Moves: "up to half of top speed, then it coasts, three times a way", Takes: "a minute or two", Gives: "dry and viscous friction over inertia, each way with ±",
 		needs: []StepID{StepStaircase}, Optional: true},
-	{ID: StepStep, Title: "Step test", For: "the quick part of the motion: time constant and dead time",
+	{ID: StepStep, Sized: true, Title: "Step test", For: "the quick part of the motion: time constant and dead time",
 		Needs: "staircase", Moves: "small steps about a middle speed", Takes: "ten seconds", Gives: "the record the model is fitted on",
 		needs: []StepID{StepStaircase}},
-	{ID: StepSecond, Title: "Second test", For: "a record of another kind that the model has not seen",
+	{ID: StepSecond, Sized: true, Title: "Second test", For: "a record of another kind that the model has not seen",
 		Needs: "step test", Moves: "a pseudo-random pattern about a middle speed", Takes: "ten seconds", Gives: "the record the model is judged on",
 		needs: []StepID{StepStep}},
 	{ID: StepRelay, Title: "Relay feedback", For: "gain, time constant and dead time from a limit cycle: another way to the same numbers",

@@ -185,8 +185,10 @@ func (j *Job) doAsLeft() (result, error) {
 		return "", err
 	}
 	// A start brought the board's own limits back: leave it with the rig file's.
-	if err := j.holdLimits(j.limitValues(), safety.LimitWrite{}); err != nil {
-		return "", err
+	if j.lookOnly() == "" {
+		if err := j.holdLimits(j.limitValues(), safety.LimitWrite{}); err != nil {
+			return "", err
+		}
 	}
 	left, err := j.snapshot()
 	if err != nil {

@@ -64,14 +64,18 @@ func (j *Job) prepared(run Run, size float64) (Run, []sheet.Quantity, error) {
 
 // fitting is the run in the largest size that its forecast and the envelope allow,
 // at most as proposed.
-func (j *Job) fitting(run Run) (Run, []sheet.Quantity, error) {
-	out, q, first := j.prepared(run, 1)
+func (j *Job) fitting(step StepID, run Run) (Run, []sheet.Quantity, error) {
+	wanted := 1.0
+	if run.Sized != nil {
+		wanted = j.sizeOf(step)
+	}
+	out, q, first := j.prepared(run, wanted)
 	if first == nil || run.Sized == nil {
 		return out, q, first
 	}
-	for size := 1 - sizeStep; size >= sizeLeast-1e-9; size -= sizeStep {
+	for size := wanted - sizeStep; size >= sizeLeast-1e-9; size -= sizeStep {
 		if out, q, err := j.prepared(run, size); err == nil {
-			out.View.Notes = append(out.View.Notes, fmt.Sprintf("made smaller: %.0f %% is the largest size that fits; at 100 %% %v", 100*size, first))
+			out.View.Notes = append(out.View.Notes, fmt.Sprintf("made smaller: %.0f %% is the largest size that fits; at %.0f %% %v", 100*size, 100*wanted, first))
 			return out, q, nil
 		}
 	}
@@ -80,7 +84,7 @@ func (j *Job) fitting(run Run) (Run, []sheet.Quantity, error) {
 
 // runAs adds forecast, band and notes to a run and has it done.
 func (j *Job) runAs(step StepID, asked Run) (Result, error) {
-	run, quantities, err := j.fitting(asked)
+	run, quantities, err := j.fitting(step, asked)
 	if err != nil {
 		return Result{}, err
 	}

@@ -46,12 +46,12 @@ func TestTheLargestSizeThatFitsIsOffered(t *testing.T) {
 				{Mode: safety.ModeVolts, From: v, To: 0, Duration: time.Second}}}
 		}
 	}
-	out, _, err := j.fitting(Run{Sized: plan(10)})
+	out, _, err := j.fitting(StepStep, Run{Sized: plan(10)})
 	if err != nil || out.View.Size != 1 || len(out.View.Notes) != 0 {
 		t.Fatalf("10 V: size %v, %q, %v", out.View.Size, out.View.Notes, err)
 	}
 	// 20 V would be (20 − 0.8)·20 = 384 rad/s of 314.
-	out, _, err = j.fitting(Run{Sized: plan(20)})
+	out, _, err = j.fitting(StepStep, Run{Sized: plan(20)})
 	if err != nil || out.View.Size > 0.81 || out.View.Size < 0.79 {
 		t.Fatalf("20 V: size %v, %v", out.View.Size, err)
 	}
@@ -61,7 +61,7 @@ func TestTheLargestSizeThatFitsIsOffered(t *testing.T) {
 	if v := out.Plan.Segments[1].To; v < 15.9 || v > 16.1 {
 		t.Errorf("the plan drives %v V", v)
 	}
-	_, _, err = j.fitting(Run{Sized: plan(80)})
+	_, _, err = j.fitting(StepStep, Run{Sized: plan(80)})
 	var ref *RefusedError
 	if !errors.As(err, &ref) {
 		t.Errorf("80 V: %v", err)

@@ -355,6 +355,7 @@ func (j *Job) VerifyReport() any {
 
 // doCard makes card and sticker from the record.
 func (j *Job) doCard() (result, error) {
+	j.keepOrder(StepCard)
 	card, sticker, err := j.h.Card()
 	if err != nil {
 		return "", err

@@ -151,6 +151,7 @@ type StepView struct {
 	Status Status
 	Reason string // of Refused and Skipped
 	Result string // of Done, one line
+	Note   string // of a job file
 	Ready  bool   // what it needs is there
 
 	Optional bool // done only where somebody wants it

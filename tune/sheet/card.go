@@ -52,6 +52,8 @@ type CardData struct {
 	WorstPeak       *float64
 	Motor           MotorRecord
 	PowerOnLimits   []Quantity // as left, where they are not those of the session
+	JobFile         string     // how far a job file was carried out, "" without one
+	Signs           []string   // who signs; none: done by and customer
 }
 
 // CardColumn is the state of the loop, found or left.
@@ -133,6 +135,9 @@ func (c *card) head(d CardData) {
 	n := d.Nameplate
 	c.add("motor  %s serial %s rated %s", pad(text(n.MotorType, 24), 24), pad(text(n.MotorSerial, 19), 19), with(n.NominalV, "V"))
 	c.add("       encoder %s lines = %s counts a turn   gear %s", whole(n.EncoderLines), whole(n.CountsPerTurn), text(n.Gear, 12))
+	if d.JobFile != "" {
+		c.add("job    %s", text(d.JobFile, 72))
+	}
 	c.add("load   %s bus %s  ambient %s", pad(text(d.LoadState, 40), 40), with(d.BusV, "V"), with(d.AmbientDegC, "C"))
 }
 
@@ -254,10 +259,15 @@ func (c *card) foot(d CardData) {
 	c.add("stored and re-read equal after a power-cycle %s   next check %s", box(d.ReRead), text(d.Nameplate.NextCheck, 12))
 	c.add("hash   %s   a check of the record must show these digits", text(shorten(d.Hash, 16), 16))
 	c.add("the bus reading is an indication: prove it with a meter before hands go in")
-	c.add("")
-	c.add("done by   %s date %s", strings.Repeat("_", 40), strings.Repeat("_", 14))
-	c.add("")
-	c.add("customer  %s date %s", strings.Repeat("_", 40), strings.Repeat("_", 14))
+	signs := d.Signs
+	if len(signs) == 0 {
+		signs = []string{"done by", "customer"}
+	}
+	for _, who := range signs {
+		c.add("")
+		who = pad(text(who, 24), 9)
+		c.add("%s %s date %s", who, strings.Repeat("_", max(10, 49-plain.Width(who))), strings.Repeat("_", 14))
+	}
 }
 
 func shorten(s string, n int) string {

@@ -46,6 +46,10 @@ func CardOf(r *Reader) CardData {
 		d.LoadState = found.LoadState
 	}
 	d.results(r)
+	var order OrderRecord
+	if r.LastJSON(KindJob, NameOutcome, &order) == nil {
+		d.JobFile, d.Signs = order.line(), order.Signs
+	}
 	for _, l := range r.Find(KindCheck, "") {
 		var c CheckRecord
 		if r.JSON(l, &c) == nil {

@@ -19,6 +19,7 @@ const (
 	KindHeader     Kind = "header"
 	KindIdentity   Kind = "identity"
 	KindRig        Kind = "rig"
+	KindJob        Kind = "job"
 	KindPart       Kind = "part"
 	KindAsFound    Kind = "as-found"
 	KindCheck      Kind = "check"
@@ -40,7 +41,7 @@ const (
 )
 
 var kinds = map[Kind]bool{
-	KindHeader: true, KindIdentity: true, KindRig: true, KindPart: true, KindAsFound: true,
+	KindHeader: true, KindIdentity: true, KindRig: true, KindJob: true, KindPart: true, KindAsFound: true,
 	KindCheck: true, KindInterlock: true, KindRun: true, KindTrace: true, KindFit: true, KindExperiment: true, KindProposal: true,
 	KindPush: true, KindVerify: true, KindStore: true, KindAsLeft: true, KindRemark: true,
 	KindEvent: true, KindCard: true, KindTape: true, KindClose: true,

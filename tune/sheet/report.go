@@ -25,6 +25,7 @@ func Report(dir string) string {
 	p.begin(fmt.Sprintf("Record %s of rig %s", RecordName(dir), orNone(plain.Visible(sum.Header.Rig, 80))))
 	p.summary(problems, sum)
 	p.snapshots()
+	p.orderSection()
 	p.parts()
 	p.checks()
 	p.interlocks()

@@ -24,6 +24,7 @@ type record struct {
 var records = []record{
 	{KindHeader, "", reflect.TypeFor[Header]()},
 	{KindRig, NameNameplate, reflect.TypeFor[NameplateRecord]()},
+	{KindJob, NameOutcome, reflect.TypeFor[OrderRecord]()},
 	{KindPart, "", reflect.TypeFor[PartRecord]()},
 	{KindAsFound, "", reflect.TypeFor[Snapshot]()},
 	{KindAsLeft, "", reflect.TypeFor[Snapshot]()},
