@@ -119,7 +119,7 @@ func checkCommand() *cobra.Command {
 				return printJSON(c.OutOrStdout(), map[string]any{"name": r.Name, "hash": r.Hash, "volts_max_V": e.VoltsMax, "speed_max_rad_s": e.SpeedMax,
 					"current_max_A": e.CurrentMax, "bus_max_V": e.BusMax, "energy_J": r.Energy()})
 			}
-			fmt.Fprintf(c.OutOrStdout(), "%s: rig %q, up to %g V, %.0f rpm, %g A, bus %g to %g V\n", args[0], r.Name, e.VoltsMax, e.SpeedMax.RPM(), e.CurrentMax, e.BusMin, e.BusMax)
+			fmt.Fprintf(c.OutOrStdout(), "%s: rig %q, up to %g V, %.0f rpm, %g A, bus %.4g to %.4g V\n", args[0], r.Name, e.VoltsMax, e.SpeedMax.RPM(), e.CurrentMax, e.BusMin, e.BusMax)
 			if j := r.Energy(); j > 0 {
 				fmt.Fprintf(c.OutOrStdout(), "stored motion at the speed limit: %.3g J\n", j)
 			}
