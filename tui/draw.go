@@ -133,6 +133,8 @@ func (p *painter) body(a area) {
 		p.help(a)
 	case PageWords:
 		p.words(a)
+	case PageEarlier:
+		p.earlier(a)
 	case PageInterlocks:
 		p.interlocks(a)
 	default:
@@ -144,7 +146,7 @@ var titles = [pageCount]string{
 	PagePath: "The job, step by step", PagePorts: "Ports", PageFound: "As-found: the board before the first touch",
 	PageChecks: "Checks: seen working this session", PagePlan: "Plan and forecast", PageLive: "Run", PageModel: "Model",
 	PageDesign: "Proposal", PagePush: "Push: gains to the board", PageVerify: "Verify: measured against forecast",
-	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words", PageInterlocks: "Interlocks",
+	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words", PageInterlocks: "Interlocks", PageEarlier: "Earlier record: then and now",
 }
 
 func (p *painter) title(a area) {

@@ -158,6 +158,7 @@ var bindings = []binding{
 	{"1 2 3 4 5 6 7 8 9 0", "1..9 0", "", groupStill, "Page by its number: 1 path, 2 ports, 3 as-found, 4 checks, 5 plan, 6 run, 7 model, 8 design, 9 push, 0 verify.", free, numbered},
 	{"c", "c", "", groupStill, "Card.", free, shown(PageCard)},
 	{"f", "f", "", groupStill, "Alarms, and what happened.", free, shown(PageAlarms)},
+	{"x", "x", "", groupStill, "The earlier record of this rig: how it was left, what differs now, its motor against this one.", free, shown(PageEarlier)},
 	{"i", "i", "", groupStill, "Interlocks: every input, as it stands now and as it was seen.", free, shown(PageInterlocks)},
 	{"? h", "?", "keys", groupStill, "This list, and back from it (h does the same).", free, toggled(PageHelp)},
 	{"d", "d", "", groupStill, "Words: what the terms mean.", free, shown(PageWords)},
@@ -215,7 +216,7 @@ func hasRows(s Screen, v *job.View) bool {
 		return true
 	}
 	switch s.page(v) {
-	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords, PageInterlocks:
+	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords, PageInterlocks, PageEarlier:
 		return true
 	}
 	return false

@@ -2,6 +2,7 @@ package tui
 
 import (
 	"fmt"
+	"strings"
 
 	"gainwright/tui/palette"
 	"gainwright/tune/job"
@@ -173,7 +174,7 @@ func (p *painter) checks(a area) {
 
 // pageMenu lists the pages.
 func (p *painter) pageMenu(a area) {
-	keys := [pageCount]string{PagePath: "1", PagePorts: "2", PageFound: "3", PageChecks: "4", PagePlan: "5", PageLive: "6", PageModel: "7", PageDesign: "8", PagePush: "9", PageVerify: "0", PageCard: "c", PageAlarms: "f", PageHelp: "?", PageWords: "d", PageInterlocks: "i"}
+	keys := [pageCount]string{PagePath: "1", PagePorts: "2", PageFound: "3", PageChecks: "4", PagePlan: "5", PageLive: "6", PageModel: "7", PageDesign: "8", PagePush: "9", PageVerify: "0", PageCard: "c", PageAlarms: "f", PageHelp: "?", PageWords: "d", PageInterlocks: "i", PageEarlier: "x"}
 	for pg := PagePath; pg < pageCount; pg++ {
 		role := palette.Plain
 		if int(pg)-1 == min(p.s.row, int(pageCount)-2) {
@@ -181,4 +182,28 @@ func (p *painter) pageMenu(a area) {
 		}
 		a.put(2, int(pg)-1, role, fmt.Sprintf(" %s  %-10s %s ", keys[pg], pg, titles[pg]))
 	}
+}
+
+// earlier shows what the newest earlier record of the rig says beside this job.
+func (p *painter) earlier(a area) {
+	e := p.v.Earlier
+	if e == nil {
+		y := a.sub(1, 0, a.w-2, a.h).wrap(0, palette.Plain, "No earlier record of this rig was found.")
+		a.sub(1, 0, a.w-2, a.h).wrap(y, palette.Plain, "Records are looked for in the data directory, or in the folder named with --records.")
+		return
+	}
+	var rows []line
+	for i, l := range e.Lines {
+		role := palette.Plain
+		switch {
+		case i == 0:
+			role = palette.Strong
+		case strings.HasPrefix(l, "retune") || strings.Contains(l, "NOT STABLE") || strings.HasSuffix(l, "OUTSIDE") || strings.HasSuffix(l, "MISMATCH"):
+			role = palette.Caution
+		}
+		for _, s := range lines(p.tame(l), a.w-2) {
+			rows = append(rows, line{role, s})
+		}
+	}
+	p.scroll(a, 0, rows)
 }

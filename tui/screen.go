@@ -29,13 +29,14 @@ const (
 	PageHelp
 	PageWords
 	PageInterlocks
+	PageEarlier
 	pageCount
 )
 
 var pageNames = [pageCount]string{
 	PagePath: "path", PagePorts: "ports", PageFound: "as-found", PageChecks: "checks", PagePlan: "plan",
 	PageLive: "run", PageModel: "model", PageDesign: "design", PagePush: "push", PageVerify: "verify",
-	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks",
+	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks", PageEarlier: "earlier",
 }
 
 // String returns the name of the page as it is shown.
@@ -231,6 +232,8 @@ func working(v *job.View) Page {
 		return PageChecks
 	case job.StepInterlocks:
 		return PageInterlocks
+	case job.StepSwap:
+		return PageEarlier
 	case job.StepBreakaway, job.StepStaircase, job.StepStep, job.StepSecond, job.StepFirstLoop:
 		if v.Live != nil {
 			return PageLive

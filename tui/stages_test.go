@@ -175,6 +175,15 @@ func stages() []stage {
 		{Name: "enabling switch", Bit: 2, Now: "released", Seen: "released, pressed through, held in the middle"},
 	}
 	add("interlocks", v, "i")
+
+	v = at(job.StepCount, false)
+	v.Earlier = &job.EarlierView{Record: "record 0187 of 2024-11-12", Differs: 2, Lines: []string{"record 0187 of 2024-11-12, by KM", "As found now against as left then:",
+		"  identity enc: 2000 motor, now 4096 motor", "  stored kp: 0.078, now 0.021", "", "Part swapped: motor",
+		"  counts per turn              2000, now 4096", "If nothing is changed on the board:", "  speed reads                  2.048 x",
+		"  motor runs at                48.83 % of the setpoint", "", "quantity          unit        old       new       change   allowed      verdict",
+		"counts per turn   1           2000      4096      +104.8%  equal        MISMATCH", "R at 25 °C        ohm         1.120     1.140     +1.8%    ±10 %        WITHIN",
+		"retune is due: gain K moved by +17 %, more than 15 %", "offer 1: retune: the motor itself answers otherwise"}}
+	add("earlier", v, "x")
 	v = at(job.StepStep, true)
 	v.Doing = false
 	v.Ask = &job.Question{ID: 9, Kind: job.AskChoice, Text: "Why was it stopped?", Options: []string{"a person came near", "a noise", "another reason"}, Detail: []string{"The answer goes into the record."}}

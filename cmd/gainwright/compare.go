@@ -109,60 +109,10 @@ func compareTwo(oldDir, newDir string) (compareReport, error) {
 	} else {
 		rep.Notes = append(rep.Notes, "the old gains are not judged on the new motor: "+err.Error())
 	}
-	rep.Retune = append(rep.Retune, rep.reasons()...)
-	rep.Offers = append(rep.Offers, rep.offers()...)
+	rep.Retune = append(rep.Retune, job.RetuneReasons(rep.Rows, rep.oldMargin, rep.OldGains)...)
+	rep.Offers = append(rep.Offers, job.Offers(rep.Rows, rep.Retune)...)
 	rep.Differences = append(rep.Differences, leftToFound(readers[0], readers[1])...)
 	return rep, nil
-}
-
-// marginLost is the loss of phase margin in degrees from which it is one of the
-// reasons for a retune (our choice).
-const marginLost = 3
-
-// reasons are those for a retune: from the table, and from the old gains on the
-// new motor.
-func (rep compareReport) reasons() []string {
-	var judged sheet.MotorRecord
-	// Gains may have been left with less than 45 degrees on purpose: only what was
-	// lost since counts.
-	if m := rep.OldGains; m != nil && m.Stable && !(float64(m.PhaseMargin) > rep.oldMargin-marginLost) {
-		judged.PhaseMarginDeg = sheet.Known(float64(m.PhaseMargin))
-	}
-	why := sheet.Retune(rep.Rows, judged)
-	if m := rep.OldGains; m != nil && !m.Stable {
-		why = append(why, "the old gains are not stable on the new motor")
-	}
-	return why
-}
-
-// offers says what can be done: exact scaling where only a scale changed, else a
-// retune where one is due.
-func (rep compareReport) offers() []string {
-	scale, other := map[string]float64{}, false
-	for _, r := range rep.Rows {
-		switch {
-		case r.Verdict == sheet.Mismatch && (r.Quantity == "counts per turn" || r.Quantity == "gear ratio") && r.Change != nil:
-			scale[r.Quantity] = 1 + *r.Change
-		case r.Verdict == sheet.Mismatch, r.Verdict == sheet.Outside && (r.Quantity == "gain K" || r.Quantity == "time constant"):
-			other = true
-		}
-	}
-	var out []string
-	if k := scale["counts per turn"]; k > 0 {
-		out = append(out, fmt.Sprintf("counts per turn are x%.4g. A board that is told so keeps its gains; one that is not reads speed x%.4g, and needs its gains x%.4g", k, k, 1/k))
-	}
-	if k := scale["gear ratio"]; k > 0 {
-		out = append(out, fmt.Sprintf("the gear is x%.4g. All speeds are at the motor shaft: gains stay, setpoints at the output do not", k))
-	}
-	switch {
-	case other || len(rep.Retune) > 0:
-		out = append(out, "retune: the motor itself answers otherwise")
-	case len(scale) > 0:
-		out = append(out, "only a scale changed: exact scaling is enough, no retune is due")
-	default:
-		out = append(out, "nothing in the table asks for a retune")
-	}
-	return out
 }
 
 // leftToFound is what happened to the board between two jobs.

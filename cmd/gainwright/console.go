@@ -32,8 +32,8 @@ const demoTiming = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\n
 
 // consoleFlags are what console and demo share.
 type consoleFlags struct {
-	port, rigFile, out, operator, jobFile string
-	baud                                  int
+	port, rigFile, out, operator, jobFile, records string
+	baud                                           int
 }
 
 // consoleCommand opens the console. No script arms a real board: it insists on a
@@ -66,6 +66,7 @@ func consoleCommand() *cobra.Command {
 	c.Flags().StringVar(&f.rigFile, "rig", "", "rig file; without it the console asks for the nameplate")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it one in the data directory")
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order; every arm still needs its keys")
+	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records; without it the data directory")
 	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
 	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s; without it the usual ones are tried where nothing that can be read comes")
 	return c
@@ -135,6 +136,7 @@ func demoCommand() *cobra.Command {
 	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order")
+	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records of simulated rigs; without it none are looked for")
 	return c
 }
 
@@ -168,6 +170,42 @@ func (f consoleFlags) newSheet(o *bench.Options) func(board string, r rig.Rig) (
 		return sheet.Create(dir, sheet.Header{Rig: r.Name, BoardID: board, Program: o.Program, Operator: f.operator,
 			Start: now.Format(time.RFC3339Nano), Simulated: o.Simulated})
 	}
+}
+
+// earlier finds the newest record of a rig and board that was left in a known state,
+// in the folder asked for or in the data directory.
+func (f consoleFlags) earlier(simulated bool) func(rig, board string) *sheet.Reader {
+	return func(rig, board string) *sheet.Reader {
+		dir := f.records
+		if dir == "" {
+			var err error
+			if dir, err = sheet.DataDir(runtime.GOOS, os.Getenv); err != nil {
+				return nil
+			}
+		}
+		return newestOf(dir, rig, board, simulated)
+	}
+}
+
+// newestOf is the newest record in a folder of a rig, whatever board it has now, that
+// has an as-left and can be read.
+func newestOf(dir, rig, board string, simulated bool) *sheet.Reader {
+	for _, only := range []sheet.Filter{{Rig: rig, BoardID: board}, {Rig: rig}} {
+		list, err := sheet.List(dir, only)
+		if err != nil {
+			return nil
+		}
+		for _, l := range list {
+			r, _ := sheet.Open(l.Dir)
+			if r == nil {
+				continue
+			}
+			if _, ok := r.Last(sheet.KindAsLeft, ""); ok && r.Header().Simulated == simulated {
+				return r
+			}
+		}
+	}
+	return nil
 }
 
 // restoreWait is how long a terminal gets to take its old looks back.
@@ -205,6 +243,9 @@ func console(f consoleFlags, o bench.Options) error {
 	o.Program = "gainwright " + versionWords()
 	o.Job.Version, o.Job.Operator = o.Program, f.operator
 	o.NewSheet = f.newSheet(&o)
+	if f.records != "" || !o.Simulated {
+		o.Job.Earlier = f.earlier(o.Simulated)
+	}
 	o.Laptop = laptopNow
 	// More threads than cores: a fit on every core must not keep the stop waiting
 	// for one.

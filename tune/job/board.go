@@ -33,6 +33,9 @@ func (j *Job) doIdentity() (result, error) {
 		if err := j.h.Keep("as-found", "board", found); err != nil {
 			return "", err
 		}
+		if err := j.lookBack(found); err != nil {
+			return "", err
+		}
 	}
 	j.showFound()
 	if why := j.lookOnly(); why != "" {
@@ -47,7 +50,11 @@ func (j *Job) doIdentity() (result, error) {
 	if err := j.holdLimits(j.limitValues(), safety.LimitWrite{At: j.h.Now()}); err != nil {
 		return "", err
 	}
-	return result(fmt.Sprintf("board %s, as-found saved, %d limits held", j.ID.Board, len(j.Limits))), nil
+	since := ""
+	if n := len(j.differences); n > 0 {
+		since = fmt.Sprintf(", %d differences from %s (page x)", n, j.earlierName())
+	}
+	return result(fmt.Sprintf("board %s, as-found saved, %d limits held%s", j.ID.Board, len(j.Limits), since)), nil
 }
 
 // takeRig puts the rig file's envelope in force and keeps the file.

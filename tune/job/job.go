@@ -24,6 +24,9 @@ type Options struct {
 	Seed     uint32 // of the pseudo-random test
 	MsMax    float64
 	Order    *Order // a job file; nil: the whole path
+	// Earlier finds the newest earlier record of a rig and board, nil where there is
+	// none; nil: nobody looks.
+	Earlier func(rig, board string) *sheet.Reader
 }
 
 // Known is all that the job knows so far. Steps add to it; nothing is lost by
@@ -79,6 +82,7 @@ type Known struct {
 	StoredOK    bool
 	Experiments map[StepID]sheet.ExperimentRecord // optional ones that were done, newest of each
 	LeftRec     *sheet.Snapshot
+	MotorValues *sheet.MotorRecord // the values that a later job is compared with
 	Checks      []sheet.CheckRecord
 	Remarks     []string
 }
@@ -91,10 +95,13 @@ type Job struct {
 	steps map[StepID]*StepView
 	way   []StepID // the order of work: that of Path, or of a job file
 
-	ticked     bool              // the checklist, this session
-	orderTaken bool              // the job file was held against the rig file
-	carriedOut map[StepID]string // steps that were done once, with what they reported
-	laptop     map[string]bool   // what of the laptop was said and answered
+	ticked      bool          // the checklist, this session
+	orderTaken  bool          // the job file was held against the rig file
+	earlier     *sheet.Reader // of this rig, nil: none
+	differences []sheet.Difference
+	part        *sheet.PartRecord // that was swapped
+	carriedOut  map[StepID]string // steps that were done once, with what they reported
+	laptop      map[string]bool   // what of the laptop was said and answered
 }
 
 // New returns a job at its beginning.

@@ -246,6 +246,8 @@ func (j *Job) keepMotor() error {
 	if v := j.Verified; v != nil && v.Step != nil {
 		m.OvershootPercent, m.OvershootTarget = v.Step.OvershootPercent, sheet.Known(j.Rig.Targets.Overshoot)
 	}
+	j.MotorValues = &m
+	j.showEarlier()
 	return j.h.Keep("fit", sheet.NameMotor, m)
 }
 

@@ -29,6 +29,7 @@ type View struct {
 	Plan       *PlanView
 	Live       *LiveView
 	Found      *FoundView
+	Earlier    *EarlierView
 	Checks     []CheckView
 	Interlocks []InterlockView
 	Model      *ModelView
@@ -117,6 +118,7 @@ type StepID string
 const (
 	StepPort       StepID = "port"
 	StepIdentity   StepID = "identity"
+	StepSwap       StepID = "swap"
 	StepCount      StepID = "count"
 	StepSign       StepID = "sign"
 	StepStop       StepID = "stop"
