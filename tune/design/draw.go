@@ -148,7 +148,7 @@ func (d *drawer) next() model.Linear {
 	for i := range z {
 		z[i] = d.r.NormFloat64()
 	}
-	corner := d.n < 8
+	corner := d.n < cornersOf
 	for i, name := range d.names {
 		var dx float64
 		for j := 0; j <= i; j++ {
@@ -233,6 +233,24 @@ func vary(m model.Linear, inertia, gain, warmK, magnetPerKelvin float64) model.L
 	m = m.Scale(gain / flux)
 	m.Den = den
 	return m
+}
+
+// cornersOf is how many of the first motors of a drawer are corners.
+const cornersOf = 8
+
+// Likely returns n motors drawn from the covariance of s alone, its ranges left
+// out: what the motor that was fitted may be.
+func Likely(m model.Linear, s Spread, n int) ([]model.Linear, error) {
+	d, err := newDrawer(m, Spread{Seed: s.Seed, Names: s.Names, Values: s.Values, Cov: s.Cov})
+	if err != nil {
+		return nil, err
+	}
+	d.n = cornersOf
+	out := make([]model.Linear, n)
+	for i := range out {
+		out[i] = d.next()
+	}
+	return out, nil
 }
 
 // cholesky returns the lower factor of a covariance; directions without any

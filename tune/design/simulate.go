@@ -30,7 +30,11 @@ type Scenario struct {
 	// RadPerCount and Window give the speed step RadPerCount/Window in rad/s that
 	// the loop sees; 0 leaves the speed smooth.
 	RadPerCount, Window float64
-	Friction            Friction
+	// WindowLoops > 0 counts as a board does: the angle gone over the last so many
+	// whole loops, a true mean. The model must then not have half of the window in
+	// its dead time. 0 takes the speed at the sample, in whole counts a window.
+	WindowLoops int
+	Friction    Friction
 }
 
 // Run is a forecast of a closed loop, one entry a sample.
@@ -79,15 +83,12 @@ func SimulateLoop(m model.Linear, g Gains, sc Scenario) (Run, error) {
 		Period: g.SampleTime, Time: make([]float64, n), Setpoint: make([]float64, n),
 		Speed: make([]float64, n), Measured: make([]float64, n), Drive: make([]float64, n),
 	}
-	c := newLaw(g)
+	c, profile := newLaw(g), &profile{parts: sc.Parts}
 	s.settleAt(sc.StartSpeed, c)
-	counter := counter{perSpeed: 0}
-	if sc.RadPerCount > 0 && sc.Window > 0 {
-		counter.perSpeed = sc.Window / sc.RadPerCount
-	}
+	counter := newCounter(sc, g.SampleTime)
 	for k := range n {
 		t := float64(k) * g.SampleTime
-		r := sc.at(t)
+		r := profile.at(t)
 		y := s.speed()
 		seen := counter.see(y)
 		u := c.next(r, seen, g.Feedforward.volts(r))
@@ -117,7 +118,7 @@ func (sc Scenario) validate() error {
 		}
 	}
 	f := sc.Friction
-	for _, v := range []float64{f.CoulombForward, f.CoulombReverse, f.BreakawayForward, f.BreakawayReverse, sc.RadPerCount, sc.Window} {
+	for _, v := range []float64{f.CoulombForward, f.CoulombReverse, f.BreakawayForward, f.BreakawayReverse, sc.RadPerCount, sc.Window, float64(sc.WindowLoops)} {
 		if !si.Finite(v) || v < 0 {
 			return fmt.Errorf("design: friction, count and window must be finite and not negative, got %g", v)
 		}
@@ -128,30 +129,25 @@ func (sc Scenario) validate() error {
 	return nil
 }
 
-// at returns the setpoint at time t; it stays at its last value.
-func (sc Scenario) at(t float64) float64 {
-	last := 0.0
-	for _, p := range sc.Parts {
-		if t < p.Duration-1e-12 {
-			return p.From + (p.To-p.From)*t/p.Duration
-		}
-		t -= p.Duration
-		last = p.To
-	}
-	return last
+// profile walks along the parts of a setpoint.
+type profile struct {
+	parts []Part
+	i     int
+	begun float64 // of parts[i], s
 }
 
-// counter turns a speed into whole counts a window and carries the rest, as an
-// encoder does.
-type counter struct{ perSpeed, angle float64 }
-
-func (c *counter) see(speed float64) float64 {
-	if c.perSpeed == 0 {
-		return speed
+// at returns the setpoint at time t, which does not go back; it stays at its last
+// value.
+func (p *profile) at(t float64) float64 {
+	for p.i < len(p.parts) {
+		x, q := t-p.begun, p.parts[p.i]
+		if x < q.Duration-1e-12 {
+			return q.From + (q.To-q.From)*x/q.Duration
+		}
+		p.begun += q.Duration
+		p.i++
 	}
-	before := math.Floor(c.angle)
-	c.angle += speed * c.perSpeed
-	return (math.Floor(c.angle) - before) / c.perSpeed
+	return p.parts[len(p.parts)-1].To
 }
 
 // shaft is the motor between samples, with friction.

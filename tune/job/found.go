@@ -53,7 +53,7 @@ func (j *Job) doFound() (result, error) {
 	if r.Reason != safety.EndDone {
 		return "", j.notDone(r)
 	}
-	return j.keepFound(r, levels, hold, slope, &margins)
+	return j.keepFound(r, plan, levels, hold, &margins)
 }
 
 // foundLoop is the law as found with its margins on the fitted model, or why it
@@ -86,23 +86,23 @@ func (j *Job) foundLoop() (*design.Gains, design.Margins, string) {
 }
 
 // keepFound measures the step and keeps it.
-func (j *Job) keepFound(r Result, levels []float64, hold time.Duration, slope float64, margins *design.Margins) (result, error) {
+func (j *Job) keepFound(r Result, plan safety.Plan, levels []float64, hold time.Duration, margins *design.Margins) (result, error) {
 	from, to := levels[0], levels[1]
 	seg := window(r, hold, 2*hold)
 	ripple := rippleOf(window(r, hold+hold*2/3, 2*hold))
-	band := math.Max(math.Max(0.02*(to-from), j.sizing().SpeedStep), 3*ripple)
-	m, ok := measureStep(seg, from, to, band)
+	c, ok := courseOf(seg, from, to)
 	if !ok {
 		return "", refuse(752, "as-found trace", "the step could not be measured", "look at the trace in the record")
 	}
-	rec := &sheet.AsFoundStepRecord{TraceFile: r.File, LoadState: j.Rig.Load.State, Curve: &sheet.VerifyCurve{},
-		Step: &sheet.StepResult{StepRadS: ptr(to - from), OvershootPercent: &m.Overshoot, SettlingTimeS: &m.Settling, SettlingBandRadS: &band, RippleRadS: ptr(2 * ripple)}}
-	var line []Point
-	if f, pts, err := j.forecastMetrics(setpointStep{from, to, slope}, hold, band); err == nil {
-		line = pts
-		rec.Forecast = &sheet.StepResult{StepRadS: ptr(to - from), OvershootPercent: &f.Overshoot, SettlingTimeS: &f.Settling, SettlingBandRadS: &band}
+	rec := &sheet.AsFoundStepRecord{TraceFile: r.File, LoadState: j.Rig.Load.State, Curve: &sheet.VerifyCurve{}}
+	addCurve(rec.Curve, seg, r.Begun)
+	all, err := j.forecastSteps(plan, levels, hold, drawsLeast)
+	if err != nil {
+		return "", err
 	}
-	addCurve(rec.Curve, seg, r.Begun, hold, line, to)
+	m, f := all.against([]course{c})
+	all.draw(rec.Curve)
+	rec.Step, rec.Forecast = m.record(ripple), f.record()
 	hunts := j.hunting(window(r, hold+hold/2, 2*hold), to, margins)
 	rec.Hunting = huntingRecord(hunts)
 	j.FoundStep = rec

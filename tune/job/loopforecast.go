@@ -2,8 +2,6 @@ package job
 
 import (
 	"math"
-	"slices"
-	"time"
 
 	"gainwright/tune/design"
 )
@@ -81,59 +79,4 @@ func thin(t, v []float64) []Point {
 		p = append(p, Point{t[i], v[i]})
 	}
 	return p
-}
-
-// phasesMost is how many places of the shaft between two counts a forecast is
-// made for where one count shows.
-const phasesMost = 8
-
-// forecastMetrics is the forecast of one verify step with the same measures as
-// the measured one: at the telemetry's rate, and of the speed in whole counts.
-// Where a count shows, the middle of several places between two counts is taken.
-func (j *Job) forecastMetrics(step setpointStep, hold time.Duration, band float64) (StepMetrics, []Point, error) {
-	g := *j.closing()
-	phases, quiet := 1, 5*g.SampleTime
-	if j.sizing().SpeedStep > 0.002*math.Abs(step.to-step.from) {
-		phases, quiet = phasesMost, math.Max(0.25*hold.Seconds(), 20*g.SampleTime)
-	}
-	each := 1
-	if j.Hz > 0 {
-		each = max(1, int(math.Round(1/(float64(j.Hz)*g.SampleTime))))
-	}
-	var all []StepMetrics
-	var line []Point
-	for p := range phases {
-		// The time until the step decides where between two counts it begins.
-		lead := quiet + float64(p)*1.618*g.SampleTime
-		parts := append([]design.Part{{From: step.from, To: step.from, Duration: lead}}, step.parts(hold.Seconds())...)
-		r, err := j.simulateLoop(g, step.from, parts)
-		if err != nil {
-			return StepMetrics{}, nil, err
-		}
-		var t, y []float64
-		for i := int(math.Ceil(lead/g.SampleTime - 1e-9)); i < len(r.Time); i++ {
-			at := r.Time[i] - lead
-			if p == 0 {
-				line = append(line, Point{at, r.Speed[i]})
-			}
-			if i%each == 0 {
-				t, y = append(t, at), append(y, r.Measured[i])
-			}
-		}
-		all = append(all, metricsOf(t, y, step.from, step.to, band))
-	}
-	m := StepMetrics{From: step.from, To: step.to}
-	m.Overshoot = median(all, func(m StepMetrics) float64 { return m.Overshoot })
-	m.Settling = median(all, func(m StepMetrics) float64 { return m.Settling })
-	m.Ripple = median(all, func(m StepMetrics) float64 { return m.Ripple })
-	return m, line, nil
-}
-
-func median(all []StepMetrics, of func(StepMetrics) float64) float64 {
-	v := make([]float64, len(all))
-	for i := range all {
-		v[i] = of(all[i])
-	}
-	slices.Sort(v)
-	return (v[(len(v)-1)/2] + v[len(v)/2]) / 2
 }

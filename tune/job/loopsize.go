@@ -124,19 +124,22 @@ func (j *Job) peaks(r design.Run) (over, top float64) {
 	return over, top
 }
 
-// planParts is the setpoint of a closed-loop plan as the board gets it.
+// planParts is the setpoint of a closed-loop plan as the board gets it: the value
+// of every tick stands until the next.
 func planParts(p safety.Plan) []design.Part {
 	var parts []design.Part
+	tick := seconds(renewS)
+	var at, begun time.Duration
 	for _, s := range p.Segments {
-		if s.From == s.To {
-			parts = append(parts, design.Part{From: s.To, To: s.To, Duration: s.Duration.Seconds()})
-			continue
+		for ; at < begun+s.Duration; at += tick {
+			w := s.From + (s.To-s.From)*float64(at-begun)/float64(s.Duration)
+			if n := len(parts); n > 0 && parts[n-1].To == w {
+				parts[n-1].Duration += renewS
+				continue
+			}
+			parts = append(parts, design.Part{From: w, To: w, Duration: renewS})
 		}
-		d := s.Duration.Seconds()
-		for t := 0.0; t < d-1e-9; t += renewS {
-			w := s.From + (s.To-s.From)*t/d
-			parts = append(parts, design.Part{From: w, To: w, Duration: math.Min(renewS, d-t)})
-		}
+		begun += s.Duration
 	}
 	return parts
 }

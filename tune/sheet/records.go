@@ -68,6 +68,12 @@ type StepResult struct {
 	SettlingTimeS    *float64 `json:"settling_time_s"`
 	SettlingBandRadS *float64 `json:"settling_band_rad_s"`
 	RippleRadS       *float64 `json:"ripple_rad_s"` // half of peak to peak, at steady speed
+
+	// The ends of a forecast's band; nil where it has none.
+	OvershootLow  *float64 `json:"overshoot_low_percent,omitempty"`
+	OvershootHigh *float64 `json:"overshoot_high_percent,omitempty"`
+	SettlingLow   *float64 `json:"settling_low_s,omitempty"`
+	SettlingHigh  *float64 `json:"settling_high_s,omitempty"`
 }
 
 // HuntingRecord is a sustained oscillation of the closed loop at a setpoint that
@@ -286,7 +292,7 @@ type VerifyCurve struct {
 	SetpointRadS []float64 `json:"setpoint_rad_s"`
 	MeasuredRadS []float64 `json:"measured_rad_s"`
 	ForecastRadS []float64 `json:"forecast_rad_s"`
-	LowRadS      []float64 `json:"low_rad_s,omitempty"` // the worst case's band
+	LowRadS      []float64 `json:"low_rad_s,omitempty"` // the band of the forecast
 	HighRadS     []float64 `json:"high_rad_s,omitempty"`
 	EarlierRadS  []float64 `json:"earlier_rad_s,omitempty"` // last time's, on the same times
 }
