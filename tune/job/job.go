@@ -78,7 +78,6 @@ type Known struct {
 
 	Pushed      bool
 	Verified    *sheet.VerifyRecord
-	forecastOf  StepMetrics
 	StoredOK    bool
 	Experiments map[StepID]sheet.ExperimentRecord // optional ones that were done, newest of each
 	LeftRec     *sheet.Snapshot

@@ -15,8 +15,8 @@ import (
 // Draws of a forecast of steps, and the shares of them that its band leaves out
 // at either end (our choice).
 const (
-	stepDraws   = 24 // of a verify
-	drawsLeast  = 12 // also of the step as found
+	stepDraws   = 24        // of a verify
+	drawsLeast  = 12        // also of the step as found
 	drawSamples = 3_000_000 // of all draws together
 	bandTail    = 0.05
 )
