@@ -211,6 +211,15 @@ func designView() *job.DesignView {
 	}
 }
 
+// byHand is a person at the gains, one key on.
+func byHand(v *job.View) {
+	d := designView()
+	d.ByHand, d.Keys, d.BeforeStep = true, 1, d.FoundStep
+	d.Gains = []job.Fact{{Name: "> kp", Value: "0.0821 V/(rad/s), was 0.0782"}, {Name: "  ki", Value: "0.888 V/rad"}, {Name: "  b", Value: "1 1"}}
+	d.Notes = []string{"not to be pushed: Ms is 2.10 on the fitted model, over the largest bound that may be chosen, 2.0"}
+	v.Doing, v.Design = false, d
+}
+
 func pushView(state string) *job.PushView {
 	p := &job.PushView{Word: "PUMP-3", State: state, Rows: []job.PushRow{
 		{Name: "Kp", Old: "0.02100", New: "0.07820", Unit: "V per rad/s"},

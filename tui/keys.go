@@ -130,6 +130,11 @@ var bindings = []binding{
 	{"j down", "j", "more margin", groupDesign, "A lower bound on Ms: calmer, slower.", nudges(PageDesign), say(job.Nudge{By: -1})},
 	{"k up", "k", "more speed", groupDesign, "A higher bound on Ms: quicker, nearer to hunting.", nudges(PageDesign), say(job.Nudge{By: 1})},
 
+	{"n", "n", "by hand", groupDesign, "Change gains by hand: the next gain of the board; the first press takes them in hand.", edits(false), say(job.PickGain{By: 1})},
+	{"+ =", "+", "larger", groupDesign, "The gain in hand up by a twentieth; forecast, margins and worst case follow.", edits(true), say(job.TurnGain{By: 1})},
+	{"- _", "-", "smaller", groupDesign, "The gain in hand down by a twentieth.", edits(true), say(job.TurnGain{By: -1})},
+	{"u", "u", "take back", groupDesign, "Take the last key on a gain back; with none left, back to the rule's gains.", edits(true), say(job.TakeBack{})},
+
 	{"y", "y", "leave", groupStill, "Leave, when asked.", func(s Screen, v *job.View) bool { return s.local == localQuit }, say(job.Quit{})},
 	{"n b esc q", "n", "stay", groupStill, "Stay, when asked.", func(s Screen, v *job.View) bool { return s.local == localQuit }, func(s Screen, v *job.View, _ string) (Screen, intents) {
 		s.local = localNone
@@ -196,6 +201,14 @@ func nudges(p Page) func(Screen, *job.View) bool {
 			return v.Plan != nil && v.Plan.Resize
 		}
 		return v.Design != nil && v.Design.CanBeMoved
+	}
+}
+
+// edits reports whether gains can be changed by hand now, or only once they are
+// in hand.
+func edits(inHand bool) func(Screen, *job.View) bool {
+	return func(s Screen, v *job.View) bool {
+		return nudges(PageDesign)(s, v) && !v.Doing && v.Design.Refused == "" && (v.Design.ByHand || !inHand)
 	}
 }
 

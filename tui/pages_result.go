@@ -1,6 +1,7 @@
 package tui
 
 import (
+	"fmt"
 	"strings"
 
 	"gainwright/tui/palette"
@@ -142,11 +143,15 @@ func (p *painter) design(a area) {
 	pics := mid.sub(left, 0, mid.w-left, mid.h)
 	top := pics.h * 3 / 5
 	title := "step, rpm"
-	if len(d.FoundStep) > 0 {
+	before := d.FoundStep
+	if len(before) > 0 {
 		title = "rpm   dotted: found"
 	}
+	if d.ByHand {
+		before, title = d.BeforeStep, "rpm   dotted: before"
+	}
 	p.curves(pics.sub(0, 0, pics.w, top), plot{title: title, unit: "s", scale: rpmPerRad, zero: true},
-		curve{strip.Forecast, d.FoundStep}, curve{strip.Data, d.Step})
+		curve{strip.Forecast, before}, curve{strip.Data, d.Step})
 	p.curves(pics.sub(0, top, pics.w, pics.h-top), plot{title: "drive, V", unit: "s", scale: 1, zero: true, limit: float64(p.v.Drive.VoltsMax), near: true},
 		curve{strip.Second, d.Drive})
 	p.rules(a.sub(0, a.h-rules, a.w, rules), d)
@@ -154,6 +159,8 @@ func (p *painter) design(a area) {
 
 func (p *painter) designHead(a area, d *job.DesignView) int {
 	switch {
+	case d.ByHand:
+		return p.handHead(a, d)
 	case d.Refused != "":
 		x := a.put(1, 0, palette.Caution, " REFUSED ")
 		return a.sub(x+1, 0, a.w-x-2, a.h).wrap(0, palette.Plain, d.Refused)
@@ -171,6 +178,22 @@ func (p *painter) designHead(a area, d *job.DesignView) int {
 		a.put(x+3, 0, palette.Plain, strings.Join(d.Notes, "; "))
 	}
 	return 1
+}
+
+// handHead is the head of the page while a person is at the gains.
+func (p *painter) handHead(a area, d *job.DesignView) int {
+	x := a.put(1, 0, palette.Strong, " BY HAND ")
+	x = a.put(x+1, 0, palette.Plain, "n next gain   + larger   - smaller   ")
+	back := "u leave"
+	if d.Keys > 0 {
+		back = fmt.Sprintf("u take back (%d)", d.Keys)
+	}
+	a.put(x, 0, palette.Plain, back)
+	if len(d.Notes) == 0 {
+		return 1
+	}
+	a.put(1, 1, palette.Caution, p.tame(strings.Join(d.Notes, "; ")))
+	return 2
 }
 
 // marginTable joins the margins of the proposal with the worst case, what was

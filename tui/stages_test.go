@@ -89,6 +89,9 @@ func stages() []stage {
 	v.Ask = &job.Question{ID: 21, Kind: job.AskEnter, Text: "Take the proposal to the push?"}
 	add("design", v, "")
 	v = at(job.StepPush, false)
+	byHand(v)
+	add("design-by-hand", v, "8")
+	v = at(job.StepPush, false)
 	v.Design = designView()
 	v.Design.CanBeMoved = false
 	add("design-done", v, "")

@@ -30,6 +30,12 @@ func (l *Live) Post(i job.Intent) {
 				l.step(func(j *job.Job) { j.Nudge(i.By) })
 			}
 		})
+	case job.PickGain:
+		l.step(func(j *job.Job) { j.PickGain(i.By) })
+	case job.TurnGain:
+		l.step(func(j *job.Job) { j.TurnGain(i.By) })
+	case job.TakeBack:
+		l.step(func(j *job.Job) { j.TakeBack() })
 	case job.TurnHand:
 		if l.opt.Hand != nil {
 			l.opt.Hand()

@@ -107,6 +107,9 @@ type DesignSettings struct {
 	Found    []string `json:"found_words"`              // gains as found, eight digits a slot
 	Running  []string `json:"running_words"`            // gains running before the push
 
+	// ByHand are the words of the set that a person chose instead of the rule's.
+	ByHand []string `json:"by_hand_words,omitempty"`
+
 	// The motors of the worst case.
 	Seed            uint64  `json:"worst_seed,string"`
 	GainMin         float64 `json:"worst_gain_min"` // factors; both 0: not varied
@@ -153,6 +156,9 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 	}
 	if out.Proposals, out.Chosen, err = s.propose(s.cautious(loop, f)); err != nil {
 		return out, err
+	}
+	if s.ByHand != nil {
+		return out, s.byHand(&out, loop, f)
 	}
 	if out.Chosen < 0 {
 		why := ErrNoRule.Error()

@@ -33,6 +33,7 @@ func (j *Job) Nudge(by int) {
 	if j.Fit == nil || j.Fit.Best() == nil || j.steps[StepDesign].Status == ToDo {
 		return
 	}
+	j.hand = nil
 	j.opt.MsMax = math.Min(2, math.Max(1.2, math.Round((j.opt.MsMax+0.1*float64(by))*10)/10))
 	_ = j.Do(StepDesign)
 }
@@ -70,6 +71,7 @@ func (j *Job) doDesign() (result, error) {
 		return "", refuse(731, "proposal", "the model is refused", "do the test that would help, then fit again")
 	}
 	set := j.designSettings()
+	j.hand = nil
 	j.h.Show(func(v *View) { v.Busy = "proposal and its worst case" })
 	d, err := set.Design(*f)
 	j.h.Show(func(v *View) { v.Busy = "" })
@@ -188,6 +190,7 @@ func (j *Job) showDesign() {
 		d.Worst = []Fact{{Name: "Ms", Value: fmt.Sprintf("%.2f", float64(w.Ms)), Why: why}, {Name: "phase margin", Value: fmt.Sprintf("%.0f°", float64(w.PhaseMargin)), Why: why},
 			{Name: "overshoot", Value: fmt.Sprintf("%.0f %%", float64(w.Overshoot)), Why: why + "; setpoint weight 1 over the first swings"}}
 	}
+	j.handRows(d)
 	t := j.Rig.Targets
 	d.Targets = []Fact{{Name: "overshoot", Value: fmt.Sprintf("<= %.3g %%", t.Overshoot)}}
 	if t.Settling > 0 {

@@ -35,6 +35,12 @@ type (
 	AddRemark struct{ Text string }
 	// Nudge steps the size of a plan or the robustness bound, by ±1.
 	Nudge struct{ By int }
+	// PickGain goes on to the next gain on the design page, by ±1.
+	PickGain struct{ By int }
+	// TurnGain makes the gain in hand larger or smaller, by ±1.
+	TurnGain struct{ By int }
+	// TakeBack undoes the last change of a gain by hand.
+	TakeBack struct{}
 	// PickPort opens a port.
 	PickPort struct{ Path string }
 	// LookAgain lists the ports anew.
@@ -62,6 +68,9 @@ func (ResetTrip) intent()   {}
 func (SetMark) intent()     {}
 func (AddRemark) intent()   {}
 func (Nudge) intent()       {}
+func (PickGain) intent()    {}
+func (TurnGain) intent()    {}
+func (TakeBack) intent()    {}
 func (PickPort) intent()    {}
 func (LookAgain) intent()   {}
 func (TurnHand) intent()    {}

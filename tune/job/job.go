@@ -65,6 +65,7 @@ type Known struct {
 	fitTold                FitSettings
 
 	FoundMargins *design.Margins
+	hand         *hand         // nil: the rule's gains
 	foundGains   *design.Gains // while the as-found trace is taken
 	FoundStep    *sheet.AsFoundStepRecord
 	Proposals    []design.Proposal

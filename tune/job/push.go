@@ -21,6 +21,9 @@ func (j *Job) doPush() (result, error) {
 		}
 		return "", refuse(740, "push", "there is no proposal", "do the proposal first")
 	}
+	if err := j.keepHand(); err != nil {
+		return "", err
+	}
 	return j.push(*j.NewSet, namePush)
 }
 

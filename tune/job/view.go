@@ -267,6 +267,10 @@ type DesignView struct {
 	SetPoint   float64
 	Notes      []string
 	CanBeMoved bool // the bound can be stepped now
+
+	ByHand     bool // a person is at the gains
+	Keys       int  // that can be taken back
+	BeforeStep []Point
 }
 
 // RuleRow is one rule beside the others.
