@@ -178,6 +178,10 @@ func (p *painter) next(a area) {
 		return
 	}
 	v := p.v
+	if v.Call != "" {
+		a.put(1, 0, palette.Caution, " "+v.Call+" ")
+		return
+	}
 	if v.Busy != "" {
 		x := a.put(1, 0, palette.Strong, v.Busy)
 		p.progress(a, x+2, 0, min(30, a.w-x-16), v.Share)

@@ -81,56 +81,7 @@ func demoCommand() *cobra.Command {
 		Long: "demo opens the console on a built-in simulated rig: a board in software behind a pseudo-terminal that is opened\n" +
 			"like any port. Nothing real moves. On screen, t turns its shaft by hand and o switches its power or works\n" +
 			"the input that is asked for.",
-		RunE: func(c *cobra.Command, _ []string) error {
-			cfg, err := demoConfig(simFile)
-			if err != nil {
-				return usage(err)
-			}
-			_, text, err := bench.RigOf(cfg)
-			if rigFile != "" {
-				_, text, err = readRig(rigFile)
-			}
-			if err != nil {
-				return usage(err)
-			}
-			// Board and console share this process: a laptop under load holds both up,
-			// and no shaft turns. A real board keeps the rig file's default.
-			if !bytes.Contains(text, []byte("[timing]")) {
-				text = append(text, demoTiming...)
-			}
-			r, err := rig.Parse("demo", text)
-			if err != nil {
-				return err
-			}
-			o := bench.Options{Simulated: true}
-			o.Job.Rig, o.Job.RigText = r, text
-			sim, err := bench.ServePTY(simrig.New(cfg, 1))
-			if errors.Is(err, bench.ErrNoPTY) {
-				sim = bench.ServePipe(simrig.New(cfg, 1))
-				o.Open = func(string) (bench.Opened, error) {
-					return bench.Opened{Port: sim.Port(), Baud: cfg.Board.Baud, Note: "a pipe in memory: this system has no pseudo-terminals"}, nil
-				}
-			} else if err != nil {
-				return err
-			} else {
-				f.baud = cfg.Board.Baud
-				o.Open = f.open
-			}
-			defer sim.Close()
-			o.Ports = func() []job.PortView {
-				return []job.PortView{{Path: sim.Path, Name: cfg.Name, Product: "simulated board " + cfg.Board.ID, Note: "built in, nothing real moves"}}
-			}
-			o.Hand, o.Cycle, o.Work = sim.Hand, sim.Cycle, sim.Work
-			if o.Job.Order, err = readOrder(f.jobFile); err != nil {
-				return err
-			}
-			if f.out == "" {
-				if f.out, err = os.MkdirTemp("", "gainwright-demo-"); err != nil {
-					return err
-				}
-			}
-			return console(f, o)
-		},
+		RunE: func(c *cobra.Command, _ []string) error { return openDemo(f, simFile, rigFile, nil) },
 	}
 	c.Flags().StringVar(&simFile, "sim", "", "another simulated board (TOML)")
 	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
@@ -138,6 +89,67 @@ func demoCommand() *cobra.Command {
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order")
 	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records of simulated rigs; without it none are looked for")
 	return c
+}
+
+// openDemo opens the console on a simulated rig behind a pseudo-terminal. bend, if
+// set, changes rig and options before they are used, and returns what is to be told
+// of both once they are there.
+func openDemo(f consoleFlags, simFile, rigFile string, bend func(*simrig.Config, *bench.Options) func(*bench.Served, *bench.Live)) error {
+	cfg, err := demoConfig(simFile)
+	if err != nil {
+		return usage(err)
+	}
+	_, text, err := bench.RigOf(cfg)
+	if rigFile != "" {
+		_, text, err = readRig(rigFile)
+	}
+	if err != nil {
+		return usage(err)
+	}
+	// Board and console share this process: a laptop under load holds both up,
+	// and no shaft turns. A real board keeps the rig file's default.
+	if !bytes.Contains(text, []byte("[timing]")) {
+		text = append(text, demoTiming...)
+	}
+	r, err := rig.Parse("demo", text)
+	if err != nil {
+		return err
+	}
+	var sim *bench.Served
+	o := bench.Options{Simulated: true}
+	o.Job.Rig, o.Job.RigText = r, text
+	f.baud = cfg.Board.Baud
+	inMemory := false
+	o.Open = func(path string) (bench.Opened, error) {
+		if inMemory {
+			return bench.Opened{Port: sim.Port(), Baud: cfg.Board.Baud, Note: "a pipe in memory: this system has no pseudo-terminals"}, nil
+		}
+		return f.open(path)
+	}
+	if o.Job.Order, err = readOrder(f.jobFile); err != nil {
+		return err
+	}
+	if f.out == "" {
+		if f.out, err = os.MkdirTemp("", "gainwright-demo-"); err != nil {
+			return err
+		}
+	}
+	told := func(*bench.Served, *bench.Live) {}
+	if bend != nil {
+		told = bend(&cfg, &o)
+	}
+	sim, err = bench.ServePTY(simrig.New(cfg, 1))
+	if inMemory = errors.Is(err, bench.ErrNoPTY); inMemory {
+		sim = bench.ServePipe(simrig.New(cfg, 1))
+	} else if err != nil {
+		return err
+	}
+	defer sim.Close()
+	o.Ports = func() []job.PortView {
+		return []job.PortView{{Path: sim.Path, Name: cfg.Name, Product: "simulated board " + cfg.Board.ID, Note: "built in, nothing real moves"}}
+	}
+	o.Hand, o.Cycle, o.Work = sim.Hand, sim.Cycle, sim.Work
+	return consoleOf(f, o, func(live *bench.Live) { told(sim, live) })
 }
 
 func (f consoleFlags) open(path string) (bench.Opened, error) { return openAt(path, f.baud) }
@@ -230,7 +242,10 @@ func (s session) Post(i job.Intent) {
 
 // console runs the screens over a live bench until the person leaves or the
 // terminal goes away.
-func console(f consoleFlags, o bench.Options) error {
+func console(f consoleFlags, o bench.Options) error { return consoleOf(f, o, nil) }
+
+// consoleOf is console with somebody who is told of the bench before a port is opened.
+func consoleOf(f consoleFlags, o bench.Options, told func(*bench.Live)) error {
 	in := int(os.Stdin.Fd())
 	if !term.IsTerminal(in) {
 		return usage(errors.New("standard input is not a terminal: the console is worked by a person with keys; no script arms a board. For a simulated rig without a person use dryrun"))
@@ -264,6 +279,9 @@ func console(f consoleFlags, o bench.Options) error {
 		}
 	}
 	live = bench.NewLive(o)
+	if told != nil {
+		told(live)
+	}
 	ctx, leave := context.WithCancel(context.Background())
 	defer leave()
 	keys := tap.New(os.Stdin, hooks(live, leave, o.OnPanic))

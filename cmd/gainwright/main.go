@@ -92,7 +92,7 @@ func newRoot() *cobra.Command {
 	c := consoleCommand()
 	root.RunE = c.RunE
 	root.Flags().AddFlagSet(c.Flags())
-	root.AddCommand(c, demoCommand(), portsCommand(), checkCommand(), lookCommand(), dryrunCommand(), faultsCommand(), simCommand(), conformanceCommand(), watchCommand(), fitCommand(), designCommand(),
+	root.AddCommand(c, demoCommand(), drillCommand(), portsCommand(), checkCommand(), lookCommand(), dryrunCommand(), faultsCommand(), simCommand(), conformanceCommand(), watchCommand(), fitCommand(), designCommand(),
 		marginsCommand(), convertCommand(), reportCommand(), cardCommand(), compareCommand(), recomputeCommand(), exportCommand(), replayCommand(), rehearseCommand(), manCommand(), versionCommand())
 	completeFlags(root)
 	return root

@@ -50,9 +50,15 @@ func sitDown(t *testing.T, cfg simrig.Config, withRig bool) *person {
 // sitAt sits down at a rig with a rig file; without text the console asks for it.
 func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte, also ...func(*bench.Options)) *person {
 	t.Helper()
-	p := &person{t: t, sim: bench.ServePipe(simrig.New(cfg, 1)), screen: tui.New(tui.Look{})}
+	return sitBent(t, &cfg, r, text, also...)
+}
+
+// sitBent is sitAt at a rig that options may bend before it is there.
+func sitBent(t *testing.T, cfg *simrig.Config, r rig.Rig, text []byte, also ...func(*bench.Options)) *person {
+	t.Helper()
+	p := &person{t: t, screen: tui.New(tui.Look{})}
 	dir := t.TempDir() + "/sheet"
-	o := bench.Options{Simulated: true, Program: "gainwright test", Hand: p.sim.Hand, Cycle: p.sim.Cycle, Work: p.sim.Work,
+	o := bench.Options{Simulated: true, Program: "gainwright test", Hand: func() { p.sim.Hand() }, Cycle: func() { p.sim.Cycle() }, Work: func(set []job.InputBit) { p.sim.Work(set) },
 		Ports: func() []job.PortView { return []job.PortView{{Path: "memory", Name: cfg.Name}} },
 		Open: func(string) (bench.Opened, error) {
 			return bench.Opened{Port: p.sim.Port(), Baud: cfg.Board.Baud}, nil
@@ -68,6 +74,7 @@ func sitAt(t *testing.T, cfg simrig.Config, r rig.Rig, text []byte, also ...func
 	for _, f := range also {
 		f(&o)
 	}
+	p.sim = bench.ServePipe(simrig.New(*cfg, 1))
 	p.live = bench.NewLive(o)
 	p.wait(500 * time.Millisecond)
 	return p

@@ -108,6 +108,14 @@ func (r *Rig) Inject(kind string, value float64) {
 	r.beginFaults()
 }
 
+// Cure takes away faults that the board has until they are cured: mute, deaf and the
+// like. What was broken in the rig stays broken.
+func (r *Rig) Cure(kinds ...string) {
+	for _, k := range kinds {
+		delete(r.wrong, k)
+	}
+}
+
 // nextFault is the instant of the next fault that has not begun, or horizon.
 func (r *Rig) nextFault(horizon int64) int64 {
 	for i := range r.faults {

@@ -40,6 +40,7 @@ type hands struct {
 	late  *lateFile
 
 	outcome, reason string
+	atClose         func() (name string, v any) // a last entry; nil: none
 }
 
 func (h *hands) Now() (t time.Duration) {

@@ -88,6 +88,9 @@ func NewLive(opt Options) *Live {
 	l.s = &session{}
 	l.s.core = supervisor.NewCore(liveWire{l}, l.s, uint16(l.start.UnixNano()>>10))
 	l.s.core.Simulated = opt.Simulated
+	if opt.Watch != nil {
+		l.s.core.Watch = func(e safety.Event, out []safety.Effect) { st := l.s.core.State(); opt.Watch(&st, e, out) }
+	}
 	l.s.view = job.View{Program: opt.Program, Simulated: opt.Simulated, Rig: opt.Job.Rig.Name, Hand: opt.Hand != nil}
 	l.s.view.Link.State = job.NoPort
 	l.s.work, l.s.laptop = opt.Work, opt.Laptop
@@ -96,7 +99,7 @@ func NewLive(opt Options) *Live {
 	l.tape = tape.NewWriter(l.late, tape.Config{Start: l.start, OnPanic: l.panicked, OnError: func(err error) {
 		l.post(func(s *session) { s.core.Do(safety.TapeFailed{At: s.now, Why: err.Error()}) })
 	}})
-	l.h = &hands{engine: l, late: l.late}
+	l.h = &hands{engine: l, late: l.late, atClose: opt.AtClose}
 	if opt.NewSheet != nil {
 		l.h.open = func(board string) (*sheet.Sheet, error) { return opt.NewSheet(board, l.job.Rig) }
 	}

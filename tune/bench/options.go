@@ -2,6 +2,7 @@ package bench
 
 import (
 	"gainwright/link"
+	"gainwright/safety"
 	"gainwright/safety/rig"
 	"gainwright/tune/job"
 	"gainwright/tune/sheet"
@@ -32,6 +33,11 @@ type Options struct {
 	Work func([]job.InputBit)
 	// Laptop reads battery and sleep. nil: nothing is told.
 	Laptop func() job.Laptop
+	// Watch is shown every event of the limiter, its state after it and what it called
+	// for, where the session lives: it must be quick. nil: nobody watches.
+	Watch func(st *safety.State, e safety.Event, out []safety.Effect)
+	// AtClose gives a last entry for the record, of kind event; nil: none.
+	AtClose func() (name string, v any)
 	// OnPanic is called, after a stop was sent, when a goroutine of ours panics.
 	OnPanic func(v any, stack []byte)
 }

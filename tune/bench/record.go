@@ -78,6 +78,13 @@ func (h *hands) closeRecord(tape error) (string, error) {
 	if h.sheet == nil {
 		return "", tape
 	}
+	if h.atClose != nil {
+		if name, v := h.atClose(); name != "" {
+			if _, err := h.sheet.Entry(sheet.KindEvent, name, v); err != nil {
+				return h.sheet.Dir(), err
+			}
+		}
+	}
 	outcome, reason := h.outcome, h.reason
 	if outcome == "" {
 		outcome, reason = "ended", "the session was left"

@@ -277,6 +277,8 @@ func (o *operator) question(v *Virtual, q *job.Question) {
 		}
 	}
 	switch st := s.core.State(); {
+	case q.Override:
+		s.intent(job.Decline{})
 	case q.Kind == job.AskHandTurn && !o.turned:
 		v.far.Hand(1)
 		o.turned = true

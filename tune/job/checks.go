@@ -384,6 +384,15 @@ func (j *Job) doLimits() (result, error) {
 		if r.Cause.Words != "" {
 			finding += ": " + r.Cause.Words
 		}
+		top := 0.0
+		for _, s := range r.Samples {
+			top = math.Max(top, math.Abs(float64(s.Speed)))
+		}
+		if top < low && r.Reason == safety.EndDone { // the board had nothing to trip on
+			finding = fmt.Sprintf("the shaft came to %s, below the ceiling of %s that was set low: it turns slower than the rig file says", rpm(top), rpm(low))
+			j.check("limit", "board", false, finding)
+			return "", refuse(789, "limit check", finding, "look at voltage, highest speed and Ke in the rig file: is it the file of this motor?")
+		}
 		j.check("limit", "board", false, finding)
 		return "", refuse(717, "limit check", finding, "a board that does not keep its limits is look-only")
 	}

@@ -100,6 +100,7 @@ type Job struct {
 	earlier     *sheet.Reader // of this rig, nil: none
 	differences []sheet.Difference
 	part        *sheet.PartRecord // that was swapped
+	overridden  bool              // the motor check, with a reason
 	carriedOut  map[StepID]string // steps that were done once, with what they reported
 	laptop      map[string]bool   // what of the laptop was said and answered
 }

@@ -28,6 +28,8 @@ type Question struct {
 	Default string
 	Options []string   // for AskChoice, at most nine
 	Set     []InputBit // for AskInput
+	// Override asks for a reason to do what was refused: nobody but a person has one.
+	Override bool
 }
 
 // Answer is what the person said.

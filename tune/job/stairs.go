@@ -54,7 +54,7 @@ func (j *Job) doStaircase() (result, error) {
 		if bad := j.noise(runs); bad != nil {
 			j.h.Say("noise of the staircase: %v", bad)
 		}
-		return words, errors.Join(err, j.gravity(runs), j.lostMotion())
+		return words, errors.Join(err, j.gravity(runs), j.lostMotion(), j.motorCheck())
 	}
 }
 

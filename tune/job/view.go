@@ -30,6 +30,7 @@ type View struct {
 	Live       *LiveView
 	Found      *FoundView
 	Earlier    *EarlierView
+	Call       string // of a drill: what somebody calls out, "" else
 	Checks     []CheckView
 	Interlocks []InterlockView
 	Model      *ModelView

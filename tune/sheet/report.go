@@ -26,6 +26,7 @@ func Report(dir string) string {
 	p.summary(problems, sum)
 	p.snapshots()
 	p.orderSection()
+	p.drills()
 	p.parts()
 	p.checks()
 	p.interlocks()

@@ -30,6 +30,7 @@ var records = []record{
 	{KindAsLeft, "", reflect.TypeFor[Snapshot]()},
 	{KindCheck, "", reflect.TypeFor[CheckRecord]()},
 	{KindInterlock, "", reflect.TypeFor[InterlockRecord]()},
+	{KindEvent, NameDrill, reflect.TypeFor[DrillRecord]()},
 	{KindEvent, NameChecklist, reflect.TypeFor[ChecklistRecord]()},
 	{KindEvent, NameWhyStopped, reflect.TypeFor[WhyStoppedRecord]()},
 	{KindRun, "", reflect.TypeFor[RunRecord]()},
