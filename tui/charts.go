@@ -27,6 +27,15 @@ type plot struct {
 	low   []job.Point
 	high  []job.Point
 	marks []float64
+	// powers says that the horizontal axis is in powers of ten.
+	powers bool
+	levels []level
+}
+
+// level is a line across a chart with its word.
+type level struct {
+	at   float64
+	word string
 }
 
 // gutter is the room for labels beside a chart: speeds take four figures, so
@@ -77,7 +86,7 @@ func (p *painter) curves(a area, pl plot, cs ...curve) {
 	}
 	hi += room
 	ch := &p.chart
-	ch.Reset(a.w, a.h, p.s.look.Glyphs, strip.Axes{X0: t0, X1: t1, Y0: lo, Y1: hi, Title: p.tame(pl.title), XUnit: pl.unit, Gutter: gutter})
+	ch.Reset(a.w, a.h, p.s.look.Glyphs, strip.Axes{X0: t0, X1: t1, Y0: lo, Y1: hi, Title: p.tame(pl.title), XUnit: pl.unit, Gutter: gutter, Powers: pl.powers})
 	if len(pl.low) > 0 {
 		strip.Shade(ch, pl.low, pl.high, pl.scale)
 	}
@@ -87,6 +96,9 @@ func (p *painter) curves(a area, pl plot, cs ...curve) {
 	if pl.limit > 0 {
 		ch.Level(pl.limit, "limit")
 		ch.Level(-pl.limit, "limit")
+	}
+	for _, l := range pl.levels {
+		ch.Level(l.at, l.word)
 	}
 	for _, c := range cs {
 		strip.Line(ch, c.kind, c.points, pl.scale)

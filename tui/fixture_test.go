@@ -194,7 +194,7 @@ func designView() *job.DesignView {
 		old[i].V += 34 * math.Exp(-old[i].T/0.1) * math.Sin(old[i].T*26)
 	}
 	return &job.DesignView{
-		MsMax: 1.6, CanBeMoved: true, SetPoint: 100, Step: y, Drive: u, FoundStep: old,
+		Bode: bodeFixture(), MsMax: 1.6, CanBeMoved: true, SetPoint: 100, Step: y, Drive: u, FoundStep: old,
 		Gains: []job.Fact{{Name: "Kp", Value: "0.0782 V per rad/s", Why: "rule largest-ki at Ms 1.60 on the model of run 10"}, {Name: "Ki", Value: "0.888 V per rad"}},
 		Margins: []job.Fact{{Name: "phase margin", Value: "87.0 deg"}, {Name: "gain margin", Value: "21.3 dB"}, {Name: "Ms", Value: "1.12"},
 			{Name: "overshoot", Value: "0 %"}, {Name: "settling", Value: "0.20 s"}, {Name: "speed noise", Value: "9 rpm"}, {Name: "top drive", Value: "11.2 V"}},
@@ -264,3 +264,18 @@ limits held by board: 3200 rpm  5 A  30 V  link 250 ms (measured 251)
 remarks ________________________________________________________________________
 signed ______________________________  customer ______________________________
 `
+
+// bodeFixture is the loop of a PI on one lag with dead time: 1/(jω·0.1)·e^(−jω·0.004),
+// and the same 1.3 times as large.
+func bodeFixture() (b job.BodeView) {
+	for i := range 160 {
+		x := -1 + 3.2*float64(i)/159
+		w := 2 * math.Pi * math.Pow(10, x)
+		db, deg := -20*math.Log10(0.1*w), -90-0.004*w*180/math.Pi
+		b.Gain, b.Phase = append(b.Gain, job.Point{T: x, V: db}), append(b.Phase, job.Point{T: x, V: deg})
+		b.WorstGain, b.WorstPhase = append(b.WorstGain, job.Point{T: x, V: db + 2.3}), append(b.WorstPhase, job.Point{T: x, V: deg - 3})
+	}
+	b.Crossover, b.PhaseCross = ptr(math.Log10(10/(2*math.Pi))), ptr(math.Log10(math.Pi/2/0.004/(2*math.Pi)))
+	b.PM, b.GM = ptr(90-0.04*180/math.Pi), ptr(20*math.Log10(0.1*math.Pi/2/0.004))
+	return b
+}

@@ -63,6 +63,10 @@ func toggled(p Page) func(Screen, *job.View, string) (Screen, intents) {
 	}
 }
 
+func onDesign(s Screen, v *job.View) bool {
+	return free(s, v) && v.Design != nil && len(v.Design.Bode.Gain) > 0 && s.page(v) != PagePorts
+}
+
 func free(s Screen, v *job.View) bool { return standing(v) && s.local == localNone }
 
 func asking(kinds ...job.QuestionKind) func(Screen, *job.View) bool {
@@ -163,6 +167,7 @@ var bindings = []binding{
 	{"1 2 3 4 5 6 7 8 9 0", "1..9 0", "", groupStill, "Page by its number: 1 path, 2 ports, 3 as-found, 4 checks, 5 plan, 6 run, 7 model, 8 design, 9 push, 0 verify.", free, numbered},
 	{"c", "c", "", groupStill, "Card.", free, shown(PageCard)},
 	{"f", "f", "", groupStill, "Alarms, and what happened.", free, shown(PageAlarms)},
+	{"l", "l", "", groupStill, "The open loop of the proposal: gain and phase over frequency, with its margins and its worst case.", onDesign, shown(PageLoop)},
 	{"x", "x", "", groupStill, "The earlier record of this rig: how it was left, what differs now, its motor against this one.", free, shown(PageEarlier)},
 	{"i", "i", "", groupStill, "Interlocks: every input, as it stands now and as it was seen.", free, shown(PageInterlocks)},
 	{"? h", "?", "keys", groupStill, "This list, and back from it (h does the same).", free, toggled(PageHelp)},
@@ -229,7 +234,7 @@ func hasRows(s Screen, v *job.View) bool {
 		return true
 	}
 	switch s.page(v) {
-	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords, PageInterlocks, PageEarlier:
+	case PagePath, PagePorts, PageCard, PageAlarms, PageHelp, PageWords, PageInterlocks, PageEarlier, PageLoop:
 		return true
 	}
 	return false

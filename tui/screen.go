@@ -30,13 +30,14 @@ const (
 	PageWords
 	PageInterlocks
 	PageEarlier
+	PageLoop
 	pageCount
 )
 
 var pageNames = [pageCount]string{
 	PagePath: "path", PagePorts: "ports", PageFound: "as-found", PageChecks: "checks", PagePlan: "plan",
 	PageLive: "run", PageModel: "model", PageDesign: "design", PagePush: "push", PageVerify: "verify",
-	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks", PageEarlier: "earlier",
+	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks", PageEarlier: "earlier", PageLoop: "loop",
 }
 
 // String returns the name of the page as it is shown.

@@ -91,6 +91,7 @@ func stages() []stage {
 	v = at(job.StepPush, false)
 	byHand(v)
 	add("design-by-hand", v, "8")
+	add("loop", v, "l")
 	v = at(job.StepPush, false)
 	v.Design = designView()
 	v.Design.CanBeMoved = false

@@ -44,6 +44,7 @@ type Axes struct {
 	XUnit  string  // written behind the last horizontal label
 	Gutter int     // least width of the column of labels, so that charts below each other line up
 	Bare   bool    // no labels at all
+	Powers bool    // the horizontal axis is in powers of ten: its labels are what they come to
 }
 
 // Point is a pair of co-ordinates. The functions that draw take slices of any

@@ -62,12 +62,18 @@ func (c *Chart) title() string {
 func (c *Chart) across() {
 	row := c.h - 1
 	step := niceStep(c.ax.X1-c.ax.X0, max(1, c.pw/10))
+	if c.ax.Powers {
+		step = math.Max(1, math.Ceil(step)) // whole decades
+	}
 	kx := float64(c.pw*c.dx-1) / (c.ax.X1 - c.ax.X0)
 	unit := utf8.RuneCountInString(c.ax.XUnit)
 	room := c.w - unit - 1 // the unit stands at the right end
 	free := c.px - 1
 	c.eachTick(c.ax.X0, c.ax.X1, step, func(v float64) {
 		s := c.number(v, step)
+		if c.ax.Powers {
+			s = strconv.AppendFloat(c.num[:0], math.Pow(10, math.Round(v)), 'g', 3, 64)
+		}
 		x := c.px + int((v-c.ax.X0)*kx+0.5)/c.dx
 		if v > c.ax.X0 {
 			x -= len(s) / 2

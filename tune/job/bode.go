@@ -32,6 +32,28 @@ func bode(loop model.Linear, g design.Gains, m design.Margins, worst *design.Wor
 	return b
 }
 
+// bodeView is a Bode plot for the screens.
+func bodeView(b *sheet.Bode) (v BodeView) {
+	if b == nil {
+		return v
+	}
+	hz := func(w *float64) *float64 {
+		if w == nil || *w <= 0 {
+			return nil
+		}
+		x := math.Log10(*w / (2 * math.Pi))
+		return &x
+	}
+	points := func(y []float64) (pts []Point) {
+		for i, w := range b.FrequencyRadS[:min(len(y), len(b.FrequencyRadS))] {
+			pts = append(pts, Point{*hz(&w), y[i]})
+		}
+		return pts
+	}
+	return BodeView{Gain: points(b.MagnitudeDB), Phase: points(b.PhaseDeg), WorstGain: points(b.WorstMagnitudeDB), WorstPhase: points(b.WorstPhaseDeg),
+		Crossover: hz(b.CrossoverRadS), PhaseCross: hz(b.PhaseCrossRadS), PM: b.PhaseMarginDeg, GM: b.GainMarginDB}
+}
+
 // response is an open loop in dB and degrees, the phase unwrapped from below.
 func response(m model.Linear, g design.Gains, w []float64) (db, deg []float64) {
 	l, err := design.OpenLoop(m, g, w)

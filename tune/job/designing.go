@@ -175,6 +175,7 @@ func (j *Job) showDesign() {
 		if !j.NoChange {
 			d.Notes = append(d.Notes, j.Proposals[j.Chosen].Notes...)
 		}
+		d.Bode = bodeView(bode(j.loopModel(j.Fit.Best()), *j.Gains, *j.Margins, j.Worst))
 		d.SetPoint = j.VerifySpeed()
 		if pts, volts, err := j.forecastStep(*j.Gains, d.SetPoint); err == nil {
 			d.Step, d.Drive = pts, volts

@@ -251,6 +251,16 @@ type Candidate struct {
 	Chosen                              bool
 }
 
+// BodeView is an open loop over frequency; T of the points is the logarithm of the
+// frequency in Hz to base 10. Worst is that of the worst draw.
+type BodeView struct {
+	Gain, Phase           []Point // dB, degrees
+	WorstGain, WorstPhase []Point
+	// Crossovers, log10 Hz, and the margins there, degrees and dB; nil where there is none.
+	Crossover, PhaseCross *float64
+	PM, GM                *float64
+}
+
 // DesignView is the proposal.
 type DesignView struct {
 	MsMax      float64
@@ -269,6 +279,7 @@ type DesignView struct {
 	Notes      []string
 	CanBeMoved bool // the bound can be stepped now
 
+	Bode       BodeView
 	ByHand     bool // a person is at the gains
 	Keys       int  // that can be taken back
 	BeforeStep []Point
