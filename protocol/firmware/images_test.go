@@ -10,31 +10,18 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
-	"sync"
 	"testing"
 	"time"
 
 	"gainwright/protocol"
+	"gainwright/protocol/firmware/emulate"
 )
 
-var building sync.Mutex
-
-// needImage builds a part of what can be built here, once, and returns the path of
-// one file of it, or skips with a word.
+// needImage returns the path of one file of a part of what can be built here, or
+// skips with a word.
 func needImage(t *testing.T, programs []string, part, name string) string {
 	t.Helper()
-	for _, p := range programs {
-		need(t, p)
-	}
-	building.Lock()
-	defer building.Unlock()
-	dir := filepath.Join(buildDir, "images")
-	path := filepath.Join(dir, name)
-	if _, err := os.Stat(path); err != nil {
-		if msg, err := exec.Command("sh", "boards/build.sh", dir, part).CombinedOutput(); err != nil {
-			t.Fatalf("boards/build.sh: %v\n%s", err, msg)
-		}
-	}
+	path := filepath.Join(emulate.Images(t, part, programs...), name)
 	if _, err := os.Stat(path); err != nil {
 		t.Skipf("%s was not built: a library is missing", name)
 	}

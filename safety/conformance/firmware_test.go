@@ -18,7 +18,7 @@ func (l emulated) Write(p []byte) error {
 
 func (l emulated) Read(until time.Duration) ([]byte, error) {
 	for l.Err() == nil && l.Now() < until {
-		l.Advance(l.Now() + time.Millisecond)
+		l.Advance(l.Now() + max(time.Millisecond, min(4*time.Millisecond, until-l.Now())))
 		if b := l.Output(); len(b) > 0 {
 			return b, nil
 		}

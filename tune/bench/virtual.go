@@ -16,10 +16,13 @@ import (
 )
 
 // Quanta of virtual time. The wire is looked at every quantum, the console's
-// tick comes as often as the live one's.
+// tick comes as often as the live one's. Firmware is given its time in larger
+// pieces, as an adapter on USB hands on what comes in: each piece costs a way to
+// another process and back.
 const (
-	quantum  = time.Millisecond
-	tickEach = 10 * time.Millisecond
+	quantum       = time.Millisecond
+	hostedQuantum = 5 * time.Millisecond
+	tickEach      = 10 * time.Millisecond
 )
 
 // FarEnd is a board whose time the bench owns: a simulated rig, or firmware on an
@@ -38,6 +41,7 @@ type FarEnd interface {
 // jobs, byte for byte.
 type Virtual struct {
 	s      *session
+	unit   time.Duration // what step lets pass
 	far    FarEnd
 	rig    *simrig.Rig // far, where it is a simulated rig; else nil
 	wire   virtualWire
@@ -59,17 +63,17 @@ const budgetMax = time.Hour
 // shows.
 func NewVirtual(rig *simrig.Rig, start time.Time) *Virtual {
 	c := rig.Config().Board
-	return newVirtual(rig, rig, c.Baud, time.Duration(c.BootMS)*time.Millisecond, start)
+	return newVirtual(rig, rig, quantum, c.Baud, time.Duration(c.BootMS)*time.Millisecond, start)
 }
 
 // NewHosted puts firmware on the bench that runs in a time of its own, and has
 // started.
 func NewHosted(far FarEnd, baud int, start time.Time) *Virtual {
-	return newVirtual(far, nil, baud, 0, start)
+	return newVirtual(far, nil, hostedQuantum, baud, 0, start)
 }
 
-func newVirtual(far FarEnd, rig *simrig.Rig, baud int, boot time.Duration, start time.Time) *Virtual {
-	v := &Virtual{far: far, rig: rig, start: start, budget: budgetMax}
+func newVirtual(far FarEnd, rig *simrig.Rig, unit time.Duration, baud int, boot time.Duration, start time.Time) *Virtual {
+	v := &Virtual{unit: unit, far: far, rig: rig, start: start, budget: budgetMax}
 	v.wire = virtualWire{baud: baud, now: func() time.Duration { return v.s.now }}
 	v.s = &session{opened: true}
 	v.s.core = supervisor.NewCore(&v.wire, v.s, 1)
@@ -140,7 +144,7 @@ func (v *Virtual) run(d time.Duration) {
 // step lets one quantum pass: lines reach the board, the board works, its bytes
 // reach the console, the console ticks, the operator acts.
 func (v *Virtual) step() {
-	v.s.now += quantum
+	v.s.now += v.unit
 	if v.trial != nil && v.trial.step(v) {
 		return
 	}

@@ -5,12 +5,9 @@
 package emulate
 
 import (
-	"errors"
 	"fmt"
 	"os"
-	"os/exec"
 	"path/filepath"
-	"strings"
 	"testing"
 	"time"
 )
@@ -28,7 +25,7 @@ type Board struct {
 type machine interface {
 	// receive puts bytes on the line to the board.
 	receive(p []byte) error
-	// step lets time pass, a whole number of µs, and returns what was sent.
+	// step lets time pass, a whole number of units, and returns what was sent.
 	step(d time.Duration) ([]byte, error)
 	// restart resets the chip; what lasts without power stays.
 	restart() error
@@ -37,7 +34,7 @@ type machine interface {
 	hand() error
 }
 
-// unit is the time that a board is given at once.
+// unit is what the time that a board is given is a multiple of.
 const unit = time.Millisecond
 
 // Now is the time that the board was given so far.
@@ -54,9 +51,9 @@ func (b *Board) try(err error) {
 
 // Advance gives the board its time up to to, in whole ms.
 func (b *Board) Advance(to time.Duration) {
-	for b.err == nil && b.now+unit <= to {
-		p, err := b.run.step(unit)
-		b.now += unit
+	if d := (to - b.now).Truncate(unit); b.err == nil && d > 0 {
+		p, err := b.run.step(d)
+		b.now += d
 		b.out = append(b.out, p...)
 		b.try(err)
 	}
@@ -110,7 +107,7 @@ func (b *Board) Memory() (static, stack int, ok bool) {
 // that it needs is not installed, and ends the board with the test.
 func Host(t testing.TB, fixed bool) *Board {
 	t.Helper()
-	out := build(t, "host", "gcc")
+	out := Images(t, "host", "gcc")
 	name := "gwhost"
 	if fixed {
 		name = "gwhost-fixed"
@@ -122,7 +119,7 @@ func Host(t testing.TB, fixed bool) *Board {
 // boards/build.sh makes.
 func ATmega328P(t testing.TB, image string) *Board {
 	t.Helper()
-	out := build(t, "avr", "gcc", "avr-gcc")
+	out := Images(t, "avr", "gcc", "avr-gcc")
 	runner := filepath.Join(out, "avrrun")
 	if _, err := os.Stat(runner); err != nil {
 		t.Skip("libsimavr is not installed")
@@ -133,7 +130,7 @@ func ATmega328P(t testing.TB, image string) *Board {
 // CortexM3 runs the image of the machine mps2-an385 whose time is given to it.
 func CortexM3(t testing.TB) *Board {
 	t.Helper()
-	out := build(t, "arm", "arm-none-eabi-gcc", "qemu-system-arm")
+	out := Images(t, "arm", "arm-none-eabi-gcc", "qemu-system-arm")
 	return started(t, startStepped(t, out))
 }
 
@@ -144,51 +141,4 @@ func started(t testing.TB, m machine) *Board {
 		t.Fatal(b.err)
 	}
 	return b
-}
-
-// build makes a part of the images in a folder of the test's own.
-func build(t testing.TB, part string, programs ...string) string {
-	t.Helper()
-	for _, p := range programs {
-		if _, err := exec.LookPath(p); err != nil {
-			t.Skipf("%s is not installed", p)
-		}
-	}
-	dir, err := source(t)
-	if err != nil {
-		t.Fatal(err)
-	}
-	out := t.TempDir()
-	cmd := exec.Command("sh", "boards/build.sh", out, part)
-	cmd.Dir = dir
-	if msg, err := cmd.CombinedOutput(); err != nil {
-		t.Fatalf("boards/build.sh %s: %v\n%s", part, err, msg)
-	}
-	return out
-}
-
-// source finds protocol/firmware and reads its files, so that a result that go
-// test keeps ends with a change of one.
-func source(t testing.TB) (string, error) {
-	t.Helper()
-	dir, err := os.Getwd()
-	if err != nil {
-		return "", err
-	}
-	for ; ; dir = filepath.Dir(dir) {
-		if _, err := os.Stat(filepath.Join(dir, "go.mod")); err == nil {
-			break
-		}
-		if dir == filepath.Dir(dir) {
-			return "", errors.New("emulate: no go.mod above the working directory")
-		}
-	}
-	dir = filepath.Join(dir, "protocol", "firmware")
-	return dir, filepath.WalkDir(dir, func(path string, d os.DirEntry, err error) error {
-		if err != nil || d.IsDir() || strings.HasSuffix(path, ".go") {
-			return err
-		}
-		_, err = os.ReadFile(path)
-		return err
-	})
 }

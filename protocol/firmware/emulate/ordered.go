@@ -22,22 +22,41 @@ func startOrdered(t testing.TB, name string, args ...string) *ordered {
 	t.Helper()
 	cmd := exec.Command(name, args...)
 	cmd.Stderr = os.Stderr
-	in, err := cmd.StdinPipe()
+	in, out, err := begin(cmd)
 	if err != nil {
-		t.Fatal(err)
-	}
-	out, err := cmd.StdoutPipe()
-	if err != nil {
-		t.Fatal(err)
-	}
-	if err := cmd.Start(); err != nil {
 		t.Fatal(err)
 	}
 	t.Cleanup(func() {
 		in.Close()
 		_ = cmd.Wait() // the end of its input ends it, one way or another
+		out.Close()
 	})
 	return &ordered{in: in, out: bufio.NewReader(out)}
+}
+
+// begin starts a program with pipes for its standard input and output. The pipes
+// block: with a million short orders to a test the thread that waits for an answer
+// costs much less than the runtime's looking for another that could run.
+func begin(cmd *exec.Cmd) (in, out *os.File, err error) {
+	theirIn, in, err := os.Pipe()
+	if err != nil {
+		return nil, nil, err
+	}
+	defer theirIn.Close()
+	out, theirOut, err := os.Pipe()
+	if err != nil {
+		in.Close()
+		return nil, nil, err
+	}
+	defer theirOut.Close()
+	in.Fd() // makes it block
+	out.Fd()
+	cmd.Stdin, cmd.Stdout = theirIn, theirOut
+	if err = cmd.Start(); err != nil {
+		in.Close()
+		out.Close()
+	}
+	return in, out, err
 }
 
 func (p *ordered) order(op byte, arg uint32, payload []byte) ([]byte, error) {

@@ -1,12 +1,12 @@
 package emulate
 
 import (
-	"bufio"
 	"fmt"
 	"io"
 	"os"
 	"os/exec"
 	"path/filepath"
+	"sync/atomic"
 	"testing"
 	"time"
 )
@@ -16,18 +16,21 @@ import (
 // boards/mps2-an385/main.c says. The counts of bytes in both directions make the
 // order of events the same in every run.
 type stepped struct {
-	line   io.Writer
-	sent   io.Reader
-	time   io.Writer
-	pipe   *os.File // where answer comes from
-	answer *bufio.Reader
-	queue  []byte // not yet on the line
-	in     byte   // bytes put on the line, modulo 256
-	out    byte   // bytes taken off it, modulo 256
+	line   *os.File
+	sent   *os.File
+	time   *os.File
+	answer *os.File
+	asked  atomic.Uint64 // odd while an answer is waited for
+	queue  []byte        // not yet on the line
+	in     byte          // bytes put on the line, modulo 256
+	out    byte          // bytes taken off it, modulo 256
+	one    [1]byte
 }
 
 const (
 	stepBase  = 0x80 // a control period, with seven bits of the count of bytes
+	stepMany  = 0    // so many control periods
+	stepsMax  = 16   // in one order; the bytes that are sent in them can be told
 	stepHand  = 'h'
 	stepReset = 'x'
 	stepUp    = 'r' // what the image says after a start
@@ -36,7 +39,7 @@ const (
 
 func startStepped(t testing.TB, dir string) *stepped {
 	t.Helper()
-	pipe := filepath.Join(dir, "time")
+	pipe := filepath.Join(t.TempDir(), "time")
 	in, answer, err := fifos(pipe)
 	if err != nil {
 		t.Fatal(err)
@@ -45,27 +48,34 @@ func startStepped(t testing.TB, dir string) *stepped {
 		"-display", "none", "-monitor", "none", "-nodefaults", "-chardev", "stdio,id=u0,signal=off", "-chardev", "pipe,id=u1,path="+pipe,
 		"-serial", "chardev:u0", "-serial", "chardev:u1")
 	cmd.Stderr = os.Stderr
-	line, err := cmd.StdinPipe()
+	line, sent, err := begin(cmd)
 	if err != nil {
 		t.Fatal(err)
 	}
-	sent, err := cmd.StdoutPipe()
-	if err != nil {
-		t.Fatal(err)
-	}
-	if err := cmd.Start(); err != nil {
-		t.Fatal(err)
-	}
+	s := &stepped{line: line, sent: sent, time: in, answer: answer}
+	over := make(chan struct{})
 	t.Cleanup(func() {
+		close(over)
 		_ = cmd.Process.Kill()
 		_ = cmd.Wait()
-		in.Close()
-		answer.Close()
+		for _, f := range []*os.File{line, sent, in, s.answer} {
+			f.Close()
+		}
 	})
-	s := &stepped{line: line, sent: sent, time: in, pipe: answer, answer: bufio.NewReader(answer)}
+	if err := answer.SetReadDeadline(time.Now().Add(patience)); err != nil {
+		t.Fatal(err)
+	}
 	if err := s.up(); err != nil {
 		t.Fatal(err)
 	}
+	// The machine has its end open now. An end that can only be read, and blocks,
+	// tells when the machine is gone.
+	if s.answer, err = os.Open(pipe + ".out"); err != nil {
+		t.Fatal(err)
+	}
+	answer.Close()
+	s.answer.Fd()
+	go s.watch(cmd.Process, over)
 	return s
 }
 
@@ -73,16 +83,31 @@ func startStepped(t testing.TB, dir string) *stepped {
 // only there so that one that hangs fails a test.
 const patience = 10 * time.Second
 
+// watch ends a machine that does not answer.
+func (s *stepped) watch(p *os.Process, over <-chan struct{}) {
+	for {
+		was := s.asked.Load()
+		select {
+		case <-over:
+			return
+		case <-time.After(patience):
+		}
+		if was%2 == 1 && s.asked.Load() == was {
+			_ = p.Kill()
+			return
+		}
+	}
+}
+
 // next is the next byte of an answer.
 func (s *stepped) next() (byte, error) {
-	if err := s.pipe.SetReadDeadline(time.Now().Add(patience)); err != nil {
-		return 0, err
-	}
-	b, err := s.answer.ReadByte()
+	s.asked.Add(1)
+	_, err := io.ReadFull(s.answer, s.one[:])
+	s.asked.Add(1)
 	if err != nil {
 		err = fmt.Errorf("emulate: the machine does not answer: %w", err)
 	}
-	return b, err
+	return s.one[0], err
 }
 
 // up waits until the image says that it has started.
@@ -106,16 +131,23 @@ func (s *stepped) receive(p []byte) error {
 
 func (s *stepped) step(d time.Duration) ([]byte, error) {
 	var out []byte
-	for ; d > 0; d -= time.Millisecond {
+	for d > 0 {
 		n := min(len(s.queue), lineMS)
+		order, lasts := byte(0), time.Duration(1)
 		if n > 0 {
 			if _, err := s.line.Write(s.queue[:n]); err != nil {
 				return out, err
 			}
 			s.queue = s.queue[n:]
 			s.in += byte(n)
+			order = stepBase | s.in&0x7F
+		} else {
+			lasts = min(d/time.Millisecond, stepsMax)
+			order = stepMany + byte(lasts)
 		}
-		if _, err := s.time.Write([]byte{stepBase | s.in&0x7F}); err != nil {
+		d -= lasts * time.Millisecond
+		s.one[0] = order
+		if _, err := s.time.Write(s.one[:]); err != nil {
 			return out, err
 		}
 		count, err := s.next()
@@ -123,11 +155,11 @@ func (s *stepped) step(d time.Duration) ([]byte, error) {
 			return out, err
 		}
 		if more := int(count - s.out); more > 0 {
-			p := make([]byte, more)
-			if _, err := io.ReadFull(s.sent, p); err != nil {
+			at := len(out)
+			out = append(out, make([]byte, more)...)
+			if _, err := io.ReadFull(s.sent, out[at:]); err != nil {
 				return out, err
 			}
-			out = append(out, p...)
 			s.out = count
 		}
 	}

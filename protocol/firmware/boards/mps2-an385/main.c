@@ -6,6 +6,8 @@
  *   80 hex and up   a control period, once as many bytes have come on the line as
  *                   the lower seven bits say, modulo 128; answered by a byte, the
  *                   number of bytes sent on the line, modulo 256
+ *   01 to 10 hex     so many control periods, with no bytes on the line in them;
+ *                   answered as one is
  *   h               a hand turns the shaft a turn, in two seconds; answered by h
  *   x               reset
  * After a start it sends r. An order waits for the answer of the one before. */
@@ -196,6 +198,19 @@ static void step_say(uint8_t b)
 	STEP_DATA = b;
 }
 
+/* period is a control period, and what the board does beside it. */
+static void period(void)
+{
+	board_motor_hand(hand > 0);
+	if (hand > 0)
+		hand--;
+	tick();
+	for (uint8_t i = 0; i < 10; i++) {
+		gw_poll();
+		send();
+	}
+}
+
 /* obey does what the order in hand says, once it can. */
 static void obey(void)
 {
@@ -211,14 +226,14 @@ static void obey(void)
 	if (o & 0x80u) {
 		if (((rx_count ^ o) & 0x7Fu) != 0)
 			return;
-		board_motor_hand(hand > 0);
-		if (hand > 0)
-			hand--;
-		tick();
-		for (uint8_t i = 0; i < 10; i++) {
-			gw_poll();
-			send();
-		}
+		period();
+		order = 0;
+		step_say(tx_count);
+		return;
+	}
+	if (o <= 16u) {
+		for (; o > 0; o--)
+			period();
 		order = 0;
 		step_say(tx_count);
 		return;
