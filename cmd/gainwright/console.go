@@ -75,15 +75,16 @@ func consoleCommand() *cobra.Command {
 // demoCommand opens the console on a built-in rig behind a pseudo-terminal.
 func demoCommand() *cobra.Command {
 	var f consoleFlags
-	var simFile, rigFile string
+	var simFile, rigFile, twin string
 	c := &cobra.Command{
 		Use: "demo", Short: "open the console on a built-in simulated rig", Args: cobra.NoArgs,
 		Long: "demo opens the console on a built-in simulated rig: a board in software behind a pseudo-terminal that is opened\n" +
 			"like any port. Nothing real moves. On screen, t turns its shaft by hand and o switches its power or works\n" +
 			"the input that is asked for.",
-		RunE: func(c *cobra.Command, _ []string) error { return openDemo(f, simFile, rigFile, nil) },
+		RunE: func(c *cobra.Command, _ []string) error { return openDemo(f, demoOn{simFile, rigFile, twin}, nil) },
 	}
 	c.Flags().StringVar(&simFile, "sim", "", "another simulated board (TOML)")
+	c.Flags().StringVar(&twin, "twin", "", "record: rehearse on a simulated rig made of its model, its friction and its board")
 	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order")
@@ -91,17 +92,50 @@ func demoCommand() *cobra.Command {
 	return c
 }
 
+// demoOn says which simulated rig a demo is on: that of a file, or the twin of a
+// record, or the built-in one.
+type demoOn struct{ sim, rig, twin string }
+
+// read returns the simulated rig and the text of its rig file.
+func (on demoOn) read() (cfg simrig.Config, text []byte, err error) {
+	if on.twin != "" {
+		if on.sim != "" || on.rig != "" {
+			return cfg, nil, errors.New("--twin makes rig and rig file of a record: leave --sim and --rig out")
+		}
+		t, err := readTwin(on.twin)
+		return t.Config, t.RigText, err
+	}
+	if cfg, err = demoConfig(on.sim); err != nil {
+		return cfg, nil, err
+	}
+	if on.rig != "" {
+		_, text, err = readRig(on.rig)
+	} else {
+		_, text, err = bench.RigOf(cfg)
+	}
+	return cfg, text, err
+}
+
+// readTwin makes the twin of a record.
+func readTwin(dir string) (bench.Twin, error) {
+	r, _, err := openSheet(dir)
+	if err != nil {
+		return bench.Twin{}, err
+	}
+	t, err := bench.TwinOf(r)
+	if errors.Is(err, bench.ErrNoTwin) {
+		err = &exitError{exitRefused, err}
+	}
+	return t, err
+}
+
 // openDemo opens the console on a simulated rig behind a pseudo-terminal. bend, if
 // set, changes rig and options before they are used, and returns what is to be told
 // of both once they are there.
-func openDemo(f consoleFlags, simFile, rigFile string, bend func(*simrig.Config, *bench.Options) func(*bench.Served, *bench.Live)) error {
-	cfg, err := demoConfig(simFile)
-	if err != nil {
-		return usage(err)
-	}
-	_, text, err := bench.RigOf(cfg)
-	if rigFile != "" {
-		_, text, err = readRig(rigFile)
+func openDemo(f consoleFlags, on demoOn, bend func(*simrig.Config, *bench.Options) func(*bench.Served, *bench.Live)) error {
+	cfg, text, err := on.read()
+	if _, said := errors.AsType[*exitError](err); said {
+		return err
 	}
 	if err != nil {
 		return usage(err)

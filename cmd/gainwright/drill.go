@@ -30,7 +30,7 @@ func drillCommand() *cobra.Command {
 				return usage(err)
 			}
 			var d *bench.Drill
-			err = openDemo(f, "", "", func(cfg *simrig.Config, o *bench.Options) func(*bench.Served, *bench.Live) {
+			err = openDemo(f, demoOn{}, func(cfg *simrig.Config, o *bench.Options) func(*bench.Served, *bench.Live) {
 				d = bench.NewDrill(scene, seed, cfg, o)
 				return d.Serve
 			})

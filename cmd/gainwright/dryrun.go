@@ -1,6 +1,7 @@
 package main
 
 import (
+	"errors"
 	"fmt"
 	"os"
 	"slices"
@@ -15,18 +16,27 @@ import (
 
 // dryrunCommand does the whole job unattended on a simulated rig in virtual time.
 func dryrunCommand() *cobra.Command {
-	var simFile, rigFile, out, jobFile string
+	var simFile, rigFile, out, jobFile, twin string
 	var also []string
 	var seed uint64
 	var asJSON bool
 	c := &cobra.Command{
-		Use: "dryrun --sim BOARD.toml --out DIR", Short: "do the whole job unattended on a simulated rig", Args: cobra.NoArgs,
+		Use: "dryrun --sim BOARD.toml|--twin SHEET_DIR --out DIR", Short: "do the whole job unattended on a simulated rig", Args: cobra.NoArgs,
 		RunE: func(c *cobra.Command, _ []string) error {
-			cfg, err := simrig.Load(simFile)
-			if err != nil {
+			if (simFile == "") == (twin == "") {
+				return usage(errors.New("give one of --sim and --twin"))
+			}
+			o := bench.DryRun{Seed: seed, Dir: out, Program: "gainwright " + versionWords(), Start: time.Now()}
+			var err error
+			if twin != "" {
+				t, err := readTwin(twin)
+				if err != nil {
+					return err
+				}
+				o.Config, o.Rig, o.RigText = t.Config, t.Rig, t.RigText
+			} else if o.Config, err = simrig.Load(simFile); err != nil {
 				return usage(err)
 			}
-			o := bench.DryRun{Config: cfg, Seed: seed, Dir: out, Program: "gainwright " + versionWords(), Start: time.Now()}
 			if o.Also, err = optionalSteps(also); err != nil {
 				return usage(err)
 			}
@@ -61,13 +71,13 @@ func dryrunCommand() *cobra.Command {
 	}
 	f := c.Flags()
 	f.StringVar(&simFile, "sim", "", "simulated board (TOML)")
+	f.StringVar(&twin, "twin", "", "record: do the job on a simulated rig made of its model, its friction and its board")
 	f.StringVar(&rigFile, "rig", "", "rig file; without it the nameplate of the simulated board is the envelope")
 	f.StringVar(&out, "out", "", "folder for the record; it must not exist or be empty")
 	f.StringVar(&jobFile, "job", "", "job file: which steps in which order; without it the whole path")
 	f.StringSliceVar(&also, "also", nil, "optional steps to be done as well, by their ids; all does every one")
 	f.Uint64Var(&seed, "seed", 1, "start of all random numbers")
 	f.BoolVar(&asJSON, "json", false, "print one JSON object")
-	must(c.MarkFlagRequired("sim"))
 	must(c.MarkFlagRequired("out"))
 	return c
 }
