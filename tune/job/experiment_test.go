@@ -49,3 +49,20 @@ func TestMethodsDisagree(t *testing.T) {
 		t.Errorf("apart inside their ±: %v", rec.Reasons)
 	}
 }
+
+// A fit that other methods contradict is used with care, and says why; one that they
+// bear out, or that was refused by itself, stays as it is.
+func TestOtherMethodsLowerTheVerdict(t *testing.T) {
+	against := &sheet.ExperimentRecord{Verdict: string(identify.Care), Reasons: []string{"gain by the relay is 9 of its ± away"}}
+	if v, why := judged(identify.Believed, nil, against); v != identify.Care || len(why) != 1 || !strings.Contains(why[0], "methods disagree: gain by the relay") {
+		t.Errorf("%v, %q", v, why)
+	}
+	if v, why := judged(identify.Refused, []string{"saturated"}, against); v != identify.Refused || len(why) != 1 {
+		t.Errorf("%v, %q", v, why)
+	}
+	for _, m := range []*sheet.ExperimentRecord{nil, {Verdict: string(identify.Believed)}} {
+		if v, why := judged(identify.Believed, nil, m); v != identify.Believed || why != nil {
+			t.Errorf("%v, %q", v, why)
+		}
+	}
+}

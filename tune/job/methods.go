@@ -60,8 +60,32 @@ func (j *Job) methods() error {
 	if j.SecondTrace != nil {
 		traces, files = append(traces, j.SecondTrace), append(files, j.SecondFile)
 	}
-	_, err := j.experiment(set, traces, files)
-	return err
+	if _, err := j.experiment(set, traces, files); err != nil {
+		return err
+	}
+	j.showModel()
+	return nil
+}
+
+// judged is a verdict with its reasons after the other methods had their say: what
+// they contradict is used with care at most, whatever its own record says.
+func judged(own identify.Verdict, why []string, methods *sheet.ExperimentRecord) (identify.Verdict, []string) {
+	if methods == nil || methods.Verdict == string(identify.Believed) || own == identify.Refused {
+		return own, why
+	}
+	out := append([]string(nil), why...)
+	for _, r := range methods.Reasons {
+		out = append(out, "methods disagree: "+r)
+	}
+	return identify.Care, out
+}
+
+// judgedOf is judged for a fit of this job.
+func (j *Job) judgedOf(f *identify.Fit) (identify.Verdict, []string) {
+	if rec, ok := j.Experiments[StepMethods]; ok {
+		return judged(f.Verdict, f.Reasons, &rec)
+	}
+	return f.Verdict, f.Reasons
 }
 
 // coastVoltsOf adds the dry friction of the coast-down in volts at the drive:

@@ -80,6 +80,7 @@ func (j *Job) doFit() (result, error) {
 		return "", refuse(730, "model", err.Error(), "repeat the step test, larger if the envelope allows it")
 	}
 	j.Fit = &res
+	delete(j.Experiments, StepMethods) // of the fit before
 	j.NewSet, j.Gains, j.Margins, j.NoChange, j.Refused = nil, nil, nil, false, ""
 	j.showModel()
 	best := res.Best()
@@ -104,7 +105,8 @@ func (j *Job) doFit() (result, error) {
 	if err := errors.Join(j.methods(), j.motorBox()); err != nil {
 		return "", err
 	}
-	return result(fmt.Sprintf("%s, %s: %s", best.Model.Kind, best.Verdict, paramWords(*best))), nil
+	verdict, _ := j.judgedOf(best)
+	return result(fmt.Sprintf("%s, %s: %s", best.Model.Kind, verdict, paramWords(*best))), nil
 }
 
 // fitSettings are what the fit is told on the records at hand.
@@ -284,7 +286,8 @@ func (j *Job) showModel() {
 	if show == nil {
 		show = &res.Models[0]
 	}
-	m.Verdict, m.Reasons, m.Helps = string(show.Verdict), show.Reasons, show.Helps
+	verdict, why := j.judgedOf(show)
+	m.Verdict, m.Reasons, m.Helps = string(verdict), why, show.Helps
 	for _, p := range show.Params {
 		v, pm, unit := p.Value, 1.96*p.SD, p.Unit
 		if unit == "s" {

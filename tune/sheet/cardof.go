@@ -130,6 +130,10 @@ func (d *CardData) results(r *Reader) {
 			Gain: gain.Value, GainPM: gain.PlusMinus, Tau: tau.Value, TauPM: tau.PlusMinus,
 			DeadTime: dead.Value, DeadPM: dead.PlusMinus, Verdict: fit.Verdict,
 		}
+		var methods ExperimentRecord
+		if r.LastJSON(KindExperiment, NameMethods, &methods) == nil && methods.Verdict != "believed" && d.Model.Verdict == "believed" {
+			d.Model.Verdict = "care" // other methods contradict it
+		}
 		second := param(fit, "tau2")
 		d.Model.Tau2, d.Model.Tau2PM = second.Value, second.PlusMinus
 	}

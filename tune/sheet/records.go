@@ -17,6 +17,7 @@ const (
 	NameLimitsHeld   = "limits-held"   // KindEvent, with Limits
 	NameNoAdjustment = "no-adjustment" // KindEvent: the gains as found were good enough
 	NameAsFoundStep  = "as-found-step" // KindEvent, AsFoundStepRecord
+	NameMethods      = "methods"       // KindExperiment: what different tests say of the same numbers
 	NameDrill        = "drill"         // KindEvent, DrillRecord
 	NameSinceLast    = "since-last"    // KindEvent, EventRecord: as found against an earlier as-left
 )
