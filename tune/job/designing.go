@@ -38,9 +38,14 @@ func (j *Job) Nudge(by int) {
 	_ = j.Do(StepDesign)
 }
 
-// noiseShare is the share of the drive by which one step of the reported speed may
-// move it (our choice).
-const noiseShare = 0.15
+// By how much one step of the reported speed may move the drive: a share of its
+// range, and of what friction leaves of the drive over back-EMF that closed-loop
+// runs may use. Over the second, counts alone would pass the current limit however
+// slowly the setpoint moves (our choice).
+const (
+	noiseShare     = 0.15
+	noiseOverdrive = 0.5
+)
 
 // NoiseGainMax is the bound on the noise gain of proposals, in V of drive per
 // rad/s; 0 where the speed step is not known.
@@ -49,7 +54,11 @@ func (j *Job) NoiseGainMax() float64 {
 	if step <= 0 {
 		return 0
 	}
-	return noiseShare * float64(j.Env.VoltsMax) / step
+	volts := noiseShare * float64(j.Env.VoltsMax)
+	if over, _ := j.overdrive(); over > 0 {
+		volts = math.Min(volts, noiseOverdrive*math.Max(over-j.slidingVolts(), 0.1*over))
+	}
+	return volts / step
 }
 
 // designSettings is what the proposal of this job depends on beside the fit. The

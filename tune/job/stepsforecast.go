@@ -31,6 +31,7 @@ const (
 // stepsForecast is a run of steps on motors drawn from the ± of the fit, each seen
 // through counts, speed window and telemetry as the board's own run is.
 type stepsForecast struct {
+	count  float64 // rad/s, one speed step
 	draws  [][]course
 	line   design.Run  // of the fitted model itself
 	speeds [][]float64 // of the draws, on the times of line
@@ -40,7 +41,7 @@ type stepsForecast struct {
 func (j *Job) forecastSteps(plan safety.Plan, levels []float64, hold time.Duration, draws int) (*stepsForecast, error) {
 	fit, g := j.Fit.Best(), *j.closing()
 	parts := planParts(plan)
-	out := &stepsForecast{}
+	out := &stepsForecast{count: j.sizing().SpeedStep}
 	var err error
 	if out.line, err = j.simulateLoop(g, 0, parts); err != nil {
 		return nil, err
@@ -122,15 +123,16 @@ func (m StepMetrics) record(ripple float64) *sheet.StepResult {
 	return &sheet.StepResult{StepRadS: &m.Step, OvershootPercent: &m.Overshoot, SettlingTimeS: &m.Settling, SettlingBandRadS: &m.Band, RippleRadS: ptr(2 * ripple)}
 }
 
-// against measures the run and its forecast in the same band: 2 % of the step, or
-// what the mean of the steps shows at rest, measured or forecast.
+// against measures the run and its forecast in the same band: 2 % of the step, one
+// speed step, or
+// three times what the mean of the steps shows at rest, measured or forecast.
 func (f *stepsForecast) against(measured []course) (StepMetrics, StepBand) {
 	rest := make([]float64, len(f.draws))
 	for i, d := range f.draws {
 		rest[i] = meanCourse(d).bandOf()
 	}
 	slices.Sort(rest)
-	band := math.Max(meanCourse(measured).bandOf(), share(rest, 0.5))
+	band := math.Max(math.Max(meanCourse(measured).bandOf(), share(rest, 0.5)), f.count/math.Abs(measured[0].to-measured[0].from))
 	var over, settle []float64
 	for _, d := range f.draws {
 		m := measure(d, band)
