@@ -103,7 +103,7 @@ func unitStep(m model.Linear, g Gains, r float64, load bool) ([]float64, error) 
 		for len(y) < n {
 			v := p.speed()
 			y = append(y, v)
-			p.apply(c.next(r, v, 0))
+			p.apply(c.next(r, v, g.Feedforward.linear(r)))
 		}
 		recent, low, high := 0.0, math.Inf(1), math.Inf(-1)
 		for i, v := range y {

@@ -98,6 +98,15 @@ func SimulateLoop(m model.Linear, g Gains, sc Scenario) (Run, error) {
 	return run, nil
 }
 
+// linear is the part of the feed-forward that grows with the setpoint: what a unit
+// step sees of it.
+func (f *Feedforward) linear(r float64) float64 {
+	if f == nil {
+		return 0
+	}
+	return f.Speed * r
+}
+
 func (f *Feedforward) volts(r float64) float64 {
 	switch {
 	case f == nil || r == 0:

@@ -182,3 +182,27 @@ func TestScenarioRefuses(t *testing.T) {
 		t.Error("a continuous law was run as a sampled one")
 	}
 }
+
+// With the drive 1/K of its speed fed forward a loop without integral comes to the
+// setpoint all the same (motor equation: a steady speed needs ω/K volts), in the
+// unit step of the margins as in the simulation.
+func TestFeedForwardIsInTheUnitStep(t *testing.T) {
+	m := model.FirstOrder(20, 0.05, 0)
+	g := PI(0.05, 0, 1e-3, 0)
+	if y := mustStep(t, m, g); math.Abs(y-0.5) > 1e-3 {
+		t.Errorf("a proportional loop alone comes to %.4f, K·kp/(1 + K·kp) is 0.5", y)
+	}
+	g.Feedforward = &Feedforward{Speed: 1 / 20.0, StaticForward: 3}
+	if y := mustStep(t, m, g); math.Abs(y-1) > 1e-3 {
+		t.Errorf("with feed-forward it comes to %.4f, not 1", y)
+	}
+}
+
+func mustStep(t *testing.T, m model.Linear, g Gains) float64 {
+	t.Helper()
+	y, err := unitStep(m, g, 1, false)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return y[len(y)-1]
+}

@@ -133,7 +133,7 @@ func firstOvershoot(m model.Linear, g Gains, margins Margins) float64 {
 	for range min(n, 20000) {
 		y := p.speed()
 		top = math.Max(top, y)
-		p.apply(c.next(1, y, 0))
+		p.apply(c.next(1, y, g.Feedforward.linear(1)))
 	}
 	return 100 * math.Max(0, top-1)
 }

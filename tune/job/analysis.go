@@ -110,6 +110,8 @@ type DesignSettings struct {
 	// ByHand are the words of the set that a person chose instead of the rule's.
 	ByHand []string `json:"by_hand_words,omitempty"`
 
+	Feed *Feed `json:"feed_forward,omitempty"`
+
 	// The motors of the worst case.
 	Seed            uint64  `json:"worst_seed,string"`
 	GainMin         float64 `json:"worst_gain_min"` // factors; both 0: not varied
@@ -171,6 +173,7 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 		out.Gains, out.Margins = &held, out.Found
 		return out, nil
 	}
+	s.feedForward(loop, &out.Proposals[out.Chosen])
 	if err := s.round(&out, loop, running, id); err != nil {
 		return out, err
 	}

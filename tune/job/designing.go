@@ -68,7 +68,7 @@ func (j *Job) designSettings() DesignSettings {
 	s := DesignSettings{MsMax: j.opt.MsMax, Overshoot: j.Rig.Targets.Overshoot, Settling: j.Rig.Targets.Settling, Law: LawOf(j.ID),
 		DriveMax: float64(j.Env.VoltsMax), Found: j.Found.digits(), Running: j.Running.digits(),
 		Seed: uint64(j.opt.Seed), WarmMin: 0, WarmMax: 60, MagnetPerKelvin: -0.002}
-	s.Noise = j.NoiseGainMax()
+	s.Noise, s.Feed = j.NoiseGainMax(), j.feed()
 	s.GainMin, s.GainMax = gainSpread(j.Static)
 	return s
 }
@@ -179,8 +179,10 @@ func (j *Job) showDesign() {
 		g := j.Gains.Parallel()
 		d.Gains = []Fact{{Name: "Kp", Value: number(g.Kp) + " V/(rad/s)", Why: "largest integral gain with Ms under the bound, on the sampled loop with its exact dead time; rounded to binary32 as the board holds it"},
 			{Name: "Ki", Value: number(g.Ki) + " V/rad", Why: "as Kp"}, {Name: "setpoint weight", Value: number(g.SetpointWeight), Why: "lowered from 1 until the forecast overshoot keeps 0.8 of the target"}}
+		if !j.NoChange {
+			d.Gains = append(d.Gains, feedFact(*j.Gains, j.Proposals[j.Chosen].Notes))
+		}
 		d.Margins = append(marginFacts(*j.Margins), j.delayFact(*j.Margins, *j.Gains)...)
-		d.Notes = append(d.Notes, "feed-forward declined: the integral takes up friction; a feed-forward would be judged by verify only")
 		if !j.NoChange {
 			d.Notes = append(d.Notes, j.Proposals[j.Chosen].Notes...)
 		}

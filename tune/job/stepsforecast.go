@@ -124,8 +124,7 @@ func (m StepMetrics) record(ripple float64) *sheet.StepResult {
 }
 
 // against measures the run and its forecast in the same band: 2 % of the step, one
-// speed step, or
-// three times what the mean of the steps shows at rest, measured or forecast.
+// speed step, or three times what the mean of the steps shows at rest, measured or forecast.
 func (f *stepsForecast) against(measured []course) (StepMetrics, StepBand) {
 	rest := make([]float64, len(f.draws))
 	for i, d := range f.draws {
