@@ -309,6 +309,7 @@ func begin(s Screen, v *job.View, _ string) (Screen, intents) {
 		return s, nil
 	}
 	s.picked, s.why = PageNone, false
+	s.rowPage, s.row = PageNone, 0 // the path is at the job again once the step is over
 	return s, intents{job.DoStep{Step: id}}
 }
 

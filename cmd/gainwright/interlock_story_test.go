@@ -76,22 +76,7 @@ func TestInterlocksAndInchByKeys(t *testing.T) {
 		if v := p.live.View(); v.Drive.Enabling != "held" || !strings.Contains(p.see(), "enabling switch: held") {
 			t.Errorf("the enabling switch is %q:\n%s", v.Drive.Enabling, p.see())
 		}
-		p.step(job.StepInterlocks)
-		p.works(2 + 2 + 3)
-		p.write("cd")
-		for range 2 { // E-stop, guard: trips
-			p.runs()
-			p.works(1) // somebody opened it in motion; back again
-			p.again("e", func(v *job.View) bool { return v.Drive.Acked })
-			p.again("z", phase("DISARMED"))
-		}
-		for range 2 { // the enabling switch stops, it does not trip
-			p.runs()
-			p.until("stopped", phase("DISARMED"))
-			p.works(1)
-		}
-		p.write("cd")
-		p.done(job.StepInterlocks)
+		p.interlockWalk()
 		p.press("i")
 		if see := p.see(); !strings.Contains(see, "passed") || !strings.Contains(see, "by the board") {
 			t.Errorf("the interlocks page:\n%s", see)
@@ -115,6 +100,90 @@ func TestInterlocksAndInchByKeys(t *testing.T) {
 		}
 		if report := sheet.Report(r.Dir()); !strings.Contains(report, "pressed through") || !strings.Contains(report, "witnessed by") {
 			t.Error("the report has no interlock table")
+		}
+	})
+}
+
+// interlockWalk works every input in both states and stops the shaft by each.
+func (p *person) interlockWalk() {
+	p.t.Helper()
+	p.step(job.StepInterlocks)
+	p.works(2 + 2 + 3)
+	p.write("cd")
+	for range 2 { // E-stop, guard: trips
+		p.runs()
+		p.works(1) // somebody opened it in motion; back again
+		p.again("e", func(v *job.View) bool { return v.Drive.Acked })
+		p.again("z", phase("DISARMED"))
+	}
+	for range 2 { // the enabling switch stops, it does not trip
+		p.runs()
+		p.until("stopped", phase("DISARMED"))
+		p.works(1)
+	}
+	p.write("cd")
+	p.done(job.StepInterlocks)
+}
+
+// The commissioning walk by keys, from cable to signature: checklist, interlocks,
+// silence and limit seen working, the run-up with its notes, experiments, gains,
+// verify, acceptance list, card and report.
+func TestCommissioningByKeys(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		p := atInterlocks(t)
+		defer p.leave()
+		p.upTo(job.StepInterlocks)
+		p.interlockWalk()
+		p.upToFrom(job.StepLimits, job.StepStep)
+		p.goTo(job.StepRunUp)
+		for i := range 5 {
+			p.runs()
+			p.until("the question for a note, at rest", func(v *job.View) bool { return asked(job.AskText)(v) && !v.Drive.Moving })
+			if i == 4 {
+				p.write("hums at this speed")
+			} else {
+				p.again("enter", func(v *job.View) bool { return v.Ask == nil || v.Ask.Kind != job.AskText })
+			}
+		}
+		p.done(job.StepRunUp)
+		p.press("b") // from the path, where it is still selected
+		p.upToFrom(job.StepStep, job.StepAsLeft)
+		p.goTo(job.StepAcceptance)
+		p.write("CD")
+		for _, key := range []string{"y", "y", "n"} {
+			p.answers(key)
+		}
+		p.done(job.StepAcceptance)
+		p.press("b")
+		p.upToFrom(job.StepAsLeft, "")
+		card := p.live.View().Card
+		for _, want := range []string{"run-up in 5 levels", "acceptance list: 2 of 3 passed, witnessed by CD", "inputs at creep", "done by"} {
+			if !strings.Contains(card, want) {
+				t.Errorf("%q is not on the card:\n%s", want, card)
+			}
+		}
+		t.Logf("%d keys", p.keys)
+		r, problems := sheet.Open(p.leave())
+		if len(problems) > 0 {
+			t.Fatal(problems)
+		}
+		var up sheet.RunUpRecord
+		if err := r.LastJSON(sheet.KindEvent, sheet.NameRunUp, &up); err != nil || len(up.Levels) != 5 || up.Levels[4].Note != "hums at this speed" || up.Levels[0].Note != "" {
+			t.Errorf("%v, %+v", err, up)
+		}
+		for i := 1; i < len(up.Levels); i++ {
+			if !(*up.Levels[i].SpeedRadS > *up.Levels[i-1].SpeedRadS) {
+				t.Errorf("level %d is not faster than the one before: %+v", i+1, up.Levels)
+			}
+		}
+		report := sheet.Report(r.Dir())
+		for _, want := range []string{"hums at this speed", "Acceptance list of the rig file", "after a power dip the board starts disarmed"} {
+			if !strings.Contains(report, want) {
+				t.Errorf("%q is not in the report", want)
+			}
+		}
+		if again, err := job.Recompute(r); err != nil || !again.Identical {
+			t.Errorf("computed again: %v, %v", err, again.Differences)
 		}
 	})
 }

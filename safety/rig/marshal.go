@@ -17,7 +17,8 @@ func Marshal(r Rig) []byte {
 		k := &keys[i]
 		if t := tableOf(k.path); t != table {
 			if table == "" {
-				writeList(&b, r.Checklist)
+				writeList(&b, "checklist", r.Checklist)
+				writeList(&b, "acceptance", r.Acceptance)
 			}
 			fmt.Fprintf(&b, "\n[%s]\n", t)
 			table = t
@@ -46,11 +47,11 @@ func tableOf(path string) string {
 
 func tablePrefix(path string) string { return path[:strings.IndexByte(path, '.')+1] }
 
-func writeList(b *strings.Builder, l []string) {
+func writeList(b *strings.Builder, key string, l []string) {
 	if len(l) == 0 {
 		return
 	}
-	b.WriteString("checklist = [\n")
+	b.WriteString(key + " = [\n")
 	for _, s := range l {
 		fmt.Fprintf(b, "  %s,\n", quote(s))
 	}

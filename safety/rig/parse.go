@@ -154,7 +154,8 @@ func (c *checker) run() {
 		c.key(&keys[i])
 	}
 	c.interlocks()
-	c.checklist()
+	c.lines("checklist", c.r.Checklist)
+	c.lines("acceptance", c.r.Acceptance)
 	if len(c.errs) > 0 {
 		return // what hangs together is looked at once the single values are right
 	}
@@ -251,13 +252,14 @@ func (c *checker) interlocks() {
 // ChecklistMax bounds the lines of a checklist: more are not read but clicked away.
 const ChecklistMax = 30
 
-func (c *checker) checklist() {
-	if n := len(c.r.Checklist); n > ChecklistMax {
-		c.bad("checklist", ErrRange, "%d lines are more than %d", n, ChecklistMax)
+// lines holds a list of lines to its bounds.
+func (c *checker) lines(key string, list []string) {
+	if n := len(list); n > ChecklistMax {
+		c.bad(key, ErrRange, "%d lines are more than %d", n, ChecklistMax)
 	}
-	for i, s := range c.r.Checklist {
+	for i, s := range list {
 		if strings.TrimSpace(s) == "" || len(s) > 128 {
-			c.bad("checklist", ErrRange, "line %d is empty or longer than 128 bytes", i+1)
+			c.bad(key, ErrRange, "line %d is empty or longer than 128 bytes", i+1)
 		}
 	}
 }

@@ -10,9 +10,10 @@ import (
 
 // Rig is one rig file with every default filled in. Units stand in the keys.
 type Rig struct {
-	Name      string   `toml:"name"`
-	Board     string   `toml:"board"`
-	Checklist []string `toml:"checklist"`
+	Name       string   `toml:"name"`
+	Board      string   `toml:"board"`
+	Checklist  []string `toml:"checklist"`
+	Acceptance []string `toml:"acceptance"`
 
 	Motor      Motor       `toml:"motor"`
 	Drive      Drive       `toml:"drive"`

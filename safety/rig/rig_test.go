@@ -156,7 +156,7 @@ bit = 2
 name = "pressed through"
 kind = "enabling-through"
 `, 1)
-	text = strings.Replace(text, `name = "bench"`, "name = \"bench\"\nchecklist = [\"glasses on\", \"disc guarded\"]", 1)
+	text = strings.Replace(text, `name = "bench"`, "name = \"bench\"\nchecklist = [\"glasses on\", \"disc guarded\"]\nacceptance = [\"stops within a turn\"]", 1)
 	one, err := Parse("RIG.toml", []byte(text))
 	if err != nil {
 		t.Fatal(err)

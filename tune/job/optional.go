@@ -16,7 +16,7 @@ const (
 // optional are their procedures.
 func (j *Job) optional(id StepID) func() (result, error) {
 	return map[StepID]func() (result, error){
-		StepSwap: j.doSwap, StepCoast: j.doCoast, StepRelay: j.doRelay, StepFrequency: j.doFrequency, StepMap: j.doMap, StepTiming: j.doTiming,
+		StepSwap: j.doSwap, StepRunUp: j.doRunUp, StepAcceptance: j.doAcceptance, StepCoast: j.doCoast, StepRelay: j.doRelay, StepFrequency: j.doFrequency, StepMap: j.doMap, StepTiming: j.doTiming,
 		StepResistance: j.doResistance, StepReversal: j.doReversal, StepWarmUp: j.doWarmUp,
 	}[id]
 }

@@ -120,6 +120,8 @@ const (
 	StepPort       StepID = "port"
 	StepIdentity   StepID = "identity"
 	StepSwap       StepID = "swap"
+	StepRunUp      StepID = "run-up"
+	StepAcceptance StepID = "acceptance"
 	StepCount      StepID = "count"
 	StepSign       StepID = "sign"
 	StepStop       StepID = "stop"

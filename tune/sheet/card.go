@@ -52,6 +52,8 @@ type CardData struct {
 	WorstPeak       *float64
 	Motor           MotorRecord
 	PowerOnLimits   []Quantity // as left, where they are not those of the session
+	Acceptance      string     // how much of the acceptance list passed, "" without one
+	RunUp           string     // the levels of the run-up, "" without one
 	JobFile         string     // how far a job file was carried out, "" without one
 	Signs           []string   // who signs; none: done by and customer
 }
@@ -209,6 +211,11 @@ func (c *card) findings(d CardData) {
 			inputs = append(inputs, box(k.Seen)+" "+plain.Visible(k.Name, 20)+" ("+plain.Visible(k.Note, 60)+")")
 		}
 		c.list("inputs at creep, seconds and turns to rest", inputs, 4)
+	}
+	for _, l := range []string{d.RunUp, d.Acceptance} {
+		if l != "" {
+			c.add("%s", text(l, cardColumns))
+		}
 	}
 	if len(d.Nameplate.Absent) > 0 {
 		c.list("not on this rig", d.Nameplate.Absent, 1)

@@ -46,6 +46,7 @@ func CardOf(r *Reader) CardData {
 		d.LoadState = found.LoadState
 	}
 	d.results(r)
+	d.commissioning(r)
 	var order OrderRecord
 	if r.LastJSON(KindJob, NameOutcome, &order) == nil {
 		d.JobFile, d.Signs = order.line(), order.Signs

@@ -18,6 +18,8 @@ const (
 	NameNoAdjustment = "no-adjustment" // KindEvent: the gains as found were good enough
 	NameAsFoundStep  = "as-found-step" // KindEvent, AsFoundStepRecord
 	NameMethods      = "methods"       // KindExperiment: what different tests say of the same numbers
+	NameRunUp        = "run-up"        // KindEvent, RunUpRecord
+	NameAcceptance   = "acceptance"    // KindEvent, AcceptanceRecord
 	NameDrill        = "drill"         // KindEvent, DrillRecord
 	NameSinceLast    = "since-last"    // KindEvent, EventRecord: as found against an earlier as-left
 )

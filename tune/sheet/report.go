@@ -27,6 +27,7 @@ func Report(dir string) string {
 	p.snapshots()
 	p.orderSection()
 	p.drills()
+	p.commissioning()
 	p.parts()
 	p.checks()
 	p.interlocks()

@@ -30,6 +30,8 @@ var records = []record{
 	{KindAsLeft, "", reflect.TypeFor[Snapshot]()},
 	{KindCheck, "", reflect.TypeFor[CheckRecord]()},
 	{KindInterlock, "", reflect.TypeFor[InterlockRecord]()},
+	{KindEvent, NameRunUp, reflect.TypeFor[RunUpRecord]()},
+	{KindEvent, NameAcceptance, reflect.TypeFor[AcceptanceRecord]()},
 	{KindEvent, NameDrill, reflect.TypeFor[DrillRecord]()},
 	{KindEvent, NameChecklist, reflect.TypeFor[ChecklistRecord]()},
 	{KindEvent, NameWhyStopped, reflect.TypeFor[WhyStoppedRecord]()},
