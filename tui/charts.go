@@ -30,6 +30,8 @@ type plot struct {
 	// powers says that the horizontal axis is in powers of ten.
 	powers bool
 	levels []level
+	dots   []job.Point // single points, with the ends of their ± in pairs
+	bars   []job.Point
 }
 
 // level is a line across a chart with its word.
@@ -55,6 +57,10 @@ func (p *painter) curves(a area, pl plot, cs ...curve) {
 	}
 	lo, hi = strip.Values(lo, hi, pl.low, pl.scale)
 	lo, hi = strip.Values(lo, hi, pl.high, pl.scale)
+	for _, pts := range [][]job.Point{pl.dots, pl.bars} {
+		lo, hi = strip.Values(lo, hi, pts, pl.scale)
+		t0, t1 = strip.Times(t0, t1, pts)
+	}
 	if pl.x1 > pl.x0 {
 		t0, t1 = pl.x0, pl.x1
 	}
@@ -86,7 +92,7 @@ func (p *painter) curves(a area, pl plot, cs ...curve) {
 	}
 	hi += room
 	ch := &p.chart
-	ch.Reset(a.w, a.h, p.s.look.Glyphs, strip.Axes{X0: t0, X1: t1, Y0: lo, Y1: hi, Title: p.tame(pl.title), XUnit: pl.unit, Gutter: gutter, Powers: pl.powers})
+	ch.Reset(a.w, a.h, p.s.look.Glyphs, strip.Axes{X0: t0, X1: t1, Y0: lo, Y1: hi, Title: p.tame(pl.title), XUnit: p.tame(pl.unit), Gutter: gutter, Powers: pl.powers})
 	if len(pl.low) > 0 {
 		strip.Shade(ch, pl.low, pl.high, pl.scale)
 	}
@@ -103,6 +109,10 @@ func (p *painter) curves(a area, pl plot, cs ...curve) {
 	for _, c := range cs {
 		strip.Line(ch, c.kind, c.points, pl.scale)
 	}
+	for i := 0; i+1 < len(pl.bars); i += 2 {
+		strip.Line(ch, strip.Second, pl.bars[i:i+2], pl.scale)
+	}
+	strip.Points(ch, strip.Data, pl.dots, 1, pl.scale)
 	p.blit(a)
 }
 

@@ -135,6 +135,8 @@ func (p *painter) body(a area) {
 		p.words(a)
 	case PageLoop:
 		p.loop(a)
+	case PageExperiments:
+		p.experiments(a)
 	case PageEarlier:
 		p.earlier(a)
 	case PageInterlocks:
@@ -148,7 +150,7 @@ var titles = [pageCount]string{
 	PagePath: "The job, step by step", PagePorts: "Ports", PageFound: "As-found: the board before the first touch",
 	PageChecks: "Checks: seen working this session", PagePlan: "Plan and forecast", PageLive: "Run", PageModel: "Model",
 	PageDesign: "Proposal", PagePush: "Push: gains to the board", PageVerify: "Verify: measured against forecast",
-	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words", PageInterlocks: "Interlocks", PageEarlier: "Earlier record: then and now", PageLoop: "Open loop of the proposal",
+	PageCard: "Card", PageAlarms: "Alarms, and what happened", PageHelp: "Keys", PageWords: "Words", PageInterlocks: "Interlocks", PageEarlier: "Earlier record: then and now", PageLoop: "Open loop of the proposal", PageExperiments: "Experiments",
 }
 
 func (p *painter) title(a area) {

@@ -29,7 +29,7 @@ var looks = []struct {
 // page.
 var large = map[string]bool{
 	"ports": true, "as-found": true, "path": true, "checks": true, "plan": true, "count-down": true, "running": true, "model": true,
-	"design": true, "push-word": true, "verify": true, "card": true, "tripped": true, "help": true, "words": true, "link-lost": true, "interlocks": true,
+	"design": true, "push-word": true, "verify": true, "card": true, "tripped": true, "help": true, "words": true, "link-lost": true, "interlocks": true, "experiments": true,
 }
 
 // TestGolden holds every screen against the kept one. The pictures were looked

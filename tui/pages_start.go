@@ -174,7 +174,7 @@ func (p *painter) checks(a area) {
 
 // pageMenu lists the pages.
 func (p *painter) pageMenu(a area) {
-	keys := [pageCount]string{PagePath: "1", PagePorts: "2", PageFound: "3", PageChecks: "4", PagePlan: "5", PageLive: "6", PageModel: "7", PageDesign: "8", PagePush: "9", PageVerify: "0", PageCard: "c", PageAlarms: "f", PageHelp: "?", PageWords: "d", PageInterlocks: "i", PageEarlier: "x", PageLoop: "l"}
+	keys := [pageCount]string{PagePath: "1", PagePorts: "2", PageFound: "3", PageChecks: "4", PagePlan: "5", PageLive: "6", PageModel: "7", PageDesign: "8", PagePush: "9", PageVerify: "0", PageCard: "c", PageAlarms: "f", PageHelp: "?", PageWords: "d", PageInterlocks: "i", PageEarlier: "x", PageLoop: "l", PageExperiments: "t"}
 	for pg := PagePath; pg < pageCount; pg++ {
 		role := palette.Plain
 		if int(pg)-1 == min(p.s.row, int(pageCount)-2) {

@@ -31,13 +31,14 @@ const (
 	PageInterlocks
 	PageEarlier
 	PageLoop
+	PageExperiments
 	pageCount
 )
 
 var pageNames = [pageCount]string{
 	PagePath: "path", PagePorts: "ports", PageFound: "as-found", PageChecks: "checks", PagePlan: "plan",
 	PageLive: "run", PageModel: "model", PageDesign: "design", PagePush: "push", PageVerify: "verify",
-	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks", PageEarlier: "earlier", PageLoop: "loop",
+	PageCard: "card", PageAlarms: "alarms", PageHelp: "keys", PageWords: "words", PageInterlocks: "interlocks", PageEarlier: "earlier", PageLoop: "loop", PageExperiments: "experiments",
 }
 
 // String returns the name of the page as it is shown.
@@ -322,6 +323,9 @@ func (s Screen) selected(p Page, v *job.View) int {
 		}
 	case PagePorts:
 		n = len(v.Ports)
+	case PageExperiments:
+		n = len(v.Experiments)
+		first = max(0, n-1) // the newest kind
 	default:
 		n = 400 // rows scrolled; the page stops at its own end
 	}

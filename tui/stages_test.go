@@ -180,6 +180,11 @@ func stages() []stage {
 	}
 	add("interlocks", v, "i")
 
+	v = at(job.StepDesign, false)
+	v.Experiments = experimentsFixture()
+	add("experiments", v, "t")
+	add("experiments-before", v, "t k")
+
 	v = at(job.StepCount, false)
 	v.Earlier = &job.EarlierView{Record: "record 0187 of 2024-11-12", Differs: 2, Lines: []string{"record 0187 of 2024-11-12, by KM", "As found now against as left then:",
 		"  identity enc: 2000 motor, now 4096 motor", "  stored kp: 0.078, now 0.021", "", "Part swapped: motor",

@@ -68,6 +68,7 @@ func (j *Job) doBreakaway() (result, error) {
 		rec.Params = append(rec.Params, j.electric.resistance(r.File))
 		words += fmt.Sprintf("; R %.3g ± %.2g Ω", j.electric.R, 1.96*j.electric.RSD)
 	}
+	j.showBreakaway()
 	return result(words), j.h.Keep("fit", "breakaway", rec)
 }
 

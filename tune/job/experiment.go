@@ -83,6 +83,12 @@ func (j *Job) experiment(set ExperimentSettings, traces []*trace.Trace, files []
 		j.Experiments = map[StepID]sheet.ExperimentRecord{}
 	}
 	j.Experiments[set.Experiment] = rec
+	if draw := pictures[set.Experiment]; draw != nil {
+		if j.charts == nil {
+			j.charts = map[StepID][]ChartView{}
+		}
+		j.charts[set.Experiment] = draw(set, traces, rec)
+	}
 	j.showExperiments()
 	switch set.Experiment {
 	case StepRelay, StepFrequency, StepCoast:
@@ -116,12 +122,17 @@ func titleOf(id StepID) string {
 // showExperiments puts all that was found on the screens, in the order of the path.
 func (j *Job) showExperiments() {
 	var list []ExperimentView
+	for _, id := range []StepID{StepBreakaway, StepStaircase} {
+		if c := j.charts[id]; c != nil {
+			list = append(list, ExperimentView{Step: id, Title: titleOf(id), Finding: j.findings[id], Charts: c})
+		}
+	}
 	for _, id := range experimentOrder {
 		rec, ok := j.Experiments[id]
 		if !ok {
 			continue
 		}
-		x := ExperimentView{Step: id, Title: titleOf(id), Verdict: rec.Verdict, Reasons: rec.Reasons, Finding: rec.Finding}
+		x := ExperimentView{Step: id, Title: titleOf(id), Verdict: rec.Verdict, Reasons: rec.Reasons, Finding: rec.Finding, Charts: j.charts[id]}
 		for _, q := range rec.Params {
 			x.Facts = append(x.Facts, Fact{Name: q.Name, Value: quantityWords(q), Why: q.Why})
 		}

@@ -1,6 +1,7 @@
 package job
 
-// ExperimentView is what an optional experiment showed.
+// ExperimentView is what an experiment showed. Breakaway and staircase have no facts
+// here: theirs are on the page of the model.
 type ExperimentView struct {
 	Step    StepID
 	Title   string
@@ -9,6 +10,7 @@ type ExperimentView struct {
 	Finding string
 	Facts   []Fact
 	Series  []SeriesView
+	Charts  []ChartView
 }
 
 // SeriesView is a column of numbers of an experiment; NaN where not known.

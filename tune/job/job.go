@@ -81,6 +81,8 @@ type Known struct {
 	Verified    *sheet.VerifyRecord
 	StoredOK    bool
 	Experiments map[StepID]sheet.ExperimentRecord // optional ones that were done, newest of each
+	charts      map[StepID][]ChartView            // what is drawn of them
+	findings    map[StepID]string                 // of those that are not optional
 	LeftRec     *sheet.Snapshot
 	MotorValues *sheet.MotorRecord // the values that a later job is compared with
 	Checks      []sheet.CheckRecord

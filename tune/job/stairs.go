@@ -114,8 +114,10 @@ func (j *Job) keepStairs(static identify.Static, r Result) (result, error) {
 		m.Stairs = pts
 		v.Model = &m
 	})
-	return result(fmt.Sprintf("gain about %.4g rad/s per V, sliding friction %.3g V forward, %.3g V reverse, time constant about %.3g s",
-		static.Gain, static.CoulombForward, static.CoulombReverse, j.Tau)), j.h.Keep("fit", "staircase", rec)
+	words := fmt.Sprintf("gain about %.4g rad/s per V, sliding friction %.3g V forward, %.3g V reverse, time constant about %.3g s",
+		static.Gain, static.CoulombForward, static.CoulombReverse, j.Tau)
+	j.showStairs(words)
+	return result(words), j.h.Keep("fit", "staircase", rec)
 }
 
 // staticQuantities is what a staircase tells, for the record.
