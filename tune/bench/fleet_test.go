@@ -3,6 +3,7 @@ package bench
 import (
 	"bytes"
 	"encoding/json"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -279,5 +280,31 @@ func TestNearlyEqualTimeConstantsAreNotBelieved(t *testing.T) {
 	}
 	if f.Verdict == identify.Care && !strings.Contains(strings.Join(f.Reasons, "; "), "near to each other") {
 		t.Errorf("care without the reason: %v", f.Reasons)
+	}
+}
+
+// A geared motor whose board leads its integral back by a time: the saturating step
+// of its verify comes out as forecast. With that time at 0, which was pushed once,
+// it went 40 % over.
+func TestTheSaturatingStepComesOutAsForecast(t *testing.T) {
+	cfg, err := simrig.Parse("r0044", family.Make(45, 31)[44].Text)
+	if err != nil {
+		t.Fatal(err)
+	}
+	rep, err := DryRun{Config: cfg, Seed: 1, Program: "test"}.Do()
+	if err != nil {
+		t.Fatal(err)
+	}
+	if rep.Outcome != Accepted || rep.Gains == nil || rep.Gains.TrackingTime <= 0 {
+		t.Fatalf("%s: %s, gains %+v", rep.Outcome, rep.Reason, rep.Gains)
+	}
+	b, _ := json.Marshal(rep.Verify)
+	_, after, ok := strings.Cut(string(b), "saturating step: overshoot ")
+	var got, want float64
+	if n, err := fmt.Sscanf(after, "%f %% (forecast %f)", &got, &want); !ok || n != 2 || err != nil {
+		t.Fatalf("no saturating step: %s", b)
+	}
+	if math.Abs(got-want) > 3 {
+		t.Errorf("overshoot %.1f %%, forecast %.1f", got, want)
 	}
 }

@@ -66,7 +66,7 @@ type Gains struct {
 	Discretisation   string  // BackwardEuler (also empty), ForwardEuler, Tustin, Incremental
 	UMin, UMax       *float64
 	AntiWindup       string  // empty where not known
-	TrackingTime     float64 // s, for back-calculation
+	TrackingTime     float64 // s, for back-calculation; 0: none takes place
 	Feedforward      *Feedforward
 }
 

@@ -71,9 +71,10 @@ func (c *law) next(r, y, feed float64) float64 {
 func (c *law) integrate(add, u, limited float64) {
 	over := u - limited
 	switch {
-	case over == 0 || c.g.AntiWindup == AntiWindupNone || c.g.AntiWindup == "":
+	case over == 0 || c.g.AntiWindup == AntiWindupNone || c.g.AntiWindup == "",
+		c.g.AntiWindup == AntiWindupBackCalculation && c.g.TrackingTime == 0:
 		c.integral += add
-	case c.g.AntiWindup == AntiWindupBackCalculation && c.g.TrackingTime > 0:
+	case c.g.AntiWindup == AntiWindupBackCalculation:
 		c.integral += add - over*math.Min(1, c.g.SampleTime/c.g.TrackingTime)
 	case add*over < 0: // clamp: only a step that leads out of the limit counts
 		c.integral += add

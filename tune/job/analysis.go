@@ -173,6 +173,7 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 		out.Gains, out.Margins = &held, out.Found
 		return out, nil
 	}
+	s.tracking(&out.Proposals[out.Chosen])
 	s.feedForward(loop, &out.Proposals[out.Chosen])
 	if err := s.round(&out, loop, running, id); err != nil {
 		return out, err

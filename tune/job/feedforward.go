@@ -36,6 +36,22 @@ func (j *Job) feed() *Feed {
 	return &Feed{Friction: j.friction(), Start: math.Min(firstLoopShare*float64(j.Env.SpeedMax), j.VerifySpeed())}
 }
 
+// tracking sets the time by which a board with back-calculation leads its integral
+// back: that of the integral, or its geometric mean with that of the derivative
+// (Åström & Hägglund, PID Controllers, 2nd ed., section 3.5, from memory). With 0
+// the integral winds up.
+func (s DesignSettings) tracking(p *design.Proposal) {
+	g := p.Gains.Parallel()
+	if s.AntiWindup != design.AntiWindupBackCalculation || !contains(s.Slots, "tt") || !(g.Ki > 0) {
+		return
+	}
+	tt := g.Kp / g.Ki
+	if g.Kd > 0 {
+		tt = math.Sqrt(g.Kd / g.Ki)
+	}
+	p.Gains.TrackingTime = math.Max(tt, s.SampleTime)
+}
+
 // feedForward proposes or declines the two terms on their merits, for the law that
 // p has. What would be worth it and has no slot is said. Records from before it was
 // judged have no Feed.

@@ -76,3 +76,33 @@ func TestFeedForwardOfFrictionHasToBeWorthIt(t *testing.T) {
 		}
 	}
 }
+
+// A board with back-calculation gets the time it needs: with 0 its integral would
+// wind up, and the simulation has it so.
+func TestBackCalculationGetsItsTime(t *testing.T) {
+	s := slotted("tt")
+	s.AntiWindup = design.AntiWindupBackCalculation
+	p := design.Proposal{Gains: design.PI(0.3, 6, 0.001, 0)}
+	s.tracking(&p)
+	if got := p.Gains.TrackingTime; math.Abs(got-0.05) > 1e-12 {
+		t.Errorf("%g s, want kp/ki = 0.05 s", got)
+	}
+	peak := func(tt float64) float64 {
+		g := p.Gains
+		lo, hi := -24.0, 24.0
+		g.AntiWindup, g.TrackingTime, g.UMin, g.UMax, g.SetpointWeight = design.AntiWindupBackCalculation, tt, &lo, &hi, 1
+		r, err := design.SimulateLoop(model.FirstOrder(20, 0.1, 0.002), g, design.Scenario{Parts: []design.Part{{From: 440, To: 440, Duration: 2}}})
+		if err != nil {
+			t.Fatal(err)
+		}
+		m := r.Measure(0, 0, 0, 440, 0.02)
+		return float64(m.Overshoot)
+	}
+	if none, with := peak(0), peak(p.Gains.TrackingTime); none < 5 || with > 2 {
+		t.Errorf("overshoot %.1f %% without, %.1f %% with back-calculation", none, with)
+	}
+	s.AntiWindup, p.Gains.TrackingTime = design.AntiWindupClamp, 0
+	if s.tracking(&p); p.Gains.TrackingTime != 0 {
+		t.Error("a board that clamps has no such time")
+	}
+}

@@ -89,7 +89,7 @@ func (j *Job) doVerify() (result, error) {
 	if r.Reason != safety.EndDone {
 		return "", j.notDone(r)
 	}
-	return j.judgeVerify(r, plan, levels, hold)
+	return j.judgeVerify(r, plan, levels, hold, slope)
 }
 
 // Shares of the middle speed that a verify step goes to either side: larger where
@@ -176,7 +176,7 @@ func settlingOr(j *Job, other float64) float64 {
 
 // judgeVerify takes the mean of the steps between two turning levels of the same
 // direction, measures it, and holds it against the same measures of the forecast.
-func (j *Job) judgeVerify(r Result, plan safety.Plan, levels []float64, hold time.Duration) (result, error) {
+func (j *Job) judgeVerify(r Result, plan safety.Plan, levels []float64, hold time.Duration, slope float64) (result, error) {
 	var courses []course
 	var curve sheet.VerifyCurve
 	var hunts *identify.Hunting
@@ -201,6 +201,11 @@ func (j *Job) judgeVerify(r Result, plan safety.Plan, levels []float64, hold tim
 	rec := j.verifyRecord(r, m, f, ripple, curve)
 	rec.Hunting = huntingRecord(hunts)
 	rec.Finding += huntingWords(hunts)
+	if *rec.Passed {
+		if err := j.verifyWindup(rec, hold, slope); err != nil {
+			return "", err
+		}
+	}
 	j.Verified = rec
 	if err := j.h.Keep("verify", "steps", rec); err != nil {
 		return "", err
@@ -295,7 +300,7 @@ func (j *Job) showVerify(rec *sheet.VerifyRecord) {
 // VerifyReport is the verify in the fixed JSON form of a dry run.
 func (j *Job) VerifyReport() any {
 	r := j.Verified
-	return map[string]any{"passed": r.Passed, "overshoot_percent": r.Step.OvershootPercent, "settling_time_s": r.Step.SettlingTimeS,
+	return map[string]any{"passed": r.Passed, "finding": r.Finding, "overshoot_percent": r.Step.OvershootPercent, "settling_time_s": r.Step.SettlingTimeS,
 		"settling_band_rad_s": r.Step.SettlingBandRadS, "ripple_rad_s": r.Step.RippleRadS,
 		"forecast": map[string]any{"overshoot_percent": r.Forecast.OvershootPercent, "settling_time_s": r.Forecast.SettlingTimeS,
 			"overshoot_low_percent": r.Forecast.OvershootLow, "overshoot_high_percent": r.Forecast.OvershootHigh,
