@@ -61,7 +61,7 @@ type speedAt struct {
 }
 
 // look takes counts and slope from one sample.
-func (j *judgeState) look(s protocol.Sample, dt time.Duration) {
+func (j *judgeState) look(s *protocol.Sample, dt time.Duration) {
 	j.clock += dt
 	if s.Has&protocol.HasCounts != 0 {
 		if !j.counted || s.Counts != j.counts {
@@ -72,9 +72,8 @@ func (j *judgeState) look(s protocol.Sample, dt time.Duration) {
 		j.changedAt = j.clock
 	}
 	v := float64(s.Volts)
-	for _, p := range []*speedAt{&j.older, &j.newer} {
-		p.lo, p.hi = math.Min(p.lo, v), math.Max(p.hi, v)
-	}
+	j.older.lo, j.older.hi = min(j.older.lo, v), max(j.older.hi, v)
+	j.newer.lo, j.newer.hi = min(j.newer.lo, v), max(j.newer.hi, v)
 	now := speedAt{j.clock, float64(s.Speed), v, v}
 	if j.looks == 0 {
 		j.older, j.newer, j.last, j.looks = now, now, now, 1
@@ -136,7 +135,7 @@ func (env Envelope) HeatShare(s State) float64 {
 // heat adds one sample to the I²t budget and lets it cool. Where current is not
 // measured it is (V − Ke·ω)/R; where R is unknown too, heat is not counted and
 // run time is all there is.
-func (m *machine) heat(s protocol.Sample, dt time.Duration) {
+func (m *machine) heat(s *protocol.Sample, dt time.Duration) {
 	if m.env.HeatTau <= 0 {
 		return
 	}

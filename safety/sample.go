@@ -10,7 +10,7 @@ import (
 // sample takes one telemetry sample: is it fresh, what does the board say it is
 // doing, and is everything inside its limits? (S6)
 func (m *machine) sample(e *Sample) {
-	if bad := notFinite(e.Sample); bad != "" {
+	if bad := notFinite(&e.Sample); bad != "" {
 		m.tripIfArmed(CodeNotNumber, bad)
 		return
 	}
@@ -18,12 +18,12 @@ func (m *machine) sample(e *Sample) {
 	if !ok {
 		return
 	}
-	m.track(e.Sample, dt)
+	m.track(&e.Sample, dt)
 	if e.Slow.Seen && m.Connected && e.Slow.Boots != m.BootCount {
 		m.BootCount = e.Slow.Boots
 		m.restarted()
 	}
-	m.boardState(e.Sample)
+	m.boardState(&e.Sample)
 	switch m.Phase {
 	case Arming, Armed, CountDown:
 		m.judgeStill(e.Sample)
@@ -46,7 +46,12 @@ func (m *machine) tripIfArmed(code Code, detail string) {
 	}
 }
 
-func notFinite(s protocol.Sample) string {
+func notFinite(s *protocol.Sample) string {
+	// The difference of a number to itself is nought, of all others not a number.
+	v, a, c, b, set, t := float64(s.Speed), float64(s.Volts), float64(s.Current), float64(s.Bus), float64(s.Setpoint), float64(s.Slow.Temp)
+	if (v-v)+(a-a)+(c-c)+(b-b)+(set-set)+(t-t) == 0 {
+		return ""
+	}
 	for _, v := range []struct {
 		name string
 		v    float64
@@ -91,7 +96,7 @@ func (m *machine) freshen(e *Sample) (dt time.Duration, ok bool) {
 }
 
 // track keeps position and rest from one sample to the next.
-func (m *machine) track(s protocol.Sample, dt time.Duration) {
+func (m *machine) track(s *protocol.Sample, dt time.Duration) {
 	turns := float64(s.Speed) * dt.Seconds() / (2 * math.Pi)
 	moved := math.Abs(float64(s.Speed)) > float64(m.env.RestSpeed)
 	if s.Has&protocol.HasCounts != 0 {
@@ -114,7 +119,7 @@ func (m *machine) track(s protocol.Sample, dt time.Duration) {
 }
 
 // boardState compares what the board says it is doing with what it was asked.
-func (m *machine) boardState(s protocol.Sample) {
+func (m *machine) boardState(s *protocol.Sample) {
 	tripped := s.TripHeld || s.State == protocol.Tripped
 	off := s.State == protocol.Off || s.State == protocol.Tripped
 	if m.ramp.on && s.State == protocol.Ramping {

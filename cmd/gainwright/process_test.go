@@ -80,7 +80,7 @@ func (b *board) state() (powered bool, speed, turns float64) {
 
 // desk is the console on a pseudo-terminal.
 type desk struct {
-	t      *testing.T
+	t      testing.TB
 	cmd    *exec.Cmd
 	tty    *os.File
 	sheet  string
@@ -93,7 +93,7 @@ type desk struct {
 // reason to trip.
 const patientRig = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\nboard_timeout_ms = 1000\n"
 
-func startConsole(t *testing.T, bin string, args ...string) *desk {
+func startConsole(t testing.TB, bin string, args ...string) *desk {
 	t.Helper()
 	d := &desk{t: t, sheet: filepath.Join(t.TempDir(), "sheet"), ended: make(chan error, 1)}
 	d.cmd = exec.Command(bin, append(args, "--out", d.sheet)...)

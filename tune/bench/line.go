@@ -76,7 +76,7 @@ func (l *Live) connect(o Opened, path string) {
 	reader := link.NewReader(o.Port, link.ReaderConfig{Clock: l.now, OnPanic: l.panicked, OnBytes: func(t time.Duration, b []byte) {
 		l.tape.Record(t, tape.FromBoard, b)
 		select {
-		case l.rx <- chunk{at: t, data: append([]byte(nil), b...), line: line}:
+		case l.rx <- chunk{at: t, data: append(l.piece(), b...), line: line}:
 		default:
 			l.rxLost.Add(1)
 		}

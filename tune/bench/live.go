@@ -25,6 +25,7 @@ type Live struct {
 	job   *job.Job
 
 	rx       chan chunk
+	spent    chan []byte // what chunks were in, for others
 	mail     chan func(*session)
 	urgent   chan func(*session) // what stops: it goes ahead of mail and of what the board says
 	steps    chan func(*job.Job)
@@ -77,13 +78,14 @@ type liveLine struct {
 // run for long: bytes are counted as lost, which telemetry's age then shows.
 const (
 	rxMax     = 1024
+	spentMax  = 16
 	mailMax   = 256
 	urgentMax = 64
 )
 
 // NewLive starts a live bench. Nothing is opened yet.
 func NewLive(opt Options) *Live {
-	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), mail: make(chan func(*session), mailMax), urgent: make(chan func(*session), urgentMax),
+	l := &Live{opt: opt, start: time.Now(), rx: make(chan chunk, rxMax), spent: make(chan []byte, spentMax), mail: make(chan func(*session), mailMax), urgent: make(chan func(*session), urgentMax),
 		steps: make(chan func(*job.Job), 4), over: make(chan struct{}), gone: make(chan struct{}), late: &lateFile{}}
 	l.s = &session{}
 	l.s.core = supervisor.NewCore(liveWire{l}, l.s, uint16(l.start.UnixNano()>>10))
@@ -292,6 +294,20 @@ func (l *Live) received(c chunk) {
 		return
 	}
 	l.s.core.Bytes(l.s.now, c.data)
+	select {
+	case l.spent <- c.data[:0]:
+	default:
+	}
+}
+
+// piece is a slice that a chunk was in, or a new one.
+func (l *Live) piece() []byte {
+	select {
+	case b := <-l.spent:
+		return b
+	default:
+		return nil
+	}
 }
 
 // clockSlack is by how much the two clocks may part between two ticks before it

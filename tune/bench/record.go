@@ -1,6 +1,7 @@
 package bench
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"sync"
@@ -15,7 +16,8 @@ import (
 // what is written until it is given its place.
 type lateFile struct {
 	mu   sync.Mutex
-	held []byte
+	held [][]byte // pieces: one slice would be copied again and again
+	size int
 	out  *sheet.Stream
 }
 
@@ -30,10 +32,11 @@ func (f *lateFile) Write(b []byte) (int, error) {
 	if f.out != nil {
 		return f.out.Write(b)
 	}
-	if len(f.held)+len(b) > heldMax {
+	if f.size+len(b) > heldMax {
 		return 0, fmt.Errorf("the tape waits for a record that was never opened, and %d MiB are full", heldMax>>20)
 	}
-	f.held = append(f.held, b...)
+	f.held = append(f.held, bytes.Clone(b))
+	f.size += len(b)
 	return len(b), nil
 }
 
@@ -42,8 +45,8 @@ func (f *lateFile) place(out *sheet.Stream) error {
 	f.mu.Lock()
 	defer f.mu.Unlock()
 	held := f.held
-	f.held, f.out = nil, out
-	_, err := out.Write(held)
+	f.held, f.size, f.out = nil, 0, out
+	_, err := out.Write(bytes.Join(held, nil))
 	return err
 }
 
