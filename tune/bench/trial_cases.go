@@ -41,7 +41,7 @@ func faultCases() []faultCase {
 		{name: "encoder channels swap", where: "rig", when: inVolts, do: inject(simrig.FaultReversed, 0), want: only(safety.CodeWrongWay, safety.CodeBoardTripped, safety.CodeAccel)},
 		{name: "encoder channels swap", where: "rig", when: inLoop, do: inject(simrig.FaultReversed, 0), want: only(safety.CodeWrongWay, safety.CodeBoardTripped, safety.CodeAccel)},
 		{name: "encoder coupling slips by 60 %", where: "rig", when: inLoop, do: inject(simrig.FaultSlip, 0.6), want: only(safety.CodeSlip, safety.CodeBoardTripped, safety.CodeSpeed, safety.CodeSpeedAhead)},
-		{name: "load comes off", where: "rig", when: inLoop, do: inject(simrig.FaultLoose, 0.2), want: only(safety.CodeLoose, safety.CodeAccel, safety.CodeCurrent, safety.CodeBoardTripped)},
+		{name: "load comes off", where: "rig", when: inLoop, do: inject(simrig.FaultLoose, 0.2), want: only(safety.CodeLoose, safety.CodeAccel, safety.CodeCurrent, safety.CodeBoardTripped, safety.CodeForecast)},
 		{name: "supply folds back at 0.3 A", where: "rig", when: inVolts, do: inject(simrig.FaultSupplyFolds, 0.3), want: only(safety.CodeBusLow, safety.CodeBoardTripped)},
 		{name: "supply folds back at 0.3 A", where: "rig", when: inLoop, do: inject(simrig.FaultSupplyFolds, 0.3), want: only(safety.CodeBusLow, safety.CodeBoardTripped)},
 		{name: "interlock opens", where: "rig", when: inVolts, do: func(_ *trial, v *Virtual) { v.rig.SetInput("estop", false) }, want: only(safety.CodeBoardTripped, safety.CodeInterlock)},

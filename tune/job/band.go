@@ -14,10 +14,13 @@ type Band struct {
 	Width float64 // rad/s either way
 	Slack float64 // s by which the run may be early or late
 	For   float64 // s outside before it counts
+	Swing float64 // rad/s to either side of the forecast, in closed loop; swings of more, one after another, are hunting; 0: not judged
 
 	since  float64
 	out    bool
 	cursor int
+	side   int       // of the forecast, at which the last swing was
+	turned []float64 // s at which it went over to the other
 }
 
 // Widths of the band (our choice). The forecast's own is for what is likely; this
@@ -29,6 +32,11 @@ const (
 	bandSlack   = 0.03 // s, and a third of the time constant
 	bandFor     = 0.06 // s
 	bandPattern = 0.05 // s, for the request that begins a pattern in the board's loop
+
+	// A step that rings has a few swings; a loop that hunts does not end.
+	swingShare  = 0.08 // of the top speed
+	swingTurns  = 8
+	swingWithin = 1.0 // s
 )
 
 // band makes the band of a plan, nil where the forecast does not rest on a model
@@ -57,6 +65,9 @@ func (j *Job) band(p safety.Plan, line []Point, own float64) *Band {
 		share = bandLoop
 	}
 	b := &Band{Width: math.Max(math.Max(bandTimes*own, share)*top, 6*math.Max(j.Noise, j.sizing().SpeedStep)), Slack: bandSlack + j.Tau/3, For: bandFor}
+	if p.Segments[0].Mode == safety.ModeSpeed {
+		b.Swing = math.Max(swingShare*top, 6*math.Max(j.Noise, j.sizing().SpeedStep))
+	}
 	if p.HasPattern() {
 		b.Slack += bandPattern
 	}
@@ -66,6 +77,29 @@ func (j *Job) band(p safety.Plan, line []Point, own float64) *Band {
 		}
 	}
 	return b
+}
+
+// swings reports in words that the speed swings about the forecast again and again.
+func (b *Band) swings(t, off float64) string {
+	side := 0
+	switch {
+	case b.Swing <= 0:
+		return ""
+	case off > b.Swing:
+		side = 1
+	case off < -b.Swing:
+		side = -1
+	}
+	if side == 0 || side == b.side {
+		return ""
+	}
+	b.side = side
+	b.turned = append(b.turned, t)
+	n := len(b.turned)
+	if n < swingTurns || t-b.turned[n-swingTurns] > swingWithin {
+		return ""
+	}
+	return fmt.Sprintf("hunting: %d swings of more than %s about its forecast within %.2f s", swingTurns, rpm(b.Swing), t-b.turned[n-swingTurns])
 }
 
 // Left reports in words that the speed has been outside for long enough, "" else.
@@ -82,6 +116,9 @@ func (b *Band) Left(t, speed float64) string {
 		if b.Line[i].T > t+b.Slack {
 			break
 		}
+	}
+	if words := b.swings(t, speed-(lo+hi)/2); words != "" {
+		return words
 	}
 	if speed >= lo-b.Width && speed <= hi+b.Width {
 		b.out = false
