@@ -82,6 +82,8 @@ var keys = []key{
 	{path: "load.state", oneOf: []string{"bare", "coupled", "loaded"}, must: true, meaning: "bare shaft, coupled and unloaded, or under load", at: func(r *Rig) any { return &r.Load.State }},
 	{path: "load.gravity", def: "false", meaning: "gravity can turn the shaft; refused unless a holding brake is listed", at: func(r *Rig) any { return &r.Load.Gravity }},
 	{path: "load.holding_brake", def: "false", meaning: "a brake holds the load when power is off", at: func(r *Rig) any { return &r.Load.HoldingBrake }},
+	{path: "load.inertia_least", unit: "1", min: 0.05, max: 1, def: "1", derive: fixed(1), meaning: "least inertia in service, as a factor on that of the day of tuning; the worst case of a proposal keeps its bounds down to it", at: func(r *Rig) any { return &r.Load.InertiaLeast }},
+	{path: "load.inertia_most", unit: "1", min: 1, max: 20, def: "1", derive: fixed(1), meaning: "most inertia in service, as a factor", at: func(r *Rig) any { return &r.Load.InertiaMost }},
 	{path: "load.note", def: "none", meaning: "anything the next person should know", at: func(r *Rig) any { return &r.Load.Note }},
 
 	{path: "targets.overshoot_percent", unit: "%", min: 0, max: 100, def: "10", derive: fixed(10), meaning: "largest overshoot of a step", at: func(r *Rig) any { return &r.Targets.Overshoot }},

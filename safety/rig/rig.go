@@ -100,6 +100,11 @@ type Load struct {
 	Gravity      bool   `toml:"gravity"`
 	HoldingBrake bool   `toml:"holding_brake"`
 	Note         string `toml:"note"`
+
+	// InertiaLeast and InertiaMost are what the inertia may become in service, as
+	// factors on that of today.
+	InertiaLeast float64 `toml:"inertia_least"`
+	InertiaMost  float64 `toml:"inertia_most"`
 }
 
 // Targets are what a verify is judged by.

@@ -61,6 +61,12 @@ func WorstCase(m model.Linear, g Gains, s Spread) (Worst, error) {
 	return worstCase(m, g, s)
 }
 
+// WorstOf is WorstCase on as many draws as are given, to steer by.
+func WorstOf(m model.Linear, g Gains, s Spread, draws int) (Worst, error) {
+	s.Draws = draws
+	return worstCase(m, g, s)
+}
+
 func worstCase(m model.Linear, g Gains, s Spread) (Worst, error) {
 	w := Worst{Draws: s.Draws, Model: m, Margins: unknownMargins()}
 	draw, err := newDrawer(m, s)

@@ -119,6 +119,10 @@ type DesignSettings struct {
 	WarmMin         float64 `json:"worst_warm_min_K"`
 	WarmMax         float64 `json:"worst_warm_max_K"`
 	MagnetPerKelvin float64 `json:"worst_magnet_per_K"`
+	InertiaMin      float64 `json:"worst_inertia_min,omitempty"` // factors; both 0: not varied
+	InertiaMax      float64 `json:"worst_inertia_max,omitempty"`
+	BusLow          float64 `json:"worst_bus_low,omitempty"` // lowest bus over nominal, where the board does not make up for it; 0: not varied
+	Keep95          bool    `json:"worst_keeps_bound,omitempty"`
 }
 
 // Designed is what came of a design.
@@ -156,7 +160,7 @@ func (s DesignSettings) Design(f identify.Fit) (Designed, error) {
 			out.Found = &m
 		}
 	}
-	if out.Proposals, out.Chosen, err = s.propose(s.cautious(loop, f)); err != nil {
+	if out.Proposals, out.Chosen, err = s.keeping(loop, f); err != nil {
 		return out, err
 	}
 	if s.ByHand != nil {
@@ -298,6 +302,13 @@ func (s DesignSettings) round(out *Designed, loop model.Linear, running GainSet,
 func (s DesignSettings) spread(f identify.Fit, loop model.Linear) design.Spread {
 	sp := design.Spread{Seed: s.Seed, Cov: f.Cov, GainMin: s.GainMin, GainMax: s.GainMax, WarmMin: s.WarmMin, WarmMax: s.WarmMax,
 		MagnetPerKelvin: s.MagnetPerKelvin}
+	sp.InertiaMin, sp.InertiaMax = s.InertiaMin, s.InertiaMax
+	if s.BusLow > 0 && sp.GainMin == 0 {
+		sp.GainMin, sp.GainMax = 1, 1
+	}
+	if s.BusLow > 0 {
+		sp.GainMin *= s.BusLow
+	}
 	for _, p := range f.Params {
 		v := p.Value
 		if p.Name == "dead_time" {

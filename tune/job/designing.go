@@ -70,6 +70,13 @@ func (j *Job) designSettings() DesignSettings {
 		Seed: uint64(j.opt.Seed), WarmMin: 0, WarmMax: 60, MagnetPerKelvin: -0.002}
 	s.Noise, s.Feed = j.NoiseGainMax(), j.feed()
 	s.GainMin, s.GainMax = gainSpread(j.Static)
+	if l := j.Rig.Load; l.InertiaLeast > 0 && l.InertiaMost > 0 && (l.InertiaLeast != 1 || l.InertiaMost != 1) {
+		s.InertiaMin, s.InertiaMax = l.InertiaLeast, l.InertiaMost
+	}
+	if d := j.Rig.Drive; !j.ID.BusMeasured && d.BusMin > 0 && d.BusMin < d.BusNominal {
+		s.BusLow = d.BusMin / d.BusNominal
+	}
+	s.Keep95 = true
 	return s
 }
 
@@ -141,13 +148,13 @@ func proposalRecord(d Designed, i int, set DesignSettings, loop model.Linear, fi
 	}
 	if rec.Chosen {
 		rec.Gains, rec.Margins, rec.Worst = sheet.Raw(d.Gains), sheet.Raw(d.Margins), sheet.Raw(d.Worst)
-		rec.Bode, rec.Figures = bode(loop, *d.Gains, *d.Margins, d.Worst), figures(*d.Margins, d.Worst)
+		rec.Bode, rec.Figures = bode(loop, *d.Gains, *d.Margins, d.Worst), figures(*d.Margins, d.Worst, set.alsoDrawn())
 	}
 	return rec, nil
 }
 
 // figures are margins and worst case for people, each with its unit and its why.
-func figures(m design.Margins, w *design.Worst) []sheet.Quantity {
+func figures(m design.Margins, w *design.Worst, also string) []sheet.Quantity {
 	q := func(name, unit string, v design.Value, why string) sheet.Quantity {
 		return sheet.Quantity{Name: name, Value: sheet.Known(float64(v)), Unit: unit, Why: why}
 	}
@@ -159,7 +166,7 @@ func figures(m design.Margins, w *design.Worst) []sheet.Quantity {
 	if w == nil {
 		return out
 	}
-	why := fmt.Sprintf("kept by 95 %% of %d motors drawn from the ± of the fit, the gain of each direction and a winding 0 to 60 K warmer", w.Draws)
+	why := fmt.Sprintf("kept by 95 %% of %d motors drawn from the ± of the fit, the gain of each direction and a winding 0 to 60 K warmer", w.Draws) + also
 	return append(out, q("Ms, worst case", "1", w.Ms, why), q("phase margin, worst case", "deg", w.PhaseMargin, why))
 }
 
@@ -198,7 +205,7 @@ func (j *Job) showDesign() {
 		}
 	}
 	if w := j.Worst; w != nil && !j.NoChange {
-		why := fmt.Sprintf("kept by 95 %% of %d motors drawn from the ± of the fit, gain by direction, winding 0 to 60 K warmer", w.Draws)
+		why := fmt.Sprintf("kept by 95 %% of %d motors drawn from the ± of the fit, gain by direction, winding 0 to 60 K warmer", w.Draws) + j.designSettings().alsoDrawn()
 		d.Worst = []Fact{{Name: "Ms", Value: fmt.Sprintf("%.2f", float64(w.Ms)), Why: why}, {Name: "phase margin", Value: fmt.Sprintf("%.0f°", float64(w.PhaseMargin)), Why: why},
 			{Name: "overshoot", Value: fmt.Sprintf("%.0f %%", float64(w.Overshoot)), Why: why + "; setpoint weight 1 over the first swings"}}
 	}
