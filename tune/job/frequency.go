@@ -41,7 +41,7 @@ func (j *Job) doFrequency() (result, error) {
 		room := 0.7*j.Env.RunTimeMax.Seconds() - 10*j.Tau
 		periods := max(sinePeriodsMin, min(sinePeriods, int(room/period)))
 		plan, lead := excite.Multisine(k, j.Bias, j.Amplitude, highest, n, periods)
-		tr, file, _, err := j.record(StepFrequency, plan, nil)
+		tr, file, _, err := j.recordLearning(StepFrequency, plan, nil, j.sineLearner(period, periods))
 		if err != nil {
 			return "", err
 		}

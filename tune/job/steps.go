@@ -109,7 +109,7 @@ func (j *Job) doSecond() (result, error) {
 		})
 		return p
 	}
-	tr, file, size, err := j.record(StepSecond, plan, resized)
+	tr, file, size, err := j.recordLearning(StepSecond, plan, resized, j.secondLearner(plan, k))
 	if err != nil {
 		return "", err
 	}
