@@ -330,10 +330,14 @@ func (p *painter) verify(a area) {
 	if e.Hunting != "" {
 		a.put(15, 0, palette.Caution, " "+e.Hunting+" ")
 	}
+	title := "speed, rpm   dotted: forecast, shaded: its band   dashed: setpoint"
+	if len(e.Earlier) > 0 {
+		title = "rpm  dotted: forecast, shaded: its band  dashed: setpoint  thin: last time"
+	}
 	rows := min(len(e.Rows)+1, a.h/2)
 	p.curves(a.sub(0, 1, a.w, a.h-1-rows), plot{
-		title: "speed, rpm   dotted: forecast, shaded: its band   dashed: setpoint", unit: "s", scale: rpmPerRad, low: e.BandLow, high: e.BandHigh,
-	}, curve{strip.Setpoint, e.Setpoint}, curve{strip.Forecast, e.Forecast}, curve{strip.Data, e.Measured})
+		title: title, unit: "s", scale: rpmPerRad, low: e.BandLow, high: e.BandHigh,
+	}, curve{strip.Setpoint, e.Setpoint}, curve{strip.Second, e.Earlier}, curve{strip.Forecast, e.Forecast}, curve{strip.Data, e.Measured})
 	foot := a.sub(0, a.h-rows, a.w, rows)
 	w := p.widths(foot.w, e.Rows, []job.Fact{{Name: "target", Value: "measured", Limit: "limit", Verdict: "verdict"}})
 	foot.sub(1, 0, foot.w-1, 1).table(0, palette.Strong, w, "target", "measured", "limit", "verdict")

@@ -10,6 +10,8 @@ import (
 	"os/signal"
 	"path/filepath"
 	"runtime"
+	"strconv"
+	"strings"
 	"syscall"
 	"time"
 
@@ -33,6 +35,7 @@ const demoTiming = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\n
 // consoleFlags are what console and demo share.
 type consoleFlags struct {
 	port, rigFile, out, operator, jobFile, records string
+	ambient                                        string // °C, "" not known
 	baud                                           int
 }
 
@@ -67,6 +70,7 @@ func consoleCommand() *cobra.Command {
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it one in the data directory")
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order; every arm still needs its keys")
 	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records; without it the data directory")
+	c.Flags().StringVar(&f.ambient, "ambient", "", "temperature of the room in °C, as read off a thermometer, for the record")
 	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
 	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s; without it the usual ones are tried where nothing that can be read comes")
 	return c
@@ -291,6 +295,13 @@ func consoleOf(f consoleFlags, o bench.Options, told func(*bench.Live)) error {
 	}
 	o.Program = "gainwright " + versionWords()
 	o.Job.Version, o.Job.Operator = o.Program, f.operator
+	if f.ambient != "" {
+		t, err := strconv.ParseFloat(strings.ReplaceAll(f.ambient, ",", "."), 64)
+		if err != nil || !(t >= -40 && t <= 85) {
+			return usage(fmt.Errorf("--ambient %s: give the temperature of the room in °C, from -40 to 85", f.ambient))
+		}
+		o.Job.Ambient = &t
+	}
 	o.NewSheet = f.newSheet(&o)
 	if f.records != "" || !o.Simulated {
 		o.Job.Earlier = f.earlier(o.Simulated)

@@ -154,6 +154,13 @@ func TestPartSwapByKeys(t *testing.T) {
 		if v := p.live.View(); v.Verify == nil || !v.Verify.Passed {
 			t.Errorf("verify:\n%s", p.see())
 		}
+		if n := len(p.live.View().Verify.Earlier); n < 50 {
+			t.Errorf("last time's verify is not drawn over this one: %d points", n)
+		}
+		p.press("0")
+		if s := p.see(); !strings.Contains(s, "thin: last time") {
+			t.Errorf("the verify page:\n%s", s)
+		}
 		p.press("x")
 		see = strings.Join(p.live.View().Earlier.Lines, "\n")
 		for _, want := range []string{"counts per turn   1           2000      4096      +104.8%  equal        MISMATCH", "Ke ", "R at 25", "The gains left then, on this motor", "offer 1"} {

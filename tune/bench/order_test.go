@@ -125,3 +125,36 @@ func TestALookOnlyJobWritesNothing(t *testing.T) {
 		t.Errorf("gains may be written: %v", err)
 	}
 }
+
+// The temperature of the room stands with what was found and with every run.
+func TestAmbientIsKept(t *testing.T) {
+	cfg := benchtop(t)
+	r, text, err := RigOf(cfg)
+	if err != nil {
+		t.Fatal(err)
+	}
+	dir, room := filepath.Join(t.TempDir(), "sheet"), 19.5
+	v := NewVirtual(simrig.New(cfg, 1), time.Date(2026, 1, 2, 8, 0, 0, 0, time.UTC))
+	rec, err := sheet.Create(dir, sheet.Header{Rig: r.Name, BoardID: cfg.Board.ID, Program: "test", Start: "2026-01-02T08:00:00Z", Simulated: true}, sheet.WithClock(v.Now))
+	if err != nil {
+		t.Fatal(err)
+	}
+	j := job.New(v.Hands(rec), job.Options{Rig: r, RigText: text, Version: "test", Ambient: &room})
+	for _, id := range []job.StepID{job.StepPort, job.StepIdentity, job.StepCount, job.StepSign} {
+		if err := j.Do(id); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := rec.Close("ended", "test"); err != nil {
+		t.Fatal(err)
+	}
+	rd, _ := sheet.Open(dir)
+	var found sheet.Snapshot
+	var run sheet.RunRecord
+	if err := rd.LastJSON(sheet.KindAsFound, "", &found); err != nil || found.AmbientDegC == nil || *found.AmbientDegC != room {
+		t.Errorf("as found: %v, %v", err, found.AmbientDegC)
+	}
+	if err := rd.LastJSON(sheet.KindRun, "", &run); err != nil || run.AmbientDegC == nil || *run.AmbientDegC != room {
+		t.Errorf("run: %v, %v", err, run.AmbientDegC)
+	}
+}

@@ -23,7 +23,8 @@ type Options struct {
 	Version  string // of the program
 	Seed     uint32 // of the pseudo-random test
 	MsMax    float64
-	Order    *Order // a job file; nil: the whole path
+	Ambient  *float64 // °C, as read off a thermometer; nil: not known
+	Order    *Order   // a job file; nil: the whole path
 	// Earlier finds the newest earlier record of a rig and board, nil where there is
 	// none; nil: nobody looks.
 	Earlier func(rig, board string) *sheet.Reader

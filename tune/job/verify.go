@@ -77,6 +77,9 @@ func (j *Job) doVerify() (result, error) {
 	lo, hi := (1-share)*w, (1+share)*w
 	settle := settlingOr(j, 0.1)
 	hold := seconds(math.Max(0.6, math.Min(6*settle, math.Max(4, 2*settle)))).Round(10 * time.Millisecond)
+	if last := j.lastVerify(); last != nil { // the steps of last time, to be drawn over one another
+		lo, hi, hold = last.lo, last.hi, last.hold
+	}
 	levels, slope, hold, err := j.verifyLevels(lo, hi, hold)
 	if err != nil {
 		return "", err
@@ -207,6 +210,7 @@ func (j *Job) judgeVerify(r Result, plan safety.Plan, levels []float64, hold tim
 		}
 	}
 	j.Verified = rec
+	rec.Curve.EarlierRadS = j.lastVerify().on(rec.Curve.TimeS, rec.Curve.SetpointRadS, hold.Seconds())
 	if err := j.h.Keep("verify", "steps", rec); err != nil {
 		return "", err
 	}
@@ -288,6 +292,9 @@ func (j *Job) showVerify(rec *sheet.VerifyRecord) {
 			gap := Point{(c.TimeS[i] + c.TimeS[i-1]) / 2, math.NaN()}
 			v.Measured, v.Forecast, v.Setpoint = append(v.Measured, gap), append(v.Forecast, gap), append(v.Setpoint, gap)
 			v.BandLow, v.BandHigh = append(v.BandLow, gap), append(v.BandHigh, gap)
+		}
+		if len(c.EarlierRadS) == len(c.TimeS) {
+			v.Earlier = append(v.Earlier, Point{c.TimeS[i], c.EarlierRadS[i]})
 		}
 		v.Measured = append(v.Measured, Point{c.TimeS[i], c.MeasuredRadS[i]})
 		v.Forecast = append(v.Forecast, Point{c.TimeS[i], c.ForecastRadS[i]})

@@ -311,6 +311,7 @@ type VerifyView struct {
 	Measured []Point
 	Forecast []Point
 	Setpoint []Point
+	Earlier  []Point // last time's, where its steps were the same
 	BandLow  []Point
 	BandHigh []Point
 	Hunting  string
