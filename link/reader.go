@@ -24,6 +24,10 @@ type ReaderConfig struct {
 	// It runs in the reader's goroutine: it must not block, and must copy what
 	// it keeps.
 	OnBytes func(t time.Duration, chunk []byte)
+	// Pause, if set, says how long to wait before the next Read after one of n
+	// bytes. What the kernel gathers meanwhile costs one wake-up instead of many;
+	// it has to have room for that.
+	Pause func(n int) time.Duration
 	// OnPanic is called first if the reader's goroutine, OnBytes included,
 	// panics.
 	OnPanic func(v any, stack []byte)
@@ -64,6 +68,9 @@ func (r *Reader) loop(ctx context.Context) error {
 		n, err := r.port.Read(r.buf[:])
 		if n > 0 {
 			r.cfg.OnBytes(r.cfg.Clock(), r.buf[:n])
+			if r.cfg.Pause != nil {
+				r.wait(ctx, r.cfg.Pause(n))
+			}
 		}
 		if err != nil {
 			if ctx.Err() != nil {
@@ -76,4 +83,15 @@ func (r *Reader) loop(ctx context.Context) error {
 		}
 	}
 	return ctx.Err()
+}
+
+// wait lets d pass, or less if ctx ends.
+func (r *Reader) wait(ctx context.Context, d time.Duration) {
+	if d <= 0 {
+		return
+	}
+	select {
+	case <-ctx.Done():
+	case <-time.After(d):
+	}
 }

@@ -107,3 +107,35 @@ func TestReaderAllocatesNothingUnderAFlood(t *testing.T) {
 		t.Errorf("%v allocations for 1000 chunks, want none of them by the chunk", allocs)
 	}
 }
+
+// A reader that may pause does so after each read, and ends in the middle of one.
+func TestReaderPauses(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		near, far := link.Pipe()
+		defer near.Close()
+		defer far.Close()
+		start := time.Now()
+		var came []time.Duration
+		var bytes int
+		r := link.NewReader(near, link.ReaderConfig{OnBytes: func(_ time.Duration, c []byte) {
+			came, bytes = append(came, time.Since(start)), bytes+len(c)
+		}, Pause: func(int) time.Duration { return 20 * time.Millisecond }})
+		ctx, cancel := context.WithCancel(t.Context())
+		ended := make(chan error, 1)
+		go func() { ended <- r.Run(ctx) }()
+		for range 10 { // a byte every 5 ms
+			if _, err := far.Write([]byte("x")); err != nil {
+				t.Fatal(err)
+			}
+			time.Sleep(5 * time.Millisecond)
+		}
+		at := time.Since(start)
+		cancel()
+		if err := <-ended; !errors.Is(err, context.Canceled) || time.Since(start) != at {
+			t.Errorf("%v, %v after the end", err, time.Since(start)-at)
+		}
+		if len(came) != 3 || came[1]-came[0] != 20*time.Millisecond || came[2]-came[1] != 20*time.Millisecond || bytes < 8 {
+			t.Errorf("reads at %v, %d bytes", came, bytes)
+		}
+	})
+}

@@ -59,8 +59,8 @@ type Link struct {
 	LookOnly  string // why the board may only be looked at; "" if it may be driven
 	Lost      bool   // it was up and is gone
 	LostWhy   string
-	Age       time.Duration
-	Seen      bool // a sample has come since the connection
+	Age       time.Duration // of the newest sample, its time in buffers included
+	Seen      bool          // a sample has come since the connection
 	Stats     protocol.Stats
 	Rate      float64 // samples a second over the last second
 }
@@ -141,7 +141,18 @@ func (c *Core) Identity() protocol.Identity { return c.id }
 
 // Link returns how the line stands.
 func (c *Core) Link() Link {
-	return Link{Connected: c.connected, LookOnly: c.lookOnly, Lost: c.lost, LostWhy: c.lostWhy, Age: c.now - c.lastAt, Seen: c.seen, Stats: c.framer.Stats, Rate: c.rate}
+	return Link{Connected: c.connected, LookOnly: c.lookOnly, Lost: c.lost, LostWhy: c.lostWhy, Age: c.age(), Seen: c.seen, Stats: c.framer.Stats, Rate: c.rate}
+}
+
+// age is how old the newest sample is: since it came, and by the board's own
+// clock where it sat in a buffer before. A line that cannot carry what the board
+// sends shows in it, although samples come all the time.
+func (c *Core) age() time.Duration {
+	at := c.lastAt
+	if c.seen && c.st.Heard {
+		at = min(at, c.st.HeardAt)
+	}
+	return c.now - at
 }
 
 // SetEnvelope puts another envelope in force. The limiter disarms.

@@ -73,7 +73,7 @@ func (l *Live) connect(o Opened, path string) {
 		OnStall: func(err *link.StallError) {
 			l.post(func(s *session) { s.core.Do(safety.PortStalled{At: s.now}); l.lost(err.Error()) })
 		}})
-	reader := link.NewReader(o.Port, link.ReaderConfig{Clock: l.now, OnPanic: l.panicked, OnBytes: func(t time.Duration, b []byte) {
+	reader := link.NewReader(o.Port, link.ReaderConfig{Clock: l.now, OnPanic: l.panicked, Pause: l.pause, OnBytes: func(t time.Duration, b []byte) {
 		l.tape.Record(t, tape.FromBoard, b)
 		select {
 		case l.rx <- chunk{at: t, data: append(l.piece(), b...), line: line}:

@@ -26,6 +26,7 @@ type Live struct {
 
 	rx       chan chunk
 	spent    chan []byte // what chunks were in, for others
+	calm     atomic.Bool // disarmed, and no step in work
 	mail     chan func(*session)
 	urgent   chan func(*session) // what stops: it goes ahead of mail and of what the board says
 	steps    chan func(*job.Job)
@@ -214,6 +215,7 @@ func (l *Live) supervise() {
 		if want := l.tickEach(); want != pace {
 			pace = want
 			tick.Reset(pace)
+			l.calm.Store(pace == restTickEach)
 		}
 		select {
 		case <-l.over:
@@ -240,6 +242,20 @@ func (l *Live) supervise() {
 // restTickEach is how often the limiter looks at its clock while it is disarmed
 // and no step is in work: then it only waits for the link to age.
 const restTickEach = 40 * time.Millisecond
+
+// While it is so, a line that says little is read less often: up to calmRead
+// after the bytes came, and never by more of them than calmBytes in that time.
+const (
+	calmRead  = 20 * time.Millisecond
+	calmBytes = 512
+)
+
+func (l *Live) pause(n int) time.Duration {
+	if n > calmBytes || !l.calm.Load() {
+		return 0
+	}
+	return calmRead
+}
 
 func (l *Live) tickEach() time.Duration {
 	if l.s.core.Phase() == safety.Disarmed && len(l.waiters) == 0 {
