@@ -168,6 +168,10 @@ func TestHostileTextAppearsNowhereRaw(t *testing.T) {
 	}
 	step(s.Entry(KindEvent, NameChecklist, filled[ChecklistRecord]()))
 	step(s.Entry(KindEvent, NameWhyStopped, filled[WhyStoppedRecord]()))
+	step(s.Entry(KindJob, NameOutcome, filled[OrderRecord]()))
+	step(s.Entry(KindEvent, NameDrill, filled[DrillRecord]()))
+	step(s.Entry(KindEvent, NameRunUp, filled[RunUpRecord]()))
+	step(s.Entry(KindEvent, NameAcceptance, filled[AcceptanceRecord]()))
 	step(s.Entry(KindRig, NameNameplate, filled[NameplateRecord]()))
 	step(s.Entry(KindFit, NameMotor, filled[MotorRecord]()))
 	step(s.Entry(KindFit, NameStaircase, filled[StaircaseRecord]()))
