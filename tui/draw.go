@@ -61,16 +61,17 @@ func (p *painter) frame(a area) {
 	}
 	p.keys(a.sub(0, a.h-1, a.w, 1))
 	low := a.h - 1
-	if a.h >= 12 || (a.h >= 6 && p.s.notice != "") {
+	if a.h >= 12 || a.h >= 6 && p.calls() {
 		low--
 		p.next(a.sub(0, low, a.w, 1))
 	}
 	high := 2
-	if a.h >= 9 {
+	tight := p.low() && p.urgent()
+	if a.h >= 9 && !tight {
 		p.path(a.sub(0, high, a.w, 1))
 		high++
 	}
-	if a.h >= 7 {
+	if a.h >= 7 && !tight {
 		p.title(a.sub(0, high, a.w, 1))
 		high++
 	}
@@ -175,6 +176,14 @@ func (p *painter) title(a area) {
 	}
 }
 
+// wantsStop reports whether the run is there for the stop key to be pressed.
+func (p *painter) wantsStop() bool {
+	return p.v.Drive.Phase == running && p.v.Current == job.StepStop
+}
+
+// calls reports whether the row above the keys says what cannot wait.
+func (p *painter) calls() bool { return p.s.notice != "" || p.v.Call != "" || p.wantsStop() }
+
 // next says what comes next, or what the last key could not do.
 func (p *painter) next(a area) {
 	if p.s.notice != "" {
@@ -182,6 +191,10 @@ func (p *painter) next(a area) {
 		return
 	}
 	v := p.v
+	if p.wantsStop() {
+		a.put(1, 0, palette.Caution, " Press space now: this run waits for it, and times it. ")
+		return
+	}
 	if v.Call != "" {
 		a.put(1, 0, palette.Caution, " "+v.Call+" ")
 		return
@@ -231,7 +244,7 @@ func (p *painter) progress(a area, x, y, n int, share float64) {
 func (p *painter) keys(a area) {
 	if Hot(p.v) {
 		x := a.put(1, 0, palette.Moving, " space STOP ")
-		x = a.put(x+2, 0, palette.Key, "m")
+		x = a.put(x+2, 0, palette.Key, p.keyed("{m}"))
 		x = a.put(x+1, 0, palette.Plain, "mark")
 		a.put(x+2, 0, palette.Strong, "any other key stops too")
 		return
@@ -240,20 +253,29 @@ func (p *painter) keys(a area) {
 		a.put(1, 0, palette.Plain, "type, then enter   backspace takes back   esc leaves the field")
 		return
 	}
+	if p.v.Ask != nil && p.v.Ask.Kind == job.AskStopKey && free(p.s, p.v) {
+		x := a.put(1, 0, palette.Key, "space")
+		x = a.put(x+1, 0, palette.Plain, "the stop key, asked for now")
+		a = a.sub(x+1, 0, a.w, 1)
+	}
 	const always = 8 // room kept for the key to the list of keys
 	x := 1
 	seen := ""
-	for i := range bindings {
-		b := &bindings[i]
-		if b.short == "" || b.short == "keys" || strings.Contains(seen, " "+b.label+" ") || !b.when(p.s, p.v) {
+	for i := range 2 * len(bindings) { // what leads onward stands first
+		b := &bindings[i%len(bindings)]
+		if b.short == "" || b.short == "keys" || b.label != "enter" && i < len(bindings) || strings.Contains(seen, " "+b.label+" ") || !b.when(p.s, p.v) {
 			continue
 		}
-		if x+len(b.label)+len(b.short)+3+always > a.w {
+		short := b.short
+		if b.group == groupArmed && b.label == "y" && p.v.Drive.ClearWait > 0 {
+			short += ", in " + seconds(p.v.Drive.ClearWait)
+		}
+		if x+len(b.label)+len(short)+3+always > a.w {
 			continue
 		}
 		seen += " " + b.label + " "
-		x = a.put(x, 0, palette.Key, b.label)
-		x = a.put(x+1, 0, palette.Plain, b.short) + 2
+		x = a.put(x, 0, palette.Key, p.s.look.Hand.Key(b.label))
+		x = a.put(x+1, 0, palette.Plain, short) + 2
 	}
 	if standing(p.v) && p.s.local == localNone && x+6 <= a.w {
 		x = a.put(x, 0, palette.Key, "?")

@@ -106,7 +106,7 @@ var bindings = []binding{
 
 	{"y", "y", "area is clear", groupArmed, "Say that everyone is clear of the shaft. Taken no sooner than 2 s after the question.", func(_ Screen, v *job.View) bool { return inArm(v) && v.Drive.ClearAsk }, sayClear},
 	{"g", "g", "go", groupArmed, "Start the count-down; any key ends it. Armed for inching: after the first, move one bounded inch at once.", func(_ Screen, v *job.View) bool { return inArm(v) && v.Drive.Clear && !v.Drive.ClearAsk }, say(job.Go{})},
-	{"", "any other", "", groupArmed, "Armed for inching and an inch made: disarm. g is the next inch.", never, nil},
+	{"", "any other", "", groupArmed, "Armed for inching and an inch made: disarm. {g} is the next inch.", never, nil},
 	{"x n b", "x", "disarm", groupArmed, "Withdraw the arm.", func(_ Screen, v *job.View) bool { return inArm(v) }, say(job.Disarm{})},
 
 	{"e", "e", "acknowledge", groupTrip, "Seen. Changes nothing in the drive.", func(_ Screen, v *job.View) bool { return mayAcknowledge(v) }, say(job.Acknowledge{})},
@@ -161,7 +161,7 @@ var bindings = []binding{
 	{"s", "s", "shelve", groupStill, "On the alarms page: put the newest alarm that is no trip aside for a quarter of an hour, with a reason.", mayShelve, opened(localShelve)},
 	{"u", "u", "out of service", groupStill, "On the alarms page: take that alarm out of service until it returns, with a reason.", mayShelve, opened(localService)},
 	{"v", "v", "revert", groupStill, "Push the gains of as-found back.", func(s Screen, v *job.View) bool { return (on(PagePush)(s, v) || on(PageVerify)(s, v)) && !v.Doing }, say(job.Revert{})},
-	{"w", "w", "why", groupStill, "Where a number comes from; j and k step from number to number.", func(s Screen, v *job.View) bool { return free(s, v) && len(facts(s.page(v), v)) > 0 }, toggleWhy},
+	{"w", "w", "why", groupStill, "Where a number comes from; {j} and {k} step from number to number.", func(s Screen, v *job.View) bool { return free(s, v) && len(facts(s.page(v), v)) > 0 }, toggleWhy},
 	{"r", "r", "remark", groupStill, "Keep a remark in the record.", free, opened(localRemark)},
 	{"p", "p", "pages", groupStill, "List of all pages.", func(s Screen, v *job.View) bool { return standing(v) && s.local != localQuit }, menu},
 	{"1 2 3 4 5 6 7 8 9 0", "1..9 0", "", groupStill, "Page by its number: 1 path, 2 ports, 3 as-found, 4 checks, 5 plan, 6 run, 7 model, 8 design, 9 push, 0 verify.", free, numbered},
@@ -171,7 +171,7 @@ var bindings = []binding{
 	{"t", "t", "", groupStill, "The experiments that were done, each with its curves: j and k go from one to the next.", free, shown(PageExperiments)},
 	{"x", "x", "", groupStill, "The earlier record of this rig: how it was left, what differs now, its motor against this one.", free, shown(PageEarlier)},
 	{"i", "i", "", groupStill, "Interlocks: every input, as it stands now and as it was seen.", free, shown(PageInterlocks)},
-	{"? h", "?", "keys", groupStill, "This list, and back from it (h does the same).", free, toggled(PageHelp)},
+	{"? h", "?", "keys", groupStill, "This list, and back from it ({h} does the same).", free, toggled(PageHelp)},
 	{"d", "d", "", groupStill, "Words: what the terms mean.", free, shown(PageWords)},
 	{"q ctrl+c", "q", "quit", groupStill, "Leave; it asks first.", func(s Screen, v *job.View) bool {
 		return s.local != localQuit && (standing(v) || v.Drive.Phase == tripped)
@@ -374,7 +374,7 @@ func KeyTableMarkdown() string {
 	var b strings.Builder
 	b.WriteString("| when | key | what it does |\n|---|---|---|\n")
 	for _, k := range bindings {
-		fmt.Fprintf(&b, "| %s | `%s` | %s |\n", k.group, k.label, k.help)
+		fmt.Fprintf(&b, "| %s | `%s` | %s |\n", k.group, k.label, HandBoth.words(k.help))
 	}
 	return b.String()
 }
@@ -386,7 +386,7 @@ type KeyRow struct{ When, Keys, Does string }
 func KeyTable() []KeyRow {
 	rows := make([]KeyRow, len(bindings))
 	for i, k := range bindings {
-		rows[i] = KeyRow{k.group, k.label, k.help}
+		rows[i] = KeyRow{k.group, k.label, HandBoth.words(k.help)}
 	}
 	return rows
 }

@@ -170,7 +170,7 @@ func TestKeyTable(t *testing.T) {
 		if b.help == "" || b.label == "" || b.group == "" {
 			t.Errorf("row %d of the key table is not complete: %+v", i, b)
 		}
-		if !strings.Contains(text, "`"+b.label+"` | "+b.help) {
+		if !strings.Contains(text, "`"+b.label+"` | "+HandBoth.words(b.help)) {
 			t.Errorf("the table for the README leaves %q out", b.label)
 		}
 		if (b.act == nil) != (b.keys == "") {

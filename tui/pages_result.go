@@ -172,7 +172,7 @@ func (p *painter) designHead(a area, d *job.DesignView) int {
 	x := a.put(1, 0, palette.Plain, "bound on Ms")
 	x = a.put(x+1, 0, palette.Strong, number(d.MsMax, 2))
 	if d.CanBeMoved {
-		x = a.put(x+3, 0, palette.Plain, "j more margin   k more speed")
+		x = a.put(x+3, 0, palette.Plain, p.keyed("{j} more margin   {k} more speed"))
 	}
 	if len(d.Notes) > 0 {
 		a.put(x+3, 0, palette.Plain, strings.Join(d.Notes, "; "))
@@ -183,10 +183,10 @@ func (p *painter) designHead(a area, d *job.DesignView) int {
 // handHead is the head of the page while a person is at the gains.
 func (p *painter) handHead(a area, d *job.DesignView) int {
 	x := a.put(1, 0, palette.Strong, " BY HAND ")
-	x = a.put(x+1, 0, palette.Plain, "n next gain   + larger   - smaller   ")
-	back := "u leave"
+	x = a.put(x+1, 0, palette.Plain, p.keyed("{n} next gain   + larger   - smaller   "))
+	back := p.keyed("{u} leave")
 	if d.Keys > 0 {
-		back = fmt.Sprintf("u take back (%d)", d.Keys)
+		back = fmt.Sprintf(p.keyed("{u} take back (%d)"), d.Keys)
 	}
 	a.put(x, 0, palette.Plain, back)
 	if len(d.Notes) == 0 {

@@ -82,19 +82,19 @@ func (p *painter) count(a area) {
 // flow shows the five acts from a plan to a run and says what is asked now.
 func (p *painter) flow(a area) {
 	d := p.v.Drive
-	at, say := 0, "a arms this plan; the arm lapses by itself. b puts the plan aside."
+	at, say := 0, p.keyed("{a} arms this plan; the arm lapses by itself. {b} puts the plan aside.")
 	switch {
 	case d.Phase == arming:
 		at, say = 0, "The board is asked for the arm; it reads the limits back first."
 	case d.Phase == armed && d.ClearAsk:
-		at, say = 1, "Is everyone clear of the shaft, tools away, guard closed?   y area is clear   x disarm"
+		at, say = 1, p.keyed("Is everyone clear of the shaft, tools away, guard closed?   {y} area is clear   {x} disarm")
 		if d.ClearWait > 0 {
 			say = "Look at the shaft: is everyone clear, tools away, guard closed? An answer counts in " + seconds(d.ClearWait) + "."
 		}
 	case d.Phase == armed && d.Inch && d.Inches > 0:
-		at, say = 4, "g moves the next inch; any other key disarms. The arm lapses in "+whole(d.ArmLeft)+"."
+		at, say = 4, p.keyed("{g} moves the next inch; any other key disarms. The arm lapses in ")+whole(d.ArmLeft)+"."
 	case d.Phase == armed:
-		at, say = 2, "g starts the count-down of 3 s.   x disarms.   The arm lapses in "+whole(d.ArmLeft)+"."
+		at, say = 2, p.keyed("{g} starts the count-down of 3 s.   {x} disarms.   The arm lapses in ")+whole(d.ArmLeft)+"."
 	case d.Phase == countDown:
 		at, say = 3, "The motor starts in "+whole(d.CountLeft)+". Any key ends the count-down."
 	case d.Phase == running || d.Phase == stopping:

@@ -180,7 +180,7 @@ func (p *painter) pageMenu(a area) {
 		if int(pg)-1 == min(p.s.row, int(pageCount)-2) {
 			role = palette.Chosen
 		}
-		a.put(2, int(pg)-1, role, fmt.Sprintf(" %s  %-10s %s ", keys[pg], pg, titles[pg]))
+		a.put(2, int(pg)-1, role, fmt.Sprintf(" %s  %-10s %s ", p.s.look.Hand.Key(keys[pg]), pg, titles[pg]))
 	}
 }
 

@@ -20,7 +20,7 @@ func (p *painter) scroll(a area, x int, rows []line) {
 	}
 	if rest := len(rows) - first - a.h; rest > 0 && a.h > 1 {
 		a.fill(0, a.h-1, palette.Plain)
-		a.put(1, a.h-1, palette.Key, "j: "+number(float64(rest+1), 0)+" more rows below")
+		a.put(1, a.h-1, palette.Key, p.keyed("{j}: ")+number(float64(rest+1), 0)+" more rows below")
 	}
 }
 
@@ -54,10 +54,10 @@ func (p *painter) help(a area) {
 			group = b.group
 			rows = append(rows, line{palette.Strong, group})
 		}
-		for k, s := range lines(b.help, a.w-14) {
+		for k, s := range lines(p.keyed(b.help), a.w-14) {
 			label := ""
 			if k == 0 {
-				label = b.label
+				label = p.s.look.Hand.Key(b.label)
 			}
 			rows = append(rows, line{palette.Plain, "  " + label + strings.Repeat(" ", max(1, 11-len(label))) + s})
 		}

@@ -27,15 +27,17 @@ func (p *painter) panels(a area) area {
 		a = p.panel(a, "LOOK-ONLY", palette.Notice, []line{{palette.Plain, v.Link.Why + " Nothing is driven and no gains are pushed."}})
 	}
 	if r := v.Refusal; r != nil {
-		a = p.panel(a, fmt.Sprintf("REFUSED, number %d", r.Number), palette.Caution, []line{
-			{palette.Strong, r.What}, {palette.Plain, "Cause: " + r.Cause}, {palette.Plain, "Remedy: " + r.Remedy},
-		})
+		rows := []line{{palette.Strong, r.What}, {palette.Plain, "Cause: " + r.Cause}, {palette.Plain, "Remedy: " + r.Remedy}}
+		if p.low() {
+			rows = rows[1:] // the path above says of which step
+		}
+		a = p.panel(a, fmt.Sprintf("REFUSED, number %d", r.Number), palette.Caution, rows)
 	}
 	switch {
 	case !standing(v) && p.s.local != localQuit:
 	case p.s.local == localQuit:
 		a = p.panel(a, "LEAVE?", palette.Bar, []line{
-			{palette.Plain, "The motor is stopped first, and the record is closed. Leave the console?"}, {palette.Key, "y leave    n stay"},
+			{palette.Plain, "The motor is stopped first, and the record is closed. Leave the console?"}, {palette.Key, p.keyed("{y} leave    {n} stay")},
 		})
 	case p.s.local == localRemark:
 		a = p.panel(a, "REMARK", palette.Bar, []line{{palette.Key, p.cursor("> " + p.s.typed)}})
@@ -88,12 +90,24 @@ func (p *painter) panel(a area, heading string, role palette.Role, text []line) 
 	return a.sub(0, 0, a.w, a.h-h)
 }
 
+// low reports whether the screen has too few rows for more than what cannot wait.
+func (p *painter) low() bool { return p.h < 16 }
+
+// urgent reports whether a panel needs the rows of path and title on such a screen.
+func (p *painter) urgent() bool {
+	v := p.v
+	return v.Refusal != nil || v.Ask != nil || v.Drive.Phase == tripped || v.Link.State == job.LinkLost
+}
+
 func (p *painter) cursor(s string) string {
 	if p.ascii {
 		return s + "_"
 	}
 	return s + "█"
 }
+
+// keyed puts the keys of the layout into a text that names them in braces.
+func (p *painter) keyed(text string) string { return p.s.look.Hand.words(text) }
 
 func (p *painter) lost() []line {
 	rows := []line{{palette.Strong, "No sample for " + seconds(max(0, p.v.Link.Age)) + ". The board stops by its own timeout; whether the shaft turns is not known here."}}
@@ -109,6 +123,9 @@ func (p *painter) trip() []line {
 	if q := p.v.Ask; q != nil { // the job says that it expected this trip
 		rows = append(rows, line{palette.Plain, q.Text})
 		for _, t := range q.Detail {
+			if p.low() {
+				break
+			}
 			rows = append(rows, line{palette.Plain, t})
 		}
 	}
@@ -119,24 +136,27 @@ func (p *painter) trip() []line {
 		rows = append(rows, line{palette.Plain, "Do: " + d.Remedy})
 	}
 	if d.Acked {
-		return append(rows, line{palette.Key, "z reset. Nothing starts by it; the next run needs a new arm."})
+		return append(rows, line{palette.Key, p.keyed("{z} reset. Nothing starts by it; the next run needs a new arm.")})
 	}
-	return append(rows, line{palette.Key, "e acknowledge: seen. It changes nothing in the drive."})
+	return append(rows, line{palette.Key, p.keyed("{e} acknowledge: seen. It changes nothing in the drive.")})
 }
 
 // question words the question and the way to answer it.
 func (p *painter) question(q *job.Question) []line {
 	rows := []line{{palette.Strong, q.Text}}
 	for _, d := range q.Detail {
+		if p.low() {
+			break // the question itself and its answer need the room
+		}
 		rows = append(rows, line{palette.Plain, d})
 	}
 	text := p.cursor("> " + p.s.field(p.v))
 	if asksText(q) && p.s.left == q.ID && q.ID != 0 {
-		return append(rows, line{palette.Key, "enter goes back to the field    b puts the question aside"})
+		return append(rows, line{palette.Key, p.keyed("enter goes back to the field    {b} puts the question aside")})
 	}
 	switch q.Kind {
 	case job.AskYesNo:
-		rows = append(rows, line{palette.Key, "y yes    n no"})
+		rows = append(rows, line{palette.Key, p.keyed("{y} yes    {n} no")})
 	case job.AskEnter:
 		rows = append(rows, line{palette.Key, "enter: seen, go on"})
 	case job.AskWord:
@@ -165,7 +185,7 @@ func (p *painter) question(q *job.Question) []line {
 	case job.AskPower:
 		how := "off, wait, on, then enter"
 		if p.v.Simulated {
-			how = "o switches the simulated board off and on, then enter"
+			how = p.keyed("{o} switches the simulated board off and on, then enter")
 		}
 		rows = append(rows, line{palette.Key, how})
 	}
@@ -175,9 +195,9 @@ func (p *painter) question(q *job.Question) []line {
 // inputHow says how an input is worked that a question asks for.
 func (p *painter) inputHow() string {
 	if p.v.Simulated {
-		return "o works the simulated input; b puts the question aside"
+		return p.keyed("{o} works the simulated input; {b} puts the question aside")
 	}
-	return "it goes on by itself once the board reports it; b puts it aside"
+	return p.keyed("it goes on by itself once the board reports it; {b} puts it aside")
 }
 
 func (p *painter) byDefault(q *job.Question) string {
@@ -205,5 +225,5 @@ func (p *painter) reason() []line {
 	if f.Verdict != "" {
 		head += "   " + f.Verdict
 	}
-	return []line{{palette.Strong, head}, {palette.Plain, why}, {palette.Key, "j next number    k number before    w close"}}
+	return []line{{palette.Strong, head}, {palette.Plain, why}, {palette.Key, p.keyed("{j} next number    {k} number before    {w} close")}}
 }

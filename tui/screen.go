@@ -54,16 +54,21 @@ type Look struct {
 	NoColour bool         // attributes, but no colours
 	Dumb     bool         // no sequences at all; implies ASCII
 	ASCII    bool         // no characters beyond ASCII
+	Hand     Hand         // which hand is free for the keys
 	Glyphs   strip.Glyphs // of the charts; ASCII where ASCII is set
 }
 
+// HandVariable names the setting for the free hand in the surroundings.
+const HandVariable = "GAINWRIGHT_HAND"
+
 // LookFrom reads what the terminal can show from its surroundings: NO_COLOR
 // (set and not empty: no colour), TERM=dumb (no sequences), TERM=linux (no
-// braille), and the locale (ASCII unless it says UTF-8; a system without any
+// braille), GAINWRIGHT_HAND (left or right: the keys under that hand), and the locale (ASCII unless it says UTF-8; a system without any
 // locale variables at all, as Windows is, counts as UTF-8).
 func LookFrom(getenv func(string) string) Look {
 	var l Look
 	l.NoColour = getenv("NO_COLOR") != ""
+	l.Hand, _ = HandNamed(getenv(HandVariable))
 	switch getenv("TERM") {
 	case "dumb":
 		l.Dumb = true

@@ -31,11 +31,14 @@ func (s Screen) Update(key string, v *job.View) (Screen, []job.Intent) {
 		}
 		return s, nil
 	}
+	if !s.typing(v) {
+		key = s.look.Hand.meant(key)
+	}
 	if inchRest(v) {
 		return inchKey(s, v, key)
 	}
 	if Hot(v) {
-		if key == "m" || key == "M" {
+		if key == "m" {
 			return s, []job.Intent{job.SetMark{}}
 		}
 		return s, nil

@@ -34,9 +34,9 @@ const demoTiming = "\n[timing]\ntelemetry_age_ms = 500\nscreen_lease_ms = 3000\n
 
 // consoleFlags are what console and demo share.
 type consoleFlags struct {
-	port, rigFile, out, operator, jobFile, records string
-	ambient                                        string // °C, "" not known
-	baud                                           int
+	port, rigFile, out, operator, jobFile, records, hand string
+	ambient                                              string // °C, "" not known
+	baud                                                 int
 }
 
 // consoleCommand opens the console. No script arms a real board: it insists on a
@@ -72,6 +72,7 @@ func consoleCommand() *cobra.Command {
 	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records; without it the data directory")
 	c.Flags().StringVar(&f.ambient, "ambient", "", "temperature of the room in °C, as read off a thermometer, for the record")
 	c.Flags().StringVar(&f.operator, "operator", "", "who does the job, for the record")
+	f.handFlag(c)
 	c.Flags().IntVar(&f.baud, "baud", 115200, "line rate in bit/s; without it the usual ones are tried where nothing that can be read comes")
 	return c
 }
@@ -92,6 +93,7 @@ func demoCommand() *cobra.Command {
 	c.Flags().StringVar(&rigFile, "rig", "", "rig file that goes with it; without it the nameplate of the simulated board")
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
 	c.Flags().StringVar(&f.jobFile, "job", "", "job file: which steps in which order")
+	f.handFlag(c)
 	c.Flags().StringVar(&f.records, "records", "", "folder of earlier records of simulated rigs; without it none are looked for")
 	return c
 }
@@ -288,6 +290,10 @@ func consoleOf(f consoleFlags, o bench.Options, told func(*bench.Live)) error {
 	if !term.IsTerminal(in) {
 		return usage(errors.New("standard input is not a terminal: the console is worked by a person with keys; no script arms a board. For a simulated rig without a person use dryrun"))
 	}
+	hand, err := f.freeHand()
+	if err != nil {
+		return err
+	}
 	if f.out != "" {
 		if found, err := os.ReadDir(f.out); err == nil && len(found) > 0 {
 			return usage(fmt.Errorf("%s is not empty: a record never shares or overwrites a folder; name a new one with --out", f.out))
@@ -329,14 +335,14 @@ func consoleOf(f consoleFlags, o bench.Options, told func(*bench.Live)) error {
 	}
 	ctx, leave := context.WithCancel(context.Background())
 	defer leave()
-	keys := tap.New(os.Stdin, hooks(live, leave, o.OnPanic))
+	keys := tap.New(os.Stdin, hooks(live, leave, hand.MarkKey(), o.OnPanic))
 	go keys.Run()
 	stopSignals := onSignals(live, leave)
 	defer stopSignals()
 	if f.port != "" {
 		live.Connect(f.port)
 	}
-	uiErr := tui.Run(ctx, tui.Options{Session: session{live, leave}, Input: keys, Output: os.Stdout, Getenv: os.Getenv})
+	uiErr := tui.Run(ctx, tui.Options{Session: session{live, leave}, Input: keys, Output: os.Stdout, Getenv: f.surroundings})
 	dir, recErr := live.Close()
 	terminal.Restore(restoreWait)
 	if dir != "" {
@@ -352,7 +358,7 @@ func consoleOf(f consoleFlags, o bench.Options, told func(*bench.Live)) error {
 }
 
 // hooks are what the keys do ahead of the screens.
-func hooks(live *bench.Live, leave context.CancelFunc, onPanic func(any, []byte)) tap.Hooks {
+func hooks(live *bench.Live, leave context.CancelFunc, mark byte, onPanic func(any, []byte)) tap.Hooks {
 	return tap.Hooks{
 		OnStop: func(key byte) {
 			if key == tap.Space {
@@ -362,7 +368,7 @@ func hooks(live *bench.Live, leave context.CancelFunc, onPanic func(any, []byte)
 			live.Stop(safety.BySignal)
 			leave()
 		},
-		OnKey:    func(key byte) { live.Key(key == 'm') },
+		OnKey:    func(key byte) { live.Key(key == mark) },
 		OnPaste:  func(int) { live.Paste() },
 		OnClosed: func(error) { live.Stop(safety.BySignal); leave() },
 		OnPanic: func(v any, stack []byte) {

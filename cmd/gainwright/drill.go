@@ -44,6 +44,7 @@ func drillCommand() *cobra.Command {
 	}
 	c.Flags().StringVar(&id, "scene", "", "F1 to F13; without it one is drawn")
 	c.Flags().Uint64Var(&seed, "seed", 0, "start of the random numbers; without it the clock")
+	f.handFlag(c)
 	c.Flags().StringVar(&f.out, "out", "", "folder for the record; without it a temporary one")
 	return c
 }

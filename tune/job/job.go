@@ -98,9 +98,10 @@ type Job struct {
 	steps map[StepID]*StepView
 	way   []StepID // the order of work: that of Path, or of a job file
 
-	ticked      bool          // the checklist, this session
-	orderTaken  bool          // the job file was held against the rig file
-	earlier     *sheet.Reader // of this rig, nil: none
+	ticked      bool            // the checklist, this session
+	forgotten   map[StepID]bool // checks that have to be seen again
+	orderTaken  bool            // the job file was held against the rig file
+	earlier     *sheet.Reader   // of this rig, nil: none
 	differences []sheet.Difference
 	part        *sheet.PartRecord // that was swapped
 	overridden  bool              // the motor check, with a reason
@@ -116,7 +117,7 @@ func New(h Hands, opt Options) *Job {
 	if opt.Seed == 0 {
 		opt.Seed = 0x5A
 	}
-	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}, carriedOut: map[StepID]string{}}
+	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}, carriedOut: map[StepID]string{}, forgotten: map[StepID]bool{}}
 	j.Rig, j.RigText = opt.Rig, opt.RigText
 	for i := range Path {
 		p := &Path[i]
@@ -172,6 +173,7 @@ func (j *Job) Do(id StepID) error {
 		return j.refused(id, err)
 	}
 	s.Status, s.Result = Done, string(words)
+	delete(j.forgotten, id)
 	j.h.Say("%s: %s", s.Title, words)
 	j.keepOrder(id)
 	j.publish()
@@ -217,6 +219,9 @@ func (j *Job) refused(id StepID, err error) error {
 	_ = j.h.Keep("event", string(id), sheet.EventRecord{What: s.Title + " not done", Detail: err.Error()})
 	j.keepOrder(id)
 	j.publish()
+	if next := j.Next(); j.forgotten[next] && next != id && id != StepPort && id != StepIdentity {
+		j.h.Show(func(v *View) { v.Current = next })
+	}
 	return err
 }
 
@@ -243,6 +248,7 @@ func (j *Job) forgetChecks(why string) {
 	for _, id := range []StepID{StepCount, StepSign, StepStop, StepSilence, StepInterlocks, StepLimits} {
 		if s := j.steps[id]; s.Status == Done {
 			s.Status, s.Reason = ToDo, why
+			j.forgotten[id] = true
 		}
 	}
 	j.publish()
@@ -262,6 +268,29 @@ func (j *Job) Next() StepID {
 	if j.steps[StepCard].Status == Done {
 		return StepCard // the job is over; a person may still go anywhere
 	}
+	next := j.onward()
+	if !drives(next) {
+		return next
+	}
+	for _, id := range j.way { // nothing arms before the checks were seen again
+		if st := j.steps[id].Status; j.forgotten[id] && (st == ToDo || st == Refused) && j.missing(id) == "" {
+			return id
+		}
+	}
+	return next
+}
+
+// drives reports whether a step asks for an arm.
+func drives(id StepID) bool {
+	switch id {
+	case StepPort, StepIdentity, StepSwap, StepFit, StepDesign, StepPush, StepStore, StepAsLeft, StepCard:
+		return false
+	}
+	return true
+}
+
+// onward is the first step behind the last one done, forgotten checks apart.
+func (j *Job) onward() StepID {
 	last := -1
 	for i, id := range j.way {
 		if s := j.steps[id]; s.Status == Done || s.Status == Refused && j.goesOn(id) {
