@@ -111,6 +111,11 @@ func compareTwo(oldDir, newDir string) (compareReport, error) {
 	}
 	rep.Retune = append(rep.Retune, job.RetuneReasons(rep.Rows, rep.oldMargin, rep.OldGains)...)
 	rep.Offers = append(rep.Offers, job.Offers(rep.Rows, rep.Retune)...)
+	if was, err := job.LastDesign(readers[0]); err == nil && was.Gains != nil {
+		if now, err := job.LastDesign(readers[1]); err == nil && now.Gains != nil {
+			rep.Notes = append(rep.Notes, job.PeriodSets(*was.Gains, now.Gains.SampleTime)...)
+		}
+	}
 	rep.Differences = append(rep.Differences, leftToFound(readers[0], readers[1])...)
 	return rep, nil
 }

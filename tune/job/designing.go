@@ -185,7 +185,7 @@ func (j *Job) showDesign() {
 	if j.Gains != nil && j.Margins != nil {
 		g := j.Gains.Parallel()
 		d.Gains = []Fact{{Name: "Kp", Value: number(g.Kp) + " V/(rad/s)", Why: "largest integral gain with Ms under the bound, on the sampled loop with its exact dead time; rounded to binary32 as the board holds it"},
-			{Name: "Ki", Value: number(g.Ki) + " V/rad", Why: "as Kp"}, {Name: "setpoint weight", Value: number(g.SetpointWeight), Why: "lowered from 1 until the forecast overshoot keeps 0.8 of the target"}}
+			{Name: "Ki", Value: number(g.Ki) + " V/rad", Why: "as Kp" + j.smallestError(*j.Gains)}, {Name: "setpoint weight", Value: number(g.SetpointWeight), Why: "lowered from 1 until the forecast overshoot keeps 0.8 of the target"}}
 		if !j.NoChange {
 			d.Gains = append(d.Gains, feedFact(*j.Gains, j.Proposals[j.Chosen].Notes))
 		}

@@ -202,6 +202,11 @@ func (j *Job) showEarlier() {
 			add("offer %d: %s", i+1, o)
 		}
 	}
+	if j.earlier != nil {
+		if last, err := LastDesign(j.earlier); err == nil && last.Gains != nil {
+			v.Lines = append(v.Lines, PeriodSets(*last.Gains, j.ID.Loop.Seconds())...)
+		}
+	}
 	j.h.Show(func(view *View) { view.Earlier = v })
 }
 
