@@ -29,7 +29,8 @@ var looks = []struct {
 // page.
 var large = map[string]bool{
 	"ports": true, "as-found": true, "path": true, "checks": true, "plan": true, "count-down": true, "running": true, "model": true,
-	"design": true, "push-word": true, "verify": true, "card": true, "tripped": true, "help": true, "words": true, "link-lost": true, "interlocks": true, "experiments": true,
+	"design": true, "push-word": true, "verify": true, "card": true, "tripped": true, "help": true, "words": true, "link-lost": true, "interlocks": true,
+	"loop": true, "earlier": true, "alarms": true, "refused": true, "experiments": true,
 }
 
 // TestGolden holds every screen against the kept one. The pictures were looked
@@ -76,11 +77,13 @@ func TestGolden(t *testing.T) {
 	}
 }
 
-// TestEveryPageIsKept fails when a page has no golden screen.
+// TestEveryPageIsKept fails when a page has no golden screen at every size.
 func TestEveryPageIsKept(t *testing.T) {
 	seen := map[Page]bool{}
 	for _, st := range stages() {
-		seen[screenAt(st, Look{}).page(st.view)] = true
+		if large[st.name] {
+			seen[screenAt(st, Look{}).page(st.view)] = true
+		}
 	}
 	for p := PagePath; p < pageCount; p++ {
 		if !seen[p] {

@@ -152,3 +152,27 @@ func TestANewcomerComesBackFromARestart(t *testing.T) {
 		})
 	})
 }
+
+// A question put aside is no check that failed; an answer while the shaft still
+// turns waits until it stands; and the page of checks shows the newest of each.
+func TestAQuestionPutAsideFailsNoCheck(t *testing.T) {
+	synctest.Test(t, func(t *testing.T) {
+		p := newPerson(t, demoRig(t))
+		defer p.leave()
+		p.upTo(job.StepCount)
+		for range 2 {
+			p.step(job.StepCount)
+			p.until("the question about the shaft", asked(job.AskHandTurn))
+			p.press("t")
+			p.wait(300 * time.Millisecond)
+			p.press("enter") // half a turn too soon
+			p.until("the question about the stop key", asked(job.AskStopKey))
+			p.press("b")
+			p.until("the end of the step", func(v *job.View) bool { return !v.Doing })
+		}
+		v := p.live.View()
+		if len(v.Checks) != 1 || v.Checks[0].Name != "count" || v.Checks[0].State != "seen working" || v.Refusal != nil {
+			t.Errorf("checks %+v, refusal %+v", v.Checks, v.Refusal)
+		}
+	})
+}
