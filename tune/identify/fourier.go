@@ -30,6 +30,7 @@ func Fourier(tr *trace.Trace, from, to float64, omega []float64) (u, y []complex
 	h := (tr.Time[n-1] - tr.Time[0]) / float64(n-1)
 	for k, w := range omega {
 		jw := complex(0, w)
+		was, last := math.NaN(), complex128(0) // the end of one step is the beginning of the next
 		for i := 1; i < n; i++ {
 			a, b := math.Max(tr.Time[i-1], from), math.Min(tr.Time[i], to)
 			if b <= a {
@@ -39,7 +40,11 @@ func Fourier(tr *trace.Trace, from, to float64, omega []float64) (u, y []complex
 			if tr.Hold == trace.From {
 				v = tr.Voltage[i-1]
 			}
-			ea, eb := cmplx.Exp(-jw*complex(a, 0)), cmplx.Exp(-jw*complex(b, 0))
+			ea, eb := last, cmplx.Exp(-jw*complex(b, 0))
+			if a != was {
+				ea = cmplx.Exp(-jw * complex(a, 0))
+			}
+			was, last = b, eb
 			slope := (tr.Speed[i] - tr.Speed[i-1]) / span
 			ya, yb := tr.Speed[i-1]+slope*(a-tr.Time[i-1]), tr.Speed[i-1]+slope*(b-tr.Time[i-1])
 			if w == 0 {

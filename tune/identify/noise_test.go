@@ -90,7 +90,7 @@ func (c crbCase) counted(rng *rand.Rand, quantum float64) *trace.Trace {
 // Speeds from differenced counts at a random phase: the intervals hold the truth
 // in at least 92 % of runs, and are not wider than three times what they need be.
 // Two of the 18 figures miss that at 2 000 runs, by little, and are held where they
-// are: the time constant of C1_motor (91.9 %) and the width for the gain of C2_lag
+// are: the time constant of C1_motor (1839 of 2000, one run short) and the width for the gain of C2_lag
 // (3.25), whose final speed is a whole number of counts a sample.
 func TestCountsAreFittedNotTheirDifferences(t *testing.T) {
 	runs := longRuns(40)
@@ -126,7 +126,7 @@ func TestCountsAreFittedNotTheirDifferences(t *testing.T) {
 			}
 			for key, s := range got {
 				half := s.half / float64(s.n)
-				t.Logf("%-9s %.1f %% hold the truth, half-width %.2f × 1.96 RMSE; RMSE %.3g, from speeds %.3g", key, 100*s.coverage(), half/(1.96*s.rmse()), s.rmse(), plain[key].rmse())
+				t.Logf("%-9s %.2f %% hold the truth, half-width %.2f × 1.96 RMSE; RMSE %.3g, from speeds %.3g", key, 100*s.coverage(), half/(1.96*s.rmse()), s.rmse(), plain[key].rmse())
 				chance, spread := 0.0, 0.0
 				if runs < 2000 {
 					chance = 3 * math.Sqrt(0.08*0.92/float64(runs))

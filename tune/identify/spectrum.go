@@ -8,80 +8,121 @@ import (
 	"gainwright/tune/trace"
 )
 
-// Welch estimates the frequency response at omega in rad/s from any record between
-// two instants: pieces of the given length under a Hann window, half overlapping,
-// their means taken out; G = ΣY·Ū/Σ|U|², and the coherence says how much of the
-// speed the drive explains.
+// Lines to each side of a frequency that the local fit takes in, and the shapes of
+// response and of what swings in: constant, slope and bend of each (our choice of
+// numbers, the method's of order).
+const (
+	localLeast = 4
+	localMost  = 10
+	localShare = 3 // of the number of the line
+	localOrder = 3
+)
+
+// Local estimates the frequency response at omega in rad/s from any one record
+// between two instants by local polynomials: about each frequency both the response
+// and what the state at either end of the record adds are smooth, and fitted together
+// to the lines of the record's own Fourier integrals,
 //
-// Reference: P. D. Welch, IEEE Trans. Audio Electroacoust. 15 (1967) 70; the error
-// of |G| is that of Periods, with nine elevenths of the half-overlapping pieces
-// counting as independent (*from memory*).
-func Welch(tr *trace.Trace, from, to, length float64, omega []float64) []FreqPoint {
-	n := len(omega)
-	uu, yy, yu := make([]float64, n), make([]float64, n), make([]complex128, n)
-	pieces := 0.0
-	for a := from; a+length <= to+1e-9; a += length / 2 {
-		u, y, ok := hann(tr, a, length, omega)
-		if !ok {
-			continue
-		}
-		pieces++
-		for k := range omega {
-			uu[k] += real(u[k])*real(u[k]) + imag(u[k])*imag(u[k])
-			yy[k] += real(y[k])*real(y[k]) + imag(y[k])*imag(y[k])
-			yu[k] += y[k] * cmplx.Conj(u[k])
-		}
+//	Y(k) = (G + g1·r + g2·r²)·U(k) + t0 + t1·r + t2·r²,  r the distance from ω.
+//
+// Nothing leaks, as it does from windowed pieces of a short record. The coherence is
+// the share of |Y|² that the fit explains, less what chance would; the standard
+// deviation is pooled over neighbours.
+//
+// Reference: R. Pintelon and J. Schoukens, System Identification: A Frequency Domain
+// Approach, 2nd ed. (Wiley 2012), chapter 7, local polynomial method (*from memory*).
+func Local(tr *trace.Trace, from, to float64, omega []float64) []FreqPoint {
+	out := make([]FreqPoint, len(omega))
+	step := 2 * math.Pi / (to - from)
+	top := 0.0
+	for _, w := range omega {
+		top = math.Max(top, w)
 	}
-	out := make([]FreqPoint, n)
-	free := math.Max(1, pieces*9/11)
-	for k, w := range omega {
-		out[k] = FreqPoint{Omega: w, Coherence: math.NaN()}
-		if !(uu[k] > 0) || !(yy[k] > 0) {
-			continue
+	lines := make([]float64, int(top/step)+2*localMost+1)
+	for k := range lines {
+		lines[k] = float64(k+1) * step
+	}
+	u, y := Fourier(tr, from, to, lines)
+	for k, w := range lines { // time from the beginning of the record on: else what swings in is not smooth
+		turn := cmplx.Exp(complex(0, w*from))
+		u[k], y[k] = u[k]*turn, y[k]*turn
+	}
+	variance := make([]float64, len(omega))
+	for i, w := range omega {
+		out[i], variance[i] = localPoint(u, y, w/step-1)
+		out[i].Omega = w
+	}
+	for i := range out {
+		sum, n := 0.0, 0.0
+		for k := max(0, i-1); k <= min(len(out)-1, i+1); k++ {
+			if v := variance[k]; v == v {
+				sum, n = sum+v, n+1
+			}
 		}
-		out[k].G = yu[k] / complex(uu[k], 0)
-		if pieces > 1 {
-			c := (real(yu[k])*real(yu[k]) + imag(yu[k])*imag(yu[k])) / (yy[k] * uu[k])
-			out[k].Coherence = math.Min(1, c)
-			out[k].SD = cmplx.Abs(out[k].G) * math.Sqrt(math.Max(0, 1-c)/(2*free*math.Max(c, 1e-9)))
-		}
+		out[i].SD *= math.Sqrt(sum / math.Max(1, n))
 	}
 	return out
 }
 
-// hann transforms one piece.
-func hann(tr *trace.Trace, from, length float64, omega []float64) (u, y []complex128, ok bool) {
-	type one struct{ t, h, v, s, w float64 }
-	var list []one
-	var mv, ms, sum float64
-	for i := 1; i < tr.Len(); i++ {
-		h := tr.Time[i] - tr.Time[i-1]
-		mid := tr.Time[i] - h/2 // of the time that the voltage was applied
-		if mid < from || mid > from+length {
-			continue
+// localPoint is the response at place x in the list of lines. The SD that it returns
+// is for a variance of one of each part of Y; the variance comes beside it.
+func localPoint(u, y []complex128, x float64) (FreqPoint, float64) {
+	none := FreqPoint{Coherence: math.NaN()}
+	half := max(localLeast, min(localMost, int(x+1)/localShare))
+	first := max(0, int(math.Round(x))-half)
+	last := min(len(u)-1, first+2*half)
+	const unknown = 4 * localOrder // real and imaginary parts
+	a, b := make([]float64, unknown*unknown), make([]float64, unknown)
+	row := func(k int) (shape [2 * localOrder]complex128) {
+		r := (float64(k) - x) / float64(half)
+		p := 1.0
+		for o := range localOrder {
+			shape[o], shape[localOrder+o] = u[k]*complex(p, 0), complex(p, 0)
+			p *= r
 		}
-		v := tr.Voltage[i]
-		if tr.Hold == trace.From {
-			v = tr.Voltage[i-1]
+		return shape
+	}
+	uu, yy := 0.0, 0.0
+	for k := first; k <= last; k++ {
+		uu, yy = uu+squared(u[k]), yy+squared(y[k])
+	}
+	lift := complex(math.Sqrt(uu/float64(last-first+1)), 0) // columns of about one size
+	if uu == 0 || yy == 0 {
+		return none, math.NaN()
+	}
+	for k := first; k <= last; k++ {
+		s := row(k)
+		var re, im [unknown]float64
+		for o, c := range s {
+			if o >= localOrder {
+				c *= lift
+			}
+			re[2*o], re[2*o+1], im[2*o], im[2*o+1] = real(c), -imag(c), imag(c), real(c)
 		}
-		w := h * (0.5 - 0.5*math.Cos(2*math.Pi*(mid-from)/length))
-		list = append(list, one{mid, h, v, (tr.Speed[i] + tr.Speed[i-1]) / 2, w})
-		mv, ms, sum = mv+w*v, ms+w*list[len(list)-1].s, sum+w
-	}
-	if len(list) < 16 {
-		return nil, nil, false
-	}
-	u, y = make([]complex128, len(omega)), make([]complex128, len(omega))
-	for k, w := range omega {
-		for _, x := range list {
-			e := cmplx.Exp(complex(0, -w*x.t)) * complex(x.w, 0)
-			u[k] += e * complex((x.v-mv/sum)*sinc(w*x.h/2), 0)
-			// The mean of two samples and the speed window, divided out.
-			y[k] += e * complex((x.s-ms/sum)/(math.Cos(w*x.h/2)*sinc(w*tr.Window/2)), 0) * cmplx.Exp(complex(0, w*tr.Window/2))
+		for i := range unknown {
+			for j := range unknown {
+				a[i*unknown+j] += re[i]*re[j] + im[i]*im[j]
+			}
+			b[i] += re[i]*real(y[k]) + im[i]*imag(y[k])
 		}
 	}
-	return u, y, true
+	right := append([]float64(nil), b...)
+	if cholesky(a, unknown) > 0 {
+		return none, math.NaN()
+	}
+	choleskySolve(a, unknown, b)
+	explained := 0.0
+	for i := range b {
+		explained += b[i] * right[i]
+	}
+	m := float64(last - first + 1)
+	free := m - 2*localOrder
+	rest := math.Max(0, yy-explained) / free
+	unit := choleskyInverse(a, unknown)[0]
+	return FreqPoint{G: complex(b[0], b[1]), SD: math.Sqrt(math.Max(0, unit)), Coherence: math.Max(0, math.Min(1, 1-rest*m/yy))}, rest / 2
 }
+
+func squared(c complex128) float64 { return real(c)*real(c) + imag(c)*imag(c) }
 
 // Peak is a place where the response stands out above a smooth model.
 type Peak struct {

@@ -79,7 +79,7 @@ func analyseFrequency(set ExperimentSettings, traces []*trace.Trace, rec *sheet.
 		for i := range 10 {
 			omega = append(omega, low*math.Pow(top/low, float64(i)/9))
 		}
-		other := identify.Welch(part, part.Time[0], part.Time[part.Len()-1], length, omega)
+		other := identify.Local(part, part.Time[0], part.Time[part.Len()-1], omega)
 		addResponse(rec, "second test", other, set)
 		if points == nil {
 			points = other
