@@ -65,6 +65,8 @@ func (j *Job) motorBox() error {
 	if s := j.Static; s != nil {
 		put("coulomb_volts_forward", s.CoulombForward, s.CoulombForwardSD)
 		put("coulomb_volts_reverse", s.CoulombReverse, s.CoulombReverseSD)
+		put("speed_low", s.SpeedMin, 0)
+		put("speed_high", s.SpeedMax, 0)
 	}
 	_, err := j.experiment(set, nil, nil)
 	return err
@@ -96,6 +98,9 @@ func analyseMotor(set ExperimentSettings, _ []*trace.Trace, rec *sheet.Experimen
 	}
 	if n["ke"] == 0 || n["resistance"] == 0 {
 		rec.Reasons = append(rec.Reasons, "not identifiable without a measured current: R, L, Ke, Kt, J and friction as torque. Gain and time constants alone fit any R with some Ke, J and b")
+		if n["speed_high"] > n["speed_low"] && n["speed_low"] > 0 {
+			linearRange(n["speed_low"], n["speed_high"], rec)
+		}
 		rec.Finding = fmt.Sprintf("gain %.4g rad/s/V, time constant %.4g ms, friction in volts; torques are not identifiable without a current", gain, tau*1e3)
 		return nil
 	}
@@ -168,11 +173,16 @@ func boxAgainstModel(m model.Motor, gain, low, high float64, rec *sheet.Experime
 	lin := m.Linearise((low+high)/2, 0)
 	ratio := lin.DCGain() / gain
 	quantity(rec, "gain of the equations over the model's", "1", ratio, 0, fmt.Sprintf("Ke/(bR + Ke²) at %s", rpm((low+high)/2)))
-	quantity(rec, "linear model from", "rad/s", low, 0, "slowest level: below it friction takes over (common practice, no source)")
-	quantity(rec, "linear model to", "rad/s", high, 0, "fastest level")
+	linearRange(low, high, rec)
 	if math.Abs(ratio-1) > boxGain {
 		doubt(rec, identify.Care, "the gain that R, Ke and b give is x%.2f of the model's: a scale of current or volts is off, or Ke is not constant", ratio)
 	}
+}
+
+// linearRange says from which speed to which the linear model is to be used.
+func linearRange(low, high float64, rec *sheet.ExperimentRecord) {
+	quantity(rec, "linear model from", "rad/s", low, 0, "slowest level: below it friction takes over (common practice, no source)")
+	quantity(rec, "linear model to", "rad/s", high, 0, "fastest level")
 }
 
 func sq(x float64) float64 { return x * x }
