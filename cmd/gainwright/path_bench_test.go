@@ -91,6 +91,13 @@ func streamed(b *testing.B, lines, rate int, whole bool) (wall, cpu time.Duratio
 		go io.Copy(io.Discard, port) // what the console asks; nobody answers
 	} else {
 		opened, err := consoleFlags{baud: 115200}.open(path)
+		for range 100 { // the kernel gives names again that a reader is still leaving
+			if err == nil {
+				break
+			}
+			time.Sleep(10 * time.Millisecond)
+			opened, err = consoleFlags{baud: 115200}.open(path)
+		}
 		if err != nil {
 			b.Fatal(err)
 		}
