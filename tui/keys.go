@@ -138,6 +138,7 @@ var bindings = []binding{
 	{"+ =", "+", "larger", groupDesign, "The gain in hand up by a twentieth; forecast, margins and worst case follow.", edits(true), say(job.TurnGain{By: 1})},
 	{"- _", "-", "smaller", groupDesign, "The gain in hand down by a twentieth.", edits(true), say(job.TurnGain{By: -1})},
 	{"u", "u", "take back", groupDesign, "Take the last key on a gain back; with none left, back to the rule's gains.", edits(true), say(job.TakeBack{})},
+	{"u", "u", "take old gains", groupDesign, "On the page of the earlier record: the gains that were left then are the ones to be pushed, exact where only counts or gear changed.", scales, say(job.TakeOld{})},
 
 	{"y", "y", "leave", groupStill, "Leave, when asked.", func(s Screen, v *job.View) bool { return s.local == localQuit }, say(job.Quit{})},
 	{"n b esc q", "n", "stay", groupStill, "Stay, when asked.", func(s Screen, v *job.View) bool { return s.local == localQuit }, func(s Screen, v *job.View, _ string) (Screen, intents) {
@@ -216,6 +217,11 @@ func edits(inHand bool) func(Screen, *job.View) bool {
 	return func(s Screen, v *job.View) bool {
 		return nudges(PageDesign)(s, v) && !v.Doing && v.Design.Refused == "" && (v.Design.ByHand || !inHand)
 	}
+}
+
+// scales reports whether the gains of the earlier record can be taken.
+func scales(s Screen, v *job.View) bool {
+	return free(s, v) && !s.why && !asksText(v.Ask) && !v.Doing && s.page(v) == PageEarlier && v.Earlier != nil && v.Earlier.Scales
 }
 
 // hasBack reports whether there is something to go back from.

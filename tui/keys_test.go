@@ -85,6 +85,7 @@ func TestKeysMean(t *testing.T) {
 		{"put aside", "", view(withPlan), "b", one(job.Decline{})},
 		{"size", "", view(withPlan), "j k k", []job.Intent{job.Nudge{By: -1}, job.Nudge{By: 1}, job.Nudge{By: 1}}},
 		{"by hand", "a gain has to be in hand first", view(func(v *job.View) { v.Doing, v.Design = false, designView() }), "8 + - u n", one(job.PickGain{By: 1})},
+		{"old gains", "exact scaling is chosen on the earlier record's page", view(func(v *job.View) { v.Doing, v.Earlier = false, &job.EarlierView{Scales: true} }), "u x u", one(job.TakeOld{})},
 		{"gains", "", view(byHand), "8 n + = - u", []job.Intent{job.PickGain{By: 1}, job.TurnGain{By: 1}, job.TurnGain{By: 1}, job.TurnGain{By: -1}, job.TakeBack{}}},
 		{"trip", "reset comes only after acknowledge", view(func(v *job.View) { v.Drive.Phase = tripped }), "z e", one(job.Acknowledge{})},
 		{"reset", "", view(func(v *job.View) { v.Drive.Phase, v.Drive.Acked = tripped, true }), "e z", one(job.ResetTrip{})},
@@ -107,7 +108,7 @@ func TestKeysMean(t *testing.T) {
 		})
 	}
 	for _, in := range []job.Intent{job.Arm{}, job.Go{}, job.SayClear{}, job.Disarm{}, job.DoStep{}, job.SkipStep{}, job.GiveAnswer{}, job.Decline{},
-		job.Acknowledge{}, job.ResetTrip{}, job.SetMark{}, job.AddRemark{}, job.Nudge{}, job.PickGain{}, job.TurnGain{}, job.TakeBack{}, job.PickPort{}, job.LookAgain{}, job.TurnHand{},
+		job.Acknowledge{}, job.ResetTrip{}, job.SetMark{}, job.AddRemark{}, job.Nudge{}, job.PickGain{}, job.TurnGain{}, job.TakeBack{}, job.TakeOld{}, job.PickPort{}, job.LookAgain{}, job.TurnHand{},
 		job.CyclePower{}, job.Revert{}, job.Quit{}} {
 		if !meant[fmt.Sprintf("%T", in)] {
 			t.Errorf("no key is tried that means %T", in)

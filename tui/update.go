@@ -146,7 +146,7 @@ func (s Screen) give(v *job.View) (Screen, []job.Intent) {
 		}
 	case job.AskNumber:
 		text = strings.TrimSpace(strings.Replace(text, ",", ".", 1))
-		if x, err := strconv.ParseFloat(text, 64); err != nil || !si.Finite(x) {
+		if x, err := strconv.ParseFloat(text, 64); (err != nil || !si.Finite(x)) && !(q.Blank && text == "") {
 			s.notice = fmt.Sprintf("%q is not a number: use digits and a point, as in 24.0.", text)
 			return s, nil
 		}

@@ -90,7 +90,7 @@ func TestFailureWalksByKeys(t *testing.T) {
 		{"F2", func(t *testing.T, p *person, d *bench.Drill) {
 			p.upTo(job.StepCount)
 			p.step(job.StepCount)
-			p.until("the question about the shaft", asked(job.AskHandTurn))
+			p.turnedByHand()
 			p.press("t")
 			p.wait(3 * time.Second)
 			p.press("enter")

@@ -177,6 +177,13 @@ func (d *desk) toCreep(b *board) bool {
 	}
 	time.Sleep(500 * time.Millisecond)
 	d.key("\r")
+	for range 2 { // ambient is not known, the load state is that of the rig file
+		time.Sleep(600 * time.Millisecond)
+		d.key("\r")
+	}
+	if !seen(10*time.Second, d.kept("event-conditions")) {
+		return false
+	}
 	time.Sleep(900 * time.Millisecond)
 	fmt.Fprintln(b.in, "turn")
 	if !seen(10*time.Second, func() bool { _, w, n := b.state(); return n > 0.999 && w == 0 }) {

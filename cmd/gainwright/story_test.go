@@ -229,8 +229,20 @@ func (p *person) done(id job.StepID) {
 	})
 }
 
+// turnedByHand answers the questions on ambient and load before that about the shaft.
+func (p *person) turnedByHand() {
+	p.t.Helper()
+	for _, kind := range []job.QuestionKind{job.AskNumber, job.AskText} {
+		p.until("the question before the hand, or its own", func(v *job.View) bool { return asked(kind)(v) || asked(job.AskHandTurn)(v) })
+		if asked(kind)(p.live.View()) {
+			p.answers("")
+		}
+	}
+	p.until("the question about the shaft", asked(job.AskHandTurn))
+}
+
 func (p *person) answerHand() {
-	p.until("the question about the shaft", func(v *job.View) bool { return v.Ask != nil && v.Ask.Kind == job.AskHandTurn })
+	p.turnedByHand()
 	p.press("t")
 	p.wait(3 * time.Second)
 	p.press("enter")

@@ -19,15 +19,13 @@ import (
 // place, with an encoder of 1024 lines for one of 500 and a winding of its own.
 func pressFeeder(t *testing.T) (before, after simrig.Config) {
 	t.Helper()
-	before, err := simrig.Load("../../testdata/rigs/benchtop.toml")
-	if err != nil {
-		t.Fatal(err)
+	for name, to := range map[string]*simrig.Config{"before": &before, "after": &after} {
+		cfg, err := simrig.Load("../../testdata/walks/press-feeder-" + name + ".toml")
+		if err != nil {
+			t.Fatal(err)
+		}
+		*to = cfg
 	}
-	before.Name = "press-feeder"
-	after = before
-	after.Encoder.PerTurn = 4096
-	after.Motor.K *= 0.93
-	after.Motor.Ohms *= 1.04
 	return before, after
 }
 
@@ -150,7 +148,22 @@ func TestPartSwapByKeys(t *testing.T) {
 			p.answers("y")
 		}
 		p.done(job.StepSwap)
-		p.upToFrom(job.StepCount, "")
+		p.step(job.StepCount)
+		p.answers("21.5")
+		p.answers("feeder, belt off")
+		p.answerHand()
+		p.done(job.StepCount)
+		p.upToFrom(job.StepSign, job.StepPush)
+		p.press("x")
+		if see := strings.Join(p.live.View().Earlier.Lines, "\n"); !strings.Contains(see, "exact scaling is enough") || !strings.Contains(see, "exact scaling: phase margin") || !strings.Contains(see, "retune:        phase margin") {
+			t.Errorf("the two offers with the margins of both:\n%s", see)
+		}
+		p.press("u")
+		p.until("the old gains in hand", func(v *job.View) bool {
+			return strings.Contains(strings.Join(v.Earlier.Lines, "\n"), "in hand")
+		})
+		p.press("b")
+		p.upToFrom(job.StepPush, "")
 		if v := p.live.View(); v.Verify == nil || !v.Verify.Passed {
 			t.Errorf("verify:\n%s", p.see())
 		}
@@ -177,6 +190,22 @@ func TestPartSwapByKeys(t *testing.T) {
 		var part sheet.PartRecord
 		if err := rd.LastJSON(sheet.KindPart, "", &part); err != nil || len(part.Answers) != 8 || part.Answers[7].Initials != "KM" || part.New["serial"] != "91007" {
 			t.Errorf("%v, %+v", err, part)
+		}
+		var is sheet.Snapshot
+		if err := rd.LastJSON(sheet.KindAsLeft, "", &is); err != nil || string(is.Running) == "" {
+			t.Fatal(err)
+		}
+		for _, d := range sheet.Differences(left, is) {
+			if strings.HasPrefix(d.What, "running") || strings.HasPrefix(d.What, "stored") {
+				t.Errorf("scaling is not exact: %+v", d)
+			}
+		}
+		var run sheet.RunRecord
+		if err := rd.LastJSON(sheet.KindRun, "verify", &run); err != nil || run.AmbientDegC == nil || *run.AmbientDegC != 21.5 || run.LoadState != "feeder, belt off" || is.AmbientDegC == nil {
+			t.Errorf("ambient and load state of a run: %v, %+v", err, run)
+		}
+		if again, err := job.Recompute(rd); err != nil || !again.Identical {
+			t.Errorf("computed again: %v, %v", err, again.Differences)
 		}
 		margins := map[string]float64{}
 		for _, q := range part.Predicted {

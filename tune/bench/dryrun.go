@@ -112,7 +112,7 @@ func (d DryRun) Do() (Report, error) {
 		endTape = v.Tape(out)
 	}
 	h := v.Hands(record)
-	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1), Order: d.Order})
+	j := job.New(h, job.Options{Rig: d.Rig, RigText: d.RigText, Version: d.Program, Seed: uint32(d.Seed*2654435761 + 1), Order: d.Order, Ambient: &d.Config.Motor.Ambient})
 	outcome, reason, stepErr := d.steps(v, j)
 	rep := report(v, j, outcome, reason, d.Rules)
 	rep.Cause = causeOf(stepErr)

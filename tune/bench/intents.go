@@ -34,6 +34,8 @@ func (l *Live) Post(i job.Intent) {
 		l.step(func(j *job.Job) { j.PickGain(i.By) })
 	case job.TurnGain:
 		l.step(func(j *job.Job) { j.TurnGain(i.By) })
+	case job.TakeOld:
+		l.step(func(j *job.Job) { j.TakeOld() })
 	case job.TakeBack:
 		l.step(func(j *job.Job) { j.TakeBack() })
 	case job.TurnHand:

@@ -112,6 +112,7 @@ func NewLive(opt Options) *Live {
 	}
 	l.publish()
 	l.goes(l.supervise)
+	opt.Job.Attended = true
 	l.job = job.New(l.h, opt.Job)
 	l.goes(l.work)
 	return l

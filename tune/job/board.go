@@ -333,7 +333,7 @@ func (j *Job) snapshot() (*sheet.Snapshot, error) {
 	id := j.ID
 	boots := int(id.Boots)
 	s := &sheet.Snapshot{BoardID: id.Board, Firmware: id.Firmware, Protocol: fmt.Sprintf("%d.%d", id.ProtoMajor, id.ProtoMinor),
-		Identity: map[string]string{}, BootCount: &boots, LoadState: j.Rig.Load.State, AmbientDegC: j.opt.Ambient}
+		Identity: map[string]string{}, BootCount: &boots, AmbientDegC: j.Ambient, LoadState: j.Rig.Load.State}
 	for _, l := range j.IDLines {
 		k, v, _ := strings.Cut(l, " ")
 		s.Identity[k] = strings.TrimSpace(s.Identity[k] + " " + v)

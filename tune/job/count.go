@@ -14,6 +14,9 @@ import (
 // doCount has the shaft turned once by hand and compares what was counted, then
 // sees the stop key work at rest: nothing moves before both.
 func (j *Job) doCount() (result, error) {
+	if err := j.askConditions(); err != nil {
+		return "", err
+	}
 	before, err := j.h.Watch(500 * time.Millisecond)
 	if err != nil {
 		return "", err

@@ -104,6 +104,7 @@ func (j *Job) doDesign() (result, error) {
 	}
 	j.NewSet, j.Gains, j.Margins, j.Worst = d.Set, d.Gains, d.Margins, d.Worst
 	j.showDesign()
+	j.showEarlier()
 	if j.NoChange {
 		const words = "the gains as found meet targets and bounds: no adjustment needed"
 		if err := j.h.Keep("event", sheet.NameNoAdjustment, sheet.EventRecord{What: "no adjustment", Detail: words}); err != nil {

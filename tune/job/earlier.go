@@ -19,6 +19,7 @@ type EarlierView struct {
 	Record  string
 	Differs int // from how it was left
 	Lines   []string
+	Scales  bool // the gains left then can be taken
 }
 
 // lookBack finds the newest earlier record of the rig and sets how the board was left
@@ -201,6 +202,8 @@ func (j *Job) showEarlier() {
 		for i, o := range Offers(rows, why) {
 			add("offer %d: %s", i+1, o)
 		}
+		v.Lines = append(v.Lines, j.bothMargins(margins)...)
+		v.Scales = margins != nil && j.Gains != nil
 	}
 	if j.earlier != nil {
 		if last, err := LastDesign(j.earlier); err == nil && last.Gains != nil {

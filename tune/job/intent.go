@@ -41,6 +41,8 @@ type (
 	TurnGain struct{ By int }
 	// TakeBack undoes the last change of a gain by hand.
 	TakeBack struct{}
+	// TakeOld takes the gains that the earlier record was left with.
+	TakeOld struct{}
 	// PickPort opens a port.
 	PickPort struct{ Path string }
 	// LookAgain lists the ports anew.
@@ -71,6 +73,7 @@ func (Nudge) intent()       {}
 func (PickGain) intent()    {}
 func (TurnGain) intent()    {}
 func (TakeBack) intent()    {}
+func (TakeOld) intent()     {}
 func (PickPort) intent()    {}
 func (LookAgain) intent()   {}
 func (TurnHand) intent()    {}

@@ -24,7 +24,9 @@ type Options struct {
 	Seed     uint32 // of the pseudo-random test
 	MsMax    float64
 	Ambient  *float64 // °C, as read off a thermometer; nil: not known
-	Order    *Order   // a job file; nil: the whole path
+	// Attended says that somebody is there who knows ambient and load state.
+	Attended bool
+	Order    *Order // a job file; nil: the whole path
 	// Earlier finds the newest earlier record of a rig and board, nil where there is
 	// none; nil: nobody looks.
 	Earlier func(rig, board string) *sheet.Reader
@@ -88,6 +90,7 @@ type Known struct {
 	MotorValues *sheet.MotorRecord // the values that a later job is compared with
 	Checks      []sheet.CheckRecord
 	Remarks     []string
+	Ambient     *float64 // degC, as the operator says; nil: not known
 }
 
 // Job is one job on one rig. Its methods are called from one goroutine.
@@ -99,6 +102,7 @@ type Job struct {
 	way   []StepID // the order of work: that of Path, or of a job file
 
 	ticked      bool            // the checklist, this session
+	conditions  bool            // ambient and load state were asked
 	forgotten   map[StepID]bool // checks that have to be seen again
 	orderTaken  bool            // the job file was held against the rig file
 	earlier     *sheet.Reader   // of this rig, nil: none
@@ -118,7 +122,7 @@ func New(h Hands, opt Options) *Job {
 		opt.Seed = 0x5A
 	}
 	j := &Job{h: h, opt: opt, steps: map[StepID]*StepView{}, carriedOut: map[StepID]string{}, forgotten: map[StepID]bool{}}
-	j.Rig, j.RigText = opt.Rig, opt.RigText
+	j.Rig, j.RigText, j.Ambient = opt.Rig, opt.RigText, opt.Ambient
 	for i := range Path {
 		p := &Path[i]
 		j.steps[p.ID] = &StepView{ID: p.ID, Title: p.Title, For: p.For, Needs: p.Needs, Moves: p.Moves, Takes: p.Takes,

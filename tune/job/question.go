@@ -26,6 +26,7 @@ type Question struct {
 	Want    string   // for AskWord
 	Unit    string   // for AskNumber
 	Default string
+	Blank   bool       // for AskNumber: enter alone is an answer too, not known
 	Options []string   // for AskChoice, at most nine
 	Set     []InputBit // for AskInput
 	// Override asks for a reason to do what was refused: nobody but a person has one.

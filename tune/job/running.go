@@ -118,7 +118,7 @@ func (j *Job) runAs(step StepID, asked Run) (Result, error) {
 	file := ""
 	rec := sheet.RunRecord{Name: plan.Name, Purpose: plan.Purpose, Step: string(step), Forecast: quantities, Limits: envelopeQuantities(j.Env),
 		BoardLimits: j.Limits, Seed: uint64(j.opt.Seed), Versions: map[string]string{"program": j.opt.Version, "firmware": j.ID.Firmware},
-		Operator: j.opt.Operator, LoadState: j.Rig.Load.State, AmbientDegC: j.opt.Ambient, Complete: r.Reason == safety.EndDone}
+		Operator: j.opt.Operator, AmbientDegC: j.Ambient, LoadState: j.Rig.Load.State, Complete: r.Reason == safety.EndDone}
 	if rec.Plan, err = rawJSON(plan); err != nil {
 		return r, err
 	}

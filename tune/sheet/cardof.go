@@ -41,6 +41,9 @@ func CardOf(r *Reader) CardData {
 	d.asFoundStep(r, found)
 	d.Firmware, d.LoadState = found.Firmware, left.LoadState
 	d.AmbientDegC, d.BusV = found.AmbientDegC, left.BusV
+	if d.AmbientDegC == nil {
+		d.AmbientDegC = left.AmbientDegC // asked after the as-found was kept
+	}
 	d.limits(r, found, left)
 	if d.LoadState == "" {
 		d.LoadState = found.LoadState

@@ -22,6 +22,7 @@ const (
 	NameAcceptance   = "acceptance"    // KindEvent, AcceptanceRecord
 	NameDrill        = "drill"         // KindEvent, DrillRecord
 	NameSinceLast    = "since-last"    // KindEvent, EventRecord: as found against an earlier as-left
+	NameConditions   = "conditions"    // KindEvent, EventRecord: ambient and load state as the operator says
 )
 
 // Quantity is one number with what a reader may ask of it.
