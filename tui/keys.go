@@ -169,7 +169,7 @@ var bindings = []binding{
 	{"c", "c", "", groupStill, "Card.", free, shown(PageCard)},
 	{"f", "f", "", groupStill, "Alarms, and what happened.", free, shown(PageAlarms)},
 	{"l", "l", "", groupStill, "The open loop of the proposal: gain and phase over frequency, with its margins and its worst case.", onDesign, shown(PageLoop)},
-	{"t", "t", "", groupStill, "The experiments that were done, each with its curves: j and k go from one to the next.", free, shown(PageExperiments)},
+	{"t", "t", "", groupStill, "The experiments that were done, each with its curves: {j} and {k} go from one to the next.", free, shown(PageExperiments)},
 	{"x", "x", "", groupStill, "The earlier record of this rig: how it was left, what differs now, its motor against this one.", free, shown(PageEarlier)},
 	{"i", "i", "", groupStill, "Interlocks: every input, as it stands now and as it was seen.", free, shown(PageInterlocks)},
 	{"? h", "?", "keys", groupStill, "This list, and back from it ({h} does the same).", free, toggled(PageHelp)},

@@ -29,7 +29,7 @@ func (p *painter) plan(a area) {
 	y := facts.sub(1, 0, left-2, facts.h).wrap(0, palette.Plain, pl.Purpose)
 	kind := fmt.Sprintf("%d segments, %s", pl.Segments, pl.Mode)
 	if pl.Resize {
-		kind += ", size " + number(pl.Size*100, 0) + " % (j k)"
+		kind += ", size " + number(pl.Size*100, 0) + p.keyed(" % ({j} {k})")
 	}
 	facts.put(1, y, palette.Plain, kind)
 	widths := p.widths(facts.w, pl.Facts)

@@ -164,8 +164,7 @@ func TestAQuestionPutAsideFailsNoCheck(t *testing.T) {
 			p.step(job.StepCount)
 			p.until("the question about the shaft", asked(job.AskHandTurn))
 			p.press("t")
-			p.wait(300 * time.Millisecond)
-			p.press("enter") // half a turn too soon
+			p.press("enter") // most of the turn is still to come
 			p.until("the question about the stop key", asked(job.AskStopKey))
 			p.press("b")
 			p.until("the end of the step", func(v *job.View) bool { return !v.Doing })
