@@ -41,7 +41,7 @@ var boardMutants = []mutant{
 
 // coreMutants break what joins the limiter with the wire.
 var coreMutants = []mutant{
-	{"S3", "supervisor/core.go", "if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {\n			c.Do(safety.PatternRefused", "if err := a.AsError(); err == protocol.ErrVoid {\n			c.Do(safety.PatternRefused", core, "TestPatternsOnTheWire"},
+	{"S3", "supervisor/lines.go", "if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {\n			c.Do(safety.PatternRefused", "if err := a.AsError(); err == protocol.ErrVoid {\n			c.Do(safety.PatternRefused", core, "TestPatternsOnTheWire"},
 	{"S3", "supervisor/lines.go", "return fmt.Sprintf(\"prbs %04X %d %d %d %d\", token, amp,", "return fmt.Sprintf(\"prbs %04X %d %d %d %d\", token, amp+500,", core, "TestPatternsOnTheWire"},
 	{"S5", "supervisor/core.go", "		c.void() // a stop voids what was asked before it\n", "", core, "TestAStopVoidsRequests"},
 	{"S5", "supervisor/lines.go", "	c.void()\n	c.connected = false\n", "	c.connected = false\n", core, "TestARestartVoidsWhatWasAsked"},

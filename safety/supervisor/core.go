@@ -379,16 +379,6 @@ func (c *Core) arm() {
 	})
 }
 
-// pattern asks the board's loop to begin one, once: a line that is lost ends the run.
-func (c *Core) pattern(x safety.SendPattern) {
-	ask := protocol.Request{Verb: protocol.VerbExper, Args: patternArgs(c.token, x.Pattern), Tries: 1}
-	c.Ask(c.now, ask, func(a protocol.Answer) {
-		if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {
-			c.Do(safety.PatternRefused{At: c.now, Words: err.Error()})
-		}
-	})
-}
-
 // pump sends the request that is due and ends the one that was tried in vain.
 func (c *Core) pump() {
 	for {

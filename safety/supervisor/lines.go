@@ -82,6 +82,16 @@ func (c *Core) restarted(boots int, why string) {
 	c.sink.Restarted(c.now, boots, why)
 }
 
+// pattern asks the board's loop to begin one, once: a line that is lost ends the run.
+func (c *Core) pattern(x safety.SendPattern) {
+	ask := protocol.Request{Verb: protocol.VerbExper, Args: patternArgs(c.token, x.Pattern), Tries: 1}
+	c.Ask(c.now, ask, func(a protocol.Answer) {
+		if err := a.AsError(); err != nil && a.Err != protocol.ErrVoid {
+			c.Do(safety.PatternRefused{At: c.now, Words: err.Error()})
+		}
+	})
+}
+
 // patternArgs are the arguments of exp (P13). The amplitude is rounded towards zero,
 // so that rounding never raises it.
 func patternArgs(token uint16, x safety.Pattern) string {
