@@ -160,8 +160,11 @@ func TestAQuestionPutAsideFailsNoCheck(t *testing.T) {
 		p := newPerson(t, demoRig(t))
 		defer p.leave()
 		p.upTo(job.StepCount)
-		for range 2 {
+		for again := range 2 {
 			p.step(job.StepCount)
+			if again == 0 {
+				p.turnedByHand() // ambient and load are asked once
+			}
 			p.until("the question about the shaft", asked(job.AskHandTurn))
 			p.press("t")
 			p.press("enter") // most of the turn is still to come
