@@ -12,6 +12,7 @@ var updateFaults = flag.Bool("update-faults", false, "write testdata/faults.txt 
 
 // The table of faults comes out the same, to the millisecond, and as it should be.
 func TestFaultTable(t *testing.T) {
+	t.Parallel() // it computes while the tests of processes wait
 	if testing.Short() {
 		t.Skip("eighty jobs")
 	}
