@@ -201,7 +201,11 @@ func mayAcknowledge(v *job.View) bool {
 // nudges reports whether the number of page p can be stepped now.
 func nudges(p Page) func(Screen, *job.View) bool {
 	return func(s Screen, v *job.View) bool {
-		if !free(s, v) || s.why || asksText(v.Ask) || s.page(v) != p {
+		on := s.page(v)
+		if on == PageLoop {
+			on = PageDesign // the same proposal, drawn over frequency
+		}
+		if !free(s, v) || s.why || asksText(v.Ask) || on != p {
 			return false
 		}
 		if p == PagePlan {

@@ -28,6 +28,18 @@ func TestGainsByHandByKeys(t *testing.T) {
 		p := newPerson(t, demoRig(t))
 		defer p.leave()
 		p.upTo(job.StepPush)
+		p.press("l") // the open loop follows the bound, on its own page
+		was := p.live.View().Design.Bode
+		p.press("j")
+		p.wait(2 * time.Second)
+		if now := p.live.View().Design.Bode; len(was.Gain) == 0 || *now.Crossover == *was.Crossover || !strings.Contains(p.see(), "gain, dB") {
+			t.Errorf("the loop does not follow the bound:\n%s", p.see())
+		}
+		p.press("k")
+		p.wait(2 * time.Second)
+		if now := p.live.View().Design.Bode; *now.Crossover != *was.Crossover {
+			t.Errorf("crossover %g after a step and back, %g before", *now.Crossover, *was.Crossover)
+		}
 		p.press("8")
 		rule := p.live.View().Design
 		p.press("+")
