@@ -261,11 +261,11 @@ func (j *Job) limitBits(values map[string]float64) ([]uint32, error) {
 
 func (j *Job) writeLimits(bits []uint32) error {
 	for i, b := range bits {
-		if _, err := j.h.Request(protocol.VerbLimit, fmt.Sprintf("set %d %08X", i, b)); err != nil {
+		if _, err := j.whenStill(protocol.VerbLimit, fmt.Sprintf("set %d %08X", i, b)); err != nil {
 			return fmt.Errorf("limit %s: %w", j.ID.LimitNames[i], err)
 		}
 	}
-	if _, err := j.h.Request(protocol.VerbLimit, fmt.Sprintf("use %04X", protocol.SetCRC(bits))); err != nil {
+	if _, err := j.whenStill(protocol.VerbLimit, fmt.Sprintf("use %04X", protocol.SetCRC(bits))); err != nil {
 		return err
 	}
 	for i, b := range bits {
@@ -318,11 +318,11 @@ func (j *Job) readSet(which string) (GainSet, error) {
 // writeSet stages a set, swaps it in, reads it back and compares bit for bit.
 func (j *Job) writeSet(s GainSet) (back GainSet, err error) {
 	for i, b := range s.Bits {
-		if _, err := j.h.Request(protocol.VerbGain, fmt.Sprintf("set %d %08X", i, b)); err != nil {
+		if _, err := j.whenStill(protocol.VerbGain, fmt.Sprintf("set %d %08X", i, b)); err != nil {
 			return back, fmt.Errorf("gain %s: %w", s.Names[i], err)
 		}
 	}
-	if _, err := j.h.Request(protocol.VerbGain, fmt.Sprintf("use %04X", s.CRC())); err != nil {
+	if _, err := j.whenStill(protocol.VerbGain, fmt.Sprintf("use %04X", s.CRC())); err != nil {
 		return back, err
 	}
 	return j.readSet("run")

@@ -126,7 +126,7 @@ func (j *Job) doStore() (result, error) {
 	if err := j.h.Permit(safety.GainWrite{}); err != nil {
 		return "", refuse(742, "store", err.Error(), "wait until the shaft is at rest and disarmed, then store again")
 	}
-	a, err := j.h.Request(protocol.VerbGain, fmt.Sprintf("store %04X", j.Running.CRC()))
+	a, err := j.whenStill(protocol.VerbGain, fmt.Sprintf("store %04X", j.Running.CRC()))
 	j.h.Wrote(err == nil)
 	if err != nil {
 		return "", err
