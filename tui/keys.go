@@ -219,7 +219,7 @@ func nudges(p Page) func(Screen, *job.View) bool {
 // in hand.
 func edits(inHand bool) func(Screen, *job.View) bool {
 	return func(s Screen, v *job.View) bool {
-		return nudges(PageDesign)(s, v) && !v.Doing && v.Design.Refused == "" && (v.Design.ByHand || !inHand)
+		return s.page(v) == PageDesign && nudges(PageDesign)(s, v) && !v.Doing && v.Design.Refused == "" && (v.Design.ByHand || !inHand)
 	}
 }
 
