@@ -59,7 +59,6 @@ var mutants = []mutant{
 	{"S4", "judge.go", "m.Heat*math.Exp(-h/m.env.HeatTau.Seconds())+i*i*h", "m.Heat*math.Exp(-h/m.env.HeatTau.Seconds())+i*h", step, "TestHeatFollowsTheThermalRelayCurve"},
 	{"S4", "judge.go", "end := l.Gain * m.volts(float64(s.Volts))", "end := l.Gain * 0", step, "TestEveryLimitTrips"},
 	{"S4", "loose.go", "far := !other && goesOn && math.Abs(j.slope) >", "far := !other && goesOn && 9*math.Abs(j.slope) <", step, "TestEveryLimitTrips"},
-	{"S4", "loose.go", "goesOn := j.newest*j.slope > looseGoes*j.slope*j.slope", "goesOn := true", step, "TestEveryLimitTrips"},
 	{"S4", "loose.go", "	if pushed {\n		code = CodePushed\n	}\n", "	_ = pushed\n", step, "TestEveryLimitTrips"},
 	{"S4", "run.go", "case m.Now-m.RunAt > m.env.RunTimeMax:", "case m.Now-m.RunAt > 2*m.env.RunTimeMax:", step, "TestRunTimeTrips"},
 	{"S4", "judge.go", "if v := math.Abs(float64(s.Speed)); v > float64(m.env.CreepMax) {", "if v := math.Abs(float64(s.Speed)); v > float64(m.env.SpeedMax) {", step, "TestAShaftThatTurnsUndrivenTrips"},
